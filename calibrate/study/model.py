@@ -1,0 +1,111 @@
+"""What a study says, validated: frozen, in SI units, every expression parsed."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from calibrate.expressions import Comparison, Expression
+from calibrate.factors import Factor
+from calibrate.records import Sample
+from calibrate.situations import Situations
+from calibrate.units import Dimension, Unit
+
+
+@dataclass(frozen=True, slots=True)
+class Quantity:
+    """A deterministic value that rules and models may use.
+
+    ``text`` is what the user wrote, ``value`` is in SI units, ``unit`` is the
+    user's unit, or the coherent SI unit for an expression.
+    """
+
+    name: str
+    text: str
+    value: float
+    unit: Unit
+    line: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Variable:
+    """A basic variable as the study defines it.
+
+    Either ``records`` names a sample and ``families`` the candidates (one
+    name; several; or empty for every family that can be fitted), or
+    ``families`` holds one name and ``arguments`` its moments or parameters as
+    expressions in SI units. ``texts`` keeps them as typed. ``period`` is in
+    years; None means the reference period.
+    """
+
+    name: str
+    families: tuple[str, ...]
+    records: str | None
+    arguments: Mapping[str, Expression]
+    texts: Mapping[str, str]
+    period: float | None
+    unit: Unit
+    dimension: Dimension
+    line: int | None = None
+    method: str = "likelihood"
+
+
+@dataclass(frozen=True, slots=True)
+class Rule:
+    """A design check, the size that it determines, and the limit state of what it designs.
+
+    ``variables`` are the basic variables of the limit state, in the order of
+    the study. ``size`` is None where the rule is assessed as it stands.
+    """
+
+    name: str
+    design_check: Comparison | None
+    size: str | None
+    size_unit: Unit | None
+    limit_state: Comparison
+    variables: tuple[str, ...]
+    weight: float
+    line: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Objective:
+    """How a departure of beta from the target is penalised."""
+
+    penalty: str = "squared"
+    floor: float | None = None
+    scale: float = 0.23
+    """The ``d`` of the asymmetric penalty."""
+
+
+@dataclass(frozen=True, slots=True)
+class Study:
+    """A whole calibration, read and checked.
+
+    ``file`` is the path relative to ``project`` (posix form), ``path`` the
+    path that was opened, ``shown`` the path as the user typed it.
+    """
+
+    path: Path
+    shown: str
+    project: Path
+    file: str
+    sha256: str
+    text: str
+    title: str
+    summary: str
+    reference_period: float
+    seed: int
+    target_beta: float
+    records: Mapping[str, Sample]
+    quantities: Mapping[str, Quantity]
+    variables: Mapping[str, Variable]
+    situations: Situations
+    derived: Mapping[str, Expression]
+    rules: Mapping[str, Rule]
+    factors: tuple[Factor, ...]
+    objective: Objective
+    weight_text: str = "1"
+    lines: Mapping[str, int] = field(default_factory=dict)
+    """Line in the study file of each dotted key, for messages found later."""

@@ -1,0 +1,91 @@
+"""Everything about one finished run: what the report, the files and Python users read."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibrate.errors import Doubt
+from calibrate.factors import Calibration
+from calibrate.fitting import Comparison as FitComparison
+from calibrate.provenance import Provenance
+from calibrate.study.model import Study
+from calibrate.units import Unit
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+FACTOR_SETS = ("present", "optimal", "proposed")
+
+
+@dataclass(frozen=True, slots=True)
+class VariableResult:
+    """A basic variable as it was used.
+
+    ``parameters``, ``mean``, ``sd`` and ``cov`` are arrays over the design
+    situations of all rules that use the variable (length 1 where the model
+    does not vary), in ``unit``. ``comparison`` and ``fit`` are None where the
+    variable was not fitted. ``period`` is the period in years to which the
+    given model referred; the figures are for the reference period.
+    """
+
+    name: str
+    family: str
+    unit: Unit
+    parameters: Mapping[str, NDArray[np.float64]]
+    mean: NDArray[np.float64]
+    sd: NDArray[np.float64]
+    cov: NDArray[np.float64]
+    n: int | None
+    period: float | None
+    comparison: FitComparison | None
+
+    @property
+    def varies(self) -> bool:
+        """Whether the model differs between design situations."""
+        return any(a.size > 1 for a in (*self.parameters.values(), self.mean, self.sd))
+
+
+@dataclass(frozen=True, slots=True)
+class Result:
+    """One run of one study.
+
+    Attributes
+    ----------
+    factors : DataFrame
+        Columns of factors.csv.
+    situations : DataFrame
+        Columns of situations.csv, in the units of ``units``; NaN where a
+        situation has no beta.
+    units : mapping
+        Unit text of every column of ``situations``.
+    calibration : Calibration
+        Factor sets, objective, evaluations, diagnostics.
+    constraint_failures : tuple of str
+        Constraints that cannot be met, each a full sentence.
+    """
+
+    study: Study
+    variables: Mapping[str, VariableResult]
+    factors: pd.DataFrame
+    situations: pd.DataFrame
+    units: Mapping[str, str]
+    calibration: Calibration
+    doubts: tuple[Doubt, ...]
+    constraint_failures: tuple[str, ...]
+    unconverged: int
+    provenance: Provenance
+
+    def to_dict(self) -> dict[str, Any]:
+        """Return the content of result.json."""
+        from calibrate.study.export import result_dict
+
+        return result_dict(self)
+
+    def __repr__(self) -> str:
+        proposed = ", ".join(f"{n} = {v:g}" for n, v in self.calibration.proposed.factors.items())
+        return f"<Result of '{self.study.title}': {proposed}>"
