@@ -21,27 +21,28 @@ if TYPE_CHECKING:
     from calibrate.distributions import distribution
     from calibrate.errors import Doubt, InputError
     from calibrate.fitting import fit
-    from calibrate.reliability import form
+    from calibrate.reliability import public_form as form
     from calibrate.study import read_study, run
 
 __version__ = "0.1.0"
 __all__ = ["Doubt", "InputError", "distribution", "fit", "form", "read_study", "run"]
 
 _HOMES = {
-    "Doubt": "calibrate.errors",
-    "InputError": "calibrate.errors",
-    "distribution": "calibrate.distributions",
-    "fit": "calibrate.fitting",
-    "form": "calibrate.reliability",
-    "read_study": "calibrate.study",
-    "run": "calibrate.study",
+    "Doubt": ("calibrate.errors", "Doubt"),
+    "InputError": ("calibrate.errors", "InputError"),
+    "distribution": ("calibrate.distributions", "distribution"),
+    "fit": ("calibrate.fitting", "fit"),
+    "form": ("calibrate.reliability", "public_form"),
+    "read_study": ("calibrate.study", "read_study"),
+    "run": ("calibrate.study", "run"),
 }
 
 
 def __getattr__(name: str) -> Any:
     if name not in _HOMES:
         raise AttributeError(f"module 'calibrate' has no attribute '{name}'")
-    value = getattr(importlib.import_module(_HOMES[name]), name)
+    module, attribute = _HOMES[name]
+    value = getattr(importlib.import_module(module), attribute)
     globals()[name] = value
     return value
 
