@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from calibrate.errors import Doubt
 from calibrate.expressions import Comparison, Expression
 from calibrate.factors import Factor
 from calibrate.records import Sample
@@ -49,6 +50,10 @@ class Variable:
     dimension: Dimension
     line: int | None = None
     method: str = "likelihood"
+    may_be_negative: bool = False
+    description: str = ""
+    source: str = ""
+    grade: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,6 +72,7 @@ class Rule:
     variables: tuple[str, ...]
     weight: float
     line: int | None = None
+    description: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,6 +112,11 @@ class Study:
     rules: Mapping[str, Rule]
     factors: tuple[Factor, ...]
     objective: Objective
+    size_dimensions: Mapping[str, Dimension]
+    """Dimension of the size of each rule that has one, by rule name."""
+    doubts: tuple[Doubt, ...] = ()
     weight_text: str = "1"
+    factor_descriptions: Mapping[str, str] = field(default_factory=dict)
+    axis_descriptions: Mapping[str, str] = field(default_factory=dict)
     lines: Mapping[str, int] = field(default_factory=dict)
     """Line in the study file of each dotted key, for messages found later."""

@@ -30,7 +30,10 @@ class VariableResult:
     situations of all rules that use the variable (length 1 where the model
     does not vary), in ``unit``. ``comparison`` and ``fit`` are None where the
     variable was not fitted. ``period`` is the period in years to which the
-    given model referred; the figures are for the reference period.
+    given model referred (None: the reference period). Mean, sd and cov are for
+    the reference period; ``parameters`` are for ``parameters_period`` years,
+    the reference period where the family is closed under maxima, else the
+    period of the given model.
     """
 
     name: str
@@ -42,6 +45,7 @@ class VariableResult:
     cov: NDArray[np.float64]
     n: int | None
     period: float | None
+    parameters_period: float
     comparison: FitComparison | None
 
     @property
@@ -62,7 +66,8 @@ class Result:
         Columns of situations.csv, in the units of ``units``; NaN where a
         situation has no beta.
     units : mapping
-        Unit text of every column of ``situations``.
+        Unit text of every column of ``situations``; a mapping by rule for the
+        sizes where rules differ in unit.
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
     constraint_failures : tuple of str
@@ -73,7 +78,7 @@ class Result:
     variables: Mapping[str, VariableResult]
     factors: pd.DataFrame
     situations: pd.DataFrame
-    units: Mapping[str, str]
+    units: Mapping[str, str | Mapping[str, str]]
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

@@ -1,0 +1,125 @@
+"""The result files that other programs read: JSON and CSV at full precision."""
+
+from __future__ import annotations
+
+import json
+import math
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+if TYPE_CHECKING:
+    from calibrate.factors import FactorSet
+    from calibrate.study.result import Result, VariableResult
+
+FORMAT = "calibrate-result/1"
+
+
+def _number(value: float | None) -> float | int | None:
+    """Return a JSON number, or None for a figure that does not exist."""
+    if value is None or not math.isfinite(value):
+        return None
+    return float(value)
+
+
+def _range(values: NDArray[np.float64], varies: bool) -> Any:
+    finite = np.asarray(values, dtype=float).ravel()
+    finite = finite[np.isfinite(finite)]
+    if not finite.size:
+        return [None, None] if varies else None
+    return [float(finite.min()), float(finite.max())] if varies else float(finite[0])
+
+
+def _variable(variable: VariableResult) -> dict[str, Any]:
+    varies = variable.varies
+    figures: dict[str, Any] = {
+        "family": variable.family,
+        "unit": variable.unit.text,
+        "parameters": {k: _range(v, varies) for k, v in variable.parameters.items()},
+        "mean": _range(variable.mean, varies),
+        "sd": _range(variable.sd, varies),
+        "cov": _range(variable.cov, varies),
+        "n": variable.n,
+    }
+    if varies:
+        figures["varies"] = True
+    if variable.period is not None:
+        figures["period"] = variable.period
+        figures["parameters_for_period"] = variable.parameters_period
+    return figures
+
+
+def _summary(result: Result, chosen: FactorSet) -> dict[str, Any]:
+    worst = None
+    if chosen.worst is not None:
+        row = result.situations.iloc[chosen.worst]
+        worst = {"rule": str(row["rule"]), "situation": int(row["situation"])}
+    return {
+        "mean": _number(chosen.mean),
+        "sd": _number(chosen.sd),
+        "min": _number(chosen.min),
+        "max": _number(chosen.max),
+        "rms_from_target": _number(chosen.rms_from_target),
+        "worst": worst,
+    }
+
+
+def result_dict(result: Result) -> dict[str, Any]:
+    """Return the content of result.json: plain dictionaries, lists, numbers and None."""
+    study, calibration = result.study, result.calibration
+    sets = {"present": calibration.present, "optimal": calibration.optimal, "proposed": calibration.proposed}
+    provenance = result.provenance
+    return {
+        "format": FORMAT,
+        "study": {"title": study.title, "file": study.file, "sha256": study.sha256},
+        "target_beta": study.target_beta,
+        "reference_period": study.reference_period,
+        "seed": study.seed,
+        "provenance": {
+            "versions": dict(provenance.versions),
+            "started": provenance.started,
+            "seconds": provenance.seconds,
+            "command": provenance.command,
+        },
+        "records": {
+            name: {
+                "file": sample.file,
+                "column": sample.name,
+                "unit": sample.unit.text,
+                "n": sample.n,
+                "sha256": sample.sha256,
+            }
+            for name, sample in study.records.items()
+        },
+        "variables": {name: _variable(v) for name, v in result.variables.items()},
+        "factors": {
+            factor.name: {
+                **{kind: _number(chosen.factors[factor.name]) for kind, chosen in sets.items()},
+                "held": factor.held,
+            }
+            for factor in study.factors
+        },
+        "beta": {kind: _summary(result, chosen) for kind, chosen in sets.items()},
+        "objective": {kind: _number(chosen.objective) for kind, chosen in sets.items()},
+        "situations": len(result.situations),
+        "unconverged": result.unconverged,
+        "constraint_failures": list(result.constraint_failures),
+        "doubts": [{"code": d.code, "message": d.message, "where": d.where} for d in result.doubts],
+    }
+
+
+def result_json(result: Result) -> str:
+    """Return the text of result.json."""
+    return json.dumps(result_dict(result), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def table_files(result: Result) -> dict[str, bytes]:
+    """Return result.json, situations.csv, factors.csv and units.json as bytes by file name."""
+    texts = {
+        "result.json": result_json(result),
+        "situations.csv": result.situations.to_csv(index=False, lineterminator="\n"),
+        "factors.csv": result.factors.to_csv(index=False, lineterminator="\n"),
+        "units.json": json.dumps(dict(result.units), indent=2, ensure_ascii=False) + "\n",
+    }
+    return {name: text.encode("utf-8") for name, text in texts.items()}

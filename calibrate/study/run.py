@@ -1,0 +1,118 @@
+"""The main job: a study in, a result out."""
+
+from __future__ import annotations
+
+import dataclasses
+import datetime
+import time
+from collections.abc import Callable
+
+import numpy as np
+
+from calibrate.errors import Doubt, InputError, Problem
+from calibrate.factors import Calibration, Response, calibrate_factors
+from calibrate.provenance import Provenance, versions
+from calibrate.study.assemble import basic_variables, rule_models
+from calibrate.study.doubts import study_doubts
+from calibrate.study.fits import fit_variables
+from calibrate.study.model import Study
+from calibrate.study.result import Result
+from calibrate.study.tables import factor_table, situation_table, variable_results
+
+Progress = Callable[[str, float], None]
+
+
+def _silent(text: str, fraction: float) -> None:
+    del text, fraction
+
+
+def run(
+    study: Study,
+    *,
+    workers: int = 1,
+    seed: int | None = None,
+    command: str = "python",
+    progress: Progress | None = None,
+) -> Result:
+    """Calibrate the factors of a study.
+
+    Parameters
+    ----------
+    study : Study
+        As returned by ``read_study``.
+    workers : int
+        Threads that share the design situations; results do not depend on it.
+    seed : int, optional
+        Replaces the study's seed.
+    command : str
+        Recorded in the provenance.
+    progress : callable, optional
+        Called as ``progress(text, fraction)`` while the run goes on.
+
+    Returns
+    -------
+    Result
+        Factors, reliability of every design situation, doubts, provenance.
+
+    Raises
+    ------
+    InputError
+        Where the study cannot be computed as it stands: samples too small for
+        their family, models without meaning in some situation, fewer
+        situations with weight than free factors, negative mass that matters.
+    """
+    report = progress or _silent
+    started, clock = datetime.datetime.now(datetime.UTC), time.perf_counter()
+    if seed is not None:
+        study = dataclasses.replace(study, seed=seed)
+
+    report("Fitting distributions", 0.0)
+    fitted = fit_variables(study)
+    variables = basic_variables(study, fitted)
+    calibration = _calibrate(study, variables, workers, report)
+
+    report("Collecting results", 0.95)
+    sets = (calibration.present, calibration.optimal, calibration.proposed)
+    table, units = situation_table(study, calibration)
+    doubts = (*study.doubts, *study_doubts(study, fitted, variables, calibration), *calibration.doubts)
+    unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
+    return Result(
+        study=study,
+        variables=variable_results(study, fitted, variables, calibration),
+        factors=factor_table(study, calibration),
+        situations=table,
+        units=units,
+        calibration=calibration,
+        doubts=_unique(doubts),
+        constraint_failures=calibration.constraint_failures,
+        unconverged=unconverged,
+        provenance=Provenance(
+            versions(), started.isoformat(timespec="seconds"), time.perf_counter() - clock, command
+        ),
+    )
+
+
+def _calibrate(study: Study, variables: object, workers: int, report: Progress) -> Calibration:
+    models = rule_models(study, variables)  # type: ignore[arg-type]
+    response = Response(models, study.factors, workers=workers)
+    weight = np.concatenate([m.rule_weight * m.weight for m in models])
+    try:
+        return calibrate_factors(
+            response,
+            study.factors,
+            weight,
+            study.target_beta,
+            study.objective,
+            progress=lambda text, fraction: report(text, 0.05 + 0.9 * fraction),
+        )
+    except InputError as error:
+        raise InputError(
+            [
+                p if p.file else Problem(p.message, study.shown, p.line, p.suggestion)
+                for p in error.problems
+            ]
+        ) from error
+
+
+def _unique(doubts: tuple[Doubt, ...]) -> tuple[Doubt, ...]:
+    return tuple(dict.fromkeys(doubts))

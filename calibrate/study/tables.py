@@ -1,0 +1,174 @@
+"""The tables of a result: factors, design situations, basic variables; full precision, the user's units."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibrate.distributions import Distribution
+from calibrate.factors import Calibration, Evaluation
+from calibrate.situations import BasicVariable
+from calibrate.study.fits import FittedVariable
+from calibrate.study.model import Rule, Study
+from calibrate.study.result import FACTOR_SETS, VariableResult
+from calibrate.units import Unit, si_unit
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+Array = NDArray[np.float64]
+
+
+def factor_table(study: Study, calibration: Calibration) -> pd.DataFrame:
+    """Return one row per factor, in the order of the study: the columns of factors.csv."""
+    import pandas as pd
+
+    sets = {kind: getattr(calibration, kind).factors for kind in FACTOR_SETS}
+    return pd.DataFrame(
+        {
+            "name": [f.name for f in study.factors],
+            **{kind: [sets[kind][f.name] for f in study.factors] for kind in FACTOR_SETS},
+            "held": [f.held for f in study.factors],
+            "lower": [np.nan if f.held else f.lower for f in study.factors],
+            "upper": [np.nan if f.held else f.upper for f in study.factors],
+            "step": [np.nan if f.held or f.step is None else f.step for f in study.factors],
+        }
+    )
+
+
+def size_unit(study: Study, rule: Rule) -> Unit:
+    """Return the unit in which the size of a rule is shown."""
+    return rule.size_unit if rule.size_unit is not None else si_unit(study.size_dimensions[rule.name])
+
+
+def situation_table(
+    study: Study, calibration: Calibration
+) -> tuple[pd.DataFrame, dict[str, str | dict[str, str]]]:
+    """Return one row per rule and design situation, and the unit of every column.
+
+    A situation without beta has NaN in every column that follows from beta.
+    """
+    import pandas as pd
+
+    situations = study.situations
+    rules = list(study.rules.values())
+    repeat = len(rules)
+    columns: dict[str, object] = {
+        "rule": np.repeat(np.array([r.name for r in rules], dtype=object), situations.n),
+        "situation": np.tile(np.arange(1, situations.n + 1), repeat),
+    }
+    units: dict[str, str | dict[str, str]] = {"rule": "", "situation": ""}
+    for name, values in situations.columns.items():
+        unit = situations.units.get(name)
+        shown = values / unit.factor if unit is not None and values.dtype.kind == "f" else values
+        columns[name] = np.tile(shown, repeat)
+        units[name] = "" if unit is None else unit.text
+    columns["weight"] = _row_weights(study)
+    units["weight"] = ""
+    for kind in FACTOR_SETS:
+        evaluation: Evaluation = getattr(calibration, kind).evaluation
+        columns[f"size_{kind}"] = np.concatenate(
+            [
+                np.full(situations.n, np.nan) if e.size is None else e.size / size_unit(study, r).factor
+                for r, e in zip(rules, evaluation.per_rule, strict=True)
+            ]
+        )
+        units[f"size_{kind}"] = _size_units(study, rules)
+    for kind in FACTOR_SETS:
+        columns[f"beta_{kind}"] = getattr(calibration, kind).evaluation.beta
+        units[f"beta_{kind}"] = ""
+    _design_points(study, calibration.proposed.evaluation, rules, columns, units)
+    return pd.DataFrame(columns), units
+
+
+def _row_weights(study: Study) -> Array:
+    total = sum(r.weight for r in study.rules.values())
+    return np.concatenate([study.situations.weight * (r.weight / total) for r in study.rules.values()])
+
+
+def _size_units(study: Study, rules: list[Rule]) -> str | dict[str, str]:
+    by_rule = {r.name: size_unit(study, r).text for r in rules if r.size is not None}
+    texts = set(by_rule.values())
+    if len(texts) <= 1:
+        return texts.pop() if texts else ""
+    return by_rule
+
+
+def _design_points(
+    study: Study,
+    evaluation: Evaluation,
+    rules: list[Rule],
+    columns: dict[str, object],
+    units: dict[str, str | dict[str, str]],
+) -> None:
+    from scipy.special import ndtr
+
+    n = study.situations.n
+    beta = evaluation.beta
+    columns["pf"] = ndtr(-beta)
+    units["pf"] = ""
+    alpha = {name: np.full(beta.size, np.nan) for name in study.variables}
+    x = {name: np.full(beta.size, np.nan) for name in study.variables}
+    for k, (rule, e) in enumerate(zip(rules, evaluation.per_rule, strict=True)):
+        rows = slice(k * n, (k + 1) * n)
+        found = np.isfinite(beta[rows])
+        for i, name in enumerate(rule.variables):
+            alpha[name][rows] = np.where(found, e.reliability.alpha[i], np.nan)
+            x[name][rows] = np.where(found, e.reliability.x[i] / study.variables[name].unit.factor, np.nan)
+    used = [name for name in study.variables if any(name in r.variables for r in rules)]
+    for name in used:
+        columns[f"alpha_{name}"] = alpha[name]
+        units[f"alpha_{name}"] = ""
+    for name in used:
+        columns[f"x_{name}"] = x[name]
+        units[f"x_{name}"] = study.variables[name].unit.text
+    columns["status"] = np.asarray(evaluation.status, dtype=object)
+    units["status"] = ""
+
+
+def variable_results(
+    study: Study,
+    fitted: Mapping[str, FittedVariable],
+    variables: Mapping[str, BasicVariable],
+    calibration: Calibration,
+) -> dict[str, VariableResult]:
+    """Return every basic variable that a rule uses, as it stands with the proposed factors."""
+    results: dict[str, VariableResult] = {}
+    for name, variable in study.variables.items():
+        distributions = _distributions(study, name, calibration.proposed.evaluation)
+        if not distributions:
+            continue
+        unit, fit = variable.unit, fitted.get(name)
+        shown = [d.scaled(1.0 / unit.factor) for d in distributions]
+        period = study.reference_period if variables[name].closed else variable.period
+        results[name] = VariableResult(
+            name=name,
+            family=shown[0].family.name,
+            unit=unit,
+            parameters={p: _merge([d.parameters[p] for d in shown]) for p in shown[0].parameters},
+            mean=_merge([d.mean for d in shown]),
+            sd=_merge([d.sd for d in shown]),
+            cov=_merge([d.cov for d in shown]),
+            n=None if fit is None else fit.fit.n,
+            period=variable.period,
+            parameters_period=study.reference_period if period is None else period,
+            comparison=None if fit is None else fit.comparison,
+        )
+    return results
+
+
+def _distributions(study: Study, name: str, evaluation: Evaluation) -> list[Distribution]:
+    found = []
+    for rule, e in zip(study.rules.values(), evaluation.per_rule, strict=True):
+        if name in rule.variables:
+            found.append(e.distributions[rule.variables.index(name)])
+    return found
+
+
+def _merge(parts: list[Array]) -> Array:
+    """Join figures over rules and situations; length 1 where they are all the same."""
+    flat = np.concatenate([np.atleast_1d(np.asarray(p, dtype=float)) for p in parts])
+    return flat[:1] if np.all((flat == flat[0]) | (np.isnan(flat) & np.isnan(flat[0]))) else flat
