@@ -1,0 +1,1 @@
+"""One short file per family: its parameters and its formulas for both tails."""

@@ -1,0 +1,117 @@
+"""Functions of the standard normal distribution that keep their relative accuracy in both tails.
+
+The central one is the log-hazard ``k(u) = ln(-ln Phi(u))``. Distributions of extremes are simple functions of it,
+and raising any distribution function to the power r shifts it, ``ln(-r ln F) = k + ln r``.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from scipy import special
+
+from calibrate.distributions.parameter import Array
+
+LOG_SQRT_2PI = 0.5 * math.log(2.0 * math.pi)
+INV_SQRT_2PI = 1.0 / math.sqrt(2.0 * math.pi)
+LOG_HALF = -math.log(2.0)
+
+# Phi(-37.5) is the last probability that is still a normal double; beyond, logarithms take over.
+REACH = 37.5
+
+log_ndtr = special.log_ndtr
+ndtri_exp = special.ndtri_exp
+
+
+def log_phi(u: Array) -> Array:
+    """Return the logarithm of the standard normal density."""
+    return -0.5 * u * u - LOG_SQRT_2PI
+
+
+def log1mexp(a: Array) -> Array:
+    """Return ``ln(1 - exp(a))`` for ``a <= 0`` without cancellation.
+
+    Notes
+    -----
+    The switch at ``-ln 2`` follows M. Maechler, "Accurately computing log(1 - exp(-|a|))" (2012).
+    """
+    a = np.minimum(a, 0.0)
+    near = a > LOG_HALF
+    with np.errstate(divide="ignore"):
+        return np.where(near, np.log(-np.expm1(np.where(near, a, LOG_HALF))), np.log1p(-np.exp(a)))
+
+
+def u_from_log_tails(log_cdf: Array, log_sf: Array) -> Array:
+    """Return the standard normal value with these log-probabilities, from whichever tail is smaller."""
+    low = log_cdf < log_sf
+    tail = ndtri_exp(np.where(low, log_cdf, log_sf))
+    return np.where(low, tail, -tail)
+
+
+def ratio_of_density(u: Array) -> Array:
+    """Return ``phi(u) / Phi(u)``, the slope of ``ln Phi``."""
+    return np.exp(log_phi(u) - log_ndtr(u))
+
+
+def _within_reach(u: Array) -> bool:
+    return bool(np.size(u) == 0 or np.max(np.abs(u)) < REACH)
+
+
+def log_hazard(u: Array) -> Array:
+    """Return ``k = ln(-ln Phi(u))``."""
+    if not _within_reach(u):
+        return _far(u)[0]
+    q = special.ndtr(-np.abs(u))
+    return np.log(-np.where(np.less(u, 0.0), np.log(q), np.log1p(-q)))
+
+
+def log_hazard_slope(u: Array) -> tuple[Array, Array]:
+    """Return ``k`` and ``dk/du``, which is negative."""
+    if not _within_reach(u):
+        k, slope, _ = _far(u)
+        return k, slope
+    k, slope, _ = _near(u)
+    return k, slope
+
+
+def log_hazard_curvature(u: Array) -> tuple[Array, Array, Array]:
+    """Return ``k``, ``dk/du`` and ``d2k/du2``."""
+    if not _within_reach(u):
+        k, slope, h = _far(u)
+    else:
+        k, slope, h = _near(u)
+    return k, slope, -slope * (u + h + slope)
+
+
+def _near(u: Array) -> tuple[Array, Array, Array]:
+    """Return k, dk/du and phi/Phi where Phi neither underflows nor its complement vanishes."""
+    q = special.ndtr(-np.abs(u))
+    low = np.less(u, 0.0)
+    log_cdf = np.where(low, np.log(q), np.log1p(-q))
+    h = np.exp(-0.5 * u * u) * INV_SQRT_2PI
+    h = h / np.where(low, q, 1.0 - q)
+    return np.log(-log_cdf), h / log_cdf, h
+
+
+def _far(u: Array) -> tuple[Array, Array, Array]:
+    """Return the same where probabilities underflow: -ln Phi(u) tends to Phi(-u) from above."""
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        upper = np.greater(u, 8.0)
+        log_cdf = log_ndtr(u)
+        log_sf = log_ndtr(-u)
+        k = np.where(upper, log_sf + 0.5 * np.exp(log_sf), np.log(-log_cdf))
+        h = np.exp(log_phi(u) - log_cdf)
+        slope = -np.where(upper, np.exp(log_phi(u) - k - log_cdf), h / -log_cdf)
+        # The quotients of infinities above have these limits.
+        slope = np.where(np.isfinite(slope), slope, np.where(upper, -np.abs(u), 0.0))
+        h = np.where(np.isfinite(h), h, np.abs(u))
+    return k, slope, h
+
+
+def from_log_hazard(k: Array) -> Array:
+    """Return the ``u`` whose log-hazard is ``k``; the inverse of :func:`log_hazard`."""
+    with np.errstate(over="ignore", divide="ignore"):
+        minus_log_cdf = np.exp(k)
+        log_sf = np.where(np.less(k, -40.0), k, log1mexp(-minus_log_cdf))
+    return u_from_log_tails(-minus_log_cdf, log_sf)

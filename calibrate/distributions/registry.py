@@ -1,0 +1,89 @@
+"""The families by name; a new one is one file and one line here."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from types import MappingProxyType
+from typing import Any
+
+from calibrate.distributions.distribution import Distribution
+from calibrate.distributions.families.constant import Constant
+from calibrate.distributions.families.gumbel import Gumbel
+from calibrate.distributions.families.lognormal import Lognormal
+from calibrate.distributions.families.normal import Normal
+from calibrate.distributions.families.weibull import Weibull
+from calibrate.distributions.family import Family
+from calibrate.errors import InputError, Problem, did_you_mean
+
+
+def registered(families: Iterable[Family]) -> Mapping[str, Family]:
+    """Return the families by name, in order; a name that comes twice is a mistake of ours."""
+    by_name: dict[str, Family] = {}
+    for member in families:
+        if member.name in by_name:
+            raise ValueError(f"the family '{member.name}' is registered twice")
+        by_name[member.name] = member
+    return MappingProxyType(by_name)
+
+
+FAMILIES: Mapping[str, Family] = registered(
+    (
+        Normal(),
+        Lognormal(),
+        Gumbel(),
+        Weibull(),
+        Constant(),
+    )
+)
+
+
+def family_names() -> tuple[str, ...]:
+    """Return the names of all families, in the order of the documentation."""
+    return tuple(FAMILIES)
+
+
+def family(name: str) -> Family:
+    """Return the family of this name.
+
+    Raises
+    ------
+    InputError
+        No family has that name; the message names the nearest and lists all.
+    """
+    try:
+        return FAMILIES[name]
+    except (KeyError, TypeError):
+        names = ", ".join(FAMILIES)
+        hint = did_you_mean(str(name), FAMILIES)
+        known = "" if hint.startswith("Known") else f" Known: {names}."
+        raise InputError(Problem(f"there is no family '{name}'.", suggestion=f"{hint}{known}")) from None
+
+
+def distribution(name: str, /, **arguments: Any) -> Distribution:
+    """Return a distribution from moments or from a family's own parameters.
+
+    Parameters
+    ----------
+    name : str
+        Name of the family, such as ``"lognormal"``.
+    **arguments : float or array
+        ``mean`` with ``cov`` or ``sd``, or own parameters; arrays have one element per situation, shape (n,).
+
+    Returns
+    -------
+    Distribution
+        Immutable; parameters broadcast over situations.
+
+    Raises
+    ------
+    InputError
+        The family or an argument is unknown, something is missing or contradictory, or a value is not allowed.
+
+    Examples
+    --------
+    >>> d = distribution("weibull", mean=55.0, cov=0.15)
+    >>> round(float(d.sd), 6)
+    8.25
+    """
+    member = family(name)
+    return Distribution.of(member, tuple(member.solve(arguments).values()))
