@@ -5,13 +5,14 @@ from __future__ import annotations
 import dataclasses
 import datetime
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 
 import numpy as np
 
 from calibrate.errors import Doubt, InputError, Problem
-from calibrate.factors import Calibration, Response, calibrate_factors
+from calibrate.factors import Calibration, Response, calibrate_factors, make_penalty
 from calibrate.provenance import Provenance, versions
+from calibrate.situations import BasicVariable
 from calibrate.study.assemble import basic_variables, rule_models
 from calibrate.study.doubts import study_doubts
 from calibrate.study.fits import fit_variables
@@ -92,8 +93,8 @@ def run(
     )
 
 
-def _calibrate(study: Study, variables: object, workers: int, report: Progress) -> Calibration:
-    models = rule_models(study, variables)  # type: ignore[arg-type]
+def _calibrate(study: Study, variables: Mapping[str, BasicVariable], workers: int, report: Progress) -> Calibration:
+    models = rule_models(study, variables)
     response = Response(models, study.factors, workers=workers)
     weight = np.concatenate([m.rule_weight * m.weight for m in models])
     try:
@@ -102,7 +103,8 @@ def _calibrate(study: Study, variables: object, workers: int, report: Progress) 
             study.factors,
             weight,
             study.target_beta,
-            study.objective,
+            make_penalty(study.objective.penalty, study.objective.scale),
+            study.objective.floor,
             progress=lambda text, fraction: report(text, 0.05 + 0.9 * fraction),
         )
     except InputError as error:
