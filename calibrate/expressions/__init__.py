@@ -1,5 +1,6 @@
 """Text becomes a checked expression with value, gradient, Hessian, dimensions and a typeset formula."""
 
+from calibrate.expressions.dimensions import dimension_of, dimension_of_comparison, infer_dimension
 from calibrate.expressions.errors import ExpressionError
 from calibrate.expressions.expression import (
     Comparison,
@@ -8,6 +9,8 @@ from calibrate.expressions.expression import (
     parse,
     parse_comparison,
 )
+from calibrate.expressions.mathml import name_mathml
+from calibrate.expressions.plain import name_plain
 from calibrate.expressions.program import Program
 from calibrate.expressions.syntax import FUNCTIONS, RESERVED_NAMES
 
@@ -19,6 +22,11 @@ __all__ = [
     "ExpressionError",
     "Program",
     "constant_expression",
+    "dimension_of",
+    "dimension_of_comparison",
+    "infer_dimension",
+    "name_mathml",
+    "name_plain",
     "parse",
     "parse_comparison",
 ]

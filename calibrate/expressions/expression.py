@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -13,7 +13,9 @@ import numpy.typing as npt
 from calibrate.expressions import derive
 from calibrate.expressions.graph import Graph, from_tree
 from calibrate.expressions.interpreter import interpret
+from calibrate.expressions.mathml import mathml
 from calibrate.expressions.parser import read
+from calibrate.expressions.plain import plain
 from calibrate.expressions.program import Program, Values
 from calibrate.expressions.syntax import Tree
 
@@ -105,6 +107,16 @@ class Expression:
         """Evaluate node by node on the syntax tree: slow, independent of graph and compiler."""
         return interpret(self.tree, values)
 
+    # ----------------------------------------------------------------- showing
+
+    def mathml(self, label: Callable[[str], str] | None = None, *, block: bool = False) -> str:
+        """Return the formula as a ``<math>`` element; ``label`` renames what is shown."""
+        return mathml(self.tree, label, block=block)
+
+    def plain(self) -> str:
+        """Return the formula on one line of Unicode text."""
+        return plain(self.tree)
+
     def _shape(self, values: Values) -> tuple[int, ...]:
         return np.broadcast_shapes(*(np.shape(values[n]) for n in self.names))
 
@@ -189,6 +201,8 @@ class Comparison:
         ``>=`` or ``<=``.
     margin : Expression
         left - right, or right - left.
+    tree : tuple
+        Of the whole text, so that messages can point into it.
     """
 
     text: str
@@ -196,6 +210,15 @@ class Comparison:
     right: Expression
     sense: str
     margin: Expression
+    tree: Tree = field(repr=False, compare=False)
+
+    def mathml(self, label: Callable[[str], str] | None = None, *, block: bool = False) -> str:
+        """Return the formula as a ``<math>`` element; ``label`` renames what is shown."""
+        return mathml(self.tree, label, block=block)
+
+    def plain(self) -> str:
+        """Return the formula on one line of Unicode text."""
+        return plain(self.tree)
 
 
 def parse_comparison(text: str) -> Comparison:
@@ -212,7 +235,7 @@ def parse_comparison(text: str) -> Comparison:
     left, right = (_restore(side) for side in sides)
     above, below = sides if root.op == ">=" else sides[::-1]
     margin = above if _is_zero(below) else f"{above} - ({below})"
-    return Comparison(text, left, right, root.op, _restore(margin))
+    return Comparison(text, left, right, root.op, _restore(margin), tree)
 
 
 def _is_zero(text: str) -> bool:
