@@ -20,14 +20,15 @@ def gradient(graph: Graph, root: int, wrt: Sequence[str]) -> list[int]:
     return _Sweeps(graph, tuple(wrt)).gradient(root)
 
 
-def hessian(graph: Graph, slopes: Sequence[int], wrt: Sequence[str]) -> list[list[int]]:
-    """Return the symmetric matrix of second derivatives, from the nodes of the first."""
-    m = len(wrt)
-    matrix = [[0] * m for _ in range(m)]
-    for i, slope in enumerate(slopes):
-        for j, node in enumerate(gradient(graph, slope, wrt[i:]), start=i):
-            matrix[i][j] = matrix[j][i] = node
-    return matrix
+def derivatives(graph: Graph, root: int, wrt: Sequence[str], order: int) -> list[int]:
+    """Return the root, then its gradient, then the upper triangle of its Hessian by rows."""
+    roots = [root]
+    if order >= 1:
+        roots += gradient(graph, root, wrt)
+    if order >= 2:
+        for i, slope in enumerate(roots[1:]):
+            roots += gradient(graph, slope, wrt[i:])
+    return roots
 
 
 class _Sweeps:

@@ -17,6 +17,7 @@ from calibrate.expressions.mathml import mathml
 from calibrate.expressions.parser import read
 from calibrate.expressions.plain import plain
 from calibrate.expressions.program import Program, Values
+from calibrate.expressions.staged import Staged
 from calibrate.expressions.syntax import Tree
 
 Array = npt.NDArray[np.float64]
@@ -103,6 +104,10 @@ class Expression:
             self._programs[key] = _compile(self, wrt, order)
         return self._programs[key]
 
+    def staged(self, wrt: tuple[str, ...], order: int = 1) -> Staged:
+        """Return the program in two stages, for repeated evaluation while only ``wrt`` moves."""
+        return Staged(self.tree, wrt, order, (_restore_staged, (self.text, wrt, order)))
+
     def interpret(self, values: Values) -> Array:
         """Evaluate node by node on the syntax tree: slow, independent of graph and compiler."""
         return interpret(self.tree, values)
@@ -145,13 +150,7 @@ def _full(value: Any, shape: tuple[int, ...]) -> Array:
 
 def _compile(expression: Expression, wrt: tuple[str, ...], order: int) -> Program:
     graph = Graph()
-    roots = [from_tree(graph, expression.tree)]
-    if order >= 1:
-        slopes = derive.gradient(graph, roots[0], wrt)
-        roots += slopes
-        if order == 2:
-            matrix = derive.hessian(graph, slopes, wrt)
-            roots += [matrix[i][j] for i in range(len(wrt)) for j in range(i, len(wrt))]
+    roots = derive.derivatives(graph, from_tree(graph, expression.tree), wrt, order)
     return Program(graph, roots, wrt, order, (_restore_program, (expression.text, wrt, order)))
 
 
@@ -161,6 +160,10 @@ def _restore(text: str) -> Expression:
 
 def _restore_program(text: str, wrt: tuple[str, ...], order: int) -> Program:
     return _restore(text).program(wrt, order)
+
+
+def _restore_staged(text: str, wrt: tuple[str, ...], order: int) -> Staged:
+    return _restore(text).staged(wrt, order)
 
 
 def _build(text: str, tree: Tree) -> Expression:

@@ -1,82 +1,22 @@
-"""A graph becomes one straight-line numpy function.
-
-The source is generated from node numbers only: inputs are ``a0, a1, ...``,
-shared parts ``v7``, operations come from a fixed table, constants from
-``repr(float)``.  No user text is in it.  Parts used once are written in place,
-so numpy frees their buffers at once; shared parts are computed once.
-"""
+"""Compiled expressions: value, gradient and Hessian for arrays by name."""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+import math
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
 
 from calibrate.errors import InputError, Problem, did_you_mean
+from calibrate.expressions.codegen import Function, compile_graph
 from calibrate.expressions.graph import Graph
 from calibrate.expressions.lower import lower
-from calibrate.expressions.operations import OPERATIONS
 
 Values = Mapping[str, Any]
 
-_TEMPLATES = {
-    "+": "({} + {})",
-    "-": "({} - {})",
-    "*": "({} * {})",
-    "/": "({} / {})",
-    "neg": "(-{})",
-    ">=": "({} >= {})",
-}
-_CALLS = {op: op for op in OPERATIONS if op.isidentifier()} | {"**": "power", "where": "select"}
-# Deeper than this, a part gets a name of its own: Python's compiler nests only so far.
-_INLINE_DEPTH = 20
-
-
-def compile_graph(
-    graph: Graph, roots: Sequence[int]
-) -> tuple[Callable[..., tuple[Any, ...]], tuple[str, ...]]:
-    """Return a function of the inputs that gives the roots, and the names of the inputs in order.
-
-    Roots that are constant come back as Python floats.
-    """
-    source, names = _source(*lower(graph, roots))
-    space: dict[str, Any] = {name: OPERATIONS[op] for op, name in _CALLS.items()}
-    space |= {"__builtins__": {}, "inf": np.inf, "nan": np.nan}
-    exec(compile(source, "<expression>", "exec"), space)  # noqa: S102 - generated text, see above
-    function: Callable[..., tuple[Any, ...]] = space["program"]
-    return function, names
-
-
-def _source(graph: Graph, roots: Sequence[int]) -> tuple[str, tuple[str, ...]]:
-    needed = graph.below(list(roots))
-    uses = dict.fromkeys(needed, 0)
-    for used in (roots, *(graph.children[i] for i in needed)):
-        for i in used:
-            uses[i] += 1
-    names = tuple(sorted(graph.names[i] for i in needed if graph.names[i]))
-    text: dict[int, str] = {}
-    depth: dict[int, int] = {}
-    lines = [f"def program({', '.join(f'a{k}' for k in range(len(names)))}):"]
-    for i in needed:
-        constant = graph.constants[i]
-        depth[i] = 0
-        if constant is not None:
-            text[i] = f"({constant!r})" if np.signbit(constant) else repr(constant)
-            continue
-        if graph.names[i]:
-            text[i] = f"a{names.index(graph.names[i])}"
-            continue
-        parts = [text[c] for c in graph.children[i]]
-        op = graph.ops[i]
-        written = _TEMPLATES[op].format(*parts) if op in _TEMPLATES else f"{_CALLS[op]}({', '.join(parts)})"
-        depth[i] = 1 + max(depth[c] for c in graph.children[i])
-        if uses[i] > 1 or depth[i] > _INLINE_DEPTH:
-            lines.append(f"    v{i} = {written}")
-            written, depth[i] = f"v{i}", 0
-        text[i] = written
-    lines.append(f"    return ({', '.join(text[r] for r in roots)},)")
-    return "\n".join(lines), names
+# Below this many elements, telling numpy where to write costs more than it saves.
+_LONG = 1024
 
 
 class Program:
@@ -94,14 +34,14 @@ class Program:
     Pickling stores the text and compiles again on loading.
     """
 
-    __slots__ = ("_function", "_inputs", "_recipe", "order", "wrt")
+    __slots__ = ("_recipe", "_routine", "order", "wrt")
 
     def __init__(
         self, graph: Graph, roots: Sequence[int], wrt: tuple[str, ...], order: int, recipe: tuple[Any, ...]
     ) -> None:
         self.wrt = wrt
         self.order = order
-        self._function, self._inputs = compile_graph(graph, roots)
+        self._routine = Routine(graph, roots)
         self._recipe = recipe
 
     def __reduce__(self) -> tuple[Any, ...]:
@@ -109,21 +49,53 @@ class Program:
 
     def __call__(self, values: Values) -> Any:
         """Evaluate; see the class for what comes back."""
+        out = self._routine([as_float(values, name) for name in self._routine.names])
+        return arranged(out, len(self.wrt), self.order)
+
+
+class Routine:
+    """The roots of a graph as a function of the inputs in order of ``names``."""
+
+    __slots__ = ("_functions", "_graph", "_roots", "names")
+
+    def __init__(self, graph: Graph, roots: Sequence[int], names: Sequence[str] | None = None) -> None:
+        self._graph, self._roots = lower(graph, roots)
+        below = self._graph.below(self._roots)
+        used = sorted(self._graph.names[i] for i in below if self._graph.names[i])
+        self.names = tuple(used if names is None else names)
+        self._functions: dict[frozenset[str], Function] = {}
+
+    def __call__(self, arguments: Sequence[Any]) -> tuple[Any, ...]:
+        """Evaluate for float64 arrays or numpy scalars, without warnings."""
+        full = _full_inputs(self.names, arguments)
+        function = self._functions.get(full)
+        if function is None:
+            function = self._functions[full] = compile_graph(self._graph, self._roots, self.names, full)
         with np.errstate(all="ignore"):
-            out = self._function(*[as_float(values, name) for name in self._inputs])
-        if self.order == 0:
-            return out[0]
-        m = len(self.wrt)
-        slopes = list(out[1 : m + 1])
-        if self.order == 1:
-            return out[0], slopes
-        matrix: list[list[Any]] = [[None] * m for _ in range(m)]
-        k = m + 1
-        for i in range(m):
-            for j in range(i, m):
-                matrix[i][j] = matrix[j][i] = out[k]
-                k += 1
-        return out[0], slopes, matrix
+            return function(*arguments)
+
+
+def arranged(out: Sequence[Any], m: int, order: int) -> Any:
+    """Sort the roots into value, gradient and symmetric Hessian."""
+    if order == 0:
+        return out[0]
+    slopes = list(out[1 : m + 1])
+    if order == 1:
+        return out[0], slopes
+    matrix: list[list[Any]] = [[None] * m for _ in range(m)]
+    rest = iter(out[m + 1 :])
+    for i in range(m):
+        for j in range(i, m):
+            matrix[i][j] = matrix[j][i] = next(rest)
+    return out[0], slopes, matrix
+
+
+def _full_inputs(names: Sequence[str], arguments: Sequence[Any]) -> frozenset[str]:
+    """Return the names of the arrays if all have one shape and are long, else none."""
+    shapes = {value.shape for value in arguments if value.ndim}
+    if len(shapes) != 1 or math.prod(*shapes) < _LONG:
+        return frozenset()
+    return frozenset(name for name, value in zip(names, arguments, strict=True) if value.ndim)
 
 
 def as_float(values: Values, name: str) -> Any:
