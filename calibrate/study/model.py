@@ -10,7 +10,7 @@ from calibrate.errors import Doubt
 from calibrate.expressions import Comparison, Expression
 from calibrate.factors import Factor
 from calibrate.records import Sample
-from calibrate.situations import Situations
+from calibrate.situations import Axis, Situations
 from calibrate.units import Dimension, Unit
 
 
@@ -54,6 +54,7 @@ class Variable:
     description: str = ""
     source: str = ""
     grade: str = ""
+    """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,3 +121,7 @@ class Study:
     axis_descriptions: Mapping[str, str] = field(default_factory=dict)
     lines: Mapping[str, int] = field(default_factory=dict)
     """Line in the study file of each dotted key, for messages found later."""
+    axes: tuple[Axis, ...] = ()
+    """Axes of the grid; none where a table or nothing gives the situations."""
+    table: str | None = None
+    """The table of situations as the study names it."""

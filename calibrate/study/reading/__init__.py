@@ -1,0 +1,5 @@
+"""From a study file to a validated study: structure, names, units, dimensions, grid, every problem at once."""
+
+from calibrate.study.reading.reader import read_study
+
+__all__ = ["read_study"]

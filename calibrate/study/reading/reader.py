@@ -1,0 +1,163 @@
+"""From a study file to a validated study, or to every problem of the file at once."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+from calibrate.errors import ProblemList, nearest
+from calibrate.factors import PENALTIES
+from calibrate.study.model import Objective, Study
+from calibrate.study.paths import project_folder
+from calibrate.study.reading import schema
+from calibrate.study.reading.context import Reading
+from calibrate.study.reading.correlations import check_correlations
+from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
+from calibrate.study.reading.document import check_format, read_document
+from calibrate.study.reading.evidence import read_records
+from calibrate.study.reading.factors import read_factors
+from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
+from calibrate.study.reading.rules import check_designs, finish_rules, parse_rules
+from calibrate.study.reading.situations import finish_situations, read_grid, read_weight
+from calibrate.study.reading.unused import note_unused
+from calibrate.study.reading.variables import Surroundings, read_variables
+
+_DERIVED = ("situations", "derived")
+
+
+def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
+    """Read and check a study file with everything that it names.
+
+    Parameters
+    ----------
+    path : str or Path
+        The study file (TOML).
+    allow_outside : bool
+        Whether the study may name files outside its project folder.
+
+    Returns
+    -------
+    Study
+        In SI units; records and tables are read, expressions parsed and their
+        dimensions checked, the grid and its weights built.  Nothing is fitted,
+        sized or computed beyond that.
+
+    Raises
+    ------
+    InputError
+        With all problems of the file, sorted by line.
+    """
+    document = read_document(path)
+    problems = ProblemList(document.shown)
+    reading = Reading(document, project_folder(document.path), allow_outside, problems)
+    check_format(document, problems)
+    data = document.data
+    top = schema.read_entry(reading, schema.TopLevel, data, ())
+    sections: Mapping[str, Any] = {k: data.get(k) for k in schema.keys_of(schema.TopLevel)}
+    names = NameSpace(reading, incomplete=top.content is None)
+
+    head = _required(reading, schema.StudySection, sections, "study")
+    target = _required(reading, schema.TargetSection, sections, "target")
+
+    # Every name is declared before any expression is checked, so that an
+    # expression which uses something of the wrong kind can be told so.
+    quantities_raw = schema.read_table(reading, sections["quantities"], ("quantities",))
+    declare_all(names, "quantity", quantities_raw, ("quantities",))
+    variables_raw = schema.read_table(reading, sections["variables"], ("variables",))
+    declare_all(names, "variable", variables_raw, ("variables",))
+    grid = read_grid(reading, names, sections["situations"])
+    declare_all(names, "derived", grid.content.derived, _DERIVED)
+    factors, factor_texts = read_factors(reading, names, sections["factors"])
+    drafts = parse_rules(reading, names, sections["rules"])
+
+    records = read_records(reading, sections["records"])
+    quantities = evaluate_quantities(
+        reading, read_definitions(reading, names, quantities_raw, ("quantities",), QUANTITIES)
+    )
+    derived = read_definitions(reading, names, grid.content.derived, _DERIVED, DERIVED)
+    weight = read_weight(reading, names, grid)
+    situations = finish_situations(reading, grid, quantities, derived, weight)
+    check_designs(reading, names, drafts)
+    around = Surroundings(
+        names, records, quantities, {} if situations is None else situations.derived, grid, drafts
+    )
+    variables = read_variables(reading, around, variables_raw)
+    rules = finish_rules(reading, names, drafts, variables)
+    check_correlations(reading, names, sections["correlations"])
+    objective = _objective(reading, sections["objective"], target)
+    if not problems:
+        note_unused(reading, names, factors, variables, records)
+    problems.stop_if_any()
+
+    assert head is not None
+    assert target is not None
+    assert objective is not None
+    assert situations is not None
+    return Study(
+        path=document.path,
+        shown=document.shown,
+        project=reading.project,
+        file=document.path.relative_to(reading.project).as_posix(),
+        sha256=document.sha256,
+        text=document.text,
+        title=head.title,
+        summary=head.summary.strip(),
+        reference_period=head.reference_period,
+        seed=head.seed,
+        target_beta=target.beta,
+        records={k: v for k, v in records.items() if v is not None},
+        quantities={k: quantities[k] for k in quantities_raw},
+        variables={k: v for k, v in variables.items() if v is not None},
+        situations=situations,
+        derived={k: derived[k].value.expression for k in grid.content.derived},
+        rules=rules,
+        factors=factors,
+        objective=objective,
+        weight_text="1" if weight is None else weight.text,
+        lines=document.lines.dotted(),
+        axes=grid.axes,
+        table=None if grid.table is None else grid.table.file,
+        size_dimensions={k: size.dimension for k, size in names.sizes.items() if size.dimension is not None},
+        factor_descriptions=factor_texts,
+        axis_descriptions=grid.descriptions,
+        doubts=tuple(reading.doubts),
+    )
+
+
+def _required(reading: Reading, model: type[schema.M], sections: Mapping[str, Any], name: str) -> schema.M | None:
+    if sections[name] is None:
+        needed = ", ".join(f"'{k}'" for k, f in model.model_fields.items() if f.is_required())
+        reading.raw_problem(f"the section [{name}] with {needed} is missing.", ())
+        return None
+    entry = schema.read_entry(reading, model, sections[name], (name,))
+    return entry.content if entry.sound else None
+
+
+def _objective(reading: Reading, raw: Any, target: schema.TargetSection | None) -> Objective | None:
+    entry = schema.read_entry(reading, schema.ObjectiveSection, {} if raw is None else raw, ("objective",))
+    content = entry.content
+    if content is None:
+        return None
+    if content.penalty not in PENALTIES:
+        known = ", ".join(f"'{p}'" for p in PENALTIES)
+        close = nearest(content.penalty, PENALTIES)
+        reading.problem(
+            f"must be one of {known}; got the text '{content.penalty}'.",
+            ("objective", "penalty"),
+            f"Did you mean '{close}'?" if close else None,
+        )
+    if content.d is not None and content.penalty in PENALTIES and content.penalty != "asymmetric":
+        reading.problem(
+            f"is the scale of the penalty 'asymmetric'; the penalty '{content.penalty}' has none.", ("objective", "d")
+        )
+    if target is not None and content.floor is not None and content.floor > target.beta:
+        reading.doubt(
+            "floor-above-target",
+            f"The floor {content.floor:g} is above the target {target.beta:g}, so no situation may be near the "
+            "target from below; is it meant as the target?",
+            "objective.floor",
+        )
+    if content.d is None:
+        return Objective(content.penalty, content.floor)
+    return Objective(content.penalty, content.floor, content.d)

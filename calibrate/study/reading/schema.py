@@ -1,0 +1,271 @@
+"""Which keys each section of a study file may hold, and of what kind their values are.
+
+Sections are checked one entry at a time, so that one wrong key does not hide
+the faults of the rest.  What an entry *means* is checked by the modules beside
+this one.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import Annotated, Any, Generic, Literal, TypeVar
+
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, ValidationError
+from pydantic_core import PydanticCustomError
+
+from calibrate.errors import did_you_mean, nearest
+from calibrate.study.reading.context import Reading
+from calibrate.study.reading.sentences import describe, sentence
+from calibrate.study.reading.toml_lines import Place
+
+
+def _value(raw: Any) -> Any:
+    if isinstance(raw, bool) or not isinstance(raw, (int, float, str)):
+        raise PydanticCustomError("calibrate_value", "a value")
+    if isinstance(raw, str):
+        if not raw.strip():
+            raise PydanticCustomError("calibrate_empty", "not empty")
+        return raw
+    if isinstance(raw, float) and not math.isfinite(raw):
+        raise PydanticCustomError("finite_number", "finite")
+    return raw
+
+
+def _text(raw: str) -> str:
+    if not raw.strip():
+        raise PydanticCustomError("calibrate_empty", "not empty")
+    return raw.strip()
+
+
+def _one_line(raw: str) -> str:
+    if any(ord(c) < ord(" ") for c in raw):
+        raise PydanticCustomError("calibrate_one_line", "one line")
+    return raw
+
+
+def _families(raw: Any) -> Any:
+    names = [raw] if isinstance(raw, str) else raw
+    if not isinstance(names, list) or not names or not all(isinstance(n, str) and n.strip() for n in names):
+        raise PydanticCustomError("calibrate_families", "families")
+    return [n.strip() for n in names]
+
+
+Number = float
+Positive = Annotated[float, Field(gt=0)]
+Text = Annotated[str, AfterValidator(_text)]
+Value = Annotated[float | str, BeforeValidator(_value)]
+"""A number, a number with a unit, or an expression."""
+
+
+class Section(BaseModel):
+    """Base of all: no other keys, no text for numbers, no truth values for numbers, finite numbers only."""
+
+    model_config = ConfigDict(extra="forbid", strict=True, frozen=True, allow_inf_nan=False)
+
+
+class StudySection(Section):
+    """``[study]``."""
+
+    title: Annotated[Text, AfterValidator(_one_line)]
+    summary: str = ""
+    reference_period: Positive
+    seed: Annotated[int, Field(ge=0)] = 0
+
+
+class TargetSection(Section):
+    """``[target]``."""
+
+    beta: Number
+
+
+class RecordsEntry(Section):
+    """``[records.NAME]``."""
+
+    file: Text
+    column: Text
+    unit: str = ""
+    sheet: Text | None = None
+    description: str = ""
+
+
+class VariableEntry(Section):
+    """``[variables.NAME]`` without its moments and parameters, whose names the families give."""
+
+    family: Annotated[list[str], BeforeValidator(_families)]
+    records: Text | None = None
+    method: Literal["likelihood", "moments"] | None = None
+    period: Positive | None = None
+    unit: str | None = None
+    description: str = ""
+    source: str = ""
+    grade: Literal["own data", "published data", "code value", "judgement"] | None = None
+    may_be_negative: bool = False
+
+
+class SituationsSection(Section):
+    """``[situations]``; its axes, units and derived quantities are read one by one."""
+
+    weight: Value = "1"
+    table: Text | None = None
+    sheet: Text | None = None
+    axes: dict[str, Any] | None = None
+    units: dict[str, Any] | None = None
+    derived: dict[str, Any] = {}
+
+
+class AxisTable(Section):
+    """An axis written as a table."""
+
+    from_: Annotated[Value | None, Field(alias="from")] = None
+    to: Value | None = None
+    count: Annotated[int, Field(ge=1)] | None = None
+    step: Value | None = None
+    values: list[Value] | None = None
+    unit: str | None = None
+    description: str = ""
+
+
+class RuleEntry(Section):
+    """``[rules.NAME]``."""
+
+    design_check: Text | None = None
+    sizes: Text | None = None
+    size_unit: str | None = None
+    limit_state: Text
+    weight: Annotated[float, Field(ge=0)] = 1.0
+    description: str = ""
+
+
+class FactorTable(Section):
+    """A free factor."""
+
+    present: Number
+    lower: Number
+    upper: Number
+    step: Positive | None = None
+    description: str = ""
+
+
+class ObjectiveSection(Section):
+    """``[objective]``."""
+
+    penalty: Text = "squared"
+    floor: Number | None = None
+    d: Positive | None = None
+
+
+class TopLevel(Section):
+    """The sections themselves; only their names are checked here."""
+
+    format: Any = None
+    study: Any = None
+    target: Any = None
+    records: Any = None
+    quantities: Any = None
+    variables: Any = None
+    situations: Any = None
+    rules: Any = None
+    correlations: Any = None
+    factors: Any = None
+    objective: Any = None
+
+
+M = TypeVar("M", bound=Section)
+
+
+@dataclass(frozen=True, slots=True)
+class Entry(Generic[M]):
+    """What could be read of an entry; ``dropped`` are its keys with faulty values."""
+
+    content: M | None
+    dropped: frozenset[str] = frozenset()
+
+    @property
+    def sound(self) -> bool:
+        """Whether nothing had to be left out."""
+        return self.content is not None and not self.dropped
+
+
+def keys_of(model: type[Section]) -> list[str]:
+    """Return the keys that a section may hold, as they are typed."""
+    return [field.alias or name for name, field in model.model_fields.items()]
+
+
+def read_entry(
+    reading: Reading, model: type[M], raw: Any, place: Place, *, more_keys: tuple[str, ...] = ()
+) -> Entry[M]:
+    """Check one section against its schema and report every fault in it.
+
+    Parameters
+    ----------
+    raw : object
+        As TOML gave it.
+    place : tuple
+        Where it stands; () for the whole file.
+    more_keys : tuple of str
+        Keys that are legal here but read elsewhere; they must not be in ``raw``.
+
+    Returns
+    -------
+    Entry
+        Keys with faulty values are left out and named in ``dropped``;
+        ``content`` is None if what remains is not enough.
+    """
+    if not isinstance(raw, dict):
+        reading.problem(f"must be a section with keys; got {describe(raw)}.", place)
+        return Entry(None)
+    try:
+        return Entry(model.model_validate(raw))
+    except ValidationError as error:
+        faults = error.errors(include_url=False)
+    known = [*keys_of(model), *more_keys]
+    unknown = [str(f["loc"][0]) for f in faults if f["type"] == "extra_forbidden"]
+    meant = {nearest(name, known) for name in unknown}
+    for fault in faults:
+        loc: Place = fault["loc"]
+        if fault["type"] == "extra_forbidden":
+            section = f"in [{reading.dotted(place)}]" if place else "at the top of the file"
+            reading.raw_problem(
+                f"unknown key '{loc[-1]}' {section}.", (*place, *loc), did_you_mean(str(loc[-1]), known)
+            )
+        elif fault["type"] == "missing":
+            if loc[0] not in meant:
+                reading.raw_problem(f"the key '{loc[0]}' is missing in [{reading.dotted(place)}].", place)
+        else:
+            reading.problem(*_told(fault, (*place, *loc)))
+    dropped = frozenset(str(f["loc"][0]) for f in faults if f["type"] != "missing")
+    try:
+        content = model.model_validate({k: v for k, v in raw.items() if k not in dropped})
+    except ValidationError:
+        return Entry(None, dropped)
+    return Entry(content, dropped)
+
+
+def _told(fault: Any, place: Place) -> tuple[str, Place, str | None]:
+    message, suggestion = sentence(fault["type"], fault["input"], fault.get("ctx", {}))
+    return message, place, suggestion
+
+
+def read_table(reading: Reading, raw: Any, place: Place) -> dict[str, Any]:
+    """Return a section whose keys are names of the user; {} with a problem if it is none."""
+    if raw is None:
+        return {}
+    if isinstance(raw, dict):
+        return raw
+    reading.problem(f"must be a section of named entries; got {describe(raw)}.", place)
+    return {}
+
+
+def read_plain(reading: Reading, kind: Literal["value", "text"], raw: Any, place: Place) -> Any:
+    """Return one value or text that stands for itself, or None with a problem."""
+    try:
+        if kind == "value":
+            return _value(raw)
+        if isinstance(raw, str):
+            return raw
+        raise PydanticCustomError("string_type", "a text")
+    except PydanticCustomError as error:
+        message, suggestion = sentence(error.type, raw, {})
+        reading.problem(message, place, suggestion)
+        return None
