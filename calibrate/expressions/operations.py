@@ -20,8 +20,8 @@ def _sech2(x: Number) -> Number:
     return 1.0 / (c * c)
 
 
-def _sgn(x: Number) -> Number:
-    return np.copysign(1.0, x)
+def _sgn(x: Number, out: Number = None) -> Number:
+    return np.copysign(1.0, x, out)
 
 
 def _positive(x: Number) -> Number:
