@@ -422,10 +422,11 @@ class _Parser:
 
     def add(self, node: Node) -> int:
         if len(self.nodes) >= syntax.MAX_NODES:
+            last = self.tokens[self.place - 1]
             raise self.error(
                 f"an expression has at most {syntax.MAX_NODES} numbers, names and operations",
-                node.start,
-                node.end,
+                last.start,
+                last.end,
                 "Split it with further quantities.",
             )
         self.nodes.append(node)

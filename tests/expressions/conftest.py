@@ -51,17 +51,17 @@ BINARY = [
 
 
 def _leaf():
-    names = st.sampled_from([(n, SYMBOLS[n]) for n in NAMES])
-    numbers = st.sampled_from(["0.5", "1", "2", "3.25"]).map(lambda t: (t, sympy.Rational(t)))
+    names = st.sampled_from(NAMES).map(lambda n: (n, lambda: SYMBOLS[n]))
+    numbers = st.sampled_from(["0.5", "1", "2", "3.25"]).map(lambda t: (t, lambda: sympy.Rational(t)))
     return st.one_of(names, names, numbers)
 
 
 def _grow(children):
     one = st.tuples(st.sampled_from(UNARY + KINKED), children).map(
-        lambda p: (p[0][0].format(p[1][0]), p[0][1](p[1][1]))
+        lambda p: (p[0][0].format(p[1][0]), lambda: p[0][1](p[1][1]()))
     )
     two = st.tuples(st.sampled_from(BINARY), children, children).map(
-        lambda p: (p[0][0].format(p[1][0], p[2][0]), p[0][1](p[1][1], p[2][1]))
+        lambda p: (p[0][0].format(p[1][0], p[2][0]), lambda: p[0][1](p[1][1](), p[2][1]()))
     )
     return st.one_of(one, two, two)
 
@@ -79,7 +79,7 @@ def _accepted(text):
 
 @pytest.fixture(scope="session")
 def trees():
-    """Strategy of (text, sympy twin)."""
+    """Strategy of (text, function that builds the sympy twin)."""
     return st.recursive(_leaf(), _grow, max_leaves=6).filter(lambda pair: _accepted(pair[0]))
 
 

@@ -9,6 +9,7 @@ from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 
 from calibrate.expressions import parse
+from calibrate.expressions.interpreter import interpret
 
 NAMES = ("x", "y", "z_1")
 POINTS = [
@@ -25,14 +26,22 @@ def exact(twin, point):
     return float(number)
 
 
-@settings(max_examples=120, suppress_health_check=[HealthCheck.too_slow, HealthCheck.filter_too_much])
+def on_an_edge(tree, point):
+    """Whether a root, logarithm, power or quotient sits at 0, where sympy cancels and IEEE does not."""
+    risky = {"sqrt": 0, "log": 0, "log10": 0, "**": 0, "/": 1}
+    at = [float(interpret(tree[: i + 1], point)) for i in range(len(tree))]
+    return any(n.op in risky and at[n.children[risky[n.op]]] == 0.0 for n in tree)
+
+
+@settings(max_examples=200, suppress_health_check=[HealthCheck.too_slow, HealthCheck.filter_too_much])
 @given(data=st.data())
 def test_sympy_agrees(data, trees):
-    text, twin = data.draw(trees)
-    twin = sympy.sympify(twin)
+    text, build = data.draw(trees)
     expression = parse(text)
     point = data.draw(st.sampled_from(POINTS))
     assume(math.isfinite(float(expression.interpret(point))))
+    assume(not on_an_edge(expression.tree, point))
+    twin = sympy.sympify(build())
     symbols = [sympy.Symbol(n, real=True) for n in NAMES]
     value, slopes, matrix = expression.hessian(point, NAMES)
     pairs = [(value, twin)]
