@@ -16,7 +16,7 @@ from calibrate.expressions.interpreter import interpret
 from calibrate.expressions.mathml import mathml
 from calibrate.expressions.parser import read
 from calibrate.expressions.plain import plain
-from calibrate.expressions.program import Program, Values
+from calibrate.expressions.program import Program, Values, as_float
 from calibrate.expressions.staged import Staged
 from calibrate.expressions.syntax import Tree
 
@@ -123,7 +123,7 @@ class Expression:
         return plain(self.tree)
 
     def _shape(self, values: Values) -> tuple[int, ...]:
-        return np.broadcast_shapes(*(np.shape(values[n]) for n in self.names))
+        return np.broadcast_shapes(*(as_float(values, n).shape for n in self.names))
 
     # ---------------------------------------------------------------- questions
 

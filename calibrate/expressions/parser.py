@@ -1,6 +1,6 @@
 """Text becomes a syntax tree, or a refusal that names the column.
 
-The parser is our own, a few dozen lines of precedence climbing: nothing that
+The parser is our own, plain precedence climbing over the words: nothing that
 a user writes ever reaches Python's compiler, the refusals can speak the
 user's language, and the time is linear in the text, whose length and depth
 are limited beforehand.  Binding and associativity are those of Python.
@@ -11,8 +11,7 @@ from __future__ import annotations
 import functools
 import keyword
 import math
-import re
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
@@ -21,56 +20,10 @@ from calibrate.expressions import syntax
 from calibrate.expressions.errors import ExpressionError, refuse
 from calibrate.expressions.operations import OPERATIONS
 from calibrate.expressions.syntax import FUNCTIONS, NOT_FINITE, Node, Tree
+from calibrate.expressions.tokens import Token, tokens
 
-_TOKEN = re.compile(
-    r"(?P<space>[ \t\r\n]+)"
-    r"|(?P<number>(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?)"
-    r"|(?P<name>[A-Za-z][A-Za-z0-9_]*)"
-    r"|(?P<sign>>=|<=|\*\*|[-+*/(),])"
-)
 _BINDING = {"+": 1, "-": 1, "*": 2, "/": 2}
 _SENSES = (">=", "<=")
-
-# What a character that is not part of the language was probably meant to be.
-_INSTEAD = {
-    "^": "Write a power with '**'.",
-    "=": "Write '>=' or '<='.",
-    "<": "Write '<='.",
-    ">": "Write '>='.",
-    "!": "Write '>=' or '<='.",
-    "≥": "Write '>='.",
-    "≤": "Write '<='.",
-    "×": "Write '*'.",
-    "·": "Write '*'.",
-    "⋅": "Write '*'.",
-    "÷": "Write '/'.",
-    "−": "Write '-'.",
-    "–": "Write '-'.",
-    "²": "Write '**2'.",
-    "³": "Write '**3'.",
-    "√": "Write 'sqrt(...)'.",
-    "π": "Write 'pi'.",
-    ".": "A decimal point belongs between digits; nothing is looked up with a point.",
-    "_": "Names begin with a letter.",
-    "[": "Use round brackets.",
-    "{": "Use round brackets.",
-    "%": "Units, '%' among them, belong to quantities, not into expressions.",
-    "°": "Units belong to quantities, not into expressions.",
-    ":": "Nothing is assigned inside an expression.",
-    "&": "Compare one pair with '>=' or '<='; combine with min(...) or max(...).",
-    "|": "Write 'abs(...)' for a size; combine comparisons with min(...) or max(...).",
-}
-
-
-@dataclass(frozen=True, slots=True)
-class _Token:
-    kind: str  # number, name, sign, end
-    text: str
-    start: int
-
-    @property
-    def end(self) -> int:
-        return self.start + len(self.text)
 
 
 def read(text: str, *, comparison: bool = False, derived: bool = False) -> Tree:
@@ -96,81 +49,13 @@ def read(text: str, *, comparison: bool = False, derived: bool = False) -> Tree:
             syntax.MAX_CHARACTERS,
             suggestion="Split it with further quantities.",
         )
-    return _Parser(text, _tokens(text), syntax.MAX_DEPTH + derived).run(comparison)
-
-
-def _tokens(text: str) -> list[_Token]:
-    found: list[_Token] = []
-    position = 0
-    while position < len(text):
-        match = _TOKEN.match(text, position)
-        if match is None:
-            raise _bad_character(text, position)
-        kind, piece = match.lastgroup or "", match.group()
-        position = match.end()
-        if kind == "number":
-            _check_number(text, match.start(), position)
-        elif kind == "name" and len(piece) > syntax.MAX_NAME:
-            raise refuse(
-                f"names have at most {syntax.MAX_NAME} characters, this one has {len(piece)}",
-                text,
-                match.start(),
-                position,
-            )
-        if kind != "space":
-            found.append(_Token(kind, piece, match.start()))
-    found.append(_Token("end", "", len(text)))
-    return found
-
-
-def _bad_character(text: str, position: int) -> ExpressionError:
-    character = text[position]
-    following = text[position + 1 : position + 2]
-    if character in "<>=!" or (character in "≥≤"):
-        end = position + (2 if following == "=" else 1)
-        return refuse(
-            f"'{text[position:end]}' is not accepted, comparisons are '>=' or '<='",
-            text,
-            position,
-            end,
-            _INSTEAD.get(character) if following != "=" else None,
-        )
-    if character in "'\"`":
-        return refuse("text in quotes cannot be used here", text, position)
-    if not character.isprintable():
-        return refuse(f"the character number {ord(character)} cannot be used here", text, position)
-    hint = _INSTEAD.get(character)
-    if hint is None and character.isalpha():
-        hint = "Names use the letters A to Z, digits and '_', for example 'gamma_M'."
-    return refuse(f"'{character}' cannot be used here", text, position, suggestion=hint)
-
-
-def _check_number(text: str, start: int, end: int) -> None:
-    digits = text[start:end]
-    tail = re.compile(r"[A-Za-z0-9_.]*").match(text, end)
-    rest = tail.group() if tail else ""
-    if rest:
-        if rest[0] == "_":
-            hint = "Write digits without '_'."
-        elif digits == "0" and rest[0] in "xXoObB":
-            hint = "Write numbers in decimal."
-        elif rest in {"j", "J"}:
-            hint = "Only real numbers are used; a product needs '*'."
-        elif rest[0] in "eE" and not rest[1:2].isalpha():
-            hint = "An exponent needs digits, as in '2.1e5'."
-        elif rest[0] == ".":
-            hint = "A number has one decimal point."
-        else:
-            hint = f"If a product was meant, write '{digits}*{rest}'."
-        raise refuse(f"'{digits}{rest}' is not a decimal number", text, start, end + len(rest), hint)
-    if not math.isfinite(float(digits)):
-        raise refuse(f"the number {digits} is too large", text, start, end)
+    return _Parser(text, tokens(text), syntax.MAX_DEPTH + derived).run(comparison)
 
 
 class _Parser:
     """Precedence climbing over the tokens; nodes are appended in post-order."""
 
-    def __init__(self, text: str, tokens: list[_Token], most: int) -> None:
+    def __init__(self, text: str, tokens: list[Token], most: int) -> None:
         self.text = text
         self.tokens = tokens
         self.place = 0
@@ -180,10 +65,10 @@ class _Parser:
         self.most = most
 
     @property
-    def token(self) -> _Token:
+    def token(self) -> Token:
         return self.tokens[self.place]
 
-    def take(self) -> _Token:
+    def take(self) -> Token:
         token = self.token
         self.place += 1
         return token
@@ -212,7 +97,7 @@ class _Parser:
             )
         return tuple(self.nodes)
 
-    def unexpected(self, token: _Token) -> ExpressionError:
+    def unexpected(self, token: Token) -> ExpressionError:
         previous = self.tokens[self.place - 1]
         if token.text == ")":
             return self.error("this bracket closes nothing", token.start)
@@ -227,7 +112,7 @@ class _Parser:
             hint = "A product needs '*'."
         return self.error(f"an operator is missing before '{token.text}'", token.start, token.end, hint)
 
-    def keyword(self, token: _Token) -> ExpressionError:
+    def keyword(self, token: Token) -> ExpressionError:
         hint = {
             "if": "Write 'where(condition, value, other value)'.",
             "else": "Write 'where(condition, value, other value)'.",
@@ -312,7 +197,7 @@ class _Parser:
             raise self.error("the expression ends where a value is expected", token.start)
         raise self.error(f"a value is expected here, not '{token.text}'", token.start, token.end)
 
-    def named(self, token: _Token) -> int:
+    def named(self, token: Token) -> int:
         name = token.text
         called = self.token.text == "("
         if name in keyword.kwlist:
@@ -336,7 +221,7 @@ class _Parser:
             return self.add(Node("pi", (), token.start, token.end, name, math.pi))
         return self.add(Node("name", (), token.start, token.end, name))
 
-    def call(self, token: _Token) -> int:
+    def call(self, token: Token) -> int:
         opening = self.take()
         self.deeper(opening)
         arguments: list[int] = []
@@ -373,7 +258,7 @@ class _Parser:
 
     # ---------------------------------------------------------------- helpers
 
-    def close(self, opening: _Token) -> _Token:
+    def close(self, opening: Token) -> Token:
         if self.token.text == ")":
             return self.take()
         if self.token.kind == "end":
@@ -382,7 +267,7 @@ class _Parser:
             raise self.error("a comma is used only between the arguments of a function", self.token.start)
         raise self.unexpected(self.token)
 
-    def deeper(self, token: _Token) -> None:
+    def deeper(self, token: Token) -> None:
         self.depth += 1
         if self.depth > self.most:
             raise self.error(

@@ -258,6 +258,8 @@ def test_common_parts_are_computed_once():
 def test_a_missing_value_is_named():
     with pytest.raises(InputError, match="'theta_R'"):
         parse("theta_R*x").value({"theta_r": 1.0, "x": 1.0})
+    with pytest.raises(InputError, match="'theta_R'"):
+        parse("theta_R**0").value({})
 
 
 @pytest.mark.parametrize(
