@@ -64,14 +64,17 @@ def resolve_inside(text: str, study_file: Path, project: Path, *, allow_outside:
         if not allow_outside and not path.is_relative_to(project):
             raise InputError(
                 Problem(
-                    f"'{text}' lies outside the project folder: it leads to '{path}', the project is '{project}'.",
+                    f"'{text}' lies outside the project folder: it leads to '{path}', the project is "
+                    f"'{project}'.",
                     suggestion="Move the file into the project, or allow it with --allow-outside.",
                 )
             )
         if path.is_dir():
             raise InputError(f"'{text}' is a folder; a file is needed.")
         if not path.exists():
-            raise InputError(Problem(f"'{text}' does not exist (looked for '{path}').", suggestion=_similar(path)))
+            raise InputError(
+                Problem(f"'{text}' does not exist (looked for '{path}').", suggestion=_similar(path))
+            )
         if not path.is_file():
             raise InputError(f"'{text}' is not an ordinary file.")
     except (OSError, RuntimeError, ValueError) as error:

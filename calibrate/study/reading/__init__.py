@@ -1,4 +1,4 @@
-"""From a study file to a validated study: structure, names, units, dimensions, grid, every problem at once."""
+"""From a study file to a validated study: structure, names, units, grid, every problem at once."""
 
 from calibrate.study.reading.reader import read_study
 

@@ -35,7 +35,9 @@ def check_correlations(reading: Reading, names: NameSpace, raw: Any) -> None:
             reading.raw_problem(f"correlations: '{key}' pairs a variable with itself.", place)
         before = seen.setdefault(frozenset(pair), key)
         if before != key:
-            reading.raw_problem(f"correlations: '{key}' is the same pair as '{before}'.", place, "Keep one of them.")
+            reading.raw_problem(
+                f"correlations: '{key}' is the same pair as '{before}'.", place, "Keep one of them."
+            )
         _check_coefficient(reading, key, value)
 
 

@@ -37,8 +37,7 @@ _PLAINLY = (
     (
         "Invalid value",
         "this is not a value.",
-        "Text, units and expressions stand in quotation marks; numbers use a decimal point, 0.5 rather than "
-        ".5 or 0,5.",
+        "Text, units and expressions stand in quotation marks; numbers are written like 0.5, not .5 or 0,5.",
     ),
     (
         "Invalid initial character for a key",
@@ -48,7 +47,7 @@ _PLAINLY = (
     (
         "Invalid statement",
         "a key or a section header is expected here.",
-        "Keys hold letters, digits, '_' and '-'.",
+        "Keys hold letters A to Z, digits, '_' and '-'.",
     ),
     ("Unclosed array", "an array is not closed.", "Look for a missing ']' or comma."),
     (
@@ -65,7 +64,7 @@ _PLAINLY = (
         "Look for a missing quotation mark; longer texts stand between triple quotation marks.",
     ),
     (
-        "Unescaped '\\\\'",
+        "Unescaped '\\'",
         "a backslash in this text has no meaning.",
         "Write paths with '/', or the text between single quotation marks.",
     ),
@@ -135,7 +134,9 @@ def _read(path: str | Path, shown: str) -> tuple[Path, bytes]:
             raise
         raise _refusal(f"the file cannot be read: {first_reason(error)}.", shown) from None
     if len(content) > MAX_BYTES:
-        raise _refusal(f"the file is larger than {MAX_BYTES // 1_000_000} MB; a study is a short text.", shown)
+        raise _refusal(
+            f"the file is larger than {MAX_BYTES // 1_000_000} MB; a study is a short text.", shown
+        )
     return resolved, content
 
 
@@ -172,7 +173,7 @@ def _not_toml(said: str, text: str, shown: str) -> NoReturn:
 
 
 def check_format(document: Document, problems: ProblemList) -> None:
-    """Report a missing or wrong ``format``; for that of another version nothing else can be said, so it stops."""
+    """Report a missing or wrong ``format``; that of another version ends the reading."""
     found = document.data.get("format")
     line = document.lines.line(("format",))
     if "format" not in document.data:

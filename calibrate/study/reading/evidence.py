@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from typing import Any
 
 from calibrate.errors import InputError
@@ -15,7 +16,9 @@ from calibrate.study.reading.values import read_unit
 
 def read_records(reading: Reading, raw: Any) -> dict[str, Sample | None]:
     """Read every sample; None stands for records that exist but are faulty (reported)."""
-    return {name: _sample(reading, name, entry) for name, entry in read_table(reading, raw, ("records",)).items()}
+    return {
+        name: _sample(reading, name, entry) for name, entry in read_table(reading, raw, ("records",)).items()
+    }
 
 
 def _sample(reading: Reading, name: str, raw: Any) -> Sample | None:
@@ -37,5 +40,10 @@ def _sample(reading: Reading, name: str, raw: Any) -> Sample | None:
     try:
         return read_column(path, entry.column, unit=unit, display=entry.file, sheet=entry.sheet)
     except InputError as error:
-        reading.collect(error, (*place, "column"))
+        first, *others = error.problems
+        # The slip may be in the file or in what the study asks of it: the first problem names both.
+        asked = f"(Asked for by records.{name} in line {reading.line(place)} of {reading.document.shown}.)"
+        hint = f"{first.suggestion} {asked}" if first.suggestion else asked
+        first = dataclasses.replace(first, suggestion=hint)
+        reading.collect(InputError([first, *others]), (*place, "file"))
         return None

@@ -5,6 +5,8 @@ from __future__ import annotations
 import math
 from typing import Any
 
+import numpy as np
+
 from calibrate.factors import Factor
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.names import NameSpace
@@ -15,12 +17,13 @@ from calibrate.units import DIMENSIONLESS
 
 # How far, in steps, a bound may lie off the lattice to count as on it (1.3 / 0.05 is 26.000000000000004).
 _ON_LATTICE = 1e-9
-_FORMS = "Write 'gamma = 1.35' to hold it, or 'gamma = { present = 1.25, lower = 1.0, upper = 2.0, step = 0.05 }'."
+_WITHOUT_BOUNDS = frozenset({"present", "value", "description"})
+_FORMS = (
+    "Write 'gamma = 1.35' to hold it, or 'gamma = { present = 1.25, lower = 1.0, upper = 2.0, step = 0.05 }'."
+)
 
 
-def read_factors(
-    reading: Reading, names: NameSpace, raw: Any
-) -> tuple[tuple[Factor, ...], dict[str, str]]:
+def read_factors(reading: Reading, names: NameSpace, raw: Any) -> tuple[tuple[Factor, ...], dict[str, str]]:
     """Read every factor and declare its name; returns the sound ones and descriptions by name."""
     section: Place = ("factors",)
     table = read_table(reading, raw, section)
@@ -42,7 +45,7 @@ def read_factors(
 
 def _factor(reading: Reading, name: str, raw: Any, place: Place) -> tuple[Factor | None, str]:
     if isinstance(raw, dict):
-        if raw and not raw.keys() & {"lower", "upper", "step"} and raw.keys() <= {"present", "value", "description"}:
+        if raw and raw.keys() <= _WITHOUT_BOUNDS:
             reading.problem("gives a value but no bounds.", place, _FORMS)
             return None, ""
         entry = read_entry(reading, FactorTable, raw, place)
@@ -50,7 +53,9 @@ def _factor(reading: Reading, name: str, raw: Any, place: Place) -> tuple[Factor
             return None, ""
         return _free(reading, name, entry.content, place), entry.content.description
     if isinstance(raw, bool) or not isinstance(raw, (int, float)):
-        hint = "Factors are dimensionless numbers without quotation marks." if isinstance(raw, str) else _FORMS
+        hint = (
+            "Factors are dimensionless numbers without quotation marks." if isinstance(raw, str) else _FORMS
+        )
         reading.problem(f"must be a number or a table; got {describe(raw)}.", place, hint)
         return None, ""
     try:
@@ -76,7 +81,7 @@ def _free(reading: Reading, name: str, table: FactorTable, place: Place) -> Fact
             f"Write '{name} = {lower:g}' to hold it.",
         )
         return None
-    if step is not None and math.ceil(lower / step - _ON_LATTICE) > math.floor(upper / step + _ON_LATTICE):
+    if step is not None and np.ceil(lower / step - _ON_LATTICE) > np.floor(upper / step + _ON_LATTICE):
         reading.problem(
             f"has no multiple of step = {step:g} between lower = {lower:g} and upper = {upper:g}.",
             place,

@@ -26,7 +26,7 @@ _DECIMAL = Context(prec=34)
 _ON_LATTICE = Decimal("1e-9")
 _FORMS = (
     "Write { from = 0.1, to = 0.8, count = 8 }, { from = 0.1, to = 0.8, step = 0.1 }, [0.1, 0.2], or "
-    "{ values = [1, 2], unit = \"mm\" }."
+    '{ values = [1, 2], unit = "mm" }.'
 )
 
 Number = tuple[float, Unit]
@@ -62,7 +62,7 @@ def _from_table(
         shown = ", ".join(f"'{k}'" for k in given) or "none of its keys"
         reading.problem(f"does not describe an axis: {shown} given.", place, _FORMS)
         return None
-    numbers = _in_one_unit(reading, [table.from_, table.to], unit, place, [(*place, "from"), (*place, "to")])
+    numbers = _in_one_unit(reading, [table.from_, table.to], unit, [(*place, "from"), (*place, "to")])
     if numbers is None:
         return None
     (first, last), shown_unit = numbers
@@ -87,14 +87,18 @@ def _axis(reading: Reading, name: str, values: Sequence[Decimal], unit: Unit) ->
     return Axis(name, array, unit)
 
 
-def _by_count(reading: Reading, first: Decimal, last: Decimal, count: int, place: Place) -> list[Decimal] | None:
+def _by_count(
+    reading: Reading, first: Decimal, last: Decimal, count: int, place: Place
+) -> list[Decimal] | None:
     if count > MAX_SITUATIONS:
         reading.problem(f"has {count} values; a study may have {MAX_SITUATIONS:,} situations.", place)
         return None
     if count == 1:
         if first != last:
             reading.problem(
-                f"has count = 1 but runs from {first} to {last}.", place, "Use at least 2, or make the two equal."
+                f"has count = 1 but runs from {first} to {last}.",
+                place,
+                "Use at least 2, or make the two equal.",
             )
             return None
         return [first]
@@ -112,7 +116,7 @@ def _by_step(
     reading: Reading, first: Decimal, last: Decimal, raw: float | str | None, unit: Unit, place: Place
 ) -> list[Decimal] | None:
     assert raw is not None
-    numbers = _in_one_unit(reading, [raw], unit, place, [(*place, "step")])
+    numbers = _in_one_unit(reading, [raw], unit, [(*place, "step")])
     if numbers is None:
         return None
     step = numbers[0][0]
@@ -140,9 +144,7 @@ def _by_step(
     return values
 
 
-def _listed(
-    reading: Reading, name: str, raw: Sequence[Any], unit: Unit | None, place: Place
-) -> Axis | None:
+def _listed(reading: Reading, name: str, raw: Sequence[Any], unit: Unit | None, place: Place) -> Axis | None:
     if not raw:
         reading.problem("has no values, so the grid is empty.", place)
         return None
@@ -152,7 +154,7 @@ def _listed(
     typed = [read_plain(reading, "value", v, (*place, i)) for i, v in enumerate(raw)]
     if any(v is None for v in typed):
         return None
-    numbers = _in_one_unit(reading, typed, unit, place, [(*place, i) for i in range(len(typed))])
+    numbers = _in_one_unit(reading, typed, unit, [(*place, i) for i in range(len(typed))])
     if numbers is None:
         return None
     values, shown_unit = numbers
@@ -160,33 +162,37 @@ def _listed(
 
 
 def _in_one_unit(
-    reading: Reading, raw: Sequence[Any], unit: Unit | None, place: Place, places: Sequence[Place]
+    reading: Reading, raw: Sequence[Any], unit: Unit | None, places: Sequence[Place]
 ) -> tuple[list[Decimal], Unit] | None:
     """Return numbers in the given unit, else in the first unit that was typed; None with problems."""
-    numbers = [_number(reading, r, p) for r, p in zip(raw, places, strict=True)]
-    found = [n for n in numbers if n is not None]
-    if len(found) < len(numbers):
-        return None
+    found: list[Number] = []
+    for text, where in zip(raw, places, strict=True):
+        number = _number(reading, text, where)
+        if number is None:
+            return None
+        found.append(number)
     shown = unit or next((u for _, u in found if u is not ONE), ONE)
     values: list[Decimal] = []
-    for (number, own), where in zip(found, places, strict=True):
+    for (size, own), where in zip(found, places, strict=True):
         if own is ONE:
             # A bare number counts in the unit of the axis, if the axis states one; 0 is 0 in every unit.
-            if unit is None and shown is not ONE and number != 0.0:
+            if unit is None and shown is not ONE and size != 0.0:
                 reading.problem(
-                    f"has no unit, but others of the axis have ('{shown.text}').", where, "Give all of them a unit."
+                    f"has no unit, but others of the axis have ('{shown.text}').",
+                    where,
+                    "Give all of them a unit.",
                 )
                 return None
-            values.append(Decimal(repr(number)))
+            values.append(Decimal(repr(size)))
         elif own.dimension != shown.dimension:
             reading.problem(
                 f"is {own.dimension.describe()}, the axis is {shown.dimension.describe()}.", where
             )
             return None
         elif own.factor == shown.factor:
-            values.append(Decimal(repr(number)))
+            values.append(Decimal(repr(size)))
         else:
-            values.append(Decimal(repr(number * own.factor / shown.factor)))
+            values.append(Decimal(repr(size * own.factor / shown.factor)))
     return values, shown
 
 
@@ -202,6 +208,6 @@ def _number(reading: Reading, raw: Any, place: Place) -> Number | None:
         reading.problem(
             f"must be a number or a number with a unit; got {describe(raw)}.",
             place,
-            "Axes take no expressions and no labels: write expressions in [situations.derived], labels in a table.",
+            "Expressions belong in [situations.derived], labels in a table.",
         )
     return split

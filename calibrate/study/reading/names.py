@@ -113,7 +113,8 @@ class NameSpace:
     """All names of a study.
 
     ``sizes`` are kept by rule, because they are local to it.  ``used`` collects
-    every name that some expression uses.  ``incomplete``
+    every name that some expression uses, ``refused`` names that were reported
+    and about which nothing more should be said.  ``incomplete``
     says that some names could not be read (a table that is missing, say), so
     that an unknown name proves nothing.
     """
@@ -122,11 +123,13 @@ class NameSpace:
     names: dict[str, Name] = field(default_factory=dict)
     sizes: dict[str, Name] = field(default_factory=dict)
     used: set[str] = field(default_factory=set)
+    refused: set[str] = field(default_factory=set)
     incomplete: bool = False
 
     def declare(self, name: str, kind: str, place: Place) -> bool:
         """Enter a name; report it if it is no name or taken, and return whether it was entered."""
         if not check_name(self.reading, name, kind, place):
+            self.refused.add(name)
             return False
         other = self.names.get(name)
         if other is not None:
@@ -138,6 +141,7 @@ class NameSpace:
     def declare_size(self, rule: str, name: str, place: Place) -> bool:
         """Enter the size of a rule; it may repeat in other rules but not be anything else."""
         if not check_name(self.reading, name, "size", place):
+            self.refused.add(name)
             return False
         size = Name(name, "size", place)
         if (other := self.names.get(name)) is not None:
@@ -147,13 +151,14 @@ class NameSpace:
         return True
 
     def _duplicate(self, first: Name, second: Name) -> None:
+        self.refused.add(first.name)
         line = self.reading.line
         (one, a), (two, b) = sorted(((line(n.place) or 0, n) for n in (first, second)), key=lambda p: p[0])
         self.reading.raw_problem(
             f"the name '{first.name}' stands for two things: {_KINDS[a.kind][0]} (line {one}) and "
             f"{_KINDS[b.kind][0]} (line {two}).",
             b.place,
-            "All quantities, variables, axes, columns, derived quantities, factors and sizes share one name space.",
+            "Quantities, variables, axes, columns, derived quantities, factors and sizes share their names.",
         )
 
     def kind(self, name: str) -> str | None:
@@ -197,7 +202,9 @@ class NameSpace:
         self.used.update(used)
         for name in sorted(used):
             found = size if size is not None and size.name == name else self.names.get(name)
-            if found is None or found.kind not in use.kinds:
+            if name in self.refused:
+                sound = False
+            elif found is None or found.kind not in use.kinds:
                 self._refuse(name, found, place, use, rule)
                 sound = False
             elif found.dimension is None:
@@ -214,11 +221,10 @@ class NameSpace:
             kind = "size"
         if kind is not None:
             one, all_of_them = _KINDS[kind]
-            owners = ""
-            if kind == "size":
-                owners = " (" + ", ".join(f"rules.{r}" for r, s in self.sizes.items() if s.name == name) + ")"
+            owners = [f"rules.{r}" for r, s in self.sizes.items() if s.name == name]
+            of = f" ({', '.join(owners)})" if kind == "size" else ""
             self.reading.raw_problem(
-                f"{self.reading.dotted(place)}: {use.who} may not use {all_of_them}; '{name}' is {one}{owners}.",
+                f"{self.reading.dotted(place)}: {use.who} may not use {all_of_them}; '{name}' is {one}{of}.",
                 place,
                 " ".join(filter(None, (use.advice.get(kind), found.note if found else ""))) or None,
             )
@@ -227,7 +233,9 @@ class NameSpace:
             if rule in self.sizes and "size" in use.kinds:
                 known.append(self.sizes[rule].name)
             self.reading.raw_problem(
-                f"{self.reading.dotted(place)}: the name '{name}' is not defined.", place, _suggest(name, known)
+                f"{self.reading.dotted(place)}: the name '{name}' is not defined.",
+                place,
+                _suggest(name, known),
             )
 
 
@@ -250,13 +258,17 @@ def check_name(reading: Reading, name: str, kind: str, place: Place) -> bool:
     elif keyword.iskeyword(name):
         message = "cannot be used as a name: it is a reserved word"
     elif name in RESERVED_NAMES:
-        message = "cannot be used as a name: it is " + ("a constant" if name == "pi" else "a function of expressions")
+        message = "cannot be used as a name: it is " + (
+            "a constant" if name == "pi" else "a function of expressions"
+        )
     elif kind in {"axis", "column", "label"} and (name in _OF_RESULTS or name.startswith(_OF_RESULTS_BEGIN)):
-        taken = name if name in _OF_RESULTS else next(b for b in _OF_RESULTS_BEGIN if name.startswith(b)) + "..."
+        taken = (
+            name if name in _OF_RESULTS else next(b for b in _OF_RESULTS_BEGIN if name.startswith(b)) + "..."
+        )
         message = f"cannot name an axis or a table column: '{taken}' is a column of the results"
     if message is None:
         return True
-    shown = name if len(name) <= 60 else name[:59] + "…"  # noqa: PLR2004 - as long as other quoted values
+    shown = name if len(name) <= 60 else name[:59] + "…"
     reading.raw_problem(f"'{shown}' {message}.", place, suggestion)
     return False
 

@@ -43,7 +43,9 @@ def dependence_order(uses: Mapping[str, Collection[str]]) -> tuple[list[str], li
             if not missing[user]:
                 heapq.heappush(ready, place[user])
     done = set(order)
-    return order, _cycles({n: sorted(used - done, key=place.__getitem__) for n, used in needs.items() if n not in done})
+    return order, _cycles(
+        {n: sorted(used - done, key=place.__getitem__) for n, used in needs.items() if n not in done}
+    )
 
 
 def _cycles(uses: Mapping[str, list[str]]) -> list[list[str]]:

@@ -125,7 +125,9 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     )
 
 
-def _required(reading: Reading, model: type[schema.M], sections: Mapping[str, Any], name: str) -> schema.M | None:
+def _required(
+    reading: Reading, model: type[schema.M], sections: Mapping[str, Any], name: str
+) -> schema.M | None:
     if sections[name] is None:
         needed = ", ".join(f"'{k}'" for k, f in model.model_fields.items() if f.is_required())
         reading.raw_problem(f"the section [{name}] with {needed} is missing.", ())
@@ -149,13 +151,14 @@ def _objective(reading: Reading, raw: Any, target: schema.TargetSection | None) 
         )
     if content.d is not None and content.penalty in PENALTIES and content.penalty != "asymmetric":
         reading.problem(
-            f"is the scale of the penalty 'asymmetric'; the penalty '{content.penalty}' has none.", ("objective", "d")
+            f"is the scale of the penalty 'asymmetric'; the penalty '{content.penalty}' has none.",
+            ("objective", "d"),
         )
     if target is not None and content.floor is not None and content.floor > target.beta:
         reading.doubt(
             "floor-above-target",
-            f"The floor {content.floor:g} is above the target {target.beta:g}, so no situation may be near the "
-            "target from below; is it meant as the target?",
+            f"The floor {content.floor:g} is above the target {target.beta:g}, so no situation may be "
+            "near the target from below.",
             "objective.floor",
         )
     if content.d is None:

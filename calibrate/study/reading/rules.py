@@ -50,15 +50,16 @@ def _draft(reading: Reading, names: NameSpace, name: str, raw: Any) -> Draft:
     check_name(reading, name, "rule", place)
     entry = read_entry(reading, RuleEntry, raw, place)
     draft = Draft(name, place, entry)
-    # A limit state that is missing must not hide what is wrong with the check.
+    # One key that is missing must not hide what is wrong with the others.
     content = entry.content
     texts = raw if isinstance(raw, dict) else {}
     draft.design_check = _comparison(reading, texts.get("design_check"), (*place, "design_check"))
     draft.limit_state = _comparison(reading, texts.get("limit_state"), (*place, "limit_state"))
+    size = texts.get("sizes")
+    if isinstance(size, str) and size.strip() and names.declare_size(name, size.strip(), (*place, "sizes")):
+        draft.size = size.strip()
     if content is None:
         return draft
-    if content.sizes is not None and names.declare_size(name, content.sizes, (*place, "sizes")):
-        draft.size = content.sizes
     draft.size_unit = read_unit(reading, content.size_unit, (*place, "size_unit"))
     if content.sizes is not None and content.design_check is None and "design_check" not in entry.dropped:
         reading.problem(
@@ -94,6 +95,7 @@ def check_designs(reading: Reading, names: NameSpace, drafts: Mapping[str, Draft
                 f"{implied.describe()}.",
                 (*draft.place, "size_unit"),
             )
+            continue
         names.sizes[draft.name].dimension = stated or implied
 
 
@@ -121,7 +123,7 @@ def _implied_dimension(reading: Reading, names: NameSpace, draft: Draft) -> Dime
     except InputError as error:
         reading.collect(error, place)
         return None
-    if implied is None and draft.size_unit is None and draft.entry.content and not draft.entry.content.size_unit:
+    if implied is None and (draft.entry.content is None or draft.entry.content.size_unit is None):
         reading.problem(
             f"does not imply the dimension of the size '{draft.size}'.",
             place,
@@ -206,7 +208,8 @@ def _check_limit_state(
     if any(m is None or any(draft.size in e.names for e in m.arguments.values()) for m in models):
         return
     reading.problem(
-        f"does not contain the size '{draft.size}' of the rule, so the factors could not change its reliability.",
+        f"does not contain the size '{draft.size}' of the rule, so that no factor could change its "
+        "reliability.",
         place,
         f"Use '{draft.size}' for what the design check determines, here or in a basic variable.",
     )

@@ -20,16 +20,20 @@ from calibrate.study.reading.sentences import describe, sentence
 from calibrate.study.reading.toml_lines import Place
 
 
-def _value(raw: Any) -> Any:
-    if isinstance(raw, bool) or not isinstance(raw, (int, float, str)):
-        raise PydanticCustomError("calibrate_value", "a value")
+def _value(raw: Any) -> float | str:
     if isinstance(raw, str):
         if not raw.strip():
             raise PydanticCustomError("calibrate_empty", "not empty")
         return raw
-    if isinstance(raw, float) and not math.isfinite(raw):
+    if isinstance(raw, bool) or not isinstance(raw, (int, float)):
+        raise PydanticCustomError("calibrate_value", "a value")
+    try:
+        number = float(raw)
+    except OverflowError:
+        number = math.inf
+    if not math.isfinite(number):
         raise PydanticCustomError("finite_number", "finite")
-    return raw
+    return number
 
 
 def _text(raw: str) -> str:
@@ -259,13 +263,14 @@ def read_table(reading: Reading, raw: Any, place: Place) -> dict[str, Any]:
 
 def read_plain(reading: Reading, kind: Literal["value", "text"], raw: Any, place: Place) -> Any:
     """Return one value or text that stands for itself, or None with a problem."""
-    try:
-        if kind == "value":
+    fault = "string_type"
+    if kind == "text" and isinstance(raw, str):
+        return raw
+    if kind == "value":
+        try:
             return _value(raw)
-        if isinstance(raw, str):
-            return raw
-        raise PydanticCustomError("string_type", "a text")
-    except PydanticCustomError as error:
-        message, suggestion = sentence(error.type, raw, {})
-        reading.problem(message, place, suggestion)
-        return None
+        except PydanticCustomError as error:
+            fault = error.type
+    message, suggestion = sentence(fault, raw, {})
+    reading.problem(message, place, suggestion)
+    return None

@@ -82,8 +82,8 @@ _REQUIREMENTS = {
     "list_type": "an array",
     "calibrate_empty": "filled in",
     "calibrate_one_line": "one line of text",
-    "calibrate_value": "a number, a text such as \"500 MPa\", or an expression in quotation marks",
-    "calibrate_families": "the name of a family, an array of such names, or \"best\"",
+    "calibrate_value": 'a number, a text such as "500 MPa", or an expression in quotation marks',
+    "calibrate_families": 'the name of a family, an array of such names, or "best"',
 }
 
 

@@ -73,7 +73,7 @@ def read_grid(reading: Reading, names: NameSpace, raw: Any) -> Grid:
         reading.raw_problem(
             "situations.units gives units of table columns, but there is no table.",
             ("situations", "units"),
-            "The unit of an axis stands in the axis: { values = [1, 2], unit = \"mm\" }.",
+            'The unit of an axis stands in the axis: { values = [1, 2], unit = "mm" }.',
         )
     return grid
 
@@ -109,9 +109,7 @@ def _read_axes(reading: Reading, names: NameSpace, raw: Mapping[str, Any], grid:
     grid.n = count
 
 
-def _read_table(
-    reading: Reading, names: NameSpace, content: schema.SituationsSection, grid: Grid
-) -> None:
+def _read_table(reading: Reading, names: NameSpace, content: schema.SituationsSection, grid: Grid) -> None:
     assert content.table is not None
     try:
         path = resolve_inside(
@@ -150,6 +148,7 @@ def _label_column(
     slips = table.not_numbers[name]
     if has_unit:
         reading.collect(InputError(slips), _TABLE)
+        names.refused.add(name)
         grid.n = None
     elif len(slips) < table.n:
         names.names[name].note = f"Not all of its cells are numbers: {slips[0]}"

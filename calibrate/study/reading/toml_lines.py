@@ -10,6 +10,7 @@ part of a faulty text above the fault.
 from __future__ import annotations
 
 import bisect
+import contextlib
 import re
 import tomllib
 from collections.abc import Mapping
@@ -49,7 +50,7 @@ class KeyLines:
 
 
 def key_lines(text: str) -> KeyLines:
-    """Scan a TOML text (line ends ``\\n``) for the lines of its keys.
+    """Scan a TOML text with Unix line ends for the lines of its keys.
 
     Parameters
     ----------
@@ -64,10 +65,8 @@ def key_lines(text: str) -> KeyLines:
         of the first key inside it.
     """
     scanner = _Scanner(text)
-    try:
+    with contextlib.suppress(_EndOfSense, RecursionError):
         scanner.document()
-    except (_EndOfSense, RecursionError):
-        pass
     return KeyLines(scanner.lines, scanner.repeated)
 
 
@@ -146,9 +145,7 @@ class _Scanner:
             self.array(path)
         elif self.text.startswith("{", self.position):
             self.inline_table(path)
-        elif not any(
-            self.matched(p) for p in (_LONG_BASIC, _LONG_LITERAL, _BASIC, _LITERAL, _SCALAR)
-        ):
+        elif not any(self.matched(p) for p in (_LONG_BASIC, _LONG_LITERAL, _BASIC, _LITERAL, _SCALAR)):
             raise _EndOfSense
 
     def array(self, path: Place) -> None:

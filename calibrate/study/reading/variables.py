@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -47,7 +47,9 @@ def argument_names() -> tuple[str, ...]:
     return tuple(dict.fromkeys((*_MOMENTS, *own)))
 
 
-def read_variables(reading: Reading, around: Surroundings, raw: Mapping[str, Any]) -> dict[str, Variable | None]:
+def read_variables(
+    reading: Reading, around: Surroundings, raw: Mapping[str, Any]
+) -> dict[str, Variable | None]:
     """Read every variable; None stands for one that exists but is faulty (reported)."""
     return {name: _Reader(reading, around, name).read(entry) for name, entry in raw.items()}
 
@@ -72,7 +74,7 @@ class _Reader:
             return None
         families = self._families(content)
         unit = read_unit(self.reading, content.unit, (*self.place, "unit"))
-        if content.unit is not None and unit is None or values is None or families is None:
+        if (content.unit is not None and unit is None) or values is None or families is None:
             return None
         if content.records is not None:
             return self._fitted(content, families, values, unit)
@@ -95,15 +97,16 @@ class _Reader:
         listed = list(dict.fromkeys(content.family))
         if content.records is None and (len(content.family) > 1 or BEST in listed):
             self.reading.problem(
-                f"= {'an array' if len(listed) > 1 else repr(BEST)} chooses among families by their fit to records, "
-                "but the variable has no records.",
+                "chooses among families by their fit to records, but the variable has no records.",
                 place,
                 "Name one family, or add 'records'.",
             )
             return None
         if BEST in listed:
             if len(listed) > 1:
-                self.reading.problem(f"names '{BEST}' beside others.", place, f"'{BEST}' already means all of them.")
+                self.reading.problem(
+                    f"names '{BEST}' beside others.", place, f"'{BEST}' already means all of them."
+                )
                 return None
             return []
         found: list[Family] = []
@@ -128,7 +131,9 @@ class _Reader:
             return None
         self._check_values(member, values)
         arguments = {key: value.expression for key, value in values.items()}
-        return self._variable(content, (member.name,), arguments, values, unit or _shown(values, dimension), dimension)
+        return self._variable(
+            content, (member.name,), arguments, values, unit or _shown(values, dimension), dimension
+        )
 
     def _complete(self, member: Family, values: Mapping[str, Value]) -> bool:
         """Check which arguments are given."""
@@ -140,7 +145,7 @@ class _Reader:
             if set(accepted) <= given <= set(accepted) | may:
                 return True
         shown = ", ".join(values) or "nothing"
-        takes = "; or ".join(" and ".join(s) if len(s) < 3 else f"{', '.join(s[:-1])} and {s[-1]}" for s in sets)
+        takes = "; or ".join(_listed(s) for s in sets)
         more = f" (and optionally {', '.join(sorted(optional))})" if optional else ""
         self.reading.problem(
             f"gives {shown}; the family '{member.name}' takes {takes}{more}.",
@@ -162,14 +167,18 @@ class _Reader:
             else:
                 for d in found:
                     if not d.agrees(DIMENSIONLESS):
-                        self.reading.problem(f"must be dimensionless; it is {d.describe()}.", (*self.place, key))
+                        self.reading.problem(
+                            f"must be dimensionless; it is {d.describe()}.", (*self.place, key)
+                        )
                         sound = False
         stated = None if unit is None else unit.dimension
         base = stated or next((d for _, d in carrying if not d.anything), DIMENSIONLESS)
         other = "its unit" if stated else f"'{next((k for k, d in carrying if not d.anything), '')}'"
         for key, d in carrying:
             if not d.agrees(base):
-                self.reading.problem(f"is {d.describe()}, but {other} is {base.describe()}.", (*self.place, key))
+                self.reading.problem(
+                    f"is {d.describe()}, but {other} is {base.describe()}.", (*self.place, key)
+                )
                 sound = False
         if sound and not self._defaults_fit(member, values, base):
             sound = False
@@ -233,30 +242,44 @@ class _Reader:
             varies = any(n not in self.around.quantities for n in value.expression.names)
             arrays[key] = array if varies else array[0]
         try:
-            member.solve(arrays)
+            with np.errstate(all="ignore"):
+                solved = member.solve(arrays)
         except InputError as error:
             self.reading.collect(error, self.place)
+            return
+        infinite_allowed = {q.name for q in member.parameters if q.kind == "bound"}
+        for parameter, array in solved.items():
+            if parameter not in infinite_allowed and not np.all(np.isfinite(array)):
+                self.reading.problem(
+                    f"gives a {parameter} of '{member.name}' that is not a finite number.", self.place
+                )
 
     # ------------------------------------------------------ fitted to records
 
     def _fitted(
-        self, content: schema.VariableEntry, families: list[Family], values: dict[str, Value], unit: Unit | None
+        self,
+        content: schema.VariableEntry,
+        families: list[Family],
+        values: dict[str, Value],
+        unit: Unit | None,
     ) -> Variable | None:
         assert content.records is not None
         # What moments leave open (thresholds, bounds, the shape of gev) a fit may keep as given.
         kept = {k for f in families or map(family, family_names()) for k in f.moments_keep}
         others = [k for k in values if k not in kept]
         if others:
-            self.reading.problem(
-                f"has records and {', '.join(others)}; records take the place of moments and parameters.",
+            self.reading.raw_problem(
+                f"variables.{self.name} has records and {', '.join(others)}; records take the place of moments and parameters.",
                 (*self.place, others[0]),
                 "Remove one of the two."
-                + (f" Only {', '.join(sorted(kept))} may be kept fixed beside these records." if kept else ""),
+                + (f" Only {_listed(sorted(kept))} may be kept fixed." if kept else ""),
             )
             return None
         if any(f.is_constant for f in families):
             self.reading.problem(
-                "'constant' cannot be fitted to records.", (*self.place, "family"), "Remove 'records' or the family."
+                "'constant' cannot be fitted to records.",
+                (*self.place, "family"),
+                "Remove 'records' or the family.",
             )
         if content.records not in self.around.records:
             self.reading.problem(
@@ -303,7 +326,9 @@ class _Reader:
         known = {q.name: q.value for q in self.around.quantities.values()}
         if not all(n in known for n in value.expression.names):
             self.reading.problem(
-                "differs between design situations, but records are fitted once.", place, "Use quantities only."
+                "differs between design situations, but records are fitted once.",
+                place,
+                "Use quantities only.",
             )
             return None
         return constant_expression(float(value.expression.value(known)))
@@ -340,8 +365,11 @@ class _Reader:
 def _shown(values: Mapping[str, Value], dimension: Dimension) -> Unit:
     """Return the unit that the user typed, else the coherent SI unit."""
     for key in _SHOWN_FIRST:
-        value = values.get(key)
-        if value is not None and value.unit is not None and value.unit is not ONE:
-            if value.unit.dimension == dimension:
-                return value.unit
+        unit = values[key].unit if key in values else None
+        if unit is not None and unit is not ONE and unit.dimension == dimension:
+            return unit
     return si_unit(dimension)
+
+
+def _listed(names: Sequence[str]) -> str:
+    return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
