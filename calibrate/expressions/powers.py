@@ -1,4 +1,4 @@
-"""Writes an expression as a sum of powers of one name, where it is one: c1·z^e1 + c2·z^e2 + …
+"""Writes an expression as a sum of powers of one name, where it is one: c1·z^e1 + … + ck·z^ek.
 
 Design checks nearly always are such sums in the size. Knowing it turns a search for the smallest size into a closed
 form or into a root that Descartes' rule of signs proves to be the only one.

@@ -1,0 +1,37 @@
+"""Factors: from the reliability of every design situation to optimal and proposed factors.
+
+Owns penalties, the optimiser, the search on the lattice of steps and the diagnosis of what situations cannot tell
+apart. Knows nothing of study files or reports.
+"""
+
+from calibrate.factors.calibration import Calibration, calibrate_factors
+from calibrate.factors.identify import Diagnostics
+from calibrate.factors.lattice import Candidate, LatticeSearch, levels, search_lattice
+from calibrate.factors.model import Factor, RuleModel
+from calibrate.factors.objective import FactorSet, Goal, factor_set
+from calibrate.factors.optimise import Optimum, optimise
+from calibrate.factors.penalties import PENALTIES, Penalty, make_penalty
+from calibrate.factors.response import Evaluation, Response, RuleEvaluation
+
+__all__ = [
+    "PENALTIES",
+    "Calibration",
+    "Candidate",
+    "Diagnostics",
+    "Evaluation",
+    "Factor",
+    "FactorSet",
+    "Goal",
+    "LatticeSearch",
+    "Optimum",
+    "Penalty",
+    "Response",
+    "RuleEvaluation",
+    "RuleModel",
+    "calibrate_factors",
+    "factor_set",
+    "levels",
+    "make_penalty",
+    "optimise",
+    "search_lattice",
+]

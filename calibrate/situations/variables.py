@@ -1,0 +1,120 @@
+"""Basic variables whose models may depend on the design situation and on the size."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from calibrate.distributions import Distribution, Extreme, distribution, family, maximum_of
+from calibrate.errors import InputError, Problem
+from calibrate.expressions import Expression
+
+Array = npt.NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class BasicVariable:
+    """The model of a basic variable, in SI units.
+
+    Parameters
+    ----------
+    name : str
+        Its name in limit states.
+    family : str
+        Name of the family.
+    arguments : mapping of str to Expression
+        Moments or own parameters; empty when ``fitted`` is given.
+    ratio : float
+        Reference period over the period of the model; the variable is the maximum of that many repetitions.
+    fitted : Distribution, optional
+        A distribution that was fitted to records, the same in all situations.
+    """
+
+    name: str
+    family: str
+    arguments: Mapping[str, Expression]
+    ratio: float = 1.0
+    fitted: Distribution | None = None
+
+    def depends_on(self, name: str) -> bool:
+        """Whether an argument contains the name."""
+        return any(e.depends_on(name) for e in self.arguments.values())
+
+    def distribution(self, values: Mapping[str, Any]) -> Distribution:
+        """Return the distribution over the reference period.
+
+        Parameters
+        ----------
+        values : mapping
+            Number or array, shape (n,), for every name that the arguments use.
+
+        Returns
+        -------
+        Distribution
+            Its parameters have shape (n,) where they vary with the situation, else ().
+
+        Raises
+        ------
+        InputError
+            In some situation the arguments make no distribution of the family; variable, argument, value and
+            situation are named.
+        """
+        return self._converted(self._given(values))
+
+    def _given(self, values: Mapping[str, Any]) -> Distribution:
+        if self.fitted is not None:
+            return self.fitted
+        given = self._arguments(values)
+        try:
+            return distribution(self.family, **given)
+        except InputError as error:
+            problems = [Problem(f"Variable '{self.name}': {p}") for p in error.problems]
+            raise InputError(problems) from error
+
+    def _arguments(self, values: Mapping[str, Any]) -> dict[str, Array]:
+        return {name: expression.value(values) for name, expression in self.arguments.items()}
+
+    def _converted(self, given: Distribution) -> Distribution:
+        return given if self.ratio == 1.0 else maximum_of(given, self.ratio)
+
+    def slope(self, model: Distribution, u: Array, values: Mapping[str, Any], name: str) -> Array | None:
+        """Return dx/d(name) at fixed u, or None where the model does not depend on the name.
+
+        Parameters
+        ----------
+        model : Distribution
+            As :meth:`distribution` returned it for ``values``.
+        u : array, shape (n,)
+            Standard normal values.
+        values : mapping
+            Number or array for every name that the arguments use.
+        name : str
+            What the derivative is by, usually the size.
+
+        Returns
+        -------
+        array, shape (n,), or None
+            By the chain rule through moments, parameters and the quantile.
+        """
+        if not self.depends_on(name):
+            return None
+        by_argument = family(self.family).argument_slopes(self._arguments(values))
+        by_parameter = model.parameter_slopes(u)
+        total = np.zeros(np.shape(u))
+        for argument, expression in self.arguments.items():
+            if not expression.depends_on(name):
+                continue
+            _, (by_name,) = expression.gradient(values, (name,))
+            for parameter, slopes in by_argument.items():
+                if argument in slopes:
+                    total = total + by_parameter[parameter] * slopes[argument] * by_name
+        return total
+
+
+def is_converted(model: Distribution) -> bool:
+    """Whether the parameters of a model are those of another period than the model itself."""
+    return isinstance(model, Extreme) and model.equivalent is None
