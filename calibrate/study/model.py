@@ -51,6 +51,8 @@ class Variable:
     line: int | None = None
     method: str = "likelihood"
     may_be_negative: bool = False
+    estimate: tuple[str, ...] = ()
+    """Parameters that a fit estimates although its family would keep them fixed (``threshold``)."""
     description: str = ""
     source: str = ""
     grade: str = ""

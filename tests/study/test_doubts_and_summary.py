@@ -6,12 +6,13 @@ import pytest
 
 from calibrate.study import check_summary
 
+FILE = "../../datasets/connectors/bar-strength.csv"
 UNUSED = (
     ('P = "100 kN"', 'P = "100 kN"\nspare = 3'),
-    ("[variables.theta_R]", '[variables.idle]\nfamily = "normal"\nmean = 1\ncov = 0.1\n\n[variables.theta_R]'),
+    ("[variables.Q]", '[variables.idle]\nfamily = "normal"\nmean = 1\ncov = 0.1\n\n[variables.Q]'),
     ('Q_k = "chi * P"', 'Q_k = "chi * P"\nW_k = "2 * P"'),
     ("gamma_G = 1.35 ", "gamma_0 = 1.1\ngamma_G = 1.35 "),
-    ("[quantities] ", '[records.more]\nfile = "../../datasets/connectors/bar-strength.csv"\ncolumn = "f_u"\n[quantities] '),
+    ("[quantities] ", f'[records.more]\nfile = "{FILE}"\ncolumn = "f_u"\n[quantities] '),
 )  # fmt: skip
 
 
@@ -121,7 +122,7 @@ def test_summary_of_a_table(project):
     project.write_beside("situations.csv", "name,chi,share\na,0.1,1\nb,0.4,2\nb,0.3,0\n")
     study = project.read(
         ("[situations.axes]                # full factorial grid\n", ""),
-        ("chi = { from = 0.1, to = 0.8, count = 8 }    # or { from, to, step }, a list, or { values = [..], unit = \"..\" }\n", ""),
+        ("chi = { from = 0.1, to = 0.8, count = 8 }", ""),
         ('weight = "1" ', 'table = "situations.csv"\nweight = "share" '),
         ('family = "lognormal"             # a family', 'family = "best"             # a family'),
     )  # fmt: skip

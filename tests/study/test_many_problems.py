@@ -180,7 +180,8 @@ def test_nothing_but_a_format(project):
 
 @pytest.mark.parametrize(
     "junk",
-    ["true", "0", "-1", "nan", "-inf", "1e308", '""', '"x"', '"1 kN"', '"1e400"', "[]", "{}", "[[1], 'a']", "{ a = 1 }",
+    ["true", "0", "-1", "nan", "-inf", "1e308", '""', '"x"', '"1 kN"', '"1e400"', "[]", "{}",
+     "[[1], 'a']", "{ a = 1 }",
      "1979-05-27", "07:32:00", "1" + "0" * 400, '"a\\u0000b"', '"' + "(" * 300 + '"', '"chi >= 1"'],
 )  # fmt: skip
 def test_any_value_replaced_by_junk(project, example, junk):

@@ -108,7 +108,8 @@ def test_what_is_no_file(tree, text, message):
 
 @pytest.mark.parametrize(
     ("file", "name"),
-    [("studies/wind/study.toml", "wind"), ("studies/wind/annual.toml", "annual"), ("wind.v2.toml", "wind.v2"), ("/study.toml", "study")],
+    [("studies/wind/study.toml", "wind"), ("studies/wind/annual.toml", "annual"),
+     ("wind.v2.toml", "wind.v2"), ("/study.toml", "study")],
 )  # fmt: skip
 def test_name_of_the_results(file, name):
     assert output_name(Path(file)) == name

@@ -91,17 +91,17 @@ def test_bare_number_as_weight(hangers):
 @pytest.mark.parametrize(
     ("change", "line", "pieces"),
     [
-        (('weight = "share"', 'weight = "member"'), 20, ["weights may not use table columns of text; 'member'", "labels"]),
+        (('weight = "share"', 'weight = "member"'), 20, ["may not use table columns of text; 'member'", "labels"]),
         (('weight = "share"', 'weight = "share * Q_k"'), 20, ["must be dimensionless", "a force"]),
         (('length = "mm"', 'lenght = "mm"'), 23, ["situations.units names 'lenght'", "'length'?"]),
         (('length = "mm"', "length = 5"), 23, ["situations.units.length must be a text; got 5"]),
         (('length = "mm"', 'length = "nm_"'), 23, ["situations.units.length"]),
         (('"Q_k * length / length"', '"Q_k + length"'), 25, ["situations.derived.E", "a force", "a length"]),
         (('"0.6 * Q_k"', '"0.6 * q_k"'), 16, ["variables.Q.mean: the name 'q_k' is not defined", "'Q_k'?"]),
-        (('table = "situations.csv"', 'table = "situation.csv"'), 19, ["situations.table", "'situations.csv'?"]),
+        (('table = "situations.csv"', 'table = "situation.csv"'), 19, ["table", "'situations.csv'?"]),
         (('table = "situations.csv"', 'table = "."'), 19, ["is a folder"]),
         (('E = "Q_k * length / length"', 'E = "Q_k"\nshare = 1'), 26, [
-            "the name 'share' stands for two things: a table column (line 19) and a derived quantity (line 26)"]),
+            "'share' stands for two things: a table column (line 19) and a derived quantity (line 26)"]),
     ],
 )  # fmt: skip
 def test_slips_around_a_table(hangers, change, line, pieces):
@@ -163,11 +163,11 @@ def test_weights_of_a_column_that_is_negative(hangers):
 
 # ---------------------------------------------------------------------------- axes
 
-AXIS = 'chi = { from = 0.1, to = 0.8, count = 8 }    # or { from, to, step }, a list, or { values = [..], unit = ".." }'
+AXIS = "chi = { from = 0.1, to = 0.8, count = 8 }"
 
 
 def axis_of(project, text):
-    study = project.read((AXIS, AXIS + "\npsi = " + text))
+    study = project.read((AXIS, f"{AXIS}\npsi = {text} #"))
     (axis,) = (a for a in study.axes if a.name == "psi")
     return axis, study
 

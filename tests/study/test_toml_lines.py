@@ -45,7 +45,8 @@ def test_dotted_and_quoted_keys():
 
 
 def test_inline_tables_and_arrays_over_lines():
-    text = 'x = { from = 1, "to" = 2, in.ner = { k = [1, { z = 1 }] } }\ny = [\n  1, # one\n  { a = "]}" },\n\n]\nz = 1\n'
+    text = 'x = { from = 1, "to" = 2, in.ner = { k = [1, { z = 1 }] } }\n'
+    text += 'y = [\n  1, # one\n  { a = "]}" },\n\n]\nz = 1\n'
     at = lines_of(text)
     assert at[("x", "in", "ner", "k", 1, "z")] == 1
     assert (at[("y",)], at[("y", 0)], at[("y", 1)], at[("y", 1, "a")]) == (2, 3, 4, 4)
@@ -60,7 +61,8 @@ def test_long_texts_do_not_count_as_keys():
 
 def test_values_of_every_kind():
     text = (
-        'a = 1979-05-27 07:32:00 # date\nb = "x # y"\nc = \'x " y\'\nd = -1_000.5e-3\ne = [[1, 2], []]\nf = ""\n'
+        'a = 1979-05-27 07:32:00 # date\nb = "x # y"\nc = \'x " y\'\nd = -1_000.5e-3\n'
+        'e = [[1, 2], []]\nf = ""\n'
         "g = ''\nh = inf\ni = true\nj = {}\nk = 07:32:00\n"
     )
     assert [line for path, line in lines_of(text).items() if len(path) == 1] == list(range(1, 12))

@@ -20,8 +20,9 @@ from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
 from calibrate.study.reading.rules import check_designs, finish_rules, parse_rules
 from calibrate.study.reading.situations import finish_situations, read_grid, read_weight
+from calibrate.study.reading.subject import Surroundings
 from calibrate.study.reading.unused import note_unused
-from calibrate.study.reading.variables import Surroundings, read_variables
+from calibrate.study.reading.variables import read_variables
 
 _DERIVED = ("situations", "derived")
 
@@ -80,9 +81,9 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     situations = finish_situations(reading, grid, quantities, derived, weight)
     check_designs(reading, names, drafts)
     around = Surroundings(
-        names, records, quantities, {} if situations is None else situations.derived, grid, drafts
+        reading, names, records, quantities, {} if situations is None else situations.derived, grid, drafts
     )
-    variables = read_variables(reading, around, variables_raw)
+    variables = read_variables(around, variables_raw)
     rules = finish_rules(reading, names, drafts, variables)
     check_correlations(reading, names, sections["correlations"])
     objective = _objective(reading, sections["objective"], target)

@@ -48,11 +48,18 @@ def _one_line(raw: str) -> str:
     return raw
 
 
-def _families(raw: Any) -> Any:
+def _names(raw: Any) -> list[str]:
     names = [raw] if isinstance(raw, str) else raw
     if not isinstance(names, list) or not names or not all(isinstance(n, str) and n.strip() for n in names):
-        raise PydanticCustomError("calibrate_families", "families")
+        raise PydanticCustomError("calibrate_names", "names")
     return [n.strip() for n in names]
+
+
+def _families(raw: Any) -> list[str]:
+    try:
+        return _names(raw)
+    except PydanticCustomError:
+        raise PydanticCustomError("calibrate_families", "families") from None
 
 
 Number = float
@@ -99,6 +106,7 @@ class VariableEntry(Section):
     family: Annotated[list[str], BeforeValidator(_families)]
     records: Text | None = None
     method: Literal["likelihood", "moments"] | None = None
+    estimate: Annotated[list[str], BeforeValidator(_names)] = []
     period: Positive | None = None
     unit: str | None = None
     description: str = ""

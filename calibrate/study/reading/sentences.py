@@ -83,6 +83,7 @@ _REQUIREMENTS = {
     "calibrate_empty": "filled in",
     "calibrate_one_line": "one line of text",
     "calibrate_value": 'a number, a text such as "500 MPa", or an expression in quotation marks',
+    "calibrate_names": "a name or an array of names",
     "calibrate_families": 'the name of a family, an array of such names, or "best"',
 }
 
