@@ -51,4 +51,5 @@ def test_one_slip_one_problem(project, example, change, slip):
     for piece in slip.pieces:
         assert piece in told
     assert "Input should" not in told
+    assert all(c.isprintable() or c == "\n" for c in told)
     assert problem.message.count("\n") <= 2

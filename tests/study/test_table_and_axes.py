@@ -183,6 +183,7 @@ def axis_of(project, text):
         ("{ from = 1, to = 1, step = 0.5 }", [1.0], ""),
         ("{ from = -2, to = 2, step = 2 }", [-2.0, 0.0, 2.0], ""),
         ("[3, 1, 2]", [3.0, 1.0, 2.0], ""),
+        ('["1/3", "2/3"]', [1 / 3, 2 / 3], ""),
         ("{ values = [60, 120], unit = \"mm\" }", [0.06, 0.12], "mm"),
         ("{ from = 100, to = 300, count = 3, unit = \"kN\" }", [1e5, 2e5, 3e5], "kN"),
         ('{ from = "100 kN", to = "0.3 MN", step = "50000 N" }', [1e5, 1.5e5, 2e5, 2.5e5, 3e5], "kN"),
@@ -232,6 +233,6 @@ def test_description_of_an_axis(project):
 
 
 def test_axis_over_several_lines_points_to_the_value(project):
-    (problem,) = project.problems((AXIS, 'chi = [\n  0.1,\n  0.2,\n  "0.3",\n]'))
+    (problem,) = project.problems((AXIS, 'chi = [\n  0.1,\n  0.2,\n  "high",\n]'))
     assert problem.line == 47
     assert "chi[3]" in problem.message

@@ -38,7 +38,8 @@ class Reading:
 
     def raw_problem(self, message: str, place: Place, suggestion: str | None = None) -> None:
         """Record a problem whose message speaks for itself."""
-        self.problems.add(message, self.line(place), suggestion)
+        hint = None if suggestion is None else printable(suggestion)
+        self.problems.add(printable(message), self.line(place), hint)
 
     def collect(self, error: InputError, place: Place) -> None:
         """Record the problems of a lower layer; those without a line of their own belong to ``place``."""
@@ -52,3 +53,8 @@ class Reading:
     def doubt(self, code: str, message: str, where: str) -> None:
         """Record a reservation that does not stop anything."""
         self.doubts.append(Doubt(code, message, where))
+
+
+def printable(text: str) -> str:
+    """Return a text for a terminal: what a file holds must not move the cursor or change colours."""
+    return "".join(c if c.isprintable() or c == "\n" else ascii(c)[1:-1] for c in text)

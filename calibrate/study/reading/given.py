@@ -131,7 +131,9 @@ def _check_values(subject: Subject, member: Family, values: Mapping[str, Value])
         with np.errstate(all="ignore"):
             solved = member.solve(arrays)
     except InputError as error:
-        subject.collect(error)
+        for problem in error.problems:
+            named = [key for key in values if problem.message.startswith(f"{member.name}: {key} ")]
+            subject.collect(InputError(problem), *named)
         return
     may_be_infinite = {q.name for q in member.parameters if q.kind == "bound"}
     for parameter, array in solved.items():

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from calibrate.errors import InputError
+from calibrate.expressions import parse
 from calibrate.situations import Axis
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.schema import AxisTable, Entry, read_entry, read_plain
@@ -204,6 +205,9 @@ def _number(reading: Reading, raw: Any, place: Place) -> Number | None:
     except InputError as error:
         reading.collect(error, place)
         return None
+    constant = _constant(raw) if split is None else None
+    if constant is not None:
+        return constant, ONE
     if split is None:
         reading.problem(
             f"must be a number or a number with a unit; got {describe(raw)}.",
@@ -211,3 +215,11 @@ def _number(reading: Reading, raw: Any, place: Place) -> Number | None:
             "Expressions belong in [situations.derived], labels in a table.",
         )
     return split
+
+
+def _constant(text: str) -> float | None:
+    """Return the value of an expression without names, such as ``1/3``."""
+    try:
+        return parse(text).constant
+    except InputError:
+        return None

@@ -22,7 +22,8 @@ def describe(value: Any) -> str:
     if isinstance(value, str):
         if not value.strip():
             return "an empty text"
-        shown = value if len(value) <= _LONGEST else value[: _LONGEST - 1] + "…"
+        line = value.replace("\n", "\\n")
+        shown = line if len(line) <= _LONGEST else line[: _LONGEST - 1] + "…"
         return f"the text '{shown}'"
     if isinstance(value, dict):
         return "a table"
