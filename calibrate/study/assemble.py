@@ -32,7 +32,11 @@ def rule_models(study: Study, variables: Mapping[str, BasicVariable]) -> list[Ru
 
 
 def _rule_model(
-    rule: Rule, variables: Mapping[str, BasicVariable], values: Mapping[str, object], weight: object, total: float
+    rule: Rule,
+    variables: Mapping[str, BasicVariable],
+    values: Mapping[str, object],
+    weight: object,
+    total: float,
 ) -> RuleModel:
     return RuleModel(
         name=rule.name,

@@ -9,7 +9,6 @@ from scipy.special import ndtr
 
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration
-from calibrate.situations import BasicVariable
 from calibrate.study.fits import FittedVariable, fit_doubts
 from calibrate.study.model import Study
 
@@ -22,7 +21,6 @@ IMPORTANT = 0.1
 def study_doubts(
     study: Study,
     fitted: Mapping[str, FittedVariable],
-    variables: Mapping[str, BasicVariable],
     calibration: Calibration,
 ) -> tuple[Doubt, ...]:
     """Return the reservations of a finished calibration.
@@ -33,7 +31,7 @@ def study_doubts(
         When a resistance that should be positive has so much mass below zero
         that it makes up more than 5 % of a failure probability.
     """
-    return (*fit_doubts(fitted), *_negative_mass(study, calibration), *_period_doubts(study, variables))
+    return (*fit_doubts(fitted), *_negative_mass(study, calibration), *_period_doubts(study))
 
 
 def _negative_mass(study: Study, calibration: Calibration) -> list[Doubt]:
@@ -77,9 +75,8 @@ def _negative_mass(study: Study, calibration: Calibration) -> list[Doubt]:
     return doubts
 
 
-def _period_doubts(study: Study, variables: Mapping[str, BasicVariable]) -> list[Doubt]:
+def _period_doubts(study: Study) -> list[Doubt]:
     """Name the actions that were converted to another period."""
-    del variables
     doubts = []
     for name, variable in study.variables.items():
         if variable.period is None or variable.period == study.reference_period:

@@ -54,7 +54,11 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
     sample = study.records[variable.records]
     fixed = _fixed_in_sample_unit(variable, sample.unit.factor)
     comparison = compare(
-        sample.values, variable.families or None, method=variable.method, fixed=fixed
+        sample.values,
+        variable.families or None,
+        method=variable.method,
+        fixed=fixed,
+        estimate=variable.estimate,
     )
     chosen = next((c for c in comparison.candidates if c.family == comparison.recommended), None)
     if chosen is None or chosen.distribution is None:

@@ -75,11 +75,11 @@ def run(
     report("Collecting results", 0.95)
     sets = (calibration.present, calibration.optimal, calibration.proposed)
     table, units = situation_table(study, calibration)
-    doubts = (*study.doubts, *study_doubts(study, fitted, variables, calibration), *calibration.doubts)
+    doubts = (*study.doubts, *study_doubts(study, fitted, calibration), *calibration.doubts)
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
     return Result(
         study=study,
-        variables=variable_results(study, fitted, variables, calibration),
+        variables=variable_results(study, fitted, calibration),
         factors=factor_table(study, calibration),
         situations=table,
         units=units,
@@ -93,7 +93,9 @@ def run(
     )
 
 
-def _calibrate(study: Study, variables: Mapping[str, BasicVariable], workers: int, report: Progress) -> Calibration:
+def _calibrate(
+    study: Study, variables: Mapping[str, BasicVariable], workers: int, report: Progress
+) -> Calibration:
     models = rule_models(study, variables)
     response = Response(models, study.factors, workers=workers)
     weight = np.concatenate([m.rule_weight * m.weight for m in models])
@@ -109,10 +111,7 @@ def _calibrate(study: Study, variables: Mapping[str, BasicVariable], workers: in
         )
     except InputError as error:
         raise InputError(
-            [
-                p if p.file else Problem(p.message, study.shown, p.line, p.suggestion)
-                for p in error.problems
-            ]
+            [p if p.file else Problem(p.message, study.shown, p.line, p.suggestion) for p in error.problems]
         ) from error
 
 

@@ -8,9 +8,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.distributions import Distribution
+from calibrate.distributions import Distribution, Extreme
 from calibrate.factors import Calibration, Evaluation
-from calibrate.situations import BasicVariable
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Rule, Study
 from calibrate.study.result import FACTOR_SETS, VariableResult
@@ -132,7 +131,6 @@ def _design_points(
 def variable_results(
     study: Study,
     fitted: Mapping[str, FittedVariable],
-    variables: Mapping[str, BasicVariable],
     calibration: Calibration,
 ) -> dict[str, VariableResult]:
     """Return every basic variable that a rule uses, as it stands with the proposed factors."""
@@ -142,8 +140,9 @@ def variable_results(
         if not distributions:
             continue
         unit, fit = variable.unit, fitted.get(name)
-        shown = [d.scaled(1.0 / unit.factor) for d in distributions]
-        period = study.reference_period if variables[name].closed else variable.period
+        shown = [_named(d).scaled(1.0 / unit.factor) for d in distributions]
+        converted = any(isinstance(d, Extreme) for d in shown)
+        period = variable.period if converted else study.reference_period
         results[name] = VariableResult(
             name=name,
             family=shown[0].family.name,
@@ -166,6 +165,13 @@ def _distributions(study: Study, name: str, evaluation: Evaluation) -> list[Dist
         if name in rule.variables:
             found.append(e.distributions[rule.variables.index(name)])
     return found
+
+
+def _named(distribution: Distribution) -> Distribution:
+    """Return a converted action under its own parameters where its family is closed under maxima."""
+    if isinstance(distribution, Extreme) and distribution.equivalent is not None:
+        return distribution.equivalent
+    return distribution
 
 
 def _merge(parts: list[Array]) -> Array:
