@@ -1,7 +1,12 @@
 """The example of the study format, read as it stands."""
 
+import hashlib
+from pathlib import Path
+
 import numpy as np
 import pytest
+
+from calibrate.study import read_study
 
 
 def test_head_and_target(project):
@@ -16,8 +21,6 @@ def test_head_and_target(project):
 
 
 def test_where_it_came_from(project):
-    import hashlib
-
     study = project.read()
     assert study.project == project.folder.resolve()
     assert study.file == "studies/connectors/study.toml"
@@ -132,8 +135,14 @@ def test_example_without_what_is_optional_is_the_same(project):
 
 def test_byte_order_mark_and_windows_line_ends(project, example):
     project.study_file.write_bytes(b"\xef\xbb\xbf" + example.replace("\n", "\r\n").encode())
-    from calibrate.study import read_study
-
     study = read_study(str(project.study_file))
     assert study.rules["bar_rupture"].size == "A_d"
     assert study.lines["rules.bar_rupture.limit_state"] == 54
+
+
+@pytest.mark.parametrize("name", ["facade_bracket", "pipe_gallery"])
+def test_demonstration_studies_leave_no_doubt(name):
+    study = read_study(Path(__file__).parents[2] / "studies" / name / "study.toml")
+    assert study.doubts == ()
+    assert study.situations.weight.sum() == pytest.approx(1.0, rel=1e-14)
+    assert all(rule.variables for rule in study.rules.values())
