@@ -84,11 +84,15 @@ def _period_doubts(study: Study) -> list[Doubt]:
         doubts.append(
             Doubt(
                 "period-converted",
-                f"Variable '{name}' is given for {variable.period:g} years and was converted to the reference period "
-                f"of {study.reference_period:g} years as the maximum of independent periods, F^"
+                f"Variable '{name}' is given for {_years(variable.period)} and was converted to the reference period "
+                f"of {_years(study.reference_period)} as the maximum of independent periods, F^"
                 f"{study.reference_period / variable.period:g}. Scatter that is constant in time (coefficients, "
                 "model uncertainty) does not belong in it.",
                 f"variables.{name}",
             )
         )
     return doubts
+
+
+def _years(period: float) -> str:
+    return "1 year" if period == 1 else f"{period:g} years"
