@@ -96,6 +96,7 @@ def test_both_forms_read_back(data, trees, flat_texts):
         ("(a + b) + (c + d) >= ((a*b)*(c*d))", "a + b + c + d ≥ a · b · c · d"),
         ("(a + b)*c/(d*e) >= (x)**(2)", "(a + b) · c / (d · e) ≥ x²"),
         ("(-a)**2 - -b >= (a**b)**2", "(−a)² − (−b) ≥ (a^b)²"),
+        ("a*(b/c)/d >= a/(b/c)", "a · (b / c) / d ≥ a / (b / c)"),
         ("sqrt(x**0.7) + 2**(x + 1) >= pi", "√(x^0.7) + 2^(x + 1) ≥ π"),
         ("where(x >= 1, min(x, 2), abs(x)) >= 0", "where(x ≥ 1, min(x, 2), abs(x)) ≥ 0"),
     ],

@@ -155,6 +155,7 @@ def test_scalars_and_arrays_mix_and_broadcast():
         "A*h + e",
         "G*f + theta",
         "abs(-G)*h/A/f/e",
+        "A/theta/f/G*h - e/(theta/(f/G))",
     ],
 )
 @pytest.mark.parametrize("n", [3, 2000])
