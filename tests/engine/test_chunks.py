@@ -1,5 +1,6 @@
 """Chunks run in order, in any number of threads, and failures come through."""
 
+import itertools
 import threading
 import time
 
@@ -19,7 +20,7 @@ def test_chunks_cover_everything_once_and_in_order(n, chunk, workers):
     bounds = run_chunks(_bounds, n, chunk=chunk, workers=workers)
     assert bounds[0][0] == 0
     assert bounds[-1][1] == n
-    assert all(a[1] == b[0] for a, b in zip(bounds, bounds[1:], strict=False))
+    assert all(a[1] == b[0] for a, b in itertools.pairwise(bounds))
     assert all(0 < stop - start <= chunk for start, stop in bounds)
 
 

@@ -1,0 +1,25 @@
+"""Reliability of many situations at once: limit states, FORM, sensitivities.
+
+Knows distributions and expressions, and nothing of studies, files, units or factors.
+"""
+
+from calibrate.reliability.form import form
+from calibrate.reliability.limit_state import CallableLimitState, ExpressionLimitState, LimitState
+from calibrate.reliability.public import FormResult, public_form
+from calibrate.reliability.result import Reliability
+from calibrate.reliability.sensitivities import beta_slope, parameter_slopes
+from calibrate.reliability.settings import REACH, FormSettings
+
+__all__ = [
+    "REACH",
+    "CallableLimitState",
+    "ExpressionLimitState",
+    "FormResult",
+    "FormSettings",
+    "LimitState",
+    "Reliability",
+    "beta_slope",
+    "form",
+    "parameter_slopes",
+    "public_form",
+]
