@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
 
 from calibrate.factors import RuleModel
 from calibrate.situations import BasicVariable
@@ -34,8 +38,8 @@ def rule_models(study: Study, variables: Mapping[str, BasicVariable]) -> list[Ru
 def _rule_model(
     rule: Rule,
     variables: Mapping[str, BasicVariable],
-    values: Mapping[str, object],
-    weight: object,
+    values: Mapping[str, Any],
+    weight: NDArray[np.float64],
     total: float,
 ) -> RuleModel:
     return RuleModel(

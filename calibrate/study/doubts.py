@@ -53,21 +53,17 @@ def _negative_mass(study: Study, calibration: Calibration) -> list[Doubt]:
             if share[worst] > largest.get(name, (DOUBT_SHARE,))[0]:
                 largest[name] = (float(share[worst]), float(mass[worst]), rule.name, worst + 1)
     problems, doubts = [], []
-    for name, (share, mass, rule, situation) in largest.items():
+    for name, (fraction, mass_below, rule_name, situation) in largest.items():
         text = (
-            f"Variable '{name}' ({study.variables[name].families[0]}) has a probability of {mass:.1e} below "
-            f"zero, {share:.1%} of the failure probability of rule '{rule}', situation {situation}."
+            f"Variable '{name}' ({study.variables[name].families[0]}) has a probability of {mass_below:.1e} below "
+            f"zero, {fraction:.1%} of the failure probability of rule '{rule_name}', situation {situation}."
         )
-        if share > STOP_SHARE:
-            problems.append(
-                Problem(
-                    text,
-                    study.shown,
-                    study.variables[name].line,
-                    "Use a family that is positive, such as lognormal or weibull; if the quantity can really be "
-                    "negative, say may_be_negative = true.",
-                )
+        if fraction > STOP_SHARE:
+            suggestion = (
+                "Use a family that is positive, such as lognormal or weibull; if the quantity can really be "
+                "negative, say may_be_negative = true."
             )
+            problems.append(Problem(text, study.shown, study.variables[name].line, suggestion))
         else:
             doubts.append(Doubt("negative-mass", text, f"variables.{name}"))
     if problems:

@@ -253,7 +253,7 @@ def test_mass_below_zero_that_matters_is_refused_with_the_line_of_the_variable(s
     text = STUDY.replace(
         '[variables.theta]\nfamily = "lognormal"\nmean = 1.0\ncov = 0.08',
         '[variables.theta]\nfamily = "normal"\nmean = 1.0\ncov = 0.27',
-    )  # noqa: E501
+    )
     line = text.splitlines().index("[variables.theta]") + 1
     with pytest.raises(
         calibrate.InputError, match=rf":{line}: Variable 'theta' .* below zero.*lognormal or weibull"
@@ -265,7 +265,7 @@ def test_mass_below_zero_can_be_declared_real(study_at):
     text = STUDY.replace(
         '[variables.theta]\nfamily = "lognormal"\nmean = 1.0\ncov = 0.08',
         '[variables.theta]\nfamily = "normal"\nmean = 1.0\ncov = 0.27\nmay_be_negative = true',
-    )  # noqa: E501
+    )
     result = calibrate.run(study_at(text))
     assert "negative-mass" not in {d.code for d in result.doubts}
 
@@ -274,7 +274,7 @@ def test_small_mass_below_zero_is_a_doubt(study_at):
     text = STUDY.replace(
         '[variables.theta]\nfamily = "lognormal"\nmean = 1.0\ncov = 0.08',
         '[variables.theta]\nfamily = "normal"\nmean = 1.0\ncov = 0.22',
-    )  # noqa: E501
+    )
     codes = {(d.code, d.where) for d in calibrate.run(study_at(text)).doubts}
     assert ("negative-mass", "variables.theta") in codes
 
@@ -296,7 +296,7 @@ def test_a_sample_too_short_for_its_family_is_refused_with_its_line(tmp_path, st
 def test_fewer_situations_than_free_factors_is_refused(study_at):
     text = STUDY.replace("chi = [0.2, 0.5, 0.8]", "chi = [0.5]").replace("values = [2, 4]", "values = [2]")
     text = text.split("[rules.bending]")[0] + "[factors]" + text.split("[factors]")[1]
-    with pytest.raises(calibrate.InputError, match="2 factors are free .*only 1 design situation"):
+    with pytest.raises(calibrate.InputError, match=r"2 factors are free .*only 1 design situation"):
         calibrate.run(study_at(text))
 
 
