@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from calibrate.distributions.parameter import POSITIVE, REAL, Array, Domain
+from calibrate.distributions.parameter import POSITIVE, REAL, Array, Domain, Moments
 from calibrate.errors import InputError, Problem, did_you_mean
 
 if TYPE_CHECKING:
@@ -97,15 +97,16 @@ def checked(family: Family, arguments: Mapping[str, Any]) -> dict[str, Array]:
     return given
 
 
-def moments_of(given: Mapping[str, Array]) -> tuple[Array, Array, Array]:
-    """Return mean, sd and cov from checked arguments; sd and cov are NaN when only the mean was given."""
+def moments_of(given: Mapping[str, Array], keep: Sequence[str]) -> Moments:
+    """Return the moments from checked arguments; sd and cov are NaN when only the mean was given."""
     mean = given["mean"]
+    kept = tuple(given[n] for n in keep)
     if "cov" in given:
-        return mean, given["cov"] * np.abs(mean), given["cov"]
+        return Moments(mean, given["cov"] * np.abs(mean), given["cov"], kept)
     if "sd" in given:
         with np.errstate(divide="ignore"):
-            return mean, given["sd"], given["sd"] / np.abs(mean)
-    return mean, np.asarray(np.nan), np.asarray(np.nan)
+            return Moments(mean, given["sd"], given["sd"] / np.abs(mean), kept)
+    return Moments(mean, np.asarray(np.nan), np.asarray(np.nan), kept)
 
 
 def _known(family: Family, argument: str) -> bool:

@@ -71,7 +71,7 @@ class Distribution:
         """Whether x is a linear function of u."""
         return self.family.is_normal
 
-    # Physical space --------------------------------------------------------------------------------------------
+    # Physical space ------------------------------
 
     @property
     def support(self) -> tuple[Array, Array]:
@@ -134,14 +134,14 @@ class Distribution:
         ends = np.where(np.isnan(u), np.nan, np.where(u < 0, lower, upper))
         return np.where(finite, self.x(np.where(finite, u, 0.0)), ends)
 
-    # Standard normal space -------------------------------------------------------------------------------------
+    # Standard normal space ------------------------------
 
     def x(self, u: npt.ArrayLike) -> Array:
         """Return the value at standard normal ``u``, F(x) = Phi(u).
 
         Notes
         -----
-        For \\|u\\| <= 12 the error is at most 1e-9 max(\\|x\\|, sd).
+        For |u| <= 12 the error is at most 1e-9 max(|x|, sd).
         """
         return self.family.x(np.asarray(u, dtype=np.float64), self.values)
 
@@ -169,7 +169,7 @@ class Distribution:
         below = x < self.family.x(np.zeros_like(x), self.values)
         return np.where(inside, u, np.where(np.isnan(x), np.nan, np.where(below, -np.inf, np.inf)))
 
-    # Moments ---------------------------------------------------------------------------------------------------
+    # Moments ------------------------------
 
     @property
     def mean(self) -> Array:
@@ -183,7 +183,7 @@ class Distribution:
 
     @property
     def cov(self) -> Array:
-        """Coefficient of variation, sd/\\|mean\\|."""
+        """Coefficient of variation, sd/|mean|."""
         mean, sd = self._moments()
         with np.errstate(divide="ignore", invalid="ignore"):
             return np.asarray(sd / np.abs(mean))
@@ -191,7 +191,7 @@ class Distribution:
     def _moments(self) -> tuple[Array, Array]:
         return self.family.moments(self.values)
 
-    # Other distributions ---------------------------------------------------------------------------------------
+    # Other distributions ------------------------------
 
     def sample(self, rng: np.random.Generator, size: int | tuple[int, ...] | None = None) -> Array:
         """Draw values with the given Generator.

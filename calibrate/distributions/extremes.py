@@ -1,4 +1,4 @@
-# ruff: noqa: D102  (the formulas are documented in Family)
+# ruff: noqa: D102, ARG002  (the formulas are documented in Family)
 """What families of extremes share: x is a simple function of the log-hazard k(u) = ln(-ln Phi(u)).
 
 Families of maxima have ``F(x) = exp(-exp(k))``, families of minima ``1 - F(x) = exp(-exp(k))``.
@@ -11,10 +11,10 @@ from typing import ClassVar
 
 import numpy as np
 
+from calibrate.distributions.exponentials import log1mexp
 from calibrate.distributions.family import Family
 from calibrate.distributions.normal_tails import (
     from_log_hazard,
-    log1mexp,
     log_hazard,
     log_hazard_curvature,
     log_hazard_slope,
@@ -43,7 +43,7 @@ class ExtremeFamily(Family):
 
     @abstractmethod
     def log_abs_slope(self, k: Array, p: Values) -> Array:
-        """Return ln \\|dx/dk\\|."""
+        """Return ln |dx/dk|."""
 
     @abstractmethod
     def slopes_at_k(self, k: Array, p: Values) -> Values:

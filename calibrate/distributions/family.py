@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from abc import ABC, abstractmethod
 from collections.abc import Mapping
 from typing import ClassVar
@@ -10,16 +11,16 @@ import numpy as np
 import numpy.typing as npt
 
 from calibrate.distributions import arguments as args
-from calibrate.distributions.moments import slopes_by_moments
+from calibrate.distributions.implicit import slopes_by_moments
 from calibrate.distributions.normal_tails import u_from_log_tails
-from calibrate.distributions.parameter import Array, Parameter, Values
+from calibrate.distributions.parameter import Array, Moments, Parameter, Values
 
 
 class Family(ABC):
     """A family of distributions; stateless, one instance per registry entry.
 
     A subclass declares ``name``, ``parameters`` and the formulas below. ``p`` is the tuple of own parameters in
-    declared order; every formula is elementwise and broadcasts. Formulas in x are only called within the support.
+    declared order; every formula is elementwise and broadcasts. Formulas in x are called within the support only.
 
     Attributes
     ----------
@@ -30,9 +31,11 @@ class Family(ABC):
     moments_keep : tuple of str
         Own parameters that are given beside mean and cov or sd (threshold, bounds, shape, freedom).
     moment_names : tuple of str
-        ``("mean", "sd")``; ``("mean",)`` when the mean alone determines the rest; ``()`` when moments are not taken.
+        ``("mean", "sd")``; ``("mean",)`` when the mean alone is enough; ``()`` when moments are not taken.
     mean_positive : bool
         Whether only positive means exist.
+    limits : (float, float)
+        Ends of the support where they depend on no parameter.
     """
 
     name: ClassVar[str]
@@ -40,6 +43,7 @@ class Family(ABC):
     moments_keep: ClassVar[tuple[str, ...]] = ()
     moment_names: ClassVar[tuple[str, ...]] = ("mean", "sd")
     mean_positive: ClassVar[bool] = False
+    limits: ClassVar[tuple[float, float]] = (-math.inf, math.inf)
     is_constant: ClassVar[bool] = False
     is_normal: ClassVar[bool] = False
 
@@ -52,11 +56,11 @@ class Family(ABC):
     def __hash__(self) -> int:
         return hash(type(self))
 
-    # Formulas in x ---------------------------------------------------------------------------------------------
+    # Formulas in x ------------------------------
 
-    @abstractmethod
-    def support(self, p: Values) -> tuple[Array, Array]:
+    def support(self, p: Values) -> tuple[Array, Array]:  # noqa: ARG002
         """Return the ends of the support."""
+        return np.asarray(self.limits[0]), np.asarray(self.limits[1])
 
     @abstractmethod
     def logpdf(self, x: Array, p: Values) -> Array:
@@ -70,7 +74,7 @@ class Family(ABC):
         """Return the standard normal value of x within the support."""
         return u_from_log_tails(*self.log_tails(x, p))
 
-    # Formulas in standard normal space -------------------------------------------------------------------------
+    # Formulas in standard normal space ------------------------------
 
     def x(self, u: Array, p: Values) -> Array:
         """Return x(u)."""
@@ -89,37 +93,34 @@ class Family(ABC):
     def parameter_slopes(self, u: Array, p: Values) -> Values:
         """Return dx/dp at fixed u, one array per own parameter."""
 
-    # Moments ---------------------------------------------------------------------------------------------------
+    # Moments ------------------------------
 
     @abstractmethod
     def moments(self, p: Values) -> tuple[Array, Array]:
         """Return mean and standard deviation; inf or NaN where they do not exist."""
 
-    def moment_slopes(self, p: Values) -> tuple[tuple[Array, Array], ...]:
+    def moment_slopes(self, p: Values) -> tuple[tuple[Array, Array], ...]:  # noqa: ARG002
         """Return (d mean/dp, d sd/dp) for each own parameter."""
         raise args.refuse(self.name, "moments are not taken.")
 
-    def check_moments(self, mean: Array, sd: Array, kept: Values) -> None:
-        """Raise InputError when no member of the family has these moments; ``kept`` follows ``moments_keep``."""
-
-    def from_moments(self, mean: Array, sd: Array, cov: Array, kept: Values) -> Values:
-        """Return own parameters from moments; sd and cov agree, whichever was given."""
+    def from_moments(self, m: Moments) -> Values:  # noqa: ARG002
+        """Return own parameters; InputError when no member of the family has these moments."""
         raise args.refuse(self.name, "moments are not taken.")
 
-    def check_parameters(self, p: Values) -> None:
-        """Raise InputError for combinations of own parameters that make no distribution (reversed bounds)."""
+    def check(self, p: Values) -> None:  # noqa: B027  (most families have nothing to add)
+        """Raise InputError for own parameters that make no distribution together (reversed bounds)."""
 
-    # Extremes --------------------------------------------------------------------------------------------------
+    # Extremes ------------------------------
 
-    def maximum_parameters(self, p: Values, ratio: Array) -> Values | None:
+    def maximum_parameters(self, p: Values, ratio: Array) -> Values | None:  # noqa: ARG002
         """Return parameters of this family for F**ratio, or None when it leaves the family."""
         return None
 
-    def minimum_parameters(self, p: Values, ratio: Array) -> Values | None:
+    def minimum_parameters(self, p: Values, ratio: Array) -> Values | None:  # noqa: ARG002
         """Return parameters of this family for 1 - (1 - F)**ratio, or None when it leaves the family."""
         return None
 
-    # What callers use ------------------------------------------------------------------------------------------
+    # What callers use ------------------------------
 
     @property
     def parameter_names(self) -> tuple[str, ...]:
@@ -187,11 +188,8 @@ class Family(ABC):
         if "mean" not in given:
             p = tuple(given[n] for n in self.parameter_names)
         else:
-            mean, sd, cov = args.moments_of(given)
-            kept = tuple(given[n] for n in self.moments_keep)
-            self.check_moments(mean, sd, kept)
-            p = self.from_moments(mean, sd, cov, kept)
-        self.check_parameters(p)
+            p = self.from_moments(args.moments_of(given, self.moments_keep))
+        self.check(p)
         return p
 
     def argument_slopes(self, arguments: Mapping[str, Array]) -> dict[str, dict[str, Array]]:

@@ -59,7 +59,7 @@ class Extreme(Distribution):
         """Whether x is a linear function of u; raising to a power never leaves it so."""
         return False
 
-    # The map of u ----------------------------------------------------------------------------------------------
+    # The map of u ------------------------------
 
     def base_u(self, u: Array) -> Array:
         """Return the base's standard normal value that corresponds to u."""
@@ -81,7 +81,7 @@ class Extreme(Distribution):
         slope = k1 / v_k1
         return sign * v, slope, sign * (k2 - v_k2 * slope * slope) / v_k1
 
-    # Distribution ----------------------------------------------------------------------------------------------
+    # Distribution ------------------------------
 
     def x(self, u: npt.ArrayLike) -> Array:
         """Return x(u)."""

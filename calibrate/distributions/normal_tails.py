@@ -1,7 +1,7 @@
 """Functions of the standard normal distribution that keep their relative accuracy in both tails.
 
-The central one is the log-hazard ``k(u) = ln(-ln Phi(u))``. Distributions of extremes are simple functions of it,
-and raising any distribution function to the power r shifts it, ``ln(-r ln F) = k + ln r``.
+The central one is the log-hazard ``k(u) = ln(-ln Phi(u))``. Distributions of extremes are simple functions of
+it, and raising any distribution function to the power r shifts it, ``ln(-r ln F) = k + ln r``.
 """
 
 from __future__ import annotations
@@ -11,11 +11,11 @@ import math
 import numpy as np
 from scipy import special
 
+from calibrate.distributions.exponentials import log1mexp
 from calibrate.distributions.parameter import Array
 
 LOG_SQRT_2PI = 0.5 * math.log(2.0 * math.pi)
 INV_SQRT_2PI = 1.0 / math.sqrt(2.0 * math.pi)
-LOG_HALF = -math.log(2.0)
 
 # Phi(-37.5) is the last probability that is still a normal double; beyond, logarithms take over.
 REACH = 37.5
@@ -29,19 +29,6 @@ def log_phi(u: Array) -> Array:
     return -0.5 * u * u - LOG_SQRT_2PI
 
 
-def log1mexp(a: Array) -> Array:
-    """Return ``ln(1 - exp(a))`` for ``a <= 0`` without cancellation.
-
-    Notes
-    -----
-    The switch at ``-ln 2`` follows M. Maechler, "Accurately computing log(1 - exp(-|a|))" (2012).
-    """
-    a = np.minimum(a, 0.0)
-    near = a > LOG_HALF
-    with np.errstate(divide="ignore"):
-        return np.where(near, np.log(-np.expm1(np.where(near, a, LOG_HALF))), np.log1p(-np.exp(a)))
-
-
 def u_from_log_tails(log_cdf: Array, log_sf: Array) -> Array:
     """Return the standard normal value with these log-probabilities, from whichever tail is smaller."""
     low = log_cdf < log_sf
@@ -49,9 +36,15 @@ def u_from_log_tails(log_cdf: Array, log_sf: Array) -> Array:
     return np.where(low, tail, -tail)
 
 
-def ratio_of_density(u: Array) -> Array:
-    """Return ``phi(u) / Phi(u)``, the slope of ``ln Phi``."""
-    return np.exp(log_phi(u) - log_ndtr(u))
+def slopes_from_density(u: Array, log_density: Array, score: Array) -> tuple[Array, Array]:
+    """Return dx/du and d2x/du2 of F(x) = Phi(u) from ln f(x) and d ln f/dx.
+
+    Notes
+    -----
+    f x' = phi(u); differentiated once more, x'' = -x' (u + x' d ln f/dx).
+    """
+    slope = np.exp(log_phi(u) - log_density)
+    return slope, -slope * (u + score * slope)
 
 
 def _within_reach(u: Array) -> bool:

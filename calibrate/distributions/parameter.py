@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Literal
+from typing import Literal, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -79,3 +79,15 @@ class Parameter:
     def carries_unit(self) -> bool:
         """Whether it is measured in the unit of the variable."""
         return self.kind != "shape"
+
+
+class Moments(NamedTuple):
+    """Mean, sd and cov of a variable, and the parameters given beside them in the order of ``moments_keep``.
+
+    sd and cov agree, whichever was given; both are NaN when the mean alone is enough.
+    """
+
+    mean: Array
+    sd: Array
+    cov: Array
+    kept: Values = ()

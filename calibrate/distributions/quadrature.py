@@ -21,7 +21,7 @@ def moments_over_u(x: Callable[[Array], Array], shape: tuple[int, ...]) -> tuple
     Parameters
     ----------
     x : callable
-        The transform; takes arrays of shape (nodes, \\*shape).
+        The transform; takes arrays of shape (nodes, ...).
     shape : tuple of int
         Shape of the distribution's parameters.
     """

@@ -7,11 +7,21 @@ from types import MappingProxyType
 from typing import Any
 
 from calibrate.distributions.distribution import Distribution
+from calibrate.distributions.families.beta import Beta
 from calibrate.distributions.families.constant import Constant
-from calibrate.distributions.families.gumbel import Gumbel
+from calibrate.distributions.families.exponential import Exponential
+from calibrate.distributions.families.frechet import Frechet
+from calibrate.distributions.families.gamma import Gamma
+from calibrate.distributions.families.gev import Gev
+from calibrate.distributions.families.gumbel import Gumbel, GumbelMin
 from calibrate.distributions.families.lognormal import Lognormal
+from calibrate.distributions.families.lognormal3 import Lognormal3
 from calibrate.distributions.families.normal import Normal
+from calibrate.distributions.families.student_t import StudentT
+from calibrate.distributions.families.truncated_normal import TruncatedNormal
+from calibrate.distributions.families.uniform import Uniform
 from calibrate.distributions.families.weibull import Weibull
+from calibrate.distributions.families.weibull3 import Weibull3
 from calibrate.distributions.family import Family
 from calibrate.errors import InputError, Problem, did_you_mean
 
@@ -31,7 +41,18 @@ FAMILIES: Mapping[str, Family] = registered(
         Normal(),
         Lognormal(),
         Gumbel(),
+        GumbelMin(),
         Weibull(),
+        Frechet(),
+        Gamma(),
+        Uniform(),
+        Exponential(),
+        Weibull3(),
+        Lognormal3(),
+        Gev(),
+        Beta(),
+        StudentT(),
+        TruncatedNormal(),
         Constant(),
     )
 )
@@ -77,7 +98,8 @@ def distribution(name: str, /, **arguments: Any) -> Distribution:
     Raises
     ------
     InputError
-        The family or an argument is unknown, something is missing or contradictory, or a value is not allowed.
+        The family or an argument is unknown, something is missing or contradictory, or a value is not
+        allowed.
 
     Examples
     --------

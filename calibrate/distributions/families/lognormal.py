@@ -3,11 +3,13 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 
 from calibrate.distributions.family import Family
 from calibrate.distributions.normal_tails import log_ndtr, log_phi
-from calibrate.distributions.parameter import POSITIVE, Array, Parameter, Values
+from calibrate.distributions.parameter import POSITIVE, Array, Moments, Parameter, Values
 
 
 class Lognormal(Family):
@@ -16,9 +18,7 @@ class Lognormal(Family):
     name = "lognormal"
     parameters = (Parameter("median", "scale", POSITIVE), Parameter("log_sd", "shape", POSITIVE))
     mean_positive = True
-
-    def support(self, p: Values) -> tuple[Array, Array]:
-        return np.asarray(0.0), np.asarray(np.inf)
+    limits = (0.0, math.inf)
 
     def logpdf(self, x: Array, p: Values) -> Array:
         u = self.u(x, p)
@@ -61,5 +61,5 @@ class Lognormal(Family):
         by_log_sd = log_sd * sd + mean**2 * log_sd * np.exp(log_sd**2) / sd
         return (mean / median, sd / median), (log_sd * mean, by_log_sd)
 
-    def from_moments(self, mean: Array, sd: Array, cov: Array, kept: Values) -> Values:
-        return mean / np.sqrt(1.0 + cov**2), np.sqrt(np.log1p(cov**2))
+    def from_moments(self, m: Moments) -> Values:
+        return m.mean / np.sqrt(1.0 + m.cov**2), np.sqrt(np.log1p(m.cov**2))

@@ -1,4 +1,4 @@
-# ruff: noqa: D102  (the formulas are documented in Family)
+# ruff: noqa: D102, ARG002  (the formulas are documented in Family; each takes what its base declares)
 """The normal family."""
 
 from __future__ import annotations
@@ -7,7 +7,7 @@ import numpy as np
 
 from calibrate.distributions.family import Family
 from calibrate.distributions.normal_tails import log_ndtr, log_phi
-from calibrate.distributions.parameter import POSITIVE, Array, Parameter, Values
+from calibrate.distributions.parameter import POSITIVE, Array, Moments, Parameter, Values
 
 
 class Normal(Family):
@@ -16,9 +16,6 @@ class Normal(Family):
     name = "normal"
     parameters = (Parameter("location", "location"), Parameter("scale", "scale", POSITIVE))
     is_normal = True
-
-    def support(self, p: Values) -> tuple[Array, Array]:
-        return np.asarray(-np.inf), np.asarray(np.inf)
 
     def logpdf(self, x: Array, p: Values) -> Array:
         location, scale = p
@@ -55,5 +52,5 @@ class Normal(Family):
         zero, one = np.asarray(0.0), np.asarray(1.0)
         return (one, zero), (zero, one)
 
-    def from_moments(self, mean: Array, sd: Array, cov: Array, kept: Values) -> Values:
-        return mean, sd
+    def from_moments(self, m: Moments) -> Values:
+        return m.mean, m.sd

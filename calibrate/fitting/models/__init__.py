@@ -1,0 +1,1 @@
+"""One likelihood per family, or per two families that share one."""

@@ -1,0 +1,236 @@
+"""What went in, at full precision: records, basic variables, quantities, rules, design situations."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from calibrate.report import numbers, symbols
+from calibrate.report.outcome import column_unit
+from calibrate.report.symbols import Html
+from calibrate.report.table import Column, Table, aligned, each
+from calibrate.study.result import Result, VariableResult
+from calibrate.units import format_unit
+
+DIGEST_SHOWN = 12
+"""Characters of a digest that a report shows; result.json has all of them."""
+MOST_LEVELS_LISTED = 12
+
+
+def unit_of(text: str) -> str:
+    """Return a unit for display; nothing where there is none."""
+    return format_unit(text) if text else ""
+
+
+def record_table(result: Result) -> Table:
+    """Return the records: where they come from, how many, their range."""
+    samples = result.study.records
+    users: dict[str, list[str]] = {name: [] for name in samples}
+    for variable in result.study.variables.values():
+        if variable.records is not None:
+            users[variable.records].append(variable.name)
+    return Table(
+        (
+            Column("records", list(samples)),
+            Column("used by", [_names(users[n]) for n in samples]),
+            Column("file", [s.file + (f", sheet {s.sheet}" if s.sheet else "") for s in samples.values()]),
+            Column("column", [s.name for s in samples.values()]),
+            Column("unit", [unit_of(s.unit.text) for s in samples.values()]),
+            Column("n", [s.n for s in samples.values()], kind="number"),
+            Column(
+                "smallest",
+                [s.values.min() for s in samples.values()],
+                each(numbers.significant),
+                "number",
+            ),
+            Column("mean", [s.values.mean() for s in samples.values()], each(numbers.significant), "number"),
+            Column(
+                "largest", [s.values.max() for s in samples.values()], each(numbers.significant), "number"
+            ),
+            Column("SHA-256", [s.sha256[:DIGEST_SHOWN] for s in samples.values()]),
+        )
+    )
+
+
+def _names(names: list[str]) -> Html:
+    return Html(", ".join(symbols.html(n) for n in names)) if names else Html(numbers.NONE)
+
+
+def variable_table(result: Result) -> Table:
+    """Return the basis of variables: family, moments for the reference period, where they come from."""
+    found = list(result.variables.values())
+    defined = [result.study.variables[v.name] for v in found]
+    columns = [
+        Column("variable", [v.name for v in found], kind="name"),
+        Column("meaning", [d.description for d in defined]),
+        Column("family", [v.family for v in found]),
+        Column("unit", [unit_of(v.unit.text) for v in found]),
+        Column("mean", [numbers.span(v.mean) for v in found], kind="number"),
+        Column("sd", [numbers.span(v.sd) for v in found], kind="number"),
+        Column("cov", [numbers.span(v.cov, 3) for v in found], kind="number"),
+        Column("n", ["given" if v.n is None else str(v.n) for v in found], kind="number"),
+    ]
+    if any(v.period is not None for v in found):
+        columns.append(Column("given for", [numbers.years(v.period) if v.period else "" for v in found]))
+    if any(d.source or d.grade for d in defined):
+        columns.append(Column("source", [_source(d.source, d.grade) for d in defined]))
+    return Table(tuple(columns))
+
+
+def _source(source: str, grade: str) -> str:
+    return f"{source} ({grade})" if source and grade else source or grade
+
+
+def parameter_table(result: Result) -> Table:
+    """Return the own parameters of every variable, for the period they hold for, and how they are defined."""
+    found = list(result.variables.values())
+    return Table(
+        (
+            Column("variable", [v.name for v in found], kind="name"),
+            Column("family", [v.family for v in found]),
+            Column("unit", [unit_of(v.unit.text) for v in found]),
+            Column("parameters", [_parameters(v) for v in found]),
+            Column("for", [numbers.years(v.parameters_period) for v in found]),
+            Column("defined by", [_definition(result, v) for v in found]),
+        )
+    )
+
+
+def _parameters(variable: VariableResult) -> str:
+    return ", ".join(f"{n} = {numbers.span(v, 5)}" for n, v in variable.parameters.items())
+
+
+def _definition(result: Result, variable: VariableResult) -> Html | str:
+    given = result.study.variables[variable.name]
+    if given.records is not None:
+        return f"fit to records {given.records}"
+    parts = []
+    for argument, expression in given.arguments.items():
+        text = given.texts.get(argument, expression.text)
+        shown = symbols.formula(expression) if expression.names else symbols.escaped(text)
+        parts.append(f"{symbols.escaped(argument)} = {shown}")
+    return Html(", ".join(parts))
+
+
+def quantity_table(result: Result) -> Table:
+    """Return the deterministic values with their units; expressions as formulas."""
+    from calibrate.expressions import parse
+
+    found = list(result.study.quantities.values())
+    formulas: list[Html] = []
+    for q in found:
+        try:
+            expression = parse(q.text)
+            formulas.append(symbols.formula(expression) if expression.names else Html(""))
+        except ValueError:  # a number with its unit
+            formulas.append(Html(""))
+    columns = [
+        Column("quantity", [q.name for q in found], kind="name"),
+        Column("value", [q.value / q.unit.factor for q in found], each(numbers.significant, 6), "number"),
+        Column("unit", [unit_of(q.unit.text) for q in found]),
+    ]
+    if any(formulas):
+        columns.append(Column("defined by", formulas))
+    return Table(tuple(columns))
+
+
+def axis_table(result: Result) -> Table:
+    """Return the axes or table columns with their levels and the weight that each level carries."""
+    frame, names = result.situations, list(result.study.situations.columns)
+    described = result.study.axis_descriptions
+    levels, shares = [], []
+    for name in names:
+        texts, weights = _levels(frame[name], frame["weight"].to_numpy(float))
+        levels.append(texts)
+        shares.append(weights)
+    columns = [
+        Column("axis", names, kind="name"),
+        Column("unit", [column_unit(result, n) for n in names]),
+        Column("values", levels),
+        Column("share of weight", shares),
+    ]
+    if any(described.get(n) for n in names):
+        columns.insert(1, Column("meaning", [described.get(n, "") for n in names]))
+    return Table(tuple(columns))
+
+
+def _levels(values: Any, weight: Any) -> tuple[str, str]:
+    """Return the values of an axis and their shares of weight, or the range where there are many."""
+    numeric = values.dtype.kind in "fiu"
+    found = sorted(values.unique()) if numeric else list(dict.fromkeys(values))
+    if len(found) > MOST_LEVELS_LISTED:
+        text = f"{len(found)} different values"
+        return (f"{text}, {numbers.span(found)}" if numeric else text), ""
+    texts = numbers.column(found) if numeric else [str(v) for v in found]
+    shares = [numbers.share(float(weight[(values == v).to_numpy()].sum()), 0) for v in found]
+    same = len(set(shares)) == 1 and len(shares) > 1
+    return " · ".join(texts), f"{shares[0]} each" if same else " · ".join(shares)
+
+
+@dataclass(frozen=True, slots=True)
+class RuleText:
+    """One rule as it is printed."""
+
+    name: str
+    description: str
+    check: Html | None
+    size: Html | None
+    size_unit: str
+    limit_state: Html
+    variables: Html
+    weight: str
+
+
+def rule_texts(result: Result) -> list[RuleText]:
+    """Return the rules with their formulas; the factors stand out."""
+    factors = frozenset(f.name for f in result.study.factors)
+    total = sum(r.weight for r in result.study.rules.values())
+    return [
+        RuleText(
+            name=rule.name,
+            description=rule.description,
+            check=None if rule.design_check is None else symbols.formula(rule.design_check, factors),
+            size=None if rule.size is None else symbols.html(rule.size),
+            size_unit=column_unit(result, "size_proposed", rule.name),
+            limit_state=symbols.formula(rule.limit_state, factors),
+            variables=_names(list(rule.variables)),
+            weight=numbers.share(rule.weight / total, 0),
+        )
+        for rule in result.study.rules.values()
+    ]
+
+
+def derived_formulas(result: Result) -> list[tuple[Html, Html]]:
+    """Return the derived quantities: name and formula."""
+    return [(symbols.html(n), symbols.formula(e)) for n, e in result.study.derived.items()]
+
+
+def candidate_table(variable: VariableResult) -> Table:
+    """Return the families that were fitted to the records of a variable, best first, failed ones with reason."""
+    assert variable.comparison is not None
+    candidates = variable.comparison.candidates
+    best = min((c.aicc for c in candidates if np.isfinite(c.aicc)), default=np.nan)
+    chosen = {i for i, c in enumerate(candidates) if c.family == variable.comparison.recommended}
+    return Table(
+        (
+            Column("family", [c.family for c in candidates]),
+            Column("parameters ± standard error", [_estimates(c) for c in candidates]),
+            Column("log-likelihood", [c.log_likelihood for c in candidates], aligned(5), "number"),
+            Column("AICc", [c.aicc for c in candidates], each(numbers.fixed, 1), "number"),
+            Column("ΔAICc", [c.aicc - best for c in candidates], each(numbers.fixed, 1), "number"),
+            Column("A²", [c.anderson_darling for c in candidates], each(numbers.fixed, 3), "number"),
+            Column("status", [c.status + (f": {c.reason}" if c.reason else "") for c in candidates]),
+        ),
+        strong=frozenset(chosen),
+    )
+
+
+def _estimates(fit: Any) -> str:
+    texts = []
+    for name, value in fit.parameters.items():
+        error = fit.standard_errors.get(name, np.nan)
+        with_error = f" ± {numbers.significant(error, 2)}" if np.isfinite(error) and error > 0 else " (fixed)"
+        texts.append(f"{name} = {numbers.significant(value, 5)}{with_error}")
+    return ", ".join(texts)

@@ -1,0 +1,123 @@
+"""Tables at full precision, which know how each of their columns is to be written."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from itertools import groupby
+from typing import Any, Literal
+
+from calibrate.report import numbers, symbols
+from calibrate.report.symbols import Html
+
+Show = Callable[[Sequence[Any]], Sequence[str]]
+Kind = Literal["text", "number", "name"]
+
+
+def as_text(values: Sequence[Any]) -> list[str]:
+    """Write values as they are; what does not exist as a dash."""
+    return [numbers.NONE if v is None or v == "" else v if isinstance(v, str) else str(v) for v in values]
+
+
+def each(function: Callable[..., str], *arguments: Any) -> Show:
+    """Return the way to write a column whose values are written one by one."""
+
+    def show(values: Sequence[Any]) -> list[str]:
+        return [function(v, *arguments) for v in values]
+
+    return show
+
+
+def aligned(digits: int = 4) -> Show:
+    """Return the way to write numbers with a common count of decimals."""
+
+    def show(values: Sequence[Any]) -> list[str]:
+        return numbers.column(values, digits)
+
+    return show
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """One column of a table.
+
+    Parameters
+    ----------
+    head : str
+        Heading, plain text; the name of a quantity where ``kind`` of the head
+        is a name (``symbol`` true).
+    values : sequence
+        At full precision.
+    show : callable
+        From all values to their texts, by :mod:`calibrate.report.numbers`.
+    kind : {"text", "number", "name"}
+        How it is set: words, figures aligned right, names of a study.
+    unit : str
+        Shown below the heading.
+    symbol : bool
+        Whether the heading is a name of the study, to be typeset.
+    group : str
+        Columns of one group are shown or hidden together.
+    """
+
+    head: str
+    values: Sequence[Any]
+    show: Show = as_text
+    kind: Kind = "text"
+    unit: str = ""
+    symbol: bool = False
+    group: str = ""
+
+    @property
+    def title(self) -> str:
+        """Heading as HTML or plain text."""
+        return symbols.html(self.head) if self.symbol else self.head
+
+    def texts(self) -> list[str]:
+        """Return what the reader sees; names as HTML."""
+        if self.kind == "name":
+            return [symbols.html(str(v)) if v else numbers.NONE for v in self.values]
+        return list(self.show(self.values))
+
+    def plain(self) -> list[str]:
+        """Return what the reader sees on a console; names as typed."""
+        return as_text(self.values) if self.kind == "name" else list(self.show(self.values))
+
+
+@dataclass(frozen=True, slots=True)
+class Table:
+    """Columns of equal length; ``strong`` are the rows to be set off."""
+
+    columns: tuple[Column, ...]
+    strong: frozenset[int] = frozenset()
+
+    def __len__(self) -> int:
+        return len(self.columns[0].values) if self.columns else 0
+
+    def rows(self) -> list[tuple[str, ...]]:
+        """Return the rows as the reader sees them."""
+        return list(zip(*(c.texts() for c in self.columns), strict=True))
+
+    def plain_rows(self) -> list[tuple[str, ...]]:
+        """Return the rows as text for a console."""
+        return list(zip(*(c.plain() for c in self.columns), strict=True))
+
+    def runs(self) -> list[tuple[str, int]]:
+        """Return the groups of neighbouring columns with their widths; no group is an empty text."""
+        return [(group, len(list(run))) for group, run in groupby(c.group for c in self.columns)]
+
+    def cell_classes(self, groups: Mapping[str, str]) -> list[Html]:
+        """Return the class attribute of the cells of each column."""
+        found = []
+        for c in self.columns:
+            names = [*(["n"] if c.kind == "number" else []), *([groups[c.group]] if c.group in groups else [])]
+            found.append(Html(f' class="{" ".join(names)}"' if names else ""))
+        return found
+
+    def without(self, *heads: str) -> Table:
+        """Return the table without some columns."""
+        return Table(tuple(c for c in self.columns if c.head not in heads), self.strong)
+
+    def column(self, head: str) -> Column:
+        """Return a column by its heading."""
+        return next(c for c in self.columns if c.head == head)

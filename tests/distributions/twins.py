@@ -1,0 +1,154 @@
+"""Slow, obvious twins of the families: textbook formulas in mpmath, written from the definitions.
+
+They share no code with the package; that is their point. Each twin gives F, 1 - F and f for x and parameters as
+mpmath numbers. Where one tail is written as one minus the other, the precision (60 digits and more) leaves 25 digits
+at probabilities of 1e-33.
+"""
+
+import mpmath as mp
+
+DIGITS = 75
+
+
+def phi(u):
+    return mp.exp(-u * u / 2) / mp.sqrt(2 * mp.pi)
+
+
+def Phi(u):
+    return mp.erfc(-u / mp.sqrt(2)) / 2
+
+
+def normal(x, location, scale):
+    z = (x - location) / scale
+    return Phi(z), Phi(-z), phi(z) / scale
+
+
+def lognormal(x, median, log_sd):
+    z = mp.log(x / median) / log_sd
+    return Phi(z), Phi(-z), phi(z) / (log_sd * x)
+
+
+def lognormal3(x, threshold, median, log_sd):
+    return lognormal(x - threshold, median, log_sd)
+
+
+def gumbel(x, location, scale):
+    w = mp.exp(-(x - location) / scale)
+    return mp.exp(-w), -mp.expm1(-w), w * mp.exp(-w) / scale
+
+
+def gumbel_min(x, location, scale):
+    cdf, sf, pdf = gumbel(-x, -location, scale)
+    return sf, cdf, pdf
+
+
+def weibull(x, scale, shape):
+    w = (x / scale) ** shape
+    return -mp.expm1(-w), mp.exp(-w), shape / x * w * mp.exp(-w)
+
+
+def weibull3(x, threshold, scale, shape):
+    return weibull(x - threshold, scale, shape)
+
+
+def frechet(x, scale, shape):
+    w = (x / scale) ** (-shape)
+    return mp.exp(-w), -mp.expm1(-w), shape / x * w * mp.exp(-w)
+
+
+def gamma(x, shape, scale):
+    q = x / scale
+    cdf = mp.gammainc(shape, 0, q, regularized=True)
+    sf = mp.gammainc(shape, q, mp.inf, regularized=True)
+    return cdf, sf, q ** (shape - 1) * mp.exp(-q) / mp.gamma(shape) / scale
+
+
+def uniform(x, lower, upper):
+    width = upper - lower
+    return (x - lower) / width, (upper - x) / width, 1 / width
+
+
+def exponential(x, scale):
+    return -mp.expm1(-x / scale), mp.exp(-x / scale), mp.exp(-x / scale) / scale
+
+
+def gev(x, location, scale, shape):
+    z = (x - location) / scale
+    w = mp.exp(-z) if shape == 0 else (1 + shape * z) ** (-1 / shape)
+    return mp.exp(-w), -mp.expm1(-w), w ** (1 + shape) * mp.exp(-w) / scale
+
+
+def beta(x, shape_1, shape_2, lower, upper):
+    width = upper - lower
+    t, s = (x - lower) / width, (upper - x) / width
+    cdf = mp.betainc(shape_1, shape_2, 0, t, regularized=True)
+    sf = mp.betainc(shape_2, shape_1, 0, s, regularized=True)
+    return cdf, sf, t ** (shape_1 - 1) * s ** (shape_2 - 1) / mp.beta(shape_1, shape_2) / width
+
+
+def student_t(x, location, scale, freedom):
+    t = (x - location) / scale
+    half = freedom / 2
+    tail = mp.betainc(half, mp.mpf(1) / 2, 0, freedom / (freedom + t * t), regularized=True) / 2
+    pdf = (1 + t * t / freedom) ** (-half - mp.mpf(1) / 2) / mp.beta(half, mp.mpf(1) / 2) / mp.sqrt(freedom) / scale
+    return (tail, 1 - tail, pdf) if t < 0 else (1 - tail, tail, pdf)
+
+
+def truncated_normal(x, location, scale, lower, upper):
+    z, a, b = ((v - location) / scale for v in (x, lower, upper))
+    # All three as upper tails, or all as lower ones: whichever is small, so that differences keep their digits.
+    if a > 0:
+        mass, cdf, sf = Phi(-a) - Phi(-b), Phi(-a) - Phi(-z), Phi(-z) - Phi(-b)
+    else:
+        mass, cdf, sf = Phi(b) - Phi(a), Phi(z) - Phi(a), Phi(b) - Phi(z)
+        if z > 0:
+            sf = Phi(-z) - Phi(-b)
+    return cdf / mass, sf / mass, phi(z) / scale / mass
+
+
+TWINS = {
+    f.__name__: f
+    for f in (
+        normal, lognormal, gumbel, gumbel_min, weibull, frechet, gamma, uniform, exponential, weibull3, lognormal3,
+        gev, beta, student_t, truncated_normal,
+    )
+}  # fmt: skip
+
+
+def quantile(name, u, parameters, near):
+    """Return the x with F(x) = Phi(u), by Newton steps from ``near`` in the tail in which u lies."""
+    x = mp.mpf(near)
+    for _ in range(6):
+        step = mismatch(name, u, parameters, x)
+        x -= step
+        if abs(step) < mp.mpf(10) ** (-35) * (abs(x) + mp.mpf(10) ** -300):
+            return x
+    raise AssertionError(f"{name}: no quantile near {near} for u = {u}")
+
+
+def mismatch(name, u, parameters, x):
+    """Return (F(x) - Phi(u))/f(x), from the tail in which u lies."""
+    cdf, sf, pdf = TWINS[name](x, *parameters)
+    return (cdf - Phi(u)) / pdf if u < 0 else (Phi(-u) - sf) / pdf
+
+
+def density_slope(name, parameters, x, scale):
+    """Return d ln f/dx by a central difference whose step is 1e-20 of ``scale``."""
+    h = scale * mp.mpf(10) ** -20
+    up, down = (mp.log(TWINS[name](x + s * h, *parameters)[2]) for s in (1, -1))
+    return (up - down) / (2 * h)
+
+
+def parameter_slope(name, u, parameters, x, index):
+    """Return dx/dp at fixed u, -(dF/dp)/f, with dF/dp by a central difference."""
+    p = parameters[index]
+    if mp.isinf(p):
+        return mp.mpf(0)
+    h = (abs(p) if p else mp.mpf(1)) * mp.mpf(10) ** -20
+    ends = []
+    for s in (1, -1):
+        moved = [*parameters]
+        moved[index] = p + s * h
+        ends.append(TWINS[name](x, *moved)[0 if u < 0 else 1])
+    slope = (ends[0] - ends[1]) / (2 * h) / TWINS[name](x, *parameters)[2]
+    return -slope if u < 0 else slope
