@@ -126,9 +126,7 @@ def axis_label(result: Result, axis: str) -> str:
 
 def beta_limits(result: Result) -> tuple[float, float]:
     """Return limits of the scale of beta that hold present and proposed values, target and floor."""
-    shown = [
-        result.situations[f"beta_{kind}"].to_numpy(float)[taking_part(result, kind)] for kind in TITLES
-    ]
+    shown = [result.situations[f"beta_{kind}"].to_numpy(float)[taking_part(result, kind)] for kind in TITLES]
     marks = [result.study.target_beta]
     if result.study.objective.floor is not None:
         marks.append(result.study.objective.floor)

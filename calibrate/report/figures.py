@@ -52,7 +52,9 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
     for name, variable in result.variables.items():
         if variable.comparison is None:
             continue
-        chosen = next(f for f in variable.comparison.candidates if f.family == variable.comparison.recommended)
+        chosen = next(
+            f for f in variable.comparison.candidates if f.family == variable.comparison.recommended
+        )
         record = result.study.records[result.study.variables[name].records or ""]
         unit = format_unit(record.unit.text) if record.unit.text else ""
         yield f"probability_{name}", probability_figure(chosen, label=symbols.plain(name), unit=unit)

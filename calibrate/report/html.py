@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from calibrate.report import inputs, numbers, outcome, symbols
 from calibrate.report.axis_figure import BY_RULE, panel_axes
+from calibrate.report.fit_files import candidate_table
 from calibrate.report.outcome import GROUP_ALPHA, GROUP_POINT
 from calibrate.report.symbols import Html
 
@@ -98,7 +99,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "derived": inputs.derived_formulas(result),
         "rules": inputs.rule_texts(result),
         "fitted": {
-            name: (v, inputs.candidate_table(v))
+            name: (v, candidate_table(v.comparison))
             for name, v in result.variables.items()
             if v.comparison is not None
         },
@@ -113,7 +114,9 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "extremes": EXTREMES,
         "missing": _rows(result, outcome.without_beta(result)[:EXTREMES]),
         "classes": {GROUP_ALPHA: "ga", GROUP_POINT: "gp"},
-        "described_factors": [(f.name, t) for f in study.factors if (t := study.factor_descriptions.get(f.name))],
+        "described_factors": [
+            (f.name, t) for f in study.factors if (t := study.factor_descriptions.get(f.name))
+        ],
         "weight_formula": _weight(study.weight_text),
         "axis_caption": _axis_caption(result),
         "fit_methods": _fit_methods(result),
@@ -199,7 +202,9 @@ def _fit_methods(result: Result) -> str:
 
 
 def _axis_caption(result: Result) -> str:
-    parts = ["Reliability index of every design situation with present and proposed factors; horizontal line: target"]
+    parts = [
+        "Reliability index of every design situation with present and proposed factors; horizontal line: target"
+    ]
     if result.study.objective.floor is not None:
         parts.append(", dashed: floor")
     parts.append(". Marks by rule, larger with more weight; lines join the weighted means.")

@@ -5,12 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
-import numpy as np
-
 from calibrate.report import numbers, symbols
 from calibrate.report.outcome import column_unit
 from calibrate.report.symbols import Html
-from calibrate.report.table import Column, Table, aligned, each
+from calibrate.report.table import Column, Table, each
 from calibrate.study.result import Result, VariableResult
 from calibrate.units import format_unit
 
@@ -205,32 +203,3 @@ def rule_texts(result: Result) -> list[RuleText]:
 def derived_formulas(result: Result) -> list[tuple[Html, Html]]:
     """Return the derived quantities: name and formula."""
     return [(symbols.html(n), symbols.formula(e)) for n, e in result.study.derived.items()]
-
-
-def candidate_table(variable: VariableResult) -> Table:
-    """Return the families that were fitted to the records of a variable, best first, failed ones with reason."""
-    assert variable.comparison is not None
-    candidates = variable.comparison.candidates
-    best = min((c.aicc for c in candidates if np.isfinite(c.aicc)), default=np.nan)
-    chosen = {i for i, c in enumerate(candidates) if c.family == variable.comparison.recommended}
-    return Table(
-        (
-            Column("family", [c.family for c in candidates]),
-            Column("parameters ± standard error", [_estimates(c) for c in candidates]),
-            Column("log-likelihood", [c.log_likelihood for c in candidates], aligned(5), "number"),
-            Column("AICc", [c.aicc for c in candidates], each(numbers.fixed, 1), "number"),
-            Column("ΔAICc", [c.aicc - best for c in candidates], each(numbers.fixed, 1), "number"),
-            Column("A²", [c.anderson_darling for c in candidates], each(numbers.fixed, 3), "number"),
-            Column("status", [c.status + (f": {c.reason}" if c.reason else "") for c in candidates]),
-        ),
-        strong=frozenset(chosen),
-    )
-
-
-def _estimates(fit: Any) -> str:
-    texts = []
-    for name, value in fit.parameters.items():
-        error = fit.standard_errors.get(name, np.nan)
-        with_error = f" ± {numbers.significant(error, 2)}" if np.isfinite(error) and error > 0 else " (fixed)"
-        texts.append(f"{name} = {numbers.significant(value, 5)}{with_error}")
-    return ", ".join(texts)

@@ -95,7 +95,11 @@ def _boundary(axes: Axes, rule: Sensitivity, shares: Array, at: Array) -> None:
 
 def _labels(axes: Axes, edges: list[tuple[float, float, str, str]]) -> None:
     """Name the variables beside the last bar, pushed apart where they would overlap."""
-    named = [(low + 0.5 * height, name, colour) for low, height, name, colour in edges if height >= 100 * _LEAST_LABEL]
+    named = [
+        (low + 0.5 * height, name, colour)
+        for low, height, name, colour in edges
+        if height >= 100 * _LEAST_LABEL
+    ]
     apart = 7.2
     places = [p for p, *_ in named]
     for i in range(1, len(places)):

@@ -62,7 +62,9 @@ def size_change(changes: list[SizeChange]) -> Figure:
         axes.set_xlabel(f"change of {change.size} (%)")
         axes.set_ylabel("share of weight (%)")
         axes.grid(visible=True, axis="y")
-        axes.set_xlim(min(edges[0], 0.0) - 0.5 * edges_width(edges), max(edges[-1], 0.0) + 0.5 * edges_width(edges))
+        axes.set_xlim(
+            min(edges[0], 0.0) - 0.5 * edges_width(edges), max(edges[-1], 0.0) + 0.5 * edges_width(edges)
+        )
         axes.locator_params(axis="y", nbins=5)
         top = max(top, axes.get_ylim()[1])
         panels.append(axes)

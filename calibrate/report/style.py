@@ -97,9 +97,7 @@ def figure(width_mm: float, height_mm: float) -> Figure:
     return Figure(figsize=(width_mm * MILLIMETRE, height_mm * MILLIMETRE))
 
 
-def panel(
-    figure: Figure, left: float, bottom: float, width: float, height: float, **settings: Any
-) -> Axes:
+def panel(figure: Figure, left: float, bottom: float, width: float, height: float, **settings: Any) -> Axes:
     """Return axes at a place given in millimetres from the lower left corner of the figure."""
     w, h = figure.get_size_inches() / MILLIMETRE
     return figure.add_axes((left / w, bottom / h, width / w, height / h), **settings)

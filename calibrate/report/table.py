@@ -110,7 +110,10 @@ class Table:
         """Return the class attribute of the cells of each column."""
         found = []
         for c in self.columns:
-            names = [*(["n"] if c.kind == "number" else []), *([groups[c.group]] if c.group in groups else [])]
+            names = [
+                *(["n"] if c.kind == "number" else []),
+                *([groups[c.group]] if c.group in groups else []),
+            ]
             found.append(Html(f' class="{" ".join(names)}"' if names else ""))
         return found
 

@@ -1,0 +1,47 @@
+"""The application: its commands and their common ways."""
+
+from __future__ import annotations
+
+import typer
+
+from calibrate import __version__
+from calibrate.cli import check, fit, run
+
+CAUTION = (
+    "Results depend on the data and models given. Target reliabilities and factors are for competent engineers and "
+    "the responsible authority to set; local codes and licensed practice prevail."
+)
+
+app = typer.Typer(
+    name="calibrate",
+    help="Calibrate partial factors, or resistance and load factors, from test and load records to a target "
+    "reliability.",
+    epilog=CAUTION,
+    no_args_is_help=True,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
+)
+app.command("run", help=run.HELP)(run.run)
+app.command("check", help=check.HELP)(check.check)
+app.command("fit", help=fit.HELP)(fit.fit)
+
+
+def _show_version(wanted: bool) -> None:
+    if wanted:
+        typer.echo(f"calibrate {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _common(
+    version: bool = typer.Option(
+        False, "--version", callback=_show_version, is_eager=True, help="Print the version and end."
+    ),
+) -> None:
+    del version
+
+
+def main() -> None:
+    """Run the command line."""
+    app()
