@@ -23,7 +23,7 @@ def exprel_slope(w: Array) -> Array:
     small = np.where(near, w, 0.0)
     large = np.where(near, 1.0, w)
     series = np.polynomial.polynomial.polyval(small, _EXPREL_SLOPE)
-    return np.where(near, series, (large * np.exp(large) - np.expm1(large)) / large**2)
+    return np.asarray(np.where(near, series, (large * np.exp(large) - np.expm1(large)) / large**2))
 
 
 def log1p_ratio(w: Array) -> Array:

@@ -1,4 +1,4 @@
-# ruff: noqa: D102, ARG002  (the formulas are documented in Family)
+# ruff: noqa: D102  (the formulas are documented in Family)
 """What families of extremes share: x is a simple function of the log-hazard k(u) = ln(-ln Phi(u)).
 
 Families of maxima have ``F(x) = exp(-exp(k))``, families of minima ``1 - F(x) = exp(-exp(k))``.

@@ -58,7 +58,7 @@ class Family(ABC):
 
     # Formulas in x ------------------------------
 
-    def support(self, p: Values) -> tuple[Array, Array]:  # noqa: ARG002
+    def support(self, p: Values) -> tuple[Array, Array]:
         """Return the ends of the support."""
         return np.asarray(self.limits[0]), np.asarray(self.limits[1])
 
@@ -99,11 +99,11 @@ class Family(ABC):
     def moments(self, p: Values) -> tuple[Array, Array]:
         """Return mean and standard deviation; inf or NaN where they do not exist."""
 
-    def moment_slopes(self, p: Values) -> tuple[tuple[Array, Array], ...]:  # noqa: ARG002
+    def moment_slopes(self, p: Values) -> tuple[tuple[Array, Array], ...]:
         """Return (d mean/dp, d sd/dp) for each own parameter."""
         raise args.refuse(self.name, "moments are not taken.")
 
-    def from_moments(self, m: Moments) -> Values:  # noqa: ARG002
+    def from_moments(self, m: Moments) -> Values:
         """Return own parameters; InputError when no member of the family has these moments."""
         raise args.refuse(self.name, "moments are not taken.")
 
@@ -112,11 +112,11 @@ class Family(ABC):
 
     # Extremes ------------------------------
 
-    def maximum_parameters(self, p: Values, ratio: Array) -> Values | None:  # noqa: ARG002
+    def maximum_parameters(self, p: Values, ratio: Array) -> Values | None:
         """Return parameters of this family for F**ratio, or None when it leaves the family."""
         return None
 
-    def minimum_parameters(self, p: Values, ratio: Array) -> Values | None:  # noqa: ARG002
+    def minimum_parameters(self, p: Values, ratio: Array) -> Values | None:
         """Return parameters of this family for 1 - (1 - F)**ratio, or None when it leaves the family."""
         return None
 

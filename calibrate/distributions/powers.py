@@ -1,4 +1,4 @@
-# ruff: noqa: D102, ARG002  (the formulas are documented in Family; each takes what its base declares)
+# ruff: noqa: D102  (the formulas are documented in Family; each takes what its base declares)
 """What Weibull and Frechet share: x = scale E**y with E standard exponential, y = 1/shape or -1/shape."""
 
 from __future__ import annotations

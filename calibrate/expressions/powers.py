@@ -76,7 +76,8 @@ class _Expansion:
             case "+":
                 return _plus(known[0], known[1])
             case "-":
-                return _plus(known[0], _times({Fraction(0): ["(-1)"]}, known[1]))
+                opposite = _times({Fraction(0): ["(-1)"]}, known[1])
+                return None if opposite is None else _plus(known[0], opposite)
             case "*":
                 return _times(known[0], known[1])
             case "/":

@@ -191,4 +191,4 @@ def _program(f: int, matrix: Array, limit: Array, low: Array, high: Array) -> Ar
     cost[-1] = 1.0
     box = [*zip(low, high, strict=True), (0.0, None)]
     result = linprog(cost, A_ub=matrix, b_ub=limit, bounds=box, method="highs")
-    return np.asarray(result.x[:f]) if result.status == 0 else None
+    return None if result.status != 0 or result.x is None else np.asarray(result.x[:f])

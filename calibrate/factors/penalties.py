@@ -111,7 +111,7 @@ class Minimax(Penalty):
         """Return 0."""
         return np.zeros_like(r)
 
-    def objective(self, r: Array, weight: Array) -> float:  # noqa: ARG002 - all weights are positive here
+    def objective(self, r: Array, weight: Array) -> float:
         """Return the largest penalty."""
         return float(np.max(np.abs(r)))
 

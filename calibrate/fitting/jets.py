@@ -231,7 +231,7 @@ def _sum(part: Part, n: int) -> float:
     if part is None:
         return 0.0
     if np.ndim(part) == 0:
-        return float(part) * n  # type: ignore[arg-type]
+        return float(part) * n
     return float(np.sum(part))
 
 

@@ -103,10 +103,17 @@ def _estimate(search: _Search, data: Data, fixed: Mapping[str, float], top: Maxi
     notes = [*model.notes(data.z, p, free)]
     irregular = model.irregular(p, free)
     if irregular is not None:
-        covariance = np.full_like(covariance, np.nan)
+        covariance = np.full(covariance.shape, np.nan)
         notes.append(("not-regular", irregular))
     log_likelihood = data.n * (top.value - math.log(data.unit))
-    return Estimate(_outward(search, data, fixed, p), free, covariance, log_likelihood, "", tuple(notes))
+    return Estimate(
+        _outward(search, data, fixed, p),
+        free,
+        np.asarray(covariance, dtype=np.float64),
+        log_likelihood,
+        "",
+        tuple(notes),
+    )
 
 
 def _irregular(search: _Search, data: Data, fixed: Mapping[str, float]) -> Estimate:
@@ -122,7 +129,14 @@ def _irregular(search: _Search, data: Data, fixed: Mapping[str, float]) -> Estim
     notes = (("not-regular", reason),) if reason else ()
     covariance = np.full((len(free), len(free)), np.nan)
     log_likelihood = data.n * (value - math.log(data.unit))
-    return Estimate(_outward(search, data, fixed, p), free, covariance, log_likelihood, "", notes)
+    return Estimate(
+        _outward(search, data, fixed, p),
+        free,
+        np.asarray(covariance, dtype=np.float64),
+        log_likelihood,
+        "",
+        notes,
+    )
 
 
 def _outward(

@@ -182,7 +182,7 @@ def gev_skewness(shape: float) -> float:
         g1, g2, g3 = (float(special.gammaln(1.0 - k * shape)) for k in (1, 2, 3))
         d2, d3 = g2 - 2.0 * g1, g3 - 3.0 * g1
         top = math.expm1(d3) - 3.0 * math.expm1(d2)
-    return math.copysign(1.0, shape) * top / math.expm1(d2) ** 1.5
+    return float(math.copysign(1.0, shape) * top / math.expm1(d2) ** 1.5)
 
 
 def _second_order(d: float) -> float:

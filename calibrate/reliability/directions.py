@@ -16,32 +16,53 @@ Array = npt.NDArray[np.float64]
 RADII = (0.5, 1.0, 1.5, 2.0, 2.5, 3.0, 3.75, 4.5, 5.5, 7.0, 9.0, 12.0, REACH)
 # Up to this number of variables every corner of the cube is a direction, beyond it 16 corners.
 ALL_CORNERS = 4
+ROUND = 24
+"""Directions in a plane."""
 
 
-def fixed_directions(m: int, random: tuple[int, ...]) -> tuple[Array, Array]:
-    """Return unit vectors along the axes and towards corners, shapes (m, n_axes) and (m, n_corners).
+def axes(m: int, random: tuple[int, ...]) -> Array:
+    """Return unit vectors both ways along the axes, shape (m, 2 k).
 
     Parameters
     ----------
     m : int
         Number of variables.
     random : tuple of int
-        The rows that vary; the others stay zero.
+        The k rows that vary; the others stay zero.
     """
+    return _placed(np.concatenate([np.eye(len(random)), -np.eye(len(random))], axis=1), m, random)
+
+
+def corners(m: int, random: tuple[int, ...]) -> Array:
+    """Return unit vectors towards corners of the cube: all of them for few variables, else 16; shape (m, n)."""
     k = len(random)
-    rows = list(random)
-    axes = np.zeros((m, 2 * k))
-    axes[rows, :k] = np.eye(k)
-    axes[rows, k:] = -np.eye(k)
     if k <= 1:
-        return axes, np.zeros((m, 0))
-    if k <= ALL_CORNERS:
-        signs = 1.0 - 2.0 * ((np.arange(2**k) >> np.arange(k)[:, None]) & 1)
-    else:
-        signs = _walsh(k)
-    corners = np.zeros((m, signs.shape[1]))
-    corners[rows] = signs / np.sqrt(k)
-    return axes, corners
+        return np.zeros((m, 0))
+    signs = 1.0 - 2.0 * ((np.arange(2**k) >> np.arange(k)[:, None]) & 1) if k <= ALL_CORNERS else _walsh(k)
+    return _placed(signs / np.sqrt(k), m, random)
+
+
+def between(m: int, random: tuple[int, ...]) -> Array:
+    """Return unit vectors between axes and corners where these alone leave wide gaps: two or three variables."""
+    k = len(random)
+    if k == 2:
+        turn = 2.0 * np.pi * np.arange(ROUND) / ROUND
+        # Every third is an axis or a corner already.
+        turn = turn[np.arange(ROUND) % 3 != 0]
+        return _placed(np.array([np.cos(turn), np.sin(turn)]), m, random)
+    if k == 3:
+        signs = np.array([(a, b) for a in (1.0, -1.0) for b in (1.0, -1.0)]).T / np.sqrt(2.0)
+        edges = np.zeros((3, 12))
+        for at, pair in enumerate(((0, 1), (0, 2), (1, 2))):
+            edges[list(pair), 4 * at : 4 * at + 4] = signs
+        return _placed(edges, m, random)
+    return np.zeros((m, 0))
+
+
+def _placed(vectors: Array, m: int, random: tuple[int, ...]) -> Array:
+    placed = np.zeros((m, vectors.shape[1]))
+    placed[list(random)] = vectors
+    return placed
 
 
 def _walsh(k: int) -> Array:

@@ -25,7 +25,7 @@ from calibrate.reliability.robust import resolve
 from calibrate.reliability.rows import dot
 from calibrate.reliability.settings import REACH, FormSettings
 from calibrate.reliability.status import CONVERGED, has_beta
-from calibrate.reliability.verify import Points, settle, suspicious
+from calibrate.reliability.verify import Flags, Points, settle, suspicious, unruly
 
 Array = npt.NDArray[np.float64]
 
@@ -127,10 +127,12 @@ def _chunk(problem: Problem, start: Array | None, settings: FormSettings) -> Rel
                 problem, points, fast.first_g if cold else None, fast.first_a if cold else None
             )
             evaluations += problem.n
+            if not problem.limit_state.affine:
+                doubtful, more = _looked_at_more(problem, points, doubtful)
+                evaluations += more
     if doubtful.any():
         at = np.flatnonzero(doubtful)
-        part = Points(*(getattr(points, name)[..., at] for name in Points.__slots__))
-        settled = resolve(problem.take(at, at.size), part, passes[at], settings)
+        settled = resolve(problem.take(at, at.size), points.take(at), passes[at], settings)
         for name in Points.__slots__:
             getattr(points, name)[..., at] = getattr(settled.points, name)
         code[at] = settled.code
@@ -143,6 +145,18 @@ def _chunk(problem: Problem, start: Array | None, settings: FormSettings) -> Rel
         problem.limit_state.variables, points.beta, points.u, points.x, points.alpha, points.norm,
         code, passes, evaluations,
     )  # fmt: skip
+
+
+def _looked_at_more(problem: Problem, points: Points, doubtful: Flags) -> tuple[Flags, int]:
+    """Return which situations are doubtful after all, and the evaluations that this took."""
+    at = np.flatnonzero(~doubtful)
+    if at.size == 0:
+        return doubtful, 0
+    whole = at.size == problem.n
+    found, part = (points, problem) if whole else (points.take(at), problem.take(at, at.size))
+    doubtful = doubtful.copy()
+    doubtful[at] = unruly(part, found)
+    return doubtful, at.size * (8 + 2 * problem.m)
 
 
 def _within_reach(start: Array) -> Array:

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import lru_cache
 from typing import Any, Protocol
 
 import numpy as np
@@ -33,6 +34,9 @@ class LimitState(Protocol):
     kinks : int
         Places where the gradient may jump, 0 when smooth or unknown. Situations of a limit state with kinks are
         always searched from several starts.
+    affine : bool
+        Whether g is known to be affine in each variable, the others held: a product of sums, for example. Other
+        limit states are looked at in more places before a single design point is believed.
     """
 
     @property
@@ -40,6 +44,9 @@ class LimitState(Protocol):
 
     @property
     def kinks(self) -> int: ...  # noqa: D102
+
+    @property
+    def affine(self) -> bool: ...  # noqa: D102
 
     def take(self, columns: Any) -> LimitState:
         """Return the limit state of some situations; ``columns`` is a slice or an array of indices."""
@@ -62,6 +69,11 @@ class LimitState(Protocol):
 
         ``slopes`` are dx/du, the scale on which each variable matters; only differences need them.
         """
+
+
+@lru_cache(maxsize=256)
+def _affine(margin: Expression, variables: tuple[str, ...]) -> bool:
+    return all(margin.is_linear_in(name) for name in variables)
 
 
 def _taken(values: Mapping[str, Any], columns: Any) -> dict[str, Any]:
@@ -91,6 +103,11 @@ class ExpressionLimitState:
         """Places where the gradient may jump."""
         return self.margin.kinks
 
+    @property
+    def affine(self) -> bool:
+        """Whether g is affine in each variable."""
+        return _affine(self.margin, self.variables)
+
     def _bound(self) -> _BoundExpression:
         stages = self.margin.staged(self.variables, 1)
         # numpy's arithmetic of scalars may differ from that of arrays in the last bit, so numbers go in as arrays.
@@ -99,7 +116,7 @@ class ExpressionLimitState:
         fixed = stages.fixed(whole)
         # What came of numbers only is a number again.
         parts = tuple(v[0] if np.ndim(v) and (alone or v.size == 1) else v for v in fixed)
-        return _BoundExpression(stages, self.variables, self.kinks, parts)
+        return _BoundExpression(stages, self.variables, self.kinks, self.affine, parts)
 
     def take(self, columns: Any) -> LimitState:
         """Return the limit state of some situations, its fixed part evaluated."""
@@ -123,11 +140,12 @@ class _BoundExpression:
     stages: Staged
     variables: tuple[str, ...]
     kinks: int
+    affine: bool
     fixed: tuple[Any, ...]
 
     def take(self, columns: Any) -> _BoundExpression:
         fixed = tuple(v[columns] if np.ndim(v) else v for v in self.fixed)
-        return _BoundExpression(self.stages, self.variables, self.kinks, fixed)
+        return _BoundExpression(self.stages, self.variables, self.kinks, self.affine, fixed)
 
     def value(self, x: Rows, columns: Any = None) -> Array:
         return self.gradient(x, columns)[0]
@@ -136,7 +154,7 @@ class _BoundExpression:
         self,
         x: Rows,
         columns: Any = None,
-        slopes: Rows | None = None,  # noqa: ARG002 - the protocol's
+        slopes: Rows | None = None,
     ) -> tuple[Array, Sequence[Any]]:
         bound = self if columns is None else self.take(columns)
         g, by_x = self.stages(list(x), bound.fixed)
@@ -169,6 +187,11 @@ class CallableLimitState:
     def kinks(self) -> int:
         """Return 0: what a function hides is not known."""
         return 0
+
+    @property
+    def affine(self) -> bool:
+        """Return False: what a function hides is not known."""
+        return False
 
     def take(self, columns: Any) -> CallableLimitState:
         """Return the limit state of some situations."""

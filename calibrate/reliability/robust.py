@@ -9,7 +9,7 @@ import numpy.typing as npt
 
 from calibrate.reliability.candidates import Candidates
 from calibrate.reliability.descent import BISECTIONS, STEPS, reach_other_side
-from calibrate.reliability.directions import RADII, fixed_directions, scan, unit
+from calibrate.reliability.directions import RADII, axes, between, corners, scan, unit
 from calibrate.reliability.kink import meet
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.rows import dot
@@ -73,13 +73,14 @@ def resolve(problem: Problem, found: Points, passes: Counts, settings: FormSetti
     passes : int array (n,)
         Its passes.
     """
-    size = max(1, BLOCK // (3 * problem.m + 20))
+    size = max(1, BLOCK // (3 * problem.m + 30))
     names = Points.__slots__
     parts = []
     for at in range(0, problem.n, size):
         piece = slice(at, min(at + size, problem.n))
-        part = Points(*(getattr(found, name)[..., piece] for name in names))
-        parts.append(_resolve(problem.take(piece, piece.stop - at), part, passes[piece], settings))
+        parts.append(
+            _resolve(problem.take(piece, piece.stop - at), found.take(piece), passes[piece], settings)
+        )
     return Settled(
         Points(*(np.concatenate([getattr(p.points, name) for p in parts], axis=-1) for name in names)),
         np.concatenate([p.code for p in parts]),
@@ -131,18 +132,19 @@ def _directions(
 ) -> tuple[Array, npt.NDArray[np.bool_]]:
     """Return unit vectors (m, slots n), and of which slots a start is made whatever is seen along them."""
     n, m = problem.n, problem.m
-    axes, corners = fixed_directions(m, problem.random)
+    along = axes(m, problem.random)
+    others = [corners(m, problem.random), between(m, problem.random)]
     down = np.zeros((m, n))
     down[problem.random[0] if problem.random else 0] = 1.0
     down = unit(-side * a, down)
     point = unit(np.where(found.good, found.u, np.nan), down)
     flips = [np.where(np.arange(m)[:, None] == i, -point, point) for i in problem.random]
     own = np.stack([down, -down, point, -point, *flips], axis=1)
-    fixed = np.repeat(np.concatenate([axes, corners], axis=1)[:, :, None], n, axis=2)
+    fixed = np.repeat(np.concatenate([along, *others], axis=1)[:, :, None], n, axis=2)
     direction = np.concatenate([own, fixed], axis=1)
     always = np.zeros(direction.shape[1], dtype=np.bool_)
     always[:4] = True
-    always[own.shape[1] : own.shape[1] + axes.shape[1]] = True
+    always[own.shape[1] : own.shape[1] + along.shape[1]] = True
     return direction.reshape(m, -1), always
 
 
@@ -174,9 +176,8 @@ def _kinks(wide: Problem, pool: Candidates, seen: Array, settings: FormSettings)
     part = wide.take(slot * pool.side.size + column, slot.size)
     points, evaluations = meet(part, pool.end[:, slot, column], pool.side[column], settings)
     at = np.flatnonzero(points.good)
-    good = Points(*(getattr(points, name)[..., at] for name in Points.__slots__))
     code = np.full(at.size, CONVERGED, dtype=np.int8)
-    pool.put(slot[at], column[at], good, code, pool.passes[slot[at], column[at]])
+    pool.put(slot[at], column[at], points.take(at), code, pool.passes[slot[at], column[at]])
     return evaluations
 
 

@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
+from calibrate.reliability.directions import axes, corners
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.rows import add_rows, dot
 
@@ -21,6 +23,10 @@ NO_MATTER, MATTERS = 1e-3, 0.05
 CHANGED = -0.01
 # Least cosine between the gradients at the medians and at the design point that raises no question.
 TURNED = 0.3
+# Number of corners at which a limit state of unknown form is looked at, and where on the axes; radii are those of the
+# design point.
+LOOKS = 8
+AXIS_PART = 0.6
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,6 +52,10 @@ class Points:
     norm: Array
     good: Flags
 
+    def take(self, columns: Any) -> Points:
+        """Return the points of some situations."""
+        return Points(*(getattr(self, name)[..., columns] for name in self.__slots__))
+
 
 def settle(problem: Problem, u: Array) -> Points:
     """Evaluate at u, nearly a design point, and move to the foot of the perpendicular on the tangent plane.
@@ -65,7 +75,6 @@ def settle(problem: Problem, u: Array) -> Points:
     for row, value, slope, by in zip(moved, x, slopes, move, strict=True):
         np.multiply(slope, by, out=row)
         np.add(row, value, out=row)
-    # NaN in any row of x makes the situation bad: its distribution has no finite parameters.
     good &= np.isfinite(beta)
     return Points(beta, point, moved, a, norm, good)
 
@@ -102,6 +111,30 @@ def suspicious(problem: Problem, points: Points, first_g: Array | None, first_a:
     np.multiply(b, alpha, out=b)
     calm = (side * g > 0.0) & (add_rows(b) > 0.0) & (np.min(b, axis=0) >= CHANGED * length) & ~woken
     if first_g is not None and first_a is not None:
-        turned = dot(first_a, alpha) > TURNED * np.sqrt(dot(first_a, first_a))
-        calm &= (side * first_g >= 0.0) & turned
-    return np.logical_not(calm)
+        np.multiply(first_a, alpha, out=b)
+        length = np.sqrt(dot(first_a, first_a))
+        calm &= (side * first_g >= 0.0) & (add_rows(b) > TURNED * length)
+        calm &= np.min(b, axis=0) >= CHANGED * length
+    return np.asarray(np.logical_not(calm))
+
+
+def unruly(problem: Problem, points: Points) -> Flags:
+    """Return where a variable drives the limit state one way at the design point and the other way elsewhere.
+
+    Looks in many more places than :func:`suspicious`, for limit states that are not affine in each variable. It
+    costs an evaluation for each place, and finds most of the situations of random cubic limit states that have a
+    nearer point than the one found; with products of monotonic functions it is silent.
+    """
+    alpha = points.alpha
+    radius = np.maximum(np.abs(points.beta), 2.0)
+    radius = np.where(points.good, radius, 0.0)
+    m, random = problem.m, problem.random
+    places = np.concatenate([corners(m, random)[:, :LOOKS], AXIS_PART * axes(m, random)], axis=1)
+    calm = np.ones(problem.n, dtype=np.bool_)
+    b = np.empty_like(alpha)
+    for place in places.T:
+        problem.evaluate(place[:, None] * radius, b)
+        length = np.sqrt(dot(b, b))
+        np.multiply(b, alpha, out=b)
+        calm &= (add_rows(b) > 0.0) & (np.min(b, axis=0) >= CHANGED * length)
+    return np.asarray(np.logical_not(calm))

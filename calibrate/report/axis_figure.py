@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -139,7 +139,7 @@ def beta_limits(result: Result) -> tuple[float, float]:
 def target_lines(axes: Axes, result: Result, *, label: bool) -> None:
     """Draw the target and the floor across a panel, named beside it."""
     target, floor = result.study.target_beta, result.study.objective.floor
-    lines = [(target, "target", "-")]
+    lines: list[tuple[float, str, Any]] = [(target, "target", "-")]
     if floor is not None and floor != target:
         lines.append((floor, "floor", (0, (4, 2))))
     low, high = axes.get_ylim()

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from jinja2 import Environment
 
     from calibrate.report.style import Rendered
+    from calibrate.report.table import Table
     from calibrate.study.result import Result
 
 MOST_ROWS = 2000
@@ -126,7 +127,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
     }
 
 
-def _rows(result: Result, rows: list[int]) -> outcome.Table | None:
+def _rows(result: Result, rows: list[int]) -> Table | None:
     return outcome.place_table(result, rows) if rows else None
 
 

@@ -8,7 +8,7 @@ sign; a power of ten is written out (``1.2·10⁻⁵``).
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable
 
 NONE = "–"
 MINUS = "−"
@@ -159,11 +159,12 @@ def column(values: Iterable[float | None], digits: int = 4) -> list[str]:
     return [fixed(v, decimals) for v in numbers]
 
 
-def span(values: Sequence[float], digits: int = 4) -> str:
+def span(values: Iterable[float], digits: int = 4) -> str:
     """Return one number, or ``smallest … largest`` where they differ; those that do not exist are left out."""
-    finite = [float(v) for v in values if math.isfinite(v)]
+    given = [float(v) for v in values]
+    finite = [v for v in given if math.isfinite(v)]
     if not finite:
-        return significant(values[0], digits) if len(values) else NONE
+        return significant(given[0], digits) if given else NONE
     low, high = significant(min(finite), digits), significant(max(finite), digits)
     return low if low == high else f"{low} … {high}"
 

@@ -127,7 +127,7 @@ def probability_figure(
     if paper.log:
         axes.set_xscale("log")
     heights = paper.ordinate(lower, upper)
-    _draw_band(axes, distribution, heights, shown + 1.0, n)
+    _draw_band(axes, distribution, heights, np.asarray(shown + 1.0, dtype=np.float64), n)
     _draw_line(axes, distribution, paper, 0.4 / n)
     _draw_points(axes, values[shown], heights, n)
     _rule(axes, paper, 0.4 / n)

@@ -46,7 +46,8 @@ def _bars(axes: Axes, result: Result, rule: Sensitivity, axis: str) -> None:
     values = result.situations[BY_RULE if axis == BY_RULE else axis].to_numpy()[rule.rows]
     ruler = scale(values)
     if axis == BY_RULE or ruler.levels is None:
-        labels, shares = ("all situations",), rule.shares[:, None]
+        labels: tuple[str, ...] = ("all situations",)
+        shares = rule.shares[:, None]
     else:
         present = [np.isclose(ruler.position, level) for level in ruler.levels]
         labels = ruler.labels
@@ -76,7 +77,7 @@ def _bars(axes: Axes, result: Result, rule: Sensitivity, axis: str) -> None:
 def _mean_square(rule: Sensitivity, rows: NDArray[np.bool_]) -> Array:
     if not rows.any():
         return np.zeros(len(rule.variables))
-    return rule.alpha[:, rows] ** 2 @ (rule.weight[rows] / rule.weight[rows].sum())
+    return np.asarray(rule.alpha[:, rows] ** 2 @ (rule.weight[rows] / rule.weight[rows].sum()))
 
 
 def _order(rule: Sensitivity) -> list[int]:

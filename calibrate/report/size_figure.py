@@ -30,7 +30,7 @@ def change_bins(percent: NDArray[np.float64], most: int = 24) -> NDArray[np.floa
 def size_change(changes: list[SizeChange]) -> Figure:
     """Return one weighted histogram of the change of size per rule, over common bins."""
     percent = [100.0 * (c.ratio - 1.0) for c in changes]
-    edges = change_bins(np.round(np.concatenate(percent), 9))
+    edges = change_bins(np.asarray(np.round(np.concatenate(percent), 9), dtype=np.float64))
     rows = -(-len(changes) // _COLUMNS)
     height = 2.0 + rows * _HEIGHT
     figure = style.figure(_WIDTH, height)

@@ -87,7 +87,8 @@ def context() -> AbstractContextManager[None]:
 
     # What a user's own matplotlib settings say must not change a file.
     defaults = {k: v for k, v in mpl.rcParamsDefault.items() if k not in _OF_WINDOWS}
-    return mpl.rc_context({**defaults, **_RC})
+    settings: dict[Any, Any] = {**defaults, **_RC}
+    return mpl.rc_context(settings)
 
 
 def figure(width_mm: float, height_mm: float) -> Figure:

@@ -7,14 +7,17 @@ from dataclasses import dataclass
 from itertools import groupby
 from typing import Any, Literal
 
+from numpy.typing import NDArray
+
 from calibrate.report import numbers, symbols
 from calibrate.report.symbols import Html
 
-Show = Callable[[Sequence[Any]], Sequence[str]]
+Values = Sequence[Any] | NDArray[Any]
+Show = Callable[[Values], Sequence[str]]
 Kind = Literal["text", "number", "name"]
 
 
-def as_text(values: Sequence[Any]) -> list[str]:
+def as_text(values: Values) -> list[str]:
     """Write values as they are; what does not exist as a dash."""
     return [numbers.NONE if v is None or v == "" else v if isinstance(v, str) else str(v) for v in values]
 
@@ -22,7 +25,7 @@ def as_text(values: Sequence[Any]) -> list[str]:
 def each(function: Callable[..., str], *arguments: Any) -> Show:
     """Return the way to write a column whose values are written one by one."""
 
-    def show(values: Sequence[Any]) -> list[str]:
+    def show(values: Values) -> list[str]:
         return [function(v, *arguments) for v in values]
 
     return show
@@ -31,7 +34,7 @@ def each(function: Callable[..., str], *arguments: Any) -> Show:
 def aligned(digits: int = 4) -> Show:
     """Return the way to write numbers with a common count of decimals."""
 
-    def show(values: Sequence[Any]) -> list[str]:
+    def show(values: Values) -> list[str]:
         return numbers.column(values, digits)
 
     return show
@@ -61,7 +64,7 @@ class Column:
     """
 
     head: str
-    values: Sequence[Any]
+    values: Values
     show: Show = as_text
     kind: Kind = "text"
     unit: str = ""

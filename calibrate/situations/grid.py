@@ -99,4 +99,4 @@ def normalised_weights(raw: npt.ArrayLike, n: int) -> Array:
             Problem("All weights are zero.", suggestion="Give at least one situation a positive weight.")
         )
     scaled = weight / largest
-    return scaled / scaled.sum()
+    return np.asarray(scaled / scaled.sum())

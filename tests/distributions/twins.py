@@ -14,7 +14,7 @@ def phi(u):
     return mp.exp(-u * u / 2) / mp.sqrt(2 * mp.pi)
 
 
-def Phi(u):
+def Phi(u):  # noqa: N802 - the usual symbol
     return mp.erfc(-u / mp.sqrt(2)) / 2
 
 
@@ -90,7 +90,12 @@ def student_t(x, location, scale, freedom):
     t = (x - location) / scale
     half = freedom / 2
     tail = mp.betainc(half, mp.mpf(1) / 2, 0, freedom / (freedom + t * t), regularized=True) / 2
-    pdf = (1 + t * t / freedom) ** (-half - mp.mpf(1) / 2) / mp.beta(half, mp.mpf(1) / 2) / mp.sqrt(freedom) / scale
+    pdf = (
+        (1 + t * t / freedom) ** (-half - mp.mpf(1) / 2)
+        / mp.beta(half, mp.mpf(1) / 2)
+        / mp.sqrt(freedom)
+        / scale
+    )
     return (tail, 1 - tail, pdf) if t < 0 else (1 - tail, tail, pdf)
 
 

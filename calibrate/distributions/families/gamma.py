@@ -81,7 +81,7 @@ def _quantile(u: Array, shape: Array) -> Array:
         q = special.gammainccinv(shape, tail)
     else:
         q = np.where(low, special.gammaincinv(shape, tail), special.gammainccinv(shape, tail))
-    return np.maximum(q, _TINY)
+    return np.asarray(np.maximum(q, _TINY))
 
 
 def _log_density(q: Array, shape: Array) -> Array:

@@ -1,4 +1,4 @@
-# ruff: noqa: D102, ARG002  (the formulas are documented in Family; each takes what its base declares)
+# ruff: noqa: D102  (the formulas are documented in Family; each takes what its base declares)
 """The uniform family."""
 
 from __future__ import annotations

@@ -5,6 +5,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from typing import ClassVar
 
 import numpy as np
 from scipy import special
@@ -70,7 +71,7 @@ class BetaModel(Model):
         Rule("lower", "location"),
         Rule("upper", "location"),
     )
-    preset = {"lower": 0.0, "upper": 1.0}
+    preset: ClassVar[Mapping[str, float]] = {"lower": 0.0, "upper": 1.0}
     closed = ("lower", "upper")
 
     def refusal(self, x: Array, fixed: Mapping[str, float]) -> str | None:
@@ -116,7 +117,7 @@ class TruncatedNormalModel(Model):
         Rule("upper", "location"),
     )
     origin = "mean"
-    preset = {"lower": -math.inf, "upper": math.inf}
+    preset: ClassVar[Mapping[str, float]] = {"lower": -math.inf, "upper": math.inf}
     closed = ("lower", "upper")
 
     def refusal(self, x: Array, fixed: Mapping[str, float]) -> str | None:
