@@ -11,6 +11,7 @@ from calibrate.factors.model import Factor, RuleModel
 from calibrate.factors.objective import FactorSet, Goal, factor_set
 from calibrate.factors.optimise import Optimum, optimise
 from calibrate.factors.penalties import PENALTIES, Penalty, make_penalty
+from calibrate.factors.required import required_factor
 from calibrate.factors.response import Evaluation, Response, RuleEvaluation
 
 __all__ = [
@@ -33,5 +34,6 @@ __all__ = [
     "levels",
     "make_penalty",
     "optimise",
+    "required_factor",
     "search_lattice",
 ]

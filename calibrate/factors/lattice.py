@@ -29,6 +29,8 @@ MOST_POINTS = 20_000
 """Points that are ordered by the model; with more the lattice is cut to a window around the optimum."""
 SMALL = 40
 """A lattice of at most so many points is evaluated whole."""
+LEAST_EVALUATED = 10
+"""So many of the most promising points are evaluated in any case: a committee wants to see the runners-up."""
 MOST_EVALUATED = 150
 MODEL_ROWS = 400
 TIE = 1e-9
@@ -127,7 +129,7 @@ def search_lattice(
     complete = True
     for count, k in enumerate(order):
         if points.shape[0] > SMALL:
-            if seen.settled(modelled[k]):
+            if count >= LEAST_EVALUATED and seen.settled(modelled[k]):
                 break
             if count >= MOST_EVALUATED:
                 complete = False

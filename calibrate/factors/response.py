@@ -48,7 +48,7 @@ class Evaluation:
 
     Attributes
     ----------
-    gamma : array (f,)
+    gamma : array (f,) or (f, N)
         The free factors, in order.
     beta : array (N,)
         Reliability index; NaN where there is none.
@@ -99,8 +99,8 @@ class Response:
 
         Parameters
         ----------
-        gamma : array (f,)
-            Free factors.
+        gamma : array (f,) or (f, N)
+            Free factors, the same in all rows or each row's own.
         start : Evaluation, optional
             For similar factors; its sizes and design points save passes.
 
@@ -109,10 +109,14 @@ class Response:
         InputError
             A basic variable has no distribution in some situation.
         """
-        factors = self.values(gamma)
-        parts = [
-            rule(factors, None if start is None else start.per_rule[k]) for k, rule in enumerate(self._rules)
-        ]
+        held = {f.name: float(f.present) for f in self.factors if f.held}
+        names = [f.name for f in self.free]
+        parts, row = [], 0
+        for k, rule in enumerate(self._rules):
+            own = gamma if gamma.ndim == 1 else gamma[:, row : row + rule.rule.n]
+            row += rule.rule.n
+            factors = {**held, **dict(zip(names, own, strict=True))}
+            parts.append(rule(factors, None if start is None else start.per_rule[k]))
         beta = np.concatenate([p[1] for p in parts])
         return Evaluation(
             np.array(gamma, dtype=np.float64),
@@ -159,7 +163,7 @@ class _Rule:
         self.by = tuple(wanted)
 
     def __call__(
-        self, factors: Mapping[str, float], start: RuleEvaluation | None
+        self, factors: Mapping[str, Any], start: RuleEvaluation | None
     ) -> tuple[RuleEvaluation, Array, Array, npt.NDArray[Any]]:
         rule, n = self.rule, self.rule.n
         values: dict[str, Any] = {**rule.values, **factors}

@@ -115,10 +115,11 @@ def result_json(result: Result) -> str:
 
 
 def table_files(result: Result) -> dict[str, bytes]:
-    """Return result.json, situations.csv, factors.csv and units.json as bytes by file name."""
+    """Return result.json, situations.csv, factors.csv, required_factors.csv and units.json as bytes by file name."""
     texts = {
         "result.json": result_json(result),
         "situations.csv": result.situations.to_csv(index=False, lineterminator="\n"),
+        "required_factors.csv": result.required.to_csv(index=False, lineterminator="\n"),
         "factors.csv": result.factors.to_csv(index=False, lineterminator="\n"),
         "units.json": json.dumps(dict(result.units), indent=2, ensure_ascii=False) + "\n",
     }

@@ -70,6 +70,9 @@ class Result:
         sizes where rules differ in unit.
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
+    required : DataFrame
+        For each row of ``situations``, the value of each free factor with which its beta would be the target,
+        the other factors as proposed: the columns of required_factors.csv.
     constraint_failures : tuple of str
         Constraints that cannot be met, each a full sentence.
     """
@@ -79,6 +82,7 @@ class Result:
     factors: pd.DataFrame
     situations: pd.DataFrame
     units: Mapping[str, str | Mapping[str, str]]
+    required: pd.DataFrame
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

@@ -18,7 +18,7 @@ from calibrate.study.doubts import study_doubts
 from calibrate.study.fits import fit_variables
 from calibrate.study.model import Study
 from calibrate.study.result import Result
-from calibrate.study.tables import factor_table, situation_table, variable_results
+from calibrate.study.tables import factor_table, required_table, situation_table, variable_results
 
 Progress = Callable[[str, float], None]
 
@@ -83,6 +83,7 @@ def run(
         factors=factor_table(study, calibration),
         situations=table,
         units=units,
+        required=required_table(study, calibration),
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

@@ -83,6 +83,20 @@ def situation_table(
     return pd.DataFrame(columns), units
 
 
+def required_table(study: Study, calibration: Calibration) -> pd.DataFrame:
+    """Return rule, situation and, for each free factor, the value that the situation alone would require."""
+    import pandas as pd
+
+    n = study.situations.n
+    return pd.DataFrame(
+        {
+            "rule": np.repeat(np.array(list(study.rules), dtype=object), n),
+            "situation": np.tile(np.arange(1, n + 1), len(study.rules)),
+            **{f"required_{name}": values for name, values in calibration.required.items()},
+        }
+    )
+
+
 def _row_weights(study: Study) -> Array:
     total = sum(r.weight for r in study.rules.values())
     return np.concatenate([study.situations.weight * (r.weight / total) for r in study.rules.values()])

@@ -12,8 +12,8 @@ import numpy as np
 HERE = Path(__file__).parent
 SEED = 40_2031
 LOTS = "ABCD"
-WASHER_DIAMETER = 16.0  # mm
-PULL_THROUGH_COEFFICIENT = 2.76  # MPa, mm -> N
+WASHER_DIAMETER = 18.0  # mm
+PULL_THROUGH_COEFFICIENT = 0.52  # MPa, mm -> N
 
 
 def write(name, header, rows):
@@ -33,10 +33,10 @@ def component_tests(rng):
             t_nom = (1.5, 2.0)[i % 2]
             t = t_nom * rng.normal(0.99, 0.014)
             f_u = f_u_lot * np.exp(rng.normal(0.0, 0.02))
-            predicted = PULL_THROUGH_COEFFICIENT * f_u * WASHER_DIAMETER**0.7 * t**1.3 / 1000.0
+            predicted = PULL_THROUGH_COEFFICIENT * f_u * WASHER_DIAMETER**0.9 * t**1.1 / 1000.0
             measured = 1.08 * predicted * np.exp(lot_effect + rng.normal(0.0, 0.08))
             t, f_u = round(t, 3), round(f_u, 1)
-            predicted = round(PULL_THROUGH_COEFFICIENT * f_u * WASHER_DIAMETER**0.7 * t**1.3 / 1000.0, 2)
+            predicted = round(PULL_THROUGH_COEFFICIENT * f_u * WASHER_DIAMETER**0.9 * t**1.1 / 1000.0, 2)
             measured = round(measured, 2)
             rows.append(
                 [f"{lot}{i + 1}", lot, t_nom, t, f_u, measured, predicted, round(measured / predicted, 4)]
