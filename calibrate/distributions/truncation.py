@@ -34,7 +34,7 @@ def log_interval(a: Array, b: Array, gap: Array) -> Array:
     Short intervals by Gauss-Legendre over the density relative to the end nearer to the centre, others as the
     difference of two tails on the side where they are small.
     """
-    flip = a + b > 0.0
+    flip = np.greater(a, -b)
     low, high = np.where(flip, -b, a), np.where(flip, -a, b)
     short = gap * (np.abs(high) + 1.0) < 1.0
     end, width = np.where(short, high, 0.0), np.where(short, gap, 0.0)
