@@ -1,0 +1,6 @@
+"""``python -m calibrate``: the command line."""
+
+from calibrate.cli import main
+
+if __name__ == "__main__":
+    main()
