@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -27,6 +28,8 @@ MANY_POINTS = 1500
 """From so many points on they are drawn small, see-through, and as pixels inside the SVG."""
 
 WIDTH, PANEL_WIDTH, PANEL_HEIGHT = 172.0, 68.0, 54.0
+_CHARACTER = 1.35
+"""Width of a character of a label in millimetres."""
 _LEFT, _GAP, _TOP, _BOTTOM, _LEGEND_ROW = 12.0, 5.5, 7.0, 11.0, 4.5
 TITLES = {"present": "Present factors", "proposed": "Proposed factors"}
 
@@ -47,12 +50,24 @@ def panel_axes(result: Result) -> list[str]:
 
 @dataclass(frozen=True, slots=True)
 class Scale:
-    """Where the values of an axis are drawn; ``levels`` (positions) is None for a continuous axis."""
+    """Where the values of an axis are drawn; ``levels`` (positions) is None for a continuous axis.
+
+    ``ordered`` is false for text, whose neighbours have nothing in common.
+    """
 
     position: Array
     levels: Array | None
     labels: tuple[str, ...]
     gap: float
+    ordered: bool = True
+
+    def slant(self, width: float) -> tuple[float, float]:
+        """Return the room in millimetres that labels need below and to the left, 0 where they stand level."""
+        longest = _CHARACTER * max(map(len, self.labels), default=0)
+        if self.ordered or len(self.labels) * (longest + _CHARACTER) <= width:
+            return 0.0, 0.0
+        reach = longest * math.sqrt(0.5)
+        return reach, max(reach - 0.5 * width / len(self.labels), 0.0)
 
 
 def scale(values: NDArray[np.generic]) -> Scale:
@@ -74,7 +89,9 @@ def scale(values: NDArray[np.generic]) -> Scale:
         )
     order = {text: float(i) for i, text in enumerate(dict.fromkeys(map(str, values)))}
     position = np.array([order[str(v)] for v in values])
-    return Scale(position, np.array(list(order.values())), tuple(shorten(t) for t in order), 1.0)
+    return Scale(
+        position, np.array(list(order.values())), tuple(shorten(t) for t in order), 1.0, ordered=False
+    )
 
 
 def shorten(text: str, most: int = 18) -> str:
@@ -88,20 +105,23 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
     ruler = scale(frame["rule" if axis == BY_RULE else axis].to_numpy())
     rules = list(result.study.rules)
     columns = max(1, min(len(rules), int(PANEL_WIDTH * 2 // (10 + 1.5 * max(map(len, rules))))))
-    legend = 0.0 if axis == BY_RULE else _LEGEND_ROW * -(-len(rules) // columns) + 1.0
-    figure = style.figure(WIDTH, _TOP + PANEL_HEIGHT + _BOTTOM + legend)
+    legend = _LEGEND_ROW * -(-len(rules) // columns) + 1.0 if axis != BY_RULE and len(rules) > 1 else 0.0
+    down, sideways = ruler.slant(PANEL_WIDTH)
+    first = max(_LEFT, sideways + 1.0)
+    width = PANEL_WIDTH - 0.5 * (first - _LEFT)
+    below = _BOTTOM + legend + max(down - 2.0, 0.0)
+    figure = style.figure(WIDTH, _TOP + PANEL_HEIGHT + below)
     limits = beta_limits(result)
     panels = []
     for k, kind in enumerate(TITLES):
-        left = _LEFT + k * (PANEL_WIDTH + _GAP)
-        axes = style.panel(figure, left, _BOTTOM + legend, PANEL_WIDTH, PANEL_HEIGHT)
+        axes = style.panel(figure, first + k * (width + _GAP), below, width, PANEL_HEIGHT)
         axes.set_ylim(*limits)
         axes.set_title(TITLES[kind])
         axes.grid(visible=True, axis="y")
         _points(axes, result, kind, ruler, by_rule=axis == BY_RULE)
         target_lines(axes, result, label=k == len(TITLES) - 1)
-        _ticks(axes, ruler)
-        axes.set_xlabel(axis_label(result, axis))
+        _ticks(axes, ruler, width)
+        axes.set_xlabel(axis_label(result, axis), parse_math=True)
         if k:
             axes.tick_params(labelleft=False)
         else:
@@ -109,19 +129,19 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
         panels.append(axes)
     if legend:
         handles, labels = panels[0].get_legend_handles_labels()
-        middle = (_LEFT + PANEL_WIDTH + _GAP / 2) / WIDTH
+        middle = (first + width + _GAP / 2) / WIDTH
         figure.legend(handles, labels, loc="lower center", bbox_to_anchor=(middle, 0.0), ncols=columns)
     return figure
 
 
 def axis_label(result: Result, axis: str) -> str:
-    """Return name and unit of an axis, with its description where the study gives one."""
+    """Return name and unit of an axis, with its description where the study gives one; formulas between dollars."""
     if axis == BY_RULE:
         return "rule"
     unit = column_unit(result, axis)
-    text = symbols.plain(axis) + (f" ({unit})" if unit else "")
+    text = symbols.drawn(axis) + (f" ({unit})" if unit else "")
     description = result.study.axis_descriptions.get(axis, "")
-    return f"{text}: {shorten(description, 44)}" if description else text
+    return f"{text}: {symbols.literal(shorten(description, 44))}" if description else text
 
 
 def beta_limits(result: Result) -> tuple[float, float]:
@@ -175,7 +195,10 @@ def _points(axes: Axes, result: Result, kind: str, ruler: Scale, *, by_rule: boo
         colour = style.colour(i)
         if ruler.levels is not None and ruler.levels.size > 1 and not by_rule:
             at, mean = _means(x, y, own)
-            axes.plot(at, mean, color=colour, linewidth=1.0, zorder=2)
+            if ruler.ordered:
+                axes.plot(at, mean, color=colour, linewidth=1.0, zorder=2)
+            elif at.size < x.size:
+                axes.plot(at, mean, "_", color=colour, markersize=9, zorder=2)
         axes.scatter(
             x,
             y,
@@ -200,21 +223,23 @@ def _means(x: Array, y: Array, weight: Array) -> tuple[Array, Array]:
     return at, np.bincount(group, weights=weight * y, minlength=at.size) / total
 
 
-def _ticks(axes: Axes, ruler: Scale) -> None:
+def _ticks(axes: Axes, ruler: Scale, width: float) -> None:
     if ruler.levels is None:
         return
     every = 1
     longest = max(map(len, ruler.labels), default=1)
-    if ruler.levels.size * (longest + 1) * 1.35 > PANEL_WIDTH and all(_is_number(t) for t in ruler.labels):
+    if ruler.ordered and ruler.levels.size * (longest + 1) * _CHARACTER > width:
         every = 2
     axes.set_xticks(ruler.levels[::every], ruler.labels[::every])
-    pad = 0.45 * ruler.gap if ruler.gap >= 1.0 else max(0.6 * ruler.gap, 0.0)
+    pad = 0.6 * ruler.gap if ruler.ordered and ruler.gap < 1.0 else 0.5 * ruler.gap
     axes.set_xlim(ruler.levels[0] - pad, ruler.levels[-1] + pad)
-    if ruler.levels.size * longest * 1.35 > PANEL_WIDTH and every == 1:
-        axes.tick_params(axis="x", labelrotation=25)
-        for label in axes.get_xticklabels():
-            label.set_horizontalalignment("right")
+    if ruler.slant(PANEL_WIDTH)[0]:
+        slant_labels(axes)
 
 
-def _is_number(text: str) -> bool:
-    return text.replace(numbers.MINUS, "").replace(".", "").isdigit()
+def slant_labels(axes: Axes) -> None:
+    """Set the labels of the horizontal axis aslant, ending at their ticks."""
+    for label in axes.get_xticklabels():
+        label.set(
+            rotation=45, rotation_mode="anchor", horizontalalignment="right", verticalalignment="center"
+        )

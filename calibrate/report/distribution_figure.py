@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 
 _NICE = (0.01, 0.02, 0.05, 0.1, 0.2, 0.5, 1.0)
-_WIDTH, _HEIGHT = 172.0, 66.0
+_WIDTH, _HEIGHT = 172.0, 68.5
 
 
 def beta_bins(low: float, high: float, most: int = 36) -> Array:
@@ -36,7 +36,7 @@ def beta_distribution(result: Result) -> Figure:
     figure = style.figure(_WIDTH, _HEIGHT)
     panels: list[Axes] = []
     for k, kind in enumerate(TITLES):
-        axes = style.panel(figure, 12, 37 - 27 * k, 141, 23)
+        axes = style.panel(figure, 12, 40 - 30 * k, 141, 23)
         rows = taking_part(result, kind)
         weight = result.situations["weight"].to_numpy(float)[rows]
         share, _ = np.histogram(
@@ -56,11 +56,11 @@ def beta_distribution(result: Result) -> Figure:
         )
         axes.set_xlim(edges[0], edges[-1])
         axes.grid(visible=True, axis="y")
-        axes.text(0.005, 0.97, TITLES[kind], transform=axes.transAxes, va="top", weight="bold", size=8)
+        axes.set_title(TITLES[kind])
         panels.append(axes)
     top = max(a.get_ylim()[1] for a in panels)
     for axes in panels:
-        axes.set_ylim(0, 1.08 * top)
+        axes.set_ylim(0, 1.16 * top)
         _lines(axes, result, label=axes is panels[0])
     panels[0].tick_params(labelbottom=False)
     panels[1].set_xlabel("reliability index β")

@@ -57,4 +57,4 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
         )
         record = result.study.records[result.study.variables[name].records or ""]
         unit = format_unit(record.unit.text) if record.unit.text else ""
-        yield f"probability_{name}", probability_figure(chosen, label=symbols.plain(name), unit=unit)
+        yield f"probability_{name}", probability_figure(chosen, label=symbols.drawn(name), unit=unit)

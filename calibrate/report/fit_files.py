@@ -135,7 +135,7 @@ def fit_files(sample: Sample, comparison: Comparison) -> dict[str, bytes]:
         for fit in comparison.candidates:
             if not fit.converged:
                 continue
-            label = symbols.plain(sample.name) if sample.name.isidentifier() else sample.name
+            label = symbols.drawn(sample.name) if sample.name.isidentifier() else symbols.literal(sample.name)
             drawn = style.render(probability_figure(fit, label=label, unit=unit))
             files[f"figures/probability_{fit.family}.svg"] = drawn.svg
             files[f"figures/probability_{fit.family}.png"] = drawn.png

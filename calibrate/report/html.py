@@ -10,7 +10,8 @@ from typing import TYPE_CHECKING, Any
 from calibrate.report import inputs, numbers, outcome, symbols
 from calibrate.report.axis_figure import BY_RULE, panel_axes
 from calibrate.report.fit_files import candidate_table
-from calibrate.report.outcome import GROUP_ALPHA, GROUP_POINT
+from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
+from calibrate.report.probability_paper import CAPTION
 from calibrate.report.symbols import Html
 
 if TYPE_CHECKING:
@@ -68,6 +69,7 @@ def _environment() -> Environment:
         keep_trailing_newline=True,
     )
     environment.filters["name"] = symbols.html
+    environment.filters["path"] = symbols.path
     return environment
 
 
@@ -82,6 +84,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "n": numbers,
         "study": study,
         "digest": study.sha256[: inputs.DIGEST_SHOWN],
+        "summary": [" ".join(p.split()) for p in re.split(r"\n\s*\n", study.summary.strip())],
         "period": numbers.years(study.reference_period),
         "count": len(result.situations),
         "result": result,
@@ -94,6 +97,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "brief_beta": outcome.beta_table(result).without("objective", "worst", "rms from target"),
         "records": inputs.record_table(result),
         "variables": inputs.variable_table(result),
+        "one_period": all(v.parameters_period == study.reference_period for v in result.variables.values()),
         "parameters": inputs.parameter_table(result),
         "quantities": inputs.quantity_table(result),
         "axes": inputs.axis_table(result),
@@ -111,6 +115,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "rounding": outcome.rounding_cost(result),
         "sensitivity": outcome.sensitivity_table(result, found) if found else None,
         "situations": outcome.situation_table(result, shown),
+        "all_converged": bool((result.situations["status"] == CONVERGED).all()),
         "all_shown": shown is None,
         "extremes": EXTREMES,
         "missing": _rows(result, outcome.without_beta(result)[:EXTREMES]),
@@ -121,7 +126,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "weight_formula": _weight(study.weight_text),
         "axis_caption": _axis_caption(result),
         "fit_methods": _fit_methods(result),
-        "plain": symbols.plain,
+        "paper_caption": CAPTION,
         "unit_of": inputs.unit_of,
         "penalty": symbols.formula(_penalty(study.objective.penalty)),
     }
@@ -203,10 +208,9 @@ def _fit_methods(result: Result) -> str:
 
 
 def _axis_caption(result: Result) -> str:
-    parts = [
-        "Reliability index of every design situation with present and proposed factors; horizontal line: target"
-    ]
-    if result.study.objective.floor is not None:
-        parts.append(", dashed: floor")
-    parts.append(". Marks by rule, larger with more weight; lines join the weighted means.")
-    return "".join(parts)
+    floor = ", dashed: floor" if result.study.objective.floor is not None else ""
+    by_rule = " by rule" if len(result.study.rules) > 1 else ""
+    return (
+        f"every design situation with present and proposed factors; horizontal line: target{floor}. "
+        f"Marks{by_rule}, larger with more weight; lines show the weighted means."
+    )

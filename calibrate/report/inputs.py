@@ -9,12 +9,14 @@ from calibrate.report import numbers, symbols
 from calibrate.report.outcome import column_unit
 from calibrate.report.symbols import Html
 from calibrate.report.table import Column, Table, each
+from calibrate.study.model import Variable
 from calibrate.study.result import Result, VariableResult
 from calibrate.units import format_unit
 
 DIGEST_SHOWN = 12
 """Characters of a digest that a report shows; result.json has all of them."""
 MOST_LEVELS_LISTED = 12
+FEW_LEVELS = 5
 
 
 def unit_of(text: str) -> str:
@@ -33,7 +35,7 @@ def record_table(result: Result) -> Table:
         (
             Column("records", list(samples)),
             Column("used by", [_names(users[n]) for n in samples]),
-            Column("file", [s.file + (f", sheet {s.sheet}" if s.sheet else "") for s in samples.values()]),
+            Column("file", [_file(s.file, s.sheet) for s in samples.values()]),
             Column("column", [s.name for s in samples.values()]),
             Column("unit", [unit_of(s.unit.text) for s in samples.values()]),
             Column("n", [s.n for s in samples.values()], kind="number"),
@@ -47,9 +49,18 @@ def record_table(result: Result) -> Table:
             Column(
                 "largest", [s.values.max() for s in samples.values()], each(numbers.significant), "number"
             ),
-            Column("SHA-256", [s.sha256[:DIGEST_SHOWN] for s in samples.values()]),
+            Column("SHA-256", [_digest(s.sha256) for s in samples.values()]),
         )
     )
+
+
+def _file(name: str, sheet: str | None) -> Html:
+    shown = symbols.path(name)
+    return Html(f"{shown}, sheet {symbols.escaped(sheet)}") if sheet else shown
+
+
+def _digest(sha256: str) -> Html:
+    return Html(f'<span class="nm">{symbols.path(sha256[:DIGEST_SHOWN] + "…", title=sha256)}</span>')
 
 
 def _names(names: list[str]) -> Html:
@@ -62,38 +73,39 @@ def variable_table(result: Result) -> Table:
     defined = [result.study.variables[v.name] for v in found]
     columns = [
         Column("variable", [v.name for v in found], kind="name"),
-        Column("meaning", [d.description for d in defined]),
         Column("family", [v.family for v in found]),
         Column("unit", [unit_of(v.unit.text) for v in found]),
         Column("mean", [numbers.span(v.mean) for v in found], kind="number"),
         Column("sd", [numbers.span(v.sd) for v in found], kind="number"),
         Column("cov", [numbers.span(v.cov, 3) for v in found], kind="number"),
-        Column("n", ["given" if v.n is None else str(v.n) for v in found], kind="number"),
     ]
+    if any(d.description for d in defined):
+        columns.insert(1, Column("meaning", [d.description for d in defined]))
     if any(v.period is not None for v in found):
         columns.append(Column("given for", [numbers.years(v.period) if v.period else "" for v in found]))
-    if any(d.source or d.grade for d in defined):
-        columns.append(Column("source", [_source(d.source, d.grade) for d in defined]))
+    columns.append(Column("source", [_source(d, v.n) for d, v in zip(defined, found, strict=True)]))
     return Table(tuple(columns))
 
 
-def _source(source: str, grade: str) -> str:
-    return f"{source} ({grade})" if source and grade else source or grade
+def _source(variable: Variable, n: int | None) -> str:
+    known = [] if n is None else [f"own records, n = {n}"]
+    known += [text for text in (variable.source, variable.grade) if text]
+    return "; ".join(known) or "given"
 
 
 def parameter_table(result: Result) -> Table:
     """Return the own parameters of every variable, for the period they hold for, and how they are defined."""
     found = list(result.variables.values())
-    return Table(
-        (
-            Column("variable", [v.name for v in found], kind="name"),
-            Column("family", [v.family for v in found]),
-            Column("unit", [unit_of(v.unit.text) for v in found]),
-            Column("parameters", [_parameters(v) for v in found]),
-            Column("for", [numbers.years(v.parameters_period) for v in found]),
-            Column("defined by", [_definition(result, v) for v in found]),
-        )
-    )
+    columns = [
+        Column("variable", [v.name for v in found], kind="name"),
+        Column("family", [v.family for v in found]),
+        Column("unit", [unit_of(v.unit.text) for v in found]),
+        Column("parameters", [_parameters(v) for v in found]),
+        Column("defined by", [_definition(result, v) for v in found]),
+    ]
+    if any(v.parameters_period != result.study.reference_period for v in found):
+        columns.insert(4, Column("for", [numbers.years(v.parameters_period) for v in found]))
+    return Table(tuple(columns))
 
 
 def _parameters(variable: VariableResult) -> str:
@@ -140,29 +152,35 @@ def axis_table(result: Result) -> Table:
     described = result.study.axis_descriptions
     levels, shares = [], []
     for name in names:
-        texts, weights = _levels(frame[name], frame["weight"].to_numpy(float))
+        texts, weights = _levels(frame[name], frame["weight"].to_numpy(float), result.study.situations.n)
         levels.append(texts)
         shares.append(weights)
     columns = [
         Column("axis", names, kind="name"),
         Column("unit", [column_unit(result, n) for n in names]),
         Column("values", levels),
-        Column("share of weight", shares),
     ]
+    if any(shares):
+        columns.append(Column("share of weight", shares))
     if any(described.get(n) for n in names):
         columns.insert(1, Column("meaning", [described.get(n, "") for n in names]))
     return Table(tuple(columns))
 
 
-def _levels(values: Any, weight: Any) -> tuple[str, str]:
-    """Return the values of an axis and their shares of weight, or the range where there are many."""
+def _levels(values: Any, weight: Any, situations: int) -> tuple[str, str]:
+    """Return the values of an axis and their shares of weight, or the range where there are many.
+
+    Where every situation has a value of its own, the table of situations says more than a list.
+    """
     numeric = values.dtype.kind in "fiu"
     found = sorted(values.unique()) if numeric else list(dict.fromkeys(values))
-    if len(found) > MOST_LEVELS_LISTED:
+    if len(found) > (MOST_LEVELS_LISTED if len(found) < situations else FEW_LEVELS):
         text = f"{len(found)} different values"
         return (f"{text}, {numbers.span(found)}" if numeric else text), ""
     texts = numbers.column(found) if numeric else [str(v) for v in found]
-    shares = [numbers.share(float(weight[(values == v).to_numpy()].sum()), 0) for v in found]
+    parts = [float(weight[(values == v).to_numpy()].sum()) for v in found]
+    decimals = min(max(numbers.decimals_of(100.0 * p, 1) for p in parts), 1)
+    shares = [numbers.share(p, decimals) for p in parts]
     same = len(set(shares)) == 1 and len(shares) > 1
     return " · ".join(texts), f"{shares[0]} each" if same else " · ".join(shares)
 

@@ -60,7 +60,12 @@ def significant(value: float | None, digits: int = 4) -> str:
 def power_of_ten(value: float, digits: int = 2) -> str:
     """Return a number as mantissa and power of ten, for example ``1.2·10⁻⁵``."""
     mantissa, exponent = f"{value:.{digits - 1}e}".split("e")
-    return f"{_stripped(mantissa.replace('-', MINUS))}·10{str(int(exponent)).translate(_SUPERSCRIPTS)}"
+    return _power(f"{_stripped(mantissa)}e{exponent}")
+
+
+def _power(text: str) -> str:
+    mantissa, exponent = text.split("e")
+    return f"{mantissa.replace('-', MINUS)}·10{str(int(exponent)).translate(_SUPERSCRIPTS)}"
 
 
 def beta(value: float | None, decimals: int = 2) -> str:
@@ -81,7 +86,7 @@ def probability(value: float | None) -> str:
     if value == 0.0:
         return "0"
     if abs(value) < 0.001:
-        return power_of_ten(value, 2)
+        return _power(f"{value:.1e}")
     return significant(value, 2)
 
 

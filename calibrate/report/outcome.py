@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
 Array = NDArray[np.float64]
+CONVERGED = "converged"
 SAME_SIZE = 0.005
 """Relative change of a size below which it counts as unchanged."""
 
@@ -92,7 +93,7 @@ def beta_table(result: Result) -> Table:
     if (floor := result.study.objective.floor) is not None:
         under = [share_below(result, kind, floor) for kind in FACTOR_SETS]
         columns.append(Column("below floor", under, each(numbers.share, 0), "number"))
-    columns.append(Column("objective", of("objective"), each(numbers.significant), "number"))
+    columns.append(Column("objective", of("objective"), aligned(), "number"))
     columns.append(Column("worst", [worst_place(result, kind) for kind in FACTOR_SETS]))
     return Table(tuple(columns), strong=frozenset({len(FACTOR_SETS) - 1}))
 
@@ -266,7 +267,7 @@ def sensitivity_table(result: Result, found: list[Sensitivity]) -> Table:
     return Table(tuple(columns))
 
 
-GROUP_ALPHA, GROUP_POINT = "alpha", "point"
+GROUP_SIZE, GROUP_BETA, GROUP_ALPHA, GROUP_POINT = "size", "β", "sensitivity factors α", "design point"
 
 
 def situation_table(result: Result, rows: list[int] | None = None) -> Table:
@@ -286,14 +287,13 @@ def situation_table(result: Result, rows: list[int] | None = None) -> Table:
     columns.append(Column("weight", list(frame["weight"]), each(numbers.share, 2), "number"))
     columns += _sizes(result, frame)
     for kind in ("present", "proposed"):
-        columns.append(Column(f"β {kind}", list(frame[f"beta_{kind}"]), each(numbers.beta), "number"))
+        found = list(frame[f"beta_{kind}"])
+        columns.append(Column(kind, found, each(numbers.beta), "number", group=GROUP_BETA))
     columns.append(Column("P_f", list(frame["pf"]), each(numbers.probability), "number", symbol=True))
     for name in result.study.variables:
         if f"alpha_{name}" in frame:
             values = list(frame[f"alpha_{name}"])
-            columns.append(
-                Column(name, values, each(numbers.beta), "number", "α", symbol=True, group=GROUP_ALPHA)
-            )
+            columns.append(Column(name, values, each(numbers.beta), "number", symbol=True, group=GROUP_ALPHA))
     for name in result.study.variables:
         if f"x_{name}" in frame:
             unit = column_unit(result, f"x_{name}")
@@ -302,7 +302,8 @@ def situation_table(result: Result, rows: list[int] | None = None) -> Table:
                     name, list(frame[f"x_{name}"]), aligned(), "number", unit, symbol=True, group=GROUP_POINT
                 )
             )
-    columns.append(Column("status", list(frame["status"])))
+    if any(s != CONVERGED for s in result.situations["status"]):
+        columns.append(Column("status", list(frame["status"])))
     return Table(tuple(columns))
 
 
@@ -312,11 +313,11 @@ def _sizes(result: Result, frame: pd.DataFrame) -> list[Column]:
     one = isinstance(result.units["size_proposed"], str)
     unit = column_unit(result, "size_proposed") if one else "see rules"
     columns = [
-        Column(f"size {kind}", list(frame[f"size_{kind}"]), each(numbers.significant), "number", unit)
+        Column(kind, list(frame[f"size_{kind}"]), aligned(), "number", unit, group=GROUP_SIZE)
         for kind in ("present", "proposed")
     ]
     ratio = list(frame["size_proposed"] / frame["size_present"])
-    columns.append(Column("change of size", ratio, each(numbers.change), "number"))
+    columns.append(Column("change", ratio, each(numbers.change), "number", group=GROUP_SIZE))
     return columns
 
 
@@ -329,10 +330,7 @@ def place_table(result: Result, rows: list[int]) -> Table:
     """Return some situations by what they are, with size and beta before and after, and status."""
     full = situation_table(result, rows)
     left_out = {GROUP_ALPHA, GROUP_POINT}
-    columns = [c for c in full.columns if c.group not in left_out and c.head != "P_f"]
-    if all(s == "converged" for s in full.column("status").values):
-        columns = [c for c in columns if c.head != "status"]
-    return Table(tuple(columns))
+    return Table(tuple(c for c in full.columns if c.group not in left_out and c.head != "P_f"))
 
 
 def lattice_table(result: Result) -> Table | None:
@@ -346,7 +344,7 @@ def lattice_table(result: Result) -> Table | None:
         values = [c.factors[f.name] for c in candidates]
         columns.append(Column(f.name, values, each(numbers.factor, f.step), "number", symbol=True))
     columns += [
-        Column("objective", [c.objective for c in candidates], each(numbers.significant, 5), "number"),
+        Column("objective", [c.objective for c in candidates], aligned(5), "number"),
         Column("mean β", [c.mean for c in candidates], each(numbers.beta), "number"),
         Column("min β", [c.min for c in candidates], each(numbers.beta), "number"),
         Column("max β", [c.max for c in candidates], each(numbers.beta), "number"),

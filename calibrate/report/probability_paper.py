@@ -97,7 +97,7 @@ def probability_figure(
     label: str,
     unit: str,
     width_mm: float = 84.0,
-    height_mm: float = 74.0,
+    height_mm: float = 66.0,
     fractile: float | None = None,
 ) -> Figure:
     """Return the probability paper of a converged fit; use it inside ``style.context()``.
@@ -107,7 +107,7 @@ def probability_figure(
     fit : Fit
         Converged.
     label : str
-        Name of the quantity, as it is shown.
+        Name of the quantity, as it is shown; between dollar signs it is a formula.
     unit : str
         Its unit, as it is shown; empty for a dimensionless quantity.
     width_mm, height_mm : float
@@ -135,7 +135,7 @@ def probability_figure(
     if fractile is not None:
         at = paper.ordinate(np.array([fractile]), np.array([1.0 - fractile]))[0]
         axes.axhline(at, color=style.PLUM, linewidth=0.7, linestyle=(0, (4, 2)))
-    axes.set_xlabel(f"{label} ({unit})" if unit else label)
+    axes.set_xlabel(f"{label} ({unit})" if unit else label, parse_math=True)
     axes.set_ylabel("probability of not being exceeded")
     axes.set_title(f"{fit.family}, n = {n}")
     return drawn

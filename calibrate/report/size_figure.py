@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.report import numbers, style
+from calibrate.report import numbers, style, symbols
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -59,7 +59,7 @@ def size_change(changes: list[SizeChange]) -> Figure:
         axes.text(
             1.0, 1.03, f"mean {numbers.change(change.mean)}", transform=axes.transAxes, ha="right", size=7
         )
-        axes.set_xlabel(f"change of {change.size} (%)")
+        axes.set_xlabel(f"change of {symbols.drawn(change.size)} (%)", parse_math=True)
         axes.set_ylabel("share of weight (%)")
         axes.grid(visible=True, axis="y")
         axes.set_xlim(

@@ -20,9 +20,24 @@ class Html(str):
         return str(self)
 
 
+_TIED = re.compile(r" (?:[=±] |%(?!\w))")
+
+
 def escaped(text: str) -> Html:
     """Return plain text as HTML."""
     return Html(escape(text))
+
+
+def kept(text: str) -> str:
+    """Return a text, plain or HTML, in which no line ends beside ``=`` or ``±`` or before ``%``."""
+    shown = _TIED.sub(lambda m: m[0].replace(" ", "\u00a0"), text)
+    return Html(shown) if isinstance(text, Html) else shown
+
+
+def path(text: str, title: str = "") -> Html:
+    """Return the name of a file, or a digest, which may be broken after a slash; ``title`` is its long form."""
+    long = f' title="{escape(title)}"' if title else ""
+    return Html(f'<span class="path"{long}>{escape(text).replace("/", "/<wbr>")}</span>')
 
 
 def html(name: str) -> Html:
@@ -34,8 +49,25 @@ def html(name: str) -> Html:
 
 
 def plain(name: str) -> str:
-    """Return a name for figures and running text: ``γ_M``."""
+    """Return a name for running text: ``γ_M``."""
     return name_plain(name)
+
+
+def drawn(name: str) -> str:
+    """Return a name for figures, as a formula of matplotlib: slanted letter, upright index."""
+    shown = symbol(name)
+    base = shown.base if len(shown.base) == 1 else _upright(shown.base)
+    index = f"_{{{_upright(','.join(shown.subscripts))}}}" if shown.subscripts else ""
+    return f"${base}{index}$"
+
+
+def _upright(word: str) -> str:
+    return r"\mathrm{" + word.replace("_", r"\_") + "}"
+
+
+def literal(text: str) -> str:
+    """Return text of a user for a figure in which formulas are set: a dollar sign stays one."""
+    return text.replace("$", r"\$")
 
 
 # An index that marks a name in a formula until it has its class; no study spells it.

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import groupby
@@ -15,6 +16,11 @@ from calibrate.report.symbols import Html
 Values = Sequence[Any] | NDArray[Any]
 Show = Callable[[Values], Sequence[str]]
 Kind = Literal["text", "number", "name"]
+LONGEST_LINE = 28
+"""Characters of text that stay on one line; a column with a longer cell is wrapped."""
+SHORT = 12
+"""Rows of a table that stay on one page; half as many where cells have several lines."""
+_MARKUP = re.compile(r"<[^>]*>")
 
 
 def as_text(values: Values) -> list[str]:
@@ -80,7 +86,14 @@ class Column:
         """Return what the reader sees; names as HTML."""
         if self.kind == "name":
             return [symbols.html(str(v)) if v else numbers.NONE for v in self.values]
-        return list(self.show(self.values))
+        return [symbols.kept(t) for t in self.show(self.values)]
+
+    @property
+    def wraps(self) -> bool:
+        """Whether the cells hold running text, which is set on several lines."""
+        if self.kind != "text":
+            return False
+        return any(len(_MARKUP.sub("", t)) > LONGEST_LINE for t in self.show(self.values))
 
     def plain(self) -> list[str]:
         """Return what the reader sees on a console; names as typed."""
@@ -96,6 +109,11 @@ class Table:
 
     def __len__(self) -> int:
         return len(self.columns[0].values) if self.columns else 0
+
+    @property
+    def short(self) -> bool:
+        """Whether the table need not be split between two pages."""
+        return len(self) <= (SHORT // 2 if any(c.wraps for c in self.columns) else SHORT)
 
     def rows(self) -> list[tuple[str, ...]]:
         """Return the rows as the reader sees them."""
@@ -114,7 +132,7 @@ class Table:
         found = []
         for c in self.columns:
             names = [
-                *(["n"] if c.kind == "number" else []),
+                *(["n"] if c.kind == "number" else ["w"] if c.wraps else []),
                 *([groups[c.group]] if c.group in groups else []),
             ]
             found.append(Html(f' class="{" ".join(names)}"' if names else ""))
