@@ -16,6 +16,8 @@ from calibrate.distributions.parameter import POSITIVE, Array, Moments, Paramete
 from calibrate.distributions.tail_integrals import DROP, tail_integral, tail_length
 
 _TINY = 1e-300
+# Logarithm of the distance to a bound, in widths, from which the first term of the tail is exact to rounding.
+_LOG_POWER = -36.0
 
 
 class Beta(Family):
@@ -126,7 +128,11 @@ def _quantile(u: Array, a: Array, b: Array) -> tuple[Array, Array]:
     low = u < 0.0
     tail = special.ndtr(-np.abs(u))
     first, second = np.where(low, a, b), np.where(low, b, a)
-    near = special.betaincinv(first, second, tail)
+    # Next to the bound the tail is a power of the distance; there the library's inverse gives out.
+    log_power = (np.log(first * tail) + special.betaln(first, second)) / first
+    next_to = log_power + np.log1p(second) < _LOG_POWER
+    near = special.betaincinv(first, second, np.where(next_to, 0.5, tail))
+    near = np.where(next_to, np.exp(np.where(next_to, log_power, 0.0)), near)
     far = 1.0 - near
     late = near > 0.5
     if np.any(late):

@@ -14,6 +14,11 @@ from calibrate.distributions.normal_tails import LOG_SQRT_2PI, REACH, slopes_fro
 from calibrate.distributions.parameter import POSITIVE, Array, Moments, Parameter, Values
 from calibrate.distributions.tail_integrals import DROP, tail_integral
 
+# Where 1 + r^2 is r^2 in double precision; where a tail is a power to double precision; the largest quantile.
+_FAR = 1e9
+_LOG_POWER = -40.0
+_HUGE = 1e300
+
 
 class StudentT(Family):
     """Student t distribution of (x - location)/scale; its mean exists for freedom > 1, its sd for freedom > 2."""
@@ -42,7 +47,11 @@ class StudentT(Family):
         location, scale, freedom = p
         u = np.clip(u, -REACH, REACH)
         t = _quantile(u, freedom)
-        score = -(freedom + 1.0) * t / (freedom + t * t)
+        r = t / np.sqrt(freedom)
+        far = np.abs(r) > _FAR
+        near = np.where(far, 0.0, r)
+        part = np.where(far, 1.0 / np.where(far, r, 1.0), near / (1.0 + near * near))
+        score = -(freedom + 1.0) / np.sqrt(freedom) * part
         slope, curvature = slopes_from_density(u, _log_density(t, freedom), score)
         return location + scale * t, scale * slope, scale * curvature
 
@@ -75,15 +84,25 @@ class StudentT(Family):
 
 
 def _quantile(u: Array, freedom: Array) -> Array:
-    tail = special.ndtr(-np.abs(np.clip(u, -REACH, REACH)))
-    t = np.where(np.equal(u, 0.0), 0.0, special.stdtrit(freedom, tail))
-    return np.where(np.less(u, 0.0), t, -t)
+    u = np.clip(u, -REACH, REACH)
+    tail = special.ndtr(-np.abs(u))
+    half = 0.5 * freedom
+    # Far out the tail is a power of w = freedom/t^2; there the library's inverse gives out.
+    log_w = (np.log(2.0 * half * tail) + special.betaln(half, 0.5)) / half
+    far = log_w < _LOG_POWER
+    with np.errstate(over="ignore"):
+        power = np.minimum(np.sqrt(freedom) * np.exp(-0.5 * np.where(far, log_w, 0.0)), _HUGE)
+    t = np.where(far, power, -special.stdtrit(freedom, np.where(far, 0.5, tail)))
+    return np.where(np.equal(u, 0.0), 0.0, np.copysign(t, u))
 
 
 def _log_density(t: Array, freedom: Array) -> Array:
-    return (
-        log_gamma_half_step(0.5 * freedom) - LOG_SQRT_2PI - 0.5 * (freedom + 1.0) * np.log1p(t * t / freedom)
-    )
+    r = np.abs(t) / np.sqrt(freedom)
+    far = r > _FAR
+    near = np.where(far, 0.0, r)
+    # ln(1 + r^2), where r^2 may be no double.
+    log = np.where(far, 2.0 * np.log(np.where(far, r, 1.0)), np.log1p(near * near))
+    return log_gamma_half_step(0.5 * freedom) - LOG_SQRT_2PI - 0.5 * (freedom + 1.0) * log
 
 
 def _log_cosh(s: Array) -> Array:
