@@ -15,7 +15,7 @@ import numpy.typing as npt
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.rows import dot
 from calibrate.reliability.settings import REACH, FormSettings
-from calibrate.reliability.verify import Points
+from calibrate.reliability.verify import BEYOND, Points
 
 Array = npt.NDArray[np.float64]
 
@@ -45,22 +45,25 @@ def meet(problem: Problem, start: Array, side: Array, settings: FormSettings) ->
     Returns
     -------
     points : Points
-        ``good`` where such a point was found, the limit state vanishes there and neither branch alone leads
-        nearer. The gradient is the convex combination of those of the branches that points to the origin.
+        ``good`` where such a point was found, the limit state vanishes there and changes its sign between the
+        branches, and neither branch alone leads nearer. The gradient is the convex combination of those of the
+        branches that points to the origin.
     evaluations : int
         Evaluations of the limit state.
     """
     first, second, evaluations = _branches(problem, start)
     u = start
-    normal = np.zeros_like(u)
     size = np.full(side.size, 1.0)
     first_share = second_share = opens = np.zeros(side.size)
+    # A column that has ended keeps what it has, so that it does not depend on the others.
+    going = np.ones(side.size, dtype=np.bool_)
     for _ in range(STEPS):
-        point, first_share, second_share = _intersection(first, second)
+        point, one, two = _intersection(first, second)
+        first_share, second_share = np.where(going, one, first_share), np.where(going, two, second_share)
         inside = dot(point, point) <= REACH**2
-        point = np.where(inside, point, u)
+        point = np.where(going & inside, point, u)
         move = point - u
-        size = np.sqrt(dot(move, move))
+        size = np.where(going, np.sqrt(dot(move, move)), size)
         u = point
         normal = first.a - second.a
         length = np.sqrt(dot(normal, normal))
@@ -68,14 +71,15 @@ def meet(problem: Problem, start: Array, side: Array, settings: FormSettings) ->
         offset = normal * np.clip(PART * size, NARROWEST, WIDEST)
         a, level = _linearised(problem, u + offset)
         b, other = _linearised(problem, u - offset)
-        opens = dot(a - b, normal)
+        opens = np.where(going, dot(a - b, normal), opens)
         for gradient, height in ((a, level), (b, other)):
             nearer = _cosine(gradient, first.a) >= _cosine(gradient, second.a)
-            usable = np.isfinite(height)
+            usable = going & np.isfinite(height)
             first.renew(usable & nearer, gradient, height)
             second.renew(usable & ~nearer, gradient, height)
-        evaluations += 2 * side.size
-        if np.all(size <= settings.tolerance):
+        evaluations += 2 * int(np.count_nonzero(going))
+        going &= ~(size <= settings.tolerance)
+        if not going.any():
             break
     x = np.stack(
         [np.broadcast_to(d.x(row), row.shape) for d, row in zip(problem.distributions, u, strict=True)]
@@ -92,8 +96,11 @@ def meet(problem: Problem, start: Array, side: Array, settings: FormSettings) ->
         & (side * opens > 0.0)
         & (radius > 0.0)
     )
+    between = first.a / np.sqrt(dot(first.a, first.a)) + second.a / np.sqrt(dot(second.a, second.a))
+    inwards = np.where(good, -side * BEYOND * between / np.sqrt(dot(between, between)), 0.0)
+    good &= side * problem.value(u + inwards) < 0.0
     beta = side * radius
-    return Points(beta, u, x, -u / beta, norm, good), evaluations + side.size
+    return Points(beta, u, x, -u / beta, norm, good), evaluations + 2 * side.size
 
 
 def _linearised(problem: Problem, p: Array) -> tuple[Array, Array]:

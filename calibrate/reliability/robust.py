@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -25,7 +25,7 @@ from calibrate.reliability.status import (
     SEVERAL,
     TOO_MANY,
 )
-from calibrate.reliability.verify import Points, settle
+from calibrate.reliability.verify import BEYOND, Points, settle
 
 Array = npt.NDArray[np.float64]
 Codes = npt.NDArray[np.int8]
@@ -96,6 +96,7 @@ def _resolve(problem: Problem, found: Points, passes: Counts, settings: FormSett
     side = np.where(g < 0.0, -1.0, 1.0)
     direction, always = _directions(problem, found, a, side)
     slots = always.size
+    found = _crossing(problem, found, side)
     pool = Candidates.empty(m, slots + 1, side)
     pool.put(np.full(n, slots), np.arange(n), found, np.where(found.good, CONVERGED, TOO_MANY), passes)
     # Slot s of situation j is column s n + j of everything wide.
@@ -103,7 +104,7 @@ def _resolve(problem: Problem, found: Points, passes: Counts, settings: FormSett
     wide_side = np.tile(side, slots)
     view = scan(wide, direction, wide_side, np.tile(g, slots))
     radius = np.where(np.isnan(view.start) & np.repeat(always, n), BLIND, view.start)
-    evaluations = n + len(RADII) * wide.n
+    evaluations = 2 * n + len(RADII) * wide.n
     evaluations += _run(wide, direction * radius, np.flatnonzero(~np.isnan(radius)), pool, settings)
     seen = np.min(view.seen.reshape(slots, n), axis=0)
     undefined = np.any(view.undefined.reshape(slots, n), axis=0)
@@ -154,13 +155,23 @@ def _run(wide: Problem, start: Array, at: Counts, pool: Candidates, settings: Fo
         return 0
     part = wide.take(at, at.size)
     result = search(part, start[:, at], settings)
-    points = settle(part, result.u)
     slot, column = np.divmod(at, pool.side.size)
+    points = _crossing(part, settle(part, result.u), pool.side[column])
     pool.put(slot, column, points, result.code, result.passes)
     pool.end[:, slot, column] = result.u
     # By the linearisation at the end of the search, g/|a| = beta + alpha u.
     pool.off[slot, column] = np.abs(points.beta + dot(points.alpha, result.u))
-    return int(np.sum(result.passes)) + at.size
+    return int(np.sum(result.passes)) + 2 * at.size
+
+
+def _crossing(problem: Problem, points: Points, side: Array) -> Points:
+    """Return the points, good only where the limit state has the other sign just beyond.
+
+    A limit state may touch zero and turn back, as ``abs`` and squares do. And a step of the linearisation may be
+    short without a zero nearby, where the gradient grows without bound, as at the end of a root.
+    """
+    beyond = np.where(points.good, points.alpha, 0.0) * -(points.beta + side * BEYOND)
+    return replace(points, good=points.good & (side * problem.value(beyond) < 0.0))
 
 
 def _kinks(wide: Problem, pool: Candidates, seen: Array, settings: FormSettings) -> int:

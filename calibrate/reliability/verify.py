@@ -17,12 +17,16 @@ Flags = npt.NDArray[np.bool_]
 
 # A point whose last correction is longer has not converged, whatever the iteration thought.
 CORRECTION = 1e-4
+# Distance beyond a design point at which the limit state must have changed its sign.
+BEYOND = 1e-4
 # Shares of a unit gradient: below the first a variable does not matter, from the second on it does.
 NO_MATTER, MATTERS = 1e-3, 0.05
 # Product of two components of unit gradients that shows a change of sign.
 CHANGED = -0.01
 # Least cosine between the gradients at the medians and at the design point that raises no question.
 TURNED = 0.3
+# A gradient shorter than this part of the one on the other side is flat: the limit state may touch zero and turn back.
+FLAT = 1e-5
 # Number of corners at which a limit state of unknown form is looked at, and where on the axes; radii are those of the
 # design point.
 LOOKS = 8
@@ -75,7 +79,8 @@ def settle(problem: Problem, u: Array) -> Points:
     for row, value, slope, by in zip(moved, x, slopes, move, strict=True):
         np.multiply(slope, by, out=row)
         np.add(row, value, out=row)
-    good &= np.isfinite(beta)
+    # Where the square of the gradient overflows, beta would be a finite zero.
+    good &= np.isfinite(beta) & np.isfinite(norm)
     return Points(beta, point, moved, a, norm, good)
 
 
@@ -110,6 +115,7 @@ def suspicious(problem: Problem, points: Points, first_g: Array | None, first_a:
         woken = np.zeros(problem.n, dtype=np.bool_)
     np.multiply(b, alpha, out=b)
     calm = (side * g > 0.0) & (add_rows(b) > 0.0) & (np.min(b, axis=0) >= CHANGED * length) & ~woken
+    calm &= points.norm > FLAT * length
     if first_g is not None and first_a is not None:
         np.multiply(first_a, alpha, out=b)
         length = np.sqrt(dot(first_a, first_a))
