@@ -24,7 +24,7 @@ def slopes_of_squares(R, D, L, z):
 LIMIT_STATES = {
     "affine": "z * R - D - L",
     "product of powers": "z * R**0.8 * exp(-0.3 * D) - L",
-    "kinks": "max(z * R - D - L, 0.2 * z * R - L)",
+    "kinks": "max(z - 2 * D**2, z - 3 * L * R)",
     "two points": "z - 0.5 * (R - 1)**2 * 100 + 0.1 * D - 0.05 * L",
     "mixed ends": "where(z >= 4, z + R**2 + D**2 + L**2, where(z >= 3, log(1 - L), z * R - D - L))",
     "callable": squares,
@@ -87,12 +87,12 @@ def test_the_cases_take_several_ways():
 
 @pytest.mark.parametrize("as_array", [True, False], ids=["arrays of one", "numbers"])
 def test_one_at_a_time_gives_the_bits_of_the_batch(name, whole, as_array):
-    for j in range(0, N, 3):
+    for j in range(0, N, 5):
         one = np.array([j]) if as_array else j
         assert_same(form(*case(name, one), 1), alone(whole, [j]))
 
 
-@pytest.mark.parametrize(("chunk", "workers"), [(7, 1), (N - 1, 2), (13, 3), (10 * N, 3)])
+@pytest.mark.parametrize(("chunk", "workers"), [(9, 1), (N - 1, 2), (13, 3)])
 def test_chunks_and_threads_change_no_bit(name, whole, chunk, workers):
     settings = FormSettings(chunk=chunk)
     result = form(*case(name), N, settings=settings, workers=workers)
