@@ -54,27 +54,31 @@ def _within_reach(u: Array) -> bool:
 def log_hazard(u: Array) -> Array:
     """Return ``k = ln(-ln Phi(u))``."""
     if not _within_reach(u):
-        return _far(u)[0]
+        return _everywhere(u)[0]
     q = special.ndtr(-np.abs(u))
     return np.log(-np.where(np.less(u, 0.0), np.log(q), np.log1p(-q)))
 
 
 def log_hazard_slope(u: Array) -> tuple[Array, Array]:
     """Return ``k`` and ``dk/du``, which is negative."""
-    if not _within_reach(u):
-        k, slope, _ = _far(u)
-        return k, slope
-    k, slope, _ = _near(u)
+    k, slope, _ = _everywhere(u)
     return k, slope
 
 
 def log_hazard_curvature(u: Array) -> tuple[Array, Array, Array]:
     """Return ``k``, ``dk/du`` and ``d2k/du2``."""
-    if not _within_reach(u):
-        k, slope, h = _far(u)
-    else:
-        k, slope, h = _near(u)
+    k, slope, h = _everywhere(u)
     return k, slope, -slope * (u + h + slope)
+
+
+def _everywhere(u: Array) -> tuple[Array, Array, Array]:
+    """Return k, dk/du and phi/Phi; what an element gets does not depend on how far out its neighbours are."""
+    if _within_reach(u):
+        return _near(u)
+    inside = np.abs(u) < REACH
+    pairs = zip(_near(np.where(inside, u, 0.0)), _far(u), strict=True)
+    k, slope, h = (np.where(inside, near, far) for near, far in pairs)
+    return k, slope, h
 
 
 def _near(u: Array) -> tuple[Array, Array, Array]:

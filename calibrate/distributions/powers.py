@@ -4,6 +4,7 @@
 from __future__ import annotations
 
 import math
+from typing import Any
 
 import numpy as np
 from scipy import special
@@ -89,12 +90,15 @@ def positive_power(cov: Array) -> Array:
     # Small cov: L = pi^2/6 y^2. Large: L grows like 2 ln 2 y.
     small = 0.5 * (log_target - math.log(math.pi**2 / 6))
     log_y = np.where(log_target < 0, small, log_target - math.log(2 * math.log(2)))
+    done: Any = False
     for _ in range(_STEPS):
         y = np.exp(log_y)
         value, slope = excess(y)
         step = (np.log(value) + 2.0 * log_y - log_target) / (2.0 + y * slope / value)
-        log_y = log_y - step
-        if np.max(np.abs(step), initial=0.0) < 1e-15:
+        # An element that is done rests, so that its bits do not depend on its neighbours.
+        log_y = np.where(done, log_y, log_y - step)
+        done |= np.abs(step) < 1e-15
+        if np.all(done):
             break
     return np.exp(log_y)
 
@@ -109,6 +113,7 @@ def negative_power(cov: Array) -> Array:
     """
     target = np.log1p(np.square(cov))
     log_s = np.log(np.where(target < 1.0, 2.0 * np.sqrt(target / (math.pi**2 / 6)), target + 0.5))
+    done: Any = False
     for _ in range(_STEPS):
         s = np.exp(log_s)
         y = 0.5 * np.expm1(-s)
@@ -116,7 +121,8 @@ def negative_power(cov: Array) -> Array:
         # d ln L/d ln s = (2/y + V'/V) dy/ds s with dy/ds = -exp(-s)/2.
         rate = -(2.0 / y + slope / value) * 0.5 * np.exp(-s) * s
         step = (np.log(value) + 2.0 * np.log(-y) - np.log(target)) / rate
-        log_s = log_s - np.clip(step, -1.0, 1.0)
-        if np.max(np.abs(step), initial=0.0) < 1e-15:
+        log_s = np.where(done, log_s, log_s - np.clip(step, -1.0, 1.0))
+        done |= np.abs(step) < 1e-15
+        if np.all(done):
             break
     return 0.5 * np.expm1(-np.exp(log_s))

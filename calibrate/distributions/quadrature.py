@@ -30,6 +30,7 @@ def moments_over_u(x: Callable[[Array], Array], shape: tuple[int, ...]) -> tuple
     weights = _STEP * np.exp(log_phi(nodes))
     with np.errstate(over="ignore", invalid="ignore"):
         values = x(np.broadcast_to(nodes, (nodes.shape[0], *shape)))
-        mean = np.sum(weights * values, axis=0)
-        sd = np.sqrt(np.sum(weights * np.square(values - mean), axis=0))
+        # Added one after the other: the order in which np.sum adds depends on the shape.
+        mean = np.cumsum(weights * values, axis=0)[-1]
+        sd = np.sqrt(np.cumsum(weights * np.square(values - mean), axis=0)[-1])
     return mean, sd

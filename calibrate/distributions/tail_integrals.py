@@ -9,6 +9,7 @@ to rounding.
 from __future__ import annotations
 
 from collections.abc import Callable
+from typing import Any
 
 import numpy as np
 
@@ -32,11 +33,14 @@ def tail_length(drop: Callable[[Array], tuple[Array, Array]], beyond: Array) -> 
         Values of s at or beyond the solution; from there Newton's method falls monotonically.
     """
     s = beyond
+    done: Any = False
     for _ in range(_NEWTON):
         value, slope = drop(s)
         step = (value - DROP) / slope
-        s = s - step
-        if np.all(np.abs(step) <= 0.01 * s):
+        # An element that is done rests, so that its bits do not depend on its neighbours.
+        s = np.where(done, s, s - step)
+        done |= np.abs(step) <= 0.01 * s
+        if np.all(done):
             break
     return s
 

@@ -124,6 +124,8 @@ def solve_parent(lower: Array, upper: Array) -> tuple[Array, Array, npt.NDArray[
     lower, upper = np.broadcast_arrays(lower, upper)
     eta_1, eta_2 = np.zeros(lower.shape), np.full(lower.shape, -0.5)
     m = truncated_moments(eta_1, eta_2, lower, upper)
+    # An element that is done rests, so that its bits do not depend on its neighbours.
+    done = np.zeros(lower.shape, dtype=np.bool_)
     for _ in range(_STEPS):
         g1, g2 = m.mean, m.m2 + m.mean**2 - 1.0
         cross = m.m3 + 2.0 * m.mean * m.m2
@@ -131,7 +133,7 @@ def solve_parent(lower: Array, upper: Array) -> tuple[Array, Array, npt.NDArray[
         determinant = m.m2 * square - cross**2
         step_1 = (cross * g2 - square * g1) / determinant
         step_2 = (cross * g1 - m.m2 * g2) / determinant
-        active = (np.abs(g1) > 1e-15) | (np.abs(g2) > 1e-15)
+        active = ~done & ((np.abs(g1) > 1e-15) | (np.abs(g2) > 1e-15))
         descent = g1 * step_1 + g2 * step_2
         # At most nine tenths of the way to eta_2 = 0.
         with np.errstate(divide="ignore", invalid="ignore"):
@@ -156,7 +158,8 @@ def solve_parent(lower: Array, upper: Array) -> tuple[Array, Array, npt.NDArray[
         if np.any(waiting):
             best = truncated_moments(new_1, new_2, lower, upper)
         eta_1, eta_2, m = new_1, new_2, best
-        if np.max(moved, initial=0.0) < 1e-14:
+        done |= moved < 1e-14
+        if np.all(done):
             break
     error = np.maximum(np.abs(m.mean), np.abs(m.m2 + m.mean**2 - 1.0))
     return eta_1, eta_2, error < 1e-11
@@ -178,11 +181,13 @@ def largest_sd(mean: Array, lower: Array, upper: Array) -> Array:
     m = np.abs(place)
     # Start of A. Cohen, Rheologica Acta 30 (1991) 270; Newton's method finishes.
     theta = m * (3.0 - m * m) / (1.0 - m * m)
+    done = np.zeros(np.shape(m), dtype=np.bool_)
     for _ in range(30):
         value, slope = _langevin(theta)
         step = (value - m) / slope
-        theta = np.maximum(theta - step, 0.0)
-        if np.max(np.abs(step) / (1.0 + theta), initial=0.0) < 1e-14:
+        theta = np.where(done, theta, np.maximum(theta - step, 0.0))
+        done |= np.abs(step) / (1.0 + theta) < 1e-14
+        if np.all(done):
             break
     with np.errstate(invalid="ignore"):
         one_sided = np.minimum(mean - lower, upper - mean)
