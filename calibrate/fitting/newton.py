@@ -85,11 +85,14 @@ def maximise(function: Function, start: Array) -> Maximum:
 def _newton_step(gradient: Array, hessian: Array) -> tuple[Array, float]:
     if not (np.all(np.isfinite(gradient)) and np.all(np.isfinite(hessian))):
         return np.zeros_like(gradient), np.inf
-    eigenvalues, vectors = np.linalg.eigh(-hessian)
+    # Coordinates of unit curvature: in the sample's own, a tiny scatter makes a sharp maximum look singular.
+    unit = np.sqrt(np.abs(np.diag(hessian)))
+    unit = 1.0 / np.where(unit > 0.0, unit, 1.0)
+    eigenvalues, vectors = np.linalg.eigh(-hessian * np.outer(unit, unit))
     largest = max(float(np.max(np.abs(eigenvalues))), 1e-300)
     sizes = np.maximum(np.abs(eigenvalues), 1e-10 * largest)
-    along = vectors.T @ gradient
-    step = vectors @ (along / sizes)
+    along = vectors.T @ (unit * gradient)
+    step = unit * (vectors @ (along / sizes))
     definite = bool(eigenvalues[0] > 1e-13 * largest)
     decrement = float(np.sum(along**2 / sizes)) if definite else np.inf
     length = float(np.max(np.abs(step)))
