@@ -60,14 +60,13 @@ def method_of_moments(x: Array, model: Model, fixed: Mapping[str, float], free: 
     def solve(m: Array) -> Array:
         return _parameters(member, model, fixed, m, third)
 
+    kept = [i for i, name in enumerate(member.parameter_names) if name in free]
     try:
         values = solve(moments)
-        slopes = _slopes(solve, moments, float(np.std(x)), third)
+        slopes = _slopes(lambda m: solve(m)[kept], moments, float(np.std(x)), third)
     except InputError as error:
         return Estimate.failed(free, _lowered(error.problems[0].message.removeprefix(f"{model.family}: ")))
-    kept = [i for i, name in enumerate(member.parameter_names) if name in free]
-    scatter = influence @ influence.T / x.size**2
-    covariance = (slopes @ scatter @ slopes.T)[np.ix_(kept, kept)]
+    covariance = slopes @ (influence @ influence.T / x.size**2) @ slopes.T
     parameters = dict(zip(member.parameter_names, (float(v) for v in values), strict=True))
     parameters |= {name: value for name, value in fixed.items() if name in parameters}
     with np.errstate(all="ignore"):
@@ -116,7 +115,7 @@ def _parameters(
 
 
 def _slopes(solve: Callable[[Array], Array], m: Array, sd: float, third: str | None) -> Array:
-    """Return d parameter / d moment, shape (p, m)."""
+    """Return d parameter / d moment, shape (parameters that are estimated, moments)."""
     steps = np.full(m.size, STEP * sd)
     if third is not None:
         steps[-1] = STEP
