@@ -142,7 +142,7 @@ class TruncatedNormalModel(Model):
         ]
 
     def obstacle(self, z: Array, p: Mapping[str, float]) -> str:
-        if p["scale"] > 0.3 * WIDEST * float(np.std(z)):
+        if p["scale"] > 0.1 * WIDEST * float(np.std(z)):
             return (
                 "the likelihood still grows as the parent's scale exceeds every measure: the sample is scattered "
                 "more than any normal family cut at these bounds"

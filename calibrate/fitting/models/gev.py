@@ -12,6 +12,9 @@ from calibrate.fitting.jets import Array, Jet, Number, exp, log, log1p_ratio
 from calibrate.fitting.model import Model, Rule
 from calibrate.fitting.tools import gumbel_fit, jet
 
+HEAVIEST = 5.0
+"""Shape beyond which the search does not go: the mean is infinite from 1 on."""
+
 
 class GevModel(Model):
     """Shape positive: heavy upper tail.
@@ -46,7 +49,7 @@ class GevModel(Model):
 
     def allowed(self, z: Array, p: Mapping[str, float]) -> bool:
         shape = p["shape"]
-        if not -1.0 < shape < 5.0:
+        if not -1.0 < shape < HEAVIEST:
             return False
         end = float(np.max(z)) if shape < 0.0 else float(np.min(z))
         return 1.0 + shape * (end - p["location"]) / p["scale"] > 1e-10
@@ -67,6 +70,11 @@ class GevModel(Model):
             return (
                 "the likelihood has no maximum: it grows without bound as the upper end of the distribution "
                 "approaches the largest value (shape towards -1)"
+            )
+        if p["shape"] > 0.8 * HEAVIEST:
+            return (
+                f"the likelihood still grows at a shape of {HEAVIEST:g}: many values lie close together at the lower "
+                "end and others far above them"
             )
         return super().obstacle(z, p)
 
