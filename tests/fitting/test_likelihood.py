@@ -73,10 +73,10 @@ def test_no_other_route_climbs_higher(regular, n):
         assert found.parameters[name] == pytest.approx(parameters[name], abs=tolerance), name
 
 
-def test_log_likelihood_is_that_of_the_density(case):
-    values = case.sample(30, SEED)
-    found = case.fit(values)
-    assert found.log_likelihood == pytest.approx(case.log_likelihood(values, found.parameters), rel=1e-11)
+def test_log_likelihood_is_that_of_the_density(regular):
+    values = regular.sample(30, SEED)
+    found = regular.fit(values)
+    assert found.log_likelihood == pytest.approx(regular.log_likelihood(values, found.parameters), rel=1e-11)
 
 
 @pytest.mark.parametrize("n", [30, 200])
@@ -124,3 +124,15 @@ def test_bounds_of_a_uniform_family_are_the_extreme_values():
     found = fit_family(values, "uniform")
     assert found.parameters == {"lower": pytest.approx(values.min()), "upper": pytest.approx(values.max())}
     assert found.log_likelihood == pytest.approx(-50 * np.log(np.ptp(values)), rel=1e-13)
+
+
+@pytest.mark.parametrize("name", ["lognormal", "weibull", "frechet", "normal", "gumbel"])
+def test_scatter_far_below_the_mean(name):
+    """The estimates of 1 + s z tend to those of z as s falls: the logarithm of 1 + s z is s z."""
+    z = np.random.default_rng(1).standard_normal(40)
+    limit = {"lognormal": "normal", "weibull": "gumbel_min", "frechet": "gumbel"}.get(name, name)
+    fitted = fit_family(1.0 + 1e-8 * z, name).distribution
+    expected = fit_family(z, limit).distribution
+    np.testing.assert_allclose(
+        (fitted.ppf([0.1, 0.5, 0.9]) - 1.0) / 1e-8, expected.ppf([0.1, 0.5, 0.9]), atol=1e-6
+    )
