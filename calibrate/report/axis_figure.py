@@ -120,7 +120,7 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
         axes.grid(visible=True, axis="y")
         _points(axes, result, kind, ruler, by_rule=axis == BY_RULE)
         target_lines(axes, result, label=k == len(TITLES) - 1)
-        _ticks(axes, ruler, width)
+        level_ticks(axes, ruler, width)
         axes.set_xlabel(axis_label(result, axis), parse_math=True)
         if k:
             axes.tick_params(labelleft=False)
@@ -181,19 +181,34 @@ def target_lines(axes: Axes, result: Result, *, label: bool) -> None:
 
 
 def _points(axes: Axes, result: Result, kind: str, ruler: Scale, *, by_rule: bool) -> None:
+    beta, part = result.situations[f"beta_{kind}"].to_numpy(float), taking_part(result, kind)
+    scatter_by_rule(axes, result, beta, part, ruler, by_rule=by_rule)
+    if not part.any():
+        axes.text(0.5, 0.5, "no β", transform=axes.transAxes, ha="center", color=style.GREY)
+
+
+def scatter_by_rule(
+    axes: Axes,
+    result: Result,
+    values: Array,
+    part: NDArray[np.bool_],
+    ruler: Scale,
+    *,
+    by_rule: bool = False,
+) -> None:
+    """Draw one value of every situation that takes part, marked by rule, with weighted means at levels of the axis."""
     frame = result.situations
-    rule_of = frame["rule"].to_numpy()
-    beta, weight = frame[f"beta_{kind}"].to_numpy(float), frame["weight"].to_numpy(float)
-    part, rules = taking_part(result, kind), list(result.study.rules)
+    rule_of, weight = frame["rule"].to_numpy(), frame["weight"].to_numpy(float)
+    rules = list(result.study.rules)
     many = int(part.sum()) > MANY_POINTS
     reach = min(0.22, 0.08 * (len(rules) - 1)) * ruler.gap
     shifts = np.linspace(-reach, reach, len(rules)) if len(rules) > 1 and not by_rule else [0.0] * len(rules)
     heaviest = weight.max() if weight.size else 1.0
     for i, (rule, shift) in enumerate(zip(rules, shifts, strict=True)):
         rows = part & (rule_of == rule) & np.isfinite(ruler.position)
-        x, y, own = ruler.position[rows] + shift, beta[rows], weight[rows]
+        x, y, own = ruler.position[rows] + shift, values[rows], weight[rows]
         colour = style.colour(i)
-        if ruler.levels is not None and ruler.levels.size > 1 and not by_rule:
+        if ruler.levels is not None and ruler.levels.size > 1 and not by_rule and x.size:
             at, mean = _means(x, y, own)
             if ruler.ordered:
                 axes.plot(at, mean, color=colour, linewidth=1.0, zorder=2)
@@ -212,8 +227,6 @@ def _points(axes: Axes, result: Result, kind: str, ruler: Scale, *, by_rule: boo
             rasterized=many,
             label=rule,
         )
-    if not part.any():
-        axes.text(0.5, 0.5, "no β", transform=axes.transAxes, ha="center", color=style.GREY)
 
 
 def _means(x: Array, y: Array, weight: Array) -> tuple[Array, Array]:
@@ -223,7 +236,8 @@ def _means(x: Array, y: Array, weight: Array) -> tuple[Array, Array]:
     return at, np.bincount(group, weights=weight * y, minlength=at.size) / total
 
 
-def _ticks(axes: Axes, ruler: Scale, width: float) -> None:
+def level_ticks(axes: Axes, ruler: Scale, width: float) -> None:
+    """Set ticks at the levels of an axis."""
     if ruler.levels is None:
         return
     every = 1

@@ -9,6 +9,7 @@ from calibrate.report import style, symbols
 from calibrate.report.axis_figure import beta_by_axis, panel_axes
 from calibrate.report.distribution_figure import beta_distribution
 from calibrate.report.outcome import sensitivities, size_changes
+from calibrate.report.required_figure import drawn_factors, required_factors
 from calibrate.report.sensitivity_figure import sensitivity
 from calibrate.report.size_figure import size_change
 from calibrate.units import format_unit
@@ -24,7 +25,7 @@ def figures(result: Result) -> dict[str, Rendered]:
     """Return the figures of a result by name, in the order of the report.
 
     ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
-    does), ``beta_distribution``, ``size_change`` where a rule has a size,
+    does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
     ``sensitivity`` where a beta was found, ``probability_<variable>`` for every
     fitted variable.
     """
@@ -39,6 +40,8 @@ def _all(result: Result) -> Iterator[tuple[str, Figure]]:
     for axis in panel_axes(result):
         yield f"beta_by_{axis}", beta_by_axis(result, axis)
     yield "beta_distribution", beta_distribution(result)
+    if names := drawn_factors(result):
+        yield "required_factors", required_factors(result, names)
     if changes := size_changes(result):
         yield "size_change", size_change(changes)
     if found := sensitivities(result):

@@ -6,13 +6,14 @@ import json
 import os
 import shutil
 import tempfile
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from calibrate.errors import InputError, Problem
 
 if TYPE_CHECKING:
+    from calibrate.study.model import Study
     from calibrate.study.result import Result
 
 RESULT_FILE = "result.json"
@@ -36,7 +37,14 @@ def result_files(result: Result) -> dict[str, bytes]:
 
 def write_result(result: Result, directory: Path, *, force: bool = False) -> None:
     """Write a result; see :func:`write_files`."""
-    write_files(result_files(result), directory, force=force, recognise=holds_result)
+    files = result_files(result)
+    write_files(files, directory, force=force, recognise=holds_result, inputs=input_files(result.study))
+
+
+def input_files(study: Study) -> list[Path]:
+    """Return the files that a study was read from, which no result may replace."""
+    names = [s.file for s in study.records.values()] + ([study.table] if study.table else [])
+    return [study.path, *(study.path.parent / name for name in names)]
 
 
 def holds_result(directory: Path) -> bool:
@@ -52,13 +60,16 @@ def _format_of(path: Path) -> object:
     return content.get("format") if isinstance(content, dict) else None
 
 
-def replaceable(directory: Path, *, force: bool, recognise: Callable[[Path], bool]) -> None:
+def replaceable(
+    directory: Path, *, force: bool, recognise: Callable[[Path], bool], inputs: Iterable[Path] = ()
+) -> None:
     """Refuse a directory that must not be replaced.
 
     Raises
     ------
     InputError
-        It is a file, or it holds something that is not a result of this tool and ``force`` is not set.
+        It is a file, it holds the home or working directory or one of the ``inputs``, or it holds something
+        that is not a result of this tool and ``force`` is not set.
     """
     shown = str(directory)
     if directory.is_symlink():
@@ -69,10 +80,13 @@ def replaceable(directory: Path, *, force: bool, recognise: Callable[[Path], boo
         raise InputError(
             Problem(f"{shown} is a file.", suggestion="Name a folder for the results with --out.")
         )
-    if directory == Path(directory.anchor) or directory.resolve() in {Path.home(), Path.cwd()}:
+    place = directory.resolve()
+    kept = (Path.home(), Path.cwd(), *(path.resolve() for path in inputs))
+    if directory.exists() and any(path.is_relative_to(place) for path in kept):
         raise InputError(
             Problem(
-                f"{shown} cannot be replaced by results.", suggestion="Name a folder of its own with --out."
+                f"{shown} holds the working directory, your home or a file that was read; results cannot replace it.",
+                suggestion="Name a folder of its own with --out.",
             )
         )
     if not directory.is_dir() or force or not any(directory.iterdir()) or recognise(directory):
@@ -91,6 +105,7 @@ def write_files(
     *,
     force: bool = False,
     recognise: Callable[[Path], bool] = holds_result,
+    inputs: Iterable[Path] = (),
 ) -> None:
     """Write files into a folder that appears whole or not at all.
 
@@ -104,13 +119,15 @@ def write_files(
         Replace it whatever it holds.
     recognise : callable
         Says whether an existing folder may be replaced.
+    inputs : iterable of Path
+        Files that must not be replaced.
 
     Raises
     ------
     InputError
         The folder may not be replaced, or cannot be written.
     """
-    replaceable(directory, force=force, recognise=recognise)
+    replaceable(directory, force=force, recognise=recognise, inputs=inputs)
     parent = directory.absolute().parent
     try:
         parent.mkdir(parents=True, exist_ok=True)
