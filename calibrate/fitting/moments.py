@@ -75,7 +75,8 @@ def method_of_moments(x: Array, model: Model, fixed: Mapping[str, float], free: 
     notes: tuple[tuple[str, str], ...] = ()
     if not math.isfinite(log_likelihood):
         count = int(np.sum(~np.isfinite(density)))
-        message = f"{count} of the values lie outside the fitted distribution's support."
+        lie = "value lies" if count == 1 else "values lie"
+        message = f"{count} {lie} outside the fitted distribution's support."
         notes = (("outside-support", message),)
         log_likelihood = -math.inf
     return Estimate(parameters, free, covariance, log_likelihood, "", notes)
