@@ -122,6 +122,6 @@ def case(request) -> Case:
     return CASES[request.param]
 
 
-@pytest.fixture
-def all_cases() -> list[Case]:
-    return list(CASES.values())
+@pytest.fixture(scope="session")
+def cases() -> dict[str, Case]:
+    return CASES
