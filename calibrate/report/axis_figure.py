@@ -201,6 +201,7 @@ def scatter_by_rule(
     rule_of, weight = frame["rule"].to_numpy(), frame["weight"].to_numpy(float)
     rules = list(result.study.rules)
     many = int(part.sum()) > MANY_POINTS
+    alone = len(varying_columns(result)) == 1
     reach = min(0.22, 0.08 * (len(rules) - 1)) * ruler.gap
     shifts = np.linspace(-reach, reach, len(rules)) if len(rules) > 1 and not by_rule else [0.0] * len(rules)
     heaviest = weight.max() if weight.size else 1.0
@@ -210,9 +211,11 @@ def scatter_by_rule(
         colour = style.colour(i)
         if ruler.levels is not None and ruler.levels.size > 1 and not by_rule and x.size:
             at, mean = _means(x, y, own)
-            if ruler.ordered:
+            shared = at.size < x.size
+            # A line through single situations that differ in other columns as well would show a trend that is none.
+            if ruler.ordered and (shared or alone):
                 axes.plot(at, mean, color=colour, linewidth=1.0, zorder=2)
-            elif at.size < x.size:
+            elif shared:
                 axes.plot(at, mean, "_", color=colour, markersize=9, zorder=2)
         axes.scatter(
             x,
