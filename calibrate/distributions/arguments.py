@@ -57,7 +57,10 @@ def described(sets: Sequence[Sequence[str]]) -> str:
 
 def as_array(name: str, argument: str, value: Any) -> Array:
     """Return a float64 array, or raise for what is no number."""
-    raw = np.asarray(value)
+    try:
+        raw = np.asarray(value)
+    except ValueError:  # rows of different lengths
+        raw = np.asarray(None)
     if raw.dtype.kind not in "iuf":
         shown = repr(value)
         shown = shown if len(shown) <= 40 else f"{shown[:37]}..."
