@@ -22,9 +22,9 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
 )
-app.command("run", help=run.HELP)(run.run)
-app.command("check", help=check.HELP)(check.check)
-app.command("fit", help=fit.HELP)(fit.fit)
+app.command("run", help=run.HELP, short_help="Calibrate a study; write tables and report.")(run.run)
+app.command("check", help=check.HELP, short_help="Print what a study says; compute nothing.")(check.check)
+app.command("fit", help=fit.HELP, short_help="Fit and rank distributions for one column.")(fit.fit)
 
 
 def _show_version(wanted: bool) -> None:

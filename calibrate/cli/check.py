@@ -87,12 +87,14 @@ def _unit(text: str) -> str:
 
 
 def _variable_row(name: str, variable: dict[str, Any]) -> list[str]:
+    from calibrate.report import numbers
+
     family = variable["family"]
     family = ", ".join(family) if isinstance(family, list) else family
     given = ", ".join(f"{k} = {v}" for k, v in variable["arguments"].items())
     source = f"records {variable['records']}" if variable["records"] else given
     if variable["period"] is not None:
-        source += f", for a period of {variable['period']:g} a"
+        source += f", for {numbers.years(variable['period'])}"
     return [name, family, source, _unit(variable["unit"]), str(variable["dimension"])]
 
 

@@ -14,6 +14,7 @@ from calibrate.cli.options import Force, Json, Out, Quiet, Seed
 if TYPE_CHECKING:
     from calibrate.fitting import Comparison
     from calibrate.records import Sample
+    from calibrate.units import Unit
 
 HELP = "Fit and rank distributions for one column of a CSV or XLSX file; writes files only with --out."
 
@@ -43,20 +44,29 @@ def fit(
         from calibrate.records import read_column
         from calibrate.report import replaceable, write_files
         from calibrate.report.fit_files import fit_dict, fit_files, holds_fit
-        from calibrate.units import ONE, parse_unit
 
         if out is not None:
-            replaceable(out, force=force, recognise=holds_fit)
-        sample = read_column(file, column, unit=parse_unit(unit) if unit else ONE, sheet=sheet)
+            replaceable(out, force=force, recognise=holds_fit, inputs=[file])
+        sample = read_column(file, column, unit=_unit(unit), sheet=sheet)
         comparison = compare(sample.values, family or None, method=method)
         if out is not None:
-            write_files(fit_files(sample, comparison), out, force=force, recognise=holds_fit)
+            write_files(fit_files(sample, comparison), out, force=force, recognise=holds_fit, inputs=[file])
         if json:
             console.data(
                 json_module.dumps(fit_dict(sample, comparison), indent=2, ensure_ascii=False, allow_nan=False)
             )
         elif not quiet:
             _print(sample, comparison, out)
+
+
+def _unit(text: str) -> Unit:
+    from calibrate.errors import InputError, Problem
+    from calibrate.units import ONE, parse_unit
+
+    try:
+        return parse_unit(text) if text else ONE
+    except InputError as error:
+        raise InputError(Problem(p.message, "--unit", None, p.suggestion) for p in error.problems) from None
 
 
 def _print(sample: Sample, comparison: Comparison, out: Path | None) -> None:

@@ -34,14 +34,14 @@ def run(
     with console.guarded():
         with console.progress(quiet or json) as show:
             from calibrate.report import replaceable, write_result
-            from calibrate.report.folder import holds_result
+            from calibrate.report.folder import holds_result, input_files
             from calibrate.study import default_output, read_study
             from calibrate.study import run as run_study
 
             content = read_study(study, allow_outside=allow_outside)
             directory = out if out is not None else default_output(content)
             # Refuse before the work, not after it.
-            replaceable(directory, force=force, recognise=holds_result)
+            replaceable(directory, force=force, recognise=holds_result, inputs=input_files(content))
             command = shlex.join(["calibrate", *sys.argv[1:]])
             result = run_study(content, workers=workers, seed=seed, command=command, progress=show)
             show("Writing the report", 0.97)
