@@ -63,15 +63,16 @@ def test_without_out_it_goes_to_the_reports_of_the_project(
     assert "result.json" in contents(study.parents[2] / "reports" / name)
 
 
-@pytest.mark.parametrize(
-    "kept", [{"mine.txt": "mine"}, {"result.json": '{"format": "other/1"}'}, {"result.json": "[]"}]
-)
+OTHER = [("mine.txt", "mine"), ("result.json", '{"format": "other/1"}'), ("result.json", "[]")]
+
+
+@pytest.mark.parametrize(("name", "text"), OTHER)
 def test_other_content_is_refused_before_any_work_unless_forced(
-    study, calibrate, light, tmp_path, monkeypatch, kept
+    study, calibrate, light, tmp_path, monkeypatch, name, text
 ):
     out = tmp_path / "out"
     out.mkdir()
-    (out / kept[0]).write_text(kept[1])
+    (out / name).write_text(text)
     before = contents(out)
     with monkeypatch.context() as patch:
         patch.setattr("calibrate.study.run", lambda *a, **k: pytest.fail("the work was begun"))
