@@ -27,6 +27,9 @@ FEW = 10
 CLOSE_AICC = 2.0
 """Difference of AICc below which rivals count as about equally supported (Burnham and Anderson 2002, 2.6)."""
 
+_NUMBERS = "iufO"
+"""Kinds of arrays that hold real numbers; text, truth values and complex numbers would convert in silence."""
+
 METHODS = {"likelihood": maximum_likelihood, "moments": method_of_moments}
 
 
@@ -174,10 +177,14 @@ def fit(
 
 def checked_values(values: ArrayLike) -> Array:
     """Return a read-only copy of a sample, or raise InputError for what is none."""
+    refusal = InputError("The values must be numbers.")
     try:
-        x = np.array(values, dtype=np.float64)
+        raw = np.asarray(values)
+        x = np.array(raw, dtype=np.float64) if raw.dtype.kind in _NUMBERS else None
     except (TypeError, ValueError) as error:
-        raise InputError("The values must be numbers.") from error
+        raise refusal from error
+    if x is None:
+        raise refusal
     if x.ndim != 1:
         raise InputError(f"The values must be one row of numbers; they have {x.ndim} dimensions.")
     if x.size == 0:
