@@ -11,7 +11,7 @@ from calibrate.distributions import family
 from . import twins
 from .cases import made, sets, spread
 
-U = np.array([-12.0, -8.2, -5.0, -2.6, -1.0, 0.0, 0.7, 2.0, 3.8, 6.5, 12.0])
+U = np.array([-12.0, -8.2, -5.0, -2.6, -1.0, 0.0, 1e-7, 0.7, 2.0, 3.8, 6.5, 12.0])
 EPS = np.finfo(float).eps
 
 SETS = sets(without=("constant",))

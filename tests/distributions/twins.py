@@ -136,19 +136,22 @@ def ends(name, parameters):
 
 
 def quantile(name, u, parameters, near):
-    """Return the x with F(x) = Phi(u) and f(x), by Newton's method for ln F or ln(1 - F), from ``near``.
+    """Return the x with F(x) = Phi(u), and f(x)."""
+    return tail_quantile(name, Phi(-abs(u)), u >= 0, parameters, near)
+
+
+def tail_quantile(name, target, upper, parameters, near):
+    """Return the x with this probability beyond it, and f(x), by Newton's method for ln F or ln(1 - F) from ``near``.
 
     Towards a finite end of the support the logarithm of the distance to it is the unknown: there the logarithms are
     nearly straight, and ``near`` may have been rounded to the end itself.
     """
-    upper = u >= 0
     sign = -1 if upper else 1
     end = ends(name, parameters)[upper]
     bounded = mp.isfinite(end)
     y = mp.mpf(near)
     if bounded:
         y = mp.log(abs(near - end) or (abs(end) or 1) * mp.mpf(10) ** -17)
-    target = Phi(-abs(u))
     for _ in range(60):
         x = end + sign * mp.exp(y) if bounded else y
         cdf, sf, pdf = TWINS[name](x, *parameters)
@@ -157,7 +160,7 @@ def quantile(name, u, parameters, near):
         if abs(error) < mp.mpf(10) ** -30:
             return x, pdf
         y -= error * tail / slope / (sign * mp.exp(y) if bounded else 1)
-    raise AssertionError(f"{name}: no quantile near {near} for u = {u}")
+    raise AssertionError(f"{name}: no quantile near {near} for {mp.nstr(target)}")
 
 
 def tiny(name, parameters, x, size):

@@ -18,6 +18,8 @@ from calibrate.distributions.tail_integrals import DROP, tail_integral
 _FAR = 1e9
 _LOG_POWER = -40.0
 _HUGE = 1e300
+# Below this |u| quantiles are counted from the median.
+_CENTRAL = 0.5
 
 
 class StudentT(Family):
@@ -93,7 +95,13 @@ def _quantile(u: Array, freedom: Array) -> Array:
     with np.errstate(over="ignore"):
         power = np.minimum(np.sqrt(freedom) * np.exp(-0.5 * np.where(far, log_w, 0.0)), _HUGE)
     t = np.where(far, power, -special.stdtrit(freedom, np.where(far, 0.5, tail)))
-    return np.where(np.equal(u, 0.0), 0.0, np.copysign(t, u))
+    central = np.abs(u) < _CENTRAL
+    if np.any(central):
+        # Next to the median from P(|T| < t), a beta distribution of t^2/(freedom + t^2): small with u.
+        share = special.erf(np.where(central, np.abs(u), 0.0) / np.sqrt(2.0))
+        y = special.betaincinv(0.5, half, share)
+        t = np.where(central, np.sqrt(freedom * y / (1.0 - y)), t)
+    return np.copysign(t, u)
 
 
 def _log_density(t: Array, freedom: Array) -> Array:
