@@ -19,7 +19,7 @@ def scaled_fit():
     return fit
 
 
-@pytest.mark.parametrize("factor", [1e-6, 1e-3, 25.4, 1e6, 1e12])
+@pytest.mark.parametrize("factor", [1e-6, 25.4, 1e12])
 def test_likelihood_in_another_unit(case, scaled_fit, factor):
     values = case.sample(30, SEED)
     first, second = case.fit(values), scaled_fit(case, values, factor)
