@@ -49,7 +49,7 @@ def reach_other_side(problem: Problem, start: Array, side: Array) -> tuple[Array
     for _ in range(STEPS):
         g = problem.evaluate(u, a)[0]
         undefined |= np.isnan(g)
-        hit = missed & (side * g < 0.0)
+        hit = missed & (side * g <= 0.0)
         across = np.where(hit, u, across)
         missed &= ~hit
         if not missed.any():

@@ -85,9 +85,9 @@ class Rays:
     Attributes
     ----------
     start : array (k,)
-        Radius near the first zero or change of sign; NaN where none was seen.
+        Radius near the first change of sign; NaN where none was seen.
     seen : array (k,)
-        Smallest radius at which the other sign was seen; inf where none was.
+        Smallest radius at which the other sign, or zero, was seen; inf where none was.
     undefined : bool array (k,)
         Whether a value was NaN.
     """
@@ -117,12 +117,11 @@ def scan(problem: Problem, direction: Array, side: Array, g_origin: Array) -> Ra
     for radius in RADII:
         value = side * problem.value(direction * radius)
         undefined |= np.isnan(value)
-        first = (value <= 0.0) & np.isnan(start)
+        first = (value <= 0.0) & np.isinf(seen)
         share = before / (before - value)
         share = np.where(np.isfinite(share), np.clip(share, 0.05, 1.0), 0.5)
         start = np.where(first, inner + share * (radius - inner), start)
-        # A zero may only be touched, so it is worth a search but proves nothing.
-        seen = np.where((value < 0.0) & np.isinf(seen), radius, seen)
+        seen = np.where(first, radius, seen)
         before, inner = value, radius
     return Rays(start, seen, undefined)
 

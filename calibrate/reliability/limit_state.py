@@ -203,7 +203,11 @@ class CallableLimitState:
         k = np.shape(x[0])
         values = self.values if columns is None else _taken(self.values, columns)
         full = {name: np.broadcast_to(np.asarray(v, dtype=np.float64), k) for name, v in values.items()}
-        return {**full, **dict(zip(self.variables, x, strict=True))}
+        rows = {name: row.view() for name, row in zip(self.variables, x, strict=True)}
+        for row in rows.values():
+            # A function that writes into its arguments would change the design point.
+            row.setflags(write=False)
+        return {**full, **rows}
 
     def _call(self, inputs: Mapping[str, Array]) -> Array:
         k = np.shape(next(iter(inputs.values())))
@@ -253,9 +257,11 @@ class CallableLimitState:
 def _as_rows(result: Any, k: tuple[int, ...], what: str, scalar: bool = False) -> Array:
     """Return the result as float64 array of shape k, or raise with what came back."""
     array = np.asarray(result)
-    if array.dtype.kind not in "fiub" or not (array.shape == k or (scalar and array.shape == ())):
-        text = f"{what} must return an array of the shape of its arguments, here {k}"
+    if array.dtype.kind not in "fiu" or not (array.shape == k or (scalar and array.shape == ())):
+        text = f"{what} must return an array of numbers of the shape of its arguments, here {k}"
         hint = "Write it with numpy functions, so that it works on whole arrays."
+        if array.dtype.kind == "b":
+            hint = "Return the margin, such as R - S, in place of the comparison."
         raise InputError(Problem(f"{text}; it returned {_described(result)}.", suggestion=hint))
     return np.broadcast_to(array.astype(np.float64), k)
 

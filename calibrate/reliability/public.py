@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import inspect
 import math
+import operator
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -116,11 +117,13 @@ def public_form(
     >>> r.beta.round(6)
     array([2.822163, 2.45765 ])
     """
+    for what, given in (("variables", variables), ("quantities", quantities), ("correlation", correlation)):
+        if given is not None and not isinstance(given, Mapping):
+            raise InputError(f"{what}: must be a mapping; got {given!r}.")
     fixed = _quantities(quantities or {})
     _check_variables(variables, fixed)
     _check_correlation(correlation or {}, variables)
-    if not isinstance(workers, int) or workers < 1:
-        raise InputError(f"workers must be a whole number of at least 1; got {workers!r}.")
+    threads = _threads(workers)
     shape = _shape(variables, fixed)
     n = math.prod(shape)
     flat = {name: _flat(value, shape) for name, value in fixed.items()}
@@ -128,7 +131,17 @@ def public_form(
     names = tuple(variables)
     state = _limit_state(limit_state, names, flat, gradient)
     begin = None if start is None else _start(start, names, shape)
-    return _result(form(state, distributions, n, start=begin, workers=workers), shape)
+    return _result(form(state, distributions, n, start=begin, workers=threads), shape)
+
+
+def _threads(workers: Any) -> int:
+    try:
+        threads = operator.index(workers)
+    except TypeError:
+        threads = 0
+    if threads < 1:
+        raise InputError(f"workers must be a whole number of at least 1; got {workers!r}.")
+    return threads
 
 
 def _quantities(given: Mapping[str, npt.ArrayLike]) -> dict[str, Array]:
@@ -147,6 +160,9 @@ def _quantities(given: Mapping[str, npt.ArrayLike]) -> dict[str, Array]:
 def _check_variables(variables: Mapping[str, Any], quantities: Mapping[str, Array]) -> None:
     if not variables:
         raise InputError("variables: at least one basic variable is needed.")
+    for name in (*variables, *quantities):
+        if not isinstance(name, str):
+            raise InputError(f"variables and quantities: names must be texts; got {name!r}.")
     for name, value in variables.items():
         if not isinstance(value, Distribution):
             hint = "Make it with calibrate.distribution, or give it among the quantities."
@@ -170,7 +186,8 @@ def _check_correlation(
                 raise InputError(Problem(f"correlation: unknown variable '{name}'.", suggestion=hint))
         if pair[0] == pair[1]:
             raise InputError(f"correlation: '{pair[0]}' is paired with itself.")
-        if not np.all(np.equal(value, 0.0)):
+        array = np.asarray(value)
+        if array.dtype.kind not in "iuf" or not np.all(array == 0.0):
             text = "correlated basic variables are not supported by this version"
             raise InputError(
                 f"correlation of {pair[0]} and {pair[1]} is {value}: {text}; only 0 is accepted."
@@ -196,16 +213,12 @@ def _spread(distribution: Distribution, shape: Shape) -> Distribution:
     own = distribution.shape
     if own == () or (own == shape and len(own) == 1):
         return distribution
-    at = np.broadcast_to(np.arange(math.prod(own)).reshape(own), shape).reshape(-1)
-    return _flattened(distribution).take(at)
-
-
-def _flattened(distribution: Distribution) -> Distribution:
     if isinstance(distribution, Extreme):
         extreme = maximum_of if distribution.of_maxima else minimum_of
-        return extreme(_flattened(distribution.base), distribution.ratio.reshape(-1))
+        return extreme(_spread(distribution.base, shape), _flat(distribution.ratio, shape))
+    at = np.broadcast_to(np.arange(math.prod(own)).reshape(own), shape).reshape(-1)
     values = tuple(v.reshape(-1) if v.ndim else v for v in distribution.values)
-    return Distribution.of(distribution.family, values)
+    return Distribution.of(distribution.family, values).take(at)
 
 
 def _limit_state(

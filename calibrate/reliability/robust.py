@@ -125,7 +125,7 @@ def _resolve(problem: Problem, found: Points, passes: Counts, settings: FormSett
     defined = np.isfinite(g)
     for row in x:
         defined &= np.isfinite(row)
-    return _judged(pool, seen, g == 0.0, defined, undefined, evaluations, settings)
+    return _judged(pool, seen, defined, undefined, evaluations, settings)
 
 
 def _directions(
@@ -195,7 +195,6 @@ def _kinks(wide: Problem, pool: Candidates, seen: Array, settings: FormSettings)
 def _judged(
     pool: Candidates,
     seen: Array,
-    between: npt.NDArray[np.bool_],
     defined: npt.NDArray[np.bool_],
     undefined: npt.NDArray[np.bool_],
     evaluations: int,
@@ -210,12 +209,13 @@ def _judged(
     code[pool.stuck(nearest)] = KINK
     code[~some & (pool.side > 0.0)] = NO_FAILURE
     code[~some & (pool.side < 0.0)] = NO_SAFETY
-    # Medians that neither fail nor hold, and no gradient to go along.
-    code[~some & between] = KINK
     code[~some & np.isinf(seen) & undefined] = NOT_FINITE
     crossed = ~some & np.isfinite(seen)
-    code[crossed] = TOO_MANY
-    code[crossed & np.any(pool.code == KINK, axis=0)] = KINK
+    code[crossed] = KINK
+    unfinished = (pool.code == TOO_MANY) & (pool.passes >= settings.search_passes)
+    ends = ((TOO_MANY, unfinished), (NOT_FINITE, pool.code == NOT_FINITE), (KINK, pool.code == KINK))
+    for reason, where in ends:
+        code[crossed & np.any(where, axis=0)] = reason
     code[~defined] = NOT_FINITE
     passes = pool.passes[slot, np.arange(slot.size)]
     return Settled(pool.points(slot), code, np.where(some, passes, np.max(pool.passes, axis=0)), evaluations)

@@ -19,7 +19,6 @@ NO_FAILURE = "no failure region within reach"
 NO_SAFETY = "not converged: no safe region within reach"
 NOT_FINITE = "not converged: the limit state is not finite where it was needed"
 KINK = "not converged: the nearest point found lies on a kink or jump of the limit state"
-TOO_MANY = "not converged: too many iterations"
 
 
 def solve(limit_state, variables=PAIR, **quantities):
@@ -104,7 +103,6 @@ KNOWN = {
     "20 + u**3 + v**3": (20.0 ** (1.0 / 3.0), SEVERAL),
     "where(u >= 0, 3 - u, 3 + 0.5 * u)": (3.0, CONVERGED),
     "min(abs(3.1 - u), 4 - v)": (4.0, CONVERGED),
-    "min(abs(3 - u), 4 - v)": (4.0, CONVERGED),
     "exp(3 * u + 8) - 1": (8.0 / 3.0, CONVERGED),
     "(3 - u) * exp(v)": (3.0, CONVERGED),
     "log(3 - u) + 5": (3.0 - math.exp(-5.0), CONVERGED),
@@ -176,8 +174,8 @@ def test_flat_quartic():
         ("exp(u) + exp(v)", NO_FAILURE),
         ("max(3 - u, u - 2)", NO_FAILURE),
         ("abs(3.1 - u)", NO_FAILURE),
-        # A ray meets this zero exactly.
-        ("abs(3 - u)", NO_FAILURE),
+        # A ray meets this zero exactly; whether it is a failure cannot be seen.
+        ("abs(3 - u)", KINK),
         ("(3.1 - u + 0.5 * v)**2", NO_FAILURE),
         ("-(3.1 - u + 0.5 * v)**2", NO_SAFETY),
         ("-1 - u**2", NO_SAFETY),
@@ -189,7 +187,8 @@ def test_flat_quartic():
         ("1 / u", NOT_FINITE),
         ("sqrt(3 - u) + 0.5", NOT_FINITE),
         ("where(u >= 3, -1, 1)", KINK),
-        ("1e200 * (3 - u)", TOO_MANY),
+        ("where(u >= 3, 0, 1)", KINK),
+        ("1e200 * (3 - u)", NOT_FINITE),
     ],
 )
 def test_no_design_point_is_told_in_words(limit_state, status):
@@ -229,7 +228,7 @@ def test_supports_that_only_touch():
         "S": calibrate.distribution("uniform", lower=0.0, upper=[1.9, 2.0, 2.1]),
     }
     result = solve("R - S", variables)
-    assert result.status.tolist() == [NO_FAILURE, NO_FAILURE, CONVERGED]
+    assert result.status.tolist() == [NO_FAILURE, KINK, CONVERGED]
 
 
 @pytest.mark.parametrize(("strength", "status"), [(4.0, NO_FAILURE), (2.0, NO_SAFETY), (3.0, KINK)])
