@@ -41,6 +41,7 @@ def near_one(kind, rng):
         "gev": {"mean": mean, "cov": cov, "shape": rng.uniform(-0.15, 0.15, PER_GROUP)},
         "beta": {"mean": mean, "cov": cov, "lower": 0.1, "upper": 4.0},
         "student_t": {"mean": mean, "cov": cov, "freedom": rng.uniform(6.0, 30.0, PER_GROUP)},
+        "log_student_t": {"median": mean, "log_scale": cov, "freedom": rng.uniform(8.0, 30.0, PER_GROUP)},
         "truncated_normal": {"location": mean, "scale": cov, "lower": 0.1},
         "constant": {"value": mean},
     }
