@@ -14,6 +14,7 @@ from calibrate.distributions.families.frechet import Frechet
 from calibrate.distributions.families.gamma import Gamma
 from calibrate.distributions.families.gev import Gev
 from calibrate.distributions.families.gumbel import Gumbel, GumbelMin
+from calibrate.distributions.families.log_student_t import LogStudentT
 from calibrate.distributions.families.lognormal import Lognormal
 from calibrate.distributions.families.lognormal3 import Lognormal3
 from calibrate.distributions.families.normal import Normal
@@ -52,6 +53,7 @@ FAMILIES: Mapping[str, Family] = registered(
         Gev(),
         Beta(),
         StudentT(),
+        LogStudentT(),
         TruncatedNormal(),
         Constant(),
     )

@@ -21,7 +21,7 @@ from calibrate.distributions import Distribution, family
 from calibrate.fitting.jets import Array, Number, seed, total
 from calibrate.fitting.likelihood import Estimate, standardised
 from calibrate.fitting.model import Model, NoMaximumError, Rule
-from calibrate.fitting.newton import Maximum, maximise
+from calibrate.fitting.newton import maximise
 from calibrate.records.observations import Observations
 
 DIFFERENCE = 2e-5
@@ -75,6 +75,24 @@ def censored_likelihood(
     return Estimate(
         outward, free, 0.5 * (covariance + covariance.T), data.n * top.value - exact * math.log(data.unit)
     )
+
+
+def log_likelihood(law: Distribution, seen: Observations) -> float:
+    """Return the log-likelihood of a distribution of shape () for observations of any kind, -inf where impossible."""
+    with np.errstate(all="ignore"):
+        exact = seen.exact
+        value = float(np.sum(law.logpdf(seen.lower[exact])))
+        if not exact.all():
+            value += float(np.sum(_log_probability(law, seen.lower[~exact], seen.upper[~exact])))
+        if seen.truncated:
+            limits = _log_probability(law, np.array([seen.above]), np.array([seen.below]))
+            value -= seen.n * float(limits[0])
+    return value if not math.isnan(value) else -math.inf
+
+
+def _log_probability(law: Distribution, lower: Array, upper: Array) -> Array:
+    below, above = _end(law, lower, ()), _end(law, upper, ())
+    return _between(below, above)
 
 
 def _obstacle(model: Model, z: Array, p: Mapping[str, float], seen: Observations) -> str:
@@ -184,13 +202,7 @@ class _Search:
     ) -> tuple[Array, Array]:
         """Return ln P(lower < x < upper), and its derivatives by the free coordinates, shape (f, k)."""
         below, above = _end(law, lower, self.free), _end(law, upper, self.free)
-        # The difference is taken in the tail in which it does not cancel.
-        low_tail = below.log_cdf + above.log_cdf < below.log_sf + above.log_sf
-        log_p = np.where(
-            low_tail,
-            _log_difference(above.log_cdf, below.log_cdf),
-            _log_difference(below.log_sf, above.log_sf),
-        )
+        log_p = _between(below, above)
         slopes = np.array(
             [
                 (below.weight(name, log_p) - above.weight(name, log_p)) * self.slope(rule, p[rule.name])
@@ -231,10 +243,17 @@ def _end(law: Distribution, x: Array, free: tuple[Rule, ...]) -> _End:
     )
 
 
+def _between(below: _End, above: _End) -> Array:
+    """Return the log-probability between two ends, as a difference in the tail in which it does not cancel."""
+    low_tail = below.log_cdf + above.log_cdf < below.log_sf + above.log_sf
+    return np.where(
+        low_tail,
+        _log_difference(above.log_cdf, below.log_cdf),
+        _log_difference(below.log_sf, above.log_sf),
+    )
+
+
 def _log_difference(larger: Array, smaller: Array) -> Array:
     """Return ln(exp(larger) - exp(smaller))."""
     gap = smaller - larger
     return np.asarray(larger + np.where(gap > -0.693, np.log(-np.expm1(gap)), np.log1p(-np.exp(gap))))
-
-
-__all__ = ["Maximum", "censored_likelihood"]

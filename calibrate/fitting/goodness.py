@@ -64,6 +64,11 @@ def aicc(log_likelihood: float, k: int, n: int) -> float:
     return -2.0 * log_likelihood + 2.0 * k * n / (n - k - 1)
 
 
+def bic(log_likelihood: float, k: int, n: int) -> float:
+    """Return the Bayesian information criterion, -2 L + k ln n (G. Schwarz, Ann. Statist. 6 (1978) 461-464)."""
+    return -2.0 * log_likelihood + k * math.log(n)
+
+
 def plotting_positions(n: int) -> Array:
     """Return Hazen's positions (i - 1/2)/n of ordered values on probability paper, shape (n,)."""
     return (np.arange(n) + 0.5) / n

@@ -27,7 +27,9 @@ class Estimate:
     ``parameters`` holds all parameters in the family's order, empty if
     ``reason`` says why there is no estimate; ``covariance`` belongs to
     ``free`` and is NaN where it does not hold; ``notes`` are pairs of code and
-    message.
+    message. ``estimated`` is the number of quantities that the sample determined, where that is not the number of
+    free parameters. ``predictive`` is family and parameters of the distribution of a further specimen that carries
+    the uncertainty of the parameters, where the method itself gives it.
     """
 
     parameters: Mapping[str, float]
@@ -36,6 +38,8 @@ class Estimate:
     log_likelihood: float
     reason: str = ""
     notes: tuple[tuple[str, str], ...] = ()
+    estimated: int | None = None
+    predictive: tuple[str, Mapping[str, float]] | None = None
 
     @classmethod
     def failed(cls, free: tuple[str, ...], reason: str) -> Estimate:

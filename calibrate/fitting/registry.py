@@ -63,6 +63,9 @@ def model_of(name: str) -> Model:
     if name == "constant":
         message = "The family 'constant' has no scatter and cannot be fitted to records."
         raise InputError(Problem(message, suggestion="Give it as a quantity, or name another family."))
+    if name == "log_student_t":
+        message = "The family 'log_student_t' is what a lognormal fit predicts; it is not fitted itself."
+        raise InputError(Problem(message, suggestion="Fit 'lognormal'."))
     known = "" if did_you_mean(name, MODELS).startswith("Known") else f" Known: {', '.join(MODELS)}."
     message = f"There is no family '{name}'."
     raise InputError(Problem(message, suggestion=did_you_mean(name, MODELS) + known))

@@ -11,9 +11,9 @@ from numpy.typing import NDArray
 
 from calibrate.distributions import Distribution
 from calibrate.errors import Doubt
+from calibrate.records.observations import Observations
 
 Array = NDArray[np.float64]
-Method = Literal["likelihood", "moments"]
 Status = Literal["converged", "failed"]
 
 
@@ -24,7 +24,8 @@ class Fit:
     Attributes
     ----------
     family : str
-    method : {"likelihood", "moments"}
+    method : str
+        Name of the estimator.
     distribution : Distribution or None
         Of shape (); None if the fit failed.
     parameters : mapping of str to float
@@ -36,24 +37,30 @@ class Fit:
         Of the estimated parameters, in the order of ``free``.
     free : tuple of str
         Names of the estimated parameters.
+    fixed, options : mapping
+        Parameters that were held, and what the method was told.
     log_likelihood : float
         At the estimates.
     aicc : float
         Corrected Akaike criterion with p = ``len(free)``; infinite for n <= p + 1.
+    bic : float
+        Bayesian information criterion.
     anderson_darling : float
-        Distance A² between sample and distribution.
+        Distance A² between sample and distribution; NaN where the sample is not complete.
     status : {"converged", "failed"}
     reason : str
         Why it failed, or why AICc is infinite; otherwise empty.
-    values : array, shape (n,)
-        The sample, read-only.
+    observations : Observations
+        The sample.
+    own_predictive : Distribution or None
+        Distribution of a further specimen that carries the uncertainty of the parameters, where the method gives it.
     doubts : tuple of Doubt
     comparison : Comparison or None
         The rivals, where this fit was chosen among several.
     """
 
     family: str
-    method: Method
+    method: str
     distribution: Distribution | None
     parameters: Mapping[str, float]
     standard_errors: Mapping[str, float]
@@ -61,17 +68,26 @@ class Fit:
     free: tuple[str, ...]
     log_likelihood: float
     aicc: float
+    bic: float
     anderson_darling: float
     status: Status
     reason: str
-    values: Array
+    observations: Observations
+    options: Mapping[str, float]
+    fixed: Mapping[str, float]
     doubts: tuple[Doubt, ...] = ()
+    own_predictive: Distribution | None = None
     comparison: Comparison | None = None
 
     @property
     def n(self) -> int:
         """Number of values."""
-        return int(self.values.size)
+        return self.observations.n
+
+    @property
+    def values(self) -> Array:
+        """One number for each specimen, shape (n,)."""
+        return self.observations.values
 
     @property
     def converged(self) -> bool:

@@ -40,6 +40,10 @@ class Observations:
     below: float = np.inf
 
     def __post_init__(self) -> None:
+        for name in ("lower", "upper"):
+            bound = np.array(getattr(self, name), dtype=np.float64)
+            bound.flags.writeable = False
+            object.__setattr__(self, name, bound)
         if np.isnan(self.lower).any() or np.isnan(self.upper).any():
             raise InputError("An observation is not a number.")
         wrong = (self.lower > self.upper) | (self.lower == np.inf) | (self.upper == -np.inf)
@@ -117,6 +121,8 @@ class Observations:
     @property
     def values(self) -> Array:
         """One number for each specimen: the value, the finite bound, or the middle of the interval."""
+        if not self.censored:
+            return self.lower
         finite_lower = np.where(self.left, self.upper, self.lower)
         finite_upper = np.where(self.right, self.lower, self.upper)
         return np.asarray(np.where(self.exact, self.lower, 0.5 * (finite_lower + finite_upper)))

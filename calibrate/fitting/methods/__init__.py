@@ -1,0 +1,1 @@
+"""Estimators, one file each behind one registry."""
