@@ -6,7 +6,7 @@ from scipy import stats
 
 from calibrate.distributions import family_names
 
-from .cases import made, sets, spread
+from .cases import INF, made, sets, spread
 
 P = np.array([1e-9, 1e-6, 1e-3, 0.05, 0.3, 0.5, 0.8, 0.98])
 
@@ -32,7 +32,12 @@ PEERS = {
 }
 UNKNOWN_THERE = ("constant",)
 
-SETS = sets(without=UNKNOWN_THERE)
+# Far beyond the parent's centre the peer loses half its digits; test_against_mpmath.py and test_moments.py have these.
+PEER_LACKS_DIGITS = {
+    ("truncated_normal", (-30.0, 1.0, 0.0, INF)),
+    ("truncated_normal", (500.0, 1.0, 380.0, 400.0)),
+}
+SETS = [s for s in sets(without=UNKNOWN_THERE) if s.values not in PEER_LACKS_DIGITS]
 # Where moments do not exist, and next to shape 0, the peer's are wrong; test_moments.py has these by other routes.
 PEER_LACKS_MOMENTS = {
     ("frechet", (2.0, 1.5)), ("frechet", (1.0, 0.8)), ("student_t", (-1.0, 0.5, 1.0)),

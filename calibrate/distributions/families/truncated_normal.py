@@ -8,6 +8,7 @@ import math
 import numpy as np
 
 from calibrate.distributions.arguments import refuse, require
+from calibrate.distributions.beyond_bound import Beyond, beyond
 from calibrate.distributions.bounds import require_between, require_order
 from calibrate.distributions.exponentials import consistent_tails
 from calibrate.distributions.family import Family
@@ -17,6 +18,8 @@ from calibrate.distributions.truncation import largest_sd, log_interval, solve_p
 
 # A parent further from its bounds than this leaves an exponential tail, which has its own family.
 _FARTHEST = 2000.0
+# From here on an interval beside the parent's centre is counted from its nearer bound.
+_FAR = 3.0
 # How close to the largest possible sd a parent is still sought.
 _MARGIN = 1e-6
 
@@ -59,15 +62,24 @@ class TruncatedNormal(Family):
         return consistent_tails(below, above)
 
     def x(self, u: Array, p: Values) -> Array:
-        return np.clip(p[0] + p[1] * _parent_u(u, p), p[2], p[3])
+        location, scale, lower, upper = p
+        x = location + scale * _parent_u(u, p)
+        side, far = _far_side(u, p)
+        if far is not None:
+            x = _pick(side, x, lower + scale * far.offset, upper - scale * far.offset)
+        return np.clip(x, lower, upper)
 
     def x_curvature(self, u: Array, p: Values) -> tuple[Array, Array, Array]:
-        location, scale = p[:2]
+        scale = p[1]
         z = _parent_u(u, p)
         # phi(u) du mass = phi(z) dz.
         slope = np.exp(log_phi(u) - log_phi(z) + _log_mass(p))
-        x = np.clip(location + scale * z, p[2], p[3])
-        return x, scale * slope, scale * slope * (z * slope - u)
+        side, far = _far_side(u, p)
+        if far is not None:
+            a, b = _ends(p)
+            slope = _pick(side, slope, far.slope, far.slope)
+            z = _pick(side, z, a + far.offset, b - far.offset)
+        return self.x(u, p), scale * slope, scale * slope * (z * slope - u)
 
     def parameter_slopes(self, u: Array, p: Values) -> Values:
         a, b = _ends(p)
@@ -76,7 +88,13 @@ class TruncatedNormal(Family):
         by_lower = np.exp(log_ndtr(-u) + 0.5 * (z - a) * (z + a))
         by_upper = np.exp(log_ndtr(u) + 0.5 * (z - b) * (z + b))
         ends = np.where(np.isfinite(a), a, 0.0) * by_lower + np.where(np.isfinite(b), b, 0.0) * by_upper
-        return 1.0 - by_lower - by_upper, z - ends, by_lower, by_upper
+        slopes = 1.0 - by_lower - by_upper, z - ends, by_lower, by_upper
+        side, far = _far_side(u, p)
+        if far is None:
+            return slopes
+        above = far.by_location, far.by_scale, far.by_near, far.by_far
+        below = far.by_location, -far.by_scale, far.by_far, far.by_near
+        return tuple(_pick(side, *s) for s in zip(slopes, above, below, strict=True))
 
     def moments(self, p: Values) -> tuple[Array, Array]:
         location, scale = p[:2]
@@ -139,3 +157,18 @@ def _parent_u(u: Array, p: Values) -> Array:
     log_cdf = np.logaddexp(log_ndtr(a) + below, log_ndtr(b) + above)
     log_sf = np.logaddexp(log_ndtr(-a) + below, log_ndtr(-b) + above)
     return u_from_log_tails(log_cdf, log_sf)
+
+
+def _far_side(u: Array, p: Values) -> tuple[Array, Beyond | None]:
+    """Say on which side of the parent's centre the interval lies far out (1, -1, 0), and count from its bound."""
+    a, b = _ends(p)
+    side = np.where(a > _FAR, 1.0, np.where(b < -_FAR, -1.0, 0.0))
+    if not np.any(side):
+        return side, None
+    start = np.where(side == 0.0, _FAR, np.maximum(a, -b))
+    gap = np.where(side == 0.0, np.inf, (p[3] - p[2]) / p[1])
+    return side, beyond(np.where(side < 0.0, -u, u), start, gap)
+
+
+def _pick(side: Array, near: Array, above: Array, below: Array) -> Array:
+    return np.where(side == 0.0, near, np.where(side > 0.0, above, below))
