@@ -97,14 +97,15 @@ def pairs(p: int) -> list[tuple[int, int]]:
     return [(i, j) for i in range(p) for j in range(i, p)]
 
 
-def seed(index: int, p: int, value: float, slope: float, curve: float) -> Jet:
+def seed(index: int, p: int, value: Array | float, slope: Array | float, curve: Array | float) -> Jet:
     """Return parameter ``index`` of ``p``, itself a function of one free coordinate.
 
     ``slope`` and ``curve`` are its first and second derivative by that coordinate.
     """
     slopes: list[Part] = [None] * p
     slopes[index] = slope
-    curves: list[Part] = [curve if (i, j) == (index, index) and curve != 0.0 else None for i, j in pairs(p)]
+    bent = bool(np.any(curve))
+    curves: list[Part] = [curve if bent and (i, j) == (index, index) else None for i, j in pairs(p)]
     return Jet(value, tuple(slopes), tuple(curves))
 
 

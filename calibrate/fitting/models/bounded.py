@@ -10,7 +10,7 @@ from typing import ClassVar
 import numpy as np
 from scipy import special
 
-from calibrate.fitting.jets import Array, Jet, Number, Part, chain, chain2, log, log_gamma, square
+from calibrate.fitting.jets import Array, Jet, Number, chain, chain2, log, log_gamma, square
 from calibrate.fitting.model import Model, Rule
 from calibrate.fitting.models.normal import HALF_LOG_2PI
 from calibrate.fitting.tools import jet
@@ -151,7 +151,7 @@ class TruncatedNormalModel(Model):
 
 
 def _log_mass(p: Mapping[str, Number]) -> Number:
-    """Return ln of the parent's probability between the bounds."""
+    """Return ln of the parent's probability between the bounds; parameters may be arrays over samples."""
     lower, upper = p["lower"], p["upper"]
     assert not isinstance(lower, Jet)
     assert not isinstance(upper, Jet)
@@ -162,34 +162,36 @@ def _log_mass(p: Mapping[str, Number]) -> Number:
         else:
             ends.append(float(bound))
     a, b = ends
-    a_value, b_value = (float(e.value if isinstance(e, Jet) else e) for e in ends)
+    a_value, b_value = (np.asarray(e.value if isinstance(e, Jet) else e, dtype=np.float64) for e in ends)
     mass = _log_interval(a_value, b_value)
     # Hazards at the two ends: density of the parent there over its mass inside.
-    at_a = math.exp(-0.5 * a_value**2 - HALF_LOG_2PI - mass) if math.isfinite(a_value) else 0.0
-    at_b = math.exp(-0.5 * b_value**2 - HALF_LOG_2PI - mass) if math.isfinite(b_value) else 0.0
-    first: tuple[Part, Part] = (-at_a, at_b)
+    at_a = np.exp(-0.5 * a_value**2 - HALF_LOG_2PI - mass)
+    at_b = np.exp(-0.5 * b_value**2 - HALF_LOG_2PI - mass)
     if isinstance(a, Jet) and isinstance(b, Jet):
         second = (at_a * (a_value - at_a), at_a * at_b, -at_b * (b_value + at_b))
-        return chain2(a, b, mass, first, second)
+        return chain2(a, b, mass, (-at_a, at_b), second)
     if isinstance(a, Jet):
-        return chain(a, mass, first[0], at_a * (a_value - at_a))
+        return chain(a, mass, -at_a, at_a * (a_value - at_a))
     if isinstance(b, Jet):
-        return chain(b, mass, first[1], -at_b * (b_value + at_b))
+        return chain(b, mass, at_b, -at_b * (b_value + at_b))
     return mass
 
 
-def _log_interval(a: float, b: float) -> float:
+_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(12)
+
+
+def _log_interval(a: Array, b: Array) -> Array:
     """Return ln(Phi(b) - Phi(a)), from the tail in which the interval lies."""
-    if a > 0.0:
-        a, b = -b, -a
-    upper, lower = float(special.log_ndtr(b)), float(special.log_ndtr(a))
-    if math.isinf(lower):
-        return upper
-    if lower - upper > -1e-3:
-        # A narrow interval: the difference of two equal numbers; the mean density by Gauss-Legendre instead.
-        nodes, weights = np.polynomial.legendre.leggauss(12)
-        at = 0.5 * (a + b) + 0.5 * (b - a) * nodes
-        peak = float(np.max(-0.5 * at**2))
-        inner = float(np.sum(weights * np.exp(-0.5 * at**2 - peak)))
-        return math.log(0.5 * (b - a)) + math.log(inner) + peak - HALF_LOG_2PI
-    return upper + math.log1p(-math.exp(lower - upper))
+    a, b = np.where(a > 0.0, -b, a), np.where(a > 0.0, -a, b)
+    upper, lower = special.log_ndtr(b), special.log_ndtr(a)
+    gap = np.where(np.isneginf(lower), -np.inf, lower - upper)
+    narrow = gap > -1e-3
+    found = upper + np.log1p(-np.exp(np.where(narrow, -1.0, gap)))
+    if not np.any(narrow):
+        return np.asarray(found)
+    # A narrow interval: the difference of two equal numbers; the mean density by Gauss-Legendre instead.
+    a, b = np.where(narrow, a, -1.0), np.where(narrow, b, 1.0)
+    at = 0.5 * (a + b) + 0.5 * (b - a) * np.reshape(_NODES, (-1, *(1,) * a.ndim))
+    peak = np.max(-0.5 * at**2, axis=0)
+    inner = np.tensordot(_WEIGHTS, np.exp(-0.5 * at**2 - peak), axes=1)
+    return np.where(narrow, np.log(0.5 * (b - a)) + np.log(inner) + peak - HALF_LOG_2PI, found)
