@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from calibrate.fitting.lots.grouping import Array, Grouped
 
-CHUNK = 2_000_000
+CHUNK = 500_000
 """Largest number of labels that are held at once."""
 
 
@@ -96,7 +96,8 @@ class _Distance:
         column = np.arange(order.shape[1])
         first = np.ones(order.shape, dtype=bool)
         first[:, 1:] = (tie[:, 1:] != tie[:, :-1]) | (self.place[1:] == 1)
-        return 2.0 * (column - np.maximum.accumulate(np.where(first, column, 0), axis=1)) + 1.0
+        run = column - np.maximum.accumulate(np.where(first, column, 0), axis=1)
+        return np.asarray(2.0 * run + 1.0, dtype=np.float64)
 
 
 def _null_sd(g: Grouped) -> float:
