@@ -28,6 +28,7 @@ CASES = {
     "gev": [(10.0, 2.0, 0.15), (0.0, 1.0, 0.0), (4.0, 0.2, -0.3), (1.0, 1.0, 1e-9), (5.0, 0.5, 0.7), (0.0, 1.0, -1.4)],
     "beta": [(2.0, 5.0, 0.0, 1.0), (0.5, 0.7, -1.0, 3.0), (1.0, 1.0, 10.0, 20.0), (90.0, 8.0, 0.0, 50.0)],
     "student_t": [(0.0, 1.0, 4.0), (30.0, 2.0, 19.0), (-1.0, 0.5, 1.0), (0.0, 1.0, 300.0), (5.0, 1.0, 2.5)],
+    "log_student_t": [(420.0, 0.1, 20.0), (1.0, 0.3, 30.0), (0.05, 0.02, 15.0)],
     "truncated_normal": [
         (1.0, 0.4, 0.0, INF), (5.0, 2.0, 3.0, 6.0), (0.0, 1.0, -INF, INF), (0.0, 2.0, -INF, -7.0), (0.0, 1.0, 4.0, 4.2),
         (-30.0, 1.0, 0.0, INF), (500.0, 1.0, 380.0, 400.0),
@@ -49,6 +50,22 @@ def sets(*, without=()):
 def made(name, parameters):
     """Return the distribution with these own parameters, through the front door."""
     return distribution(name, **dict(zip(family(name).parameter_names, parameters, strict=True)))
+
+
+def integrated_moments(d):
+    """Return mean and sd as integrals over all quantiles, by Gauss's rule in pieces, counted in sizes from the median.
+
+    Beyond u = 37 the heaviest of the tails with an sd holds less than 1e-20 of it.
+    """
+    centre, size = float(d.x(0.0)), spread(d)
+    knots = np.array([-37.0, -20.0, -10.0, -6.0, -3.0, 0.0, 3.0, 6.0, 10.0, 20.0, 37.0])
+    nodes, weights = np.polynomial.legendre.leggauss(60)
+    half = 0.5 * np.diff(knots)[:, None]
+    u = knots[:-1, None] + half * (1.0 + nodes)
+    mass = half * weights * np.exp(-0.5 * u * u) / np.sqrt(2.0 * np.pi)
+    y = (d.x(u) - centre) / size
+    offset = np.sum(mass * y)
+    return centre + size * offset, size * np.sqrt(np.sum(mass * (y - offset) ** 2))
 
 
 def spread(d):

@@ -30,7 +30,7 @@ PEERS = {
         (lower - location) / scale, (upper - location) / scale, location, scale
     ),
 }
-UNKNOWN_THERE = ("constant",)
+UNKNOWN_THERE = ("constant", "log_student_t")
 
 # Far beyond the parent's centre the peer loses half its digits; test_against_mpmath.py and test_moments.py have these.
 PEER_LACKS_DIGITS = {

@@ -36,7 +36,7 @@ def assert_same_bits(d, u, x):
             np.testing.assert_array_equal(np.broadcast_to(a, u.shape)[i : i + 1], b)
 
 
-@pytest.mark.parametrize("shift", range(len(U)))
+@pytest.mark.parametrize("shift", range(0, len(U), 2))
 @pytest.mark.parametrize("name", FAMILIES)
 def test_a_batch_gives_the_bits_of_one_at_a_time(name, shift):
     d = together(name)

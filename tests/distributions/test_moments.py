@@ -1,14 +1,11 @@
 """Moments by quadrature of the density, from moments to parameters and back, and derivatives through the moments."""
 
-import itertools
-
 import numpy as np
 import pytest
-from scipy import integrate
 
 from calibrate.distributions import distribution, family
 
-from .cases import CASES, made, sets, spread
+from .cases import CASES, integrated_moments, made, sets, spread
 
 TWO_MOMENTS = [n for n in CASES if len(family(n).moment_names) == 2]
 ONES = {"threshold": 0.2, "shape": 0.1, "freedom": 6.0, "lower": 0.1, "upper": 4.0}
@@ -25,11 +22,17 @@ MOMENTS = [
     for k in KEPT[n]
     for cov in (0.01, 0.1, 0.3)
 ]
-INFINITE = [("frechet", (2.0, 1.5), False), ("frechet", (1.0, 0.8), True), ("gev", (5.0, 0.5, 0.7), False),
-            ("gev", (0.0, 1.0, 1.2), True), ("student_t", (0.0, 1.0, 1.7), False)]  # fmt: skip
+INFINITE = [  # and whether the mean is infinite too
+    ("frechet", (2.0, 1.5), False),
+    ("frechet", (1.0, 0.8), True),
+    ("gev", (5.0, 0.5, 0.7), False),
+    ("gev", (0.0, 1.0, 1.2), True),
+    ("student_t", (0.0, 1.0, 1.7), False),
+    ("log_student_t", (1.0, 0.1, 50.0), True),
+]
 FINITE = [
     s
-    for s in sets(without=("constant",))
+    for s in sets(without=("constant", "log_student_t"))
     if s.values not in {i[:2] for i in INFINITE} | {("student_t", (-1.0, 0.5, 1.0))}
 ]
 
@@ -37,19 +40,9 @@ FINITE = [
 @pytest.mark.parametrize(("name", "parameters"), FINITE)
 def test_moments_are_integrals_over_all_quantiles(name, parameters):
     d = made(name, parameters)
-    centre, size = float(d.x(0.0)), spread(d)
-
-    def integral(power):
-        def weighted(u):
-            return ((float(d.x(u)) - centre) / size) ** power * np.exp(-0.5 * u * u) / np.sqrt(2.0 * np.pi)
-
-        # Pieces, so that no rule overlooks the middle; beyond 37 the heaviest of these tails holds less than 1e-20.
-        pieces = itertools.pairwise([-37.0, -10.0, -3.0, 0.0, 3.0, 10.0, 37.0])
-        return sum(integrate.quad(weighted, a, b, epsabs=1e-11, epsrel=1e-9, limit=200)[0] for a, b in pieces)
-
-    offset = integral(1)
-    assert float(d.mean) == pytest.approx(centre + size * offset, rel=0, abs=1e-9 * size)
-    assert float(d.sd) == pytest.approx(size * np.sqrt(integral(2) - offset**2), rel=1e-9)
+    mean, sd = integrated_moments(d)
+    assert float(d.mean) == pytest.approx(mean, rel=0, abs=1e-9 * sd)
+    assert float(d.sd) == pytest.approx(sd, rel=1e-9)
     if d.mean != 0:
         assert float(d.cov) == pytest.approx(float(d.sd) / abs(float(d.mean)), rel=1e-12)
 
@@ -100,9 +93,10 @@ def test_the_mean_of_an_exponential_variable_is_enough():
 
 
 def central(f, at, step):
-    """Return df/dx by Richardson's extrapolation of central differences, error of order step**6."""
-    d1, d2, d3 = ((f(at + h) - f(at - h)) / (2.0 * h) for h in (step, 0.5 * step, 0.25 * step))
-    return (64.0 * d3 - 20.0 * d2 + d1) / 45.0
+    """Return df/dx by Richardson's extrapolation of central differences of an elementwise f, error of order step**6."""
+    h = step * np.array([1.0, 0.5, 0.25])
+    differences = (f(at + h) - f(at - h)) / (2.0 * h)
+    return float(np.dot(differences, [1.0, -20.0, 64.0])) / 45.0
 
 
 @pytest.mark.parametrize(("name", "mean", "cov", "kept"), [m for m in MOMENTS if m.values[2] > 0.05])
@@ -118,9 +112,7 @@ def test_derivatives_of_parameters_by_what_was_given(name, mean, cov, kept, seco
             if np.isinf(own[p]):
                 assert slopes[p][argument] == 0.0
                 continue
-            expected = central(
-                lambda v, a=argument, p=p: float(member.solve({**given, a: v})[p]), value, step
-            )
+            expected = central(lambda v, a=argument, p=p: member.solve({**given, a: v})[p], value, step)
             size = abs(float(own[p]))
             assert float(slopes[p][argument]) == pytest.approx(expected, rel=1e-7, abs=1e-8 * (size + 1.0)), (
                 p,
@@ -142,7 +134,7 @@ def test_derivatives_of_moments_by_parameters(name, parameters):
 
             def moment(v, i=i, j=j):
                 moved = tuple(np.asarray(v if k == i else q) for k, q in enumerate(parameters))
-                return float(member.moments(moved)[j])
+                return member.moments(moved)[j]
 
             expected = central(moment, p, 0.005 * unit)
             assert float(slopes[i][j]) == pytest.approx(expected, rel=1e-7, abs=1e-8 * sd / unit), (i, j)

@@ -9,7 +9,7 @@ from hypothesis import strategies as st
 
 from calibrate.distributions import family_names, maximum_of, minimum_of
 
-from .cases import made
+from .cases import made, spread
 
 us = st.floats(-9.0, 9.0)
 locations = st.floats(-100.0, 100.0)
@@ -32,6 +32,7 @@ ANY = {
     "gev": st.tuples(locations, scales, st.floats(-0.8, 0.45)),
     "beta": st.tuples(shapes, shapes, locations, scales).map(lambda t: (*t[:3], t[2] + t[3])),
     "student_t": st.tuples(locations, scales, st.floats(2.1, 400.0)),
+    "log_student_t": st.tuples(scales, st.floats(0.02, 0.2), st.floats(12.0, 400.0)),
     "truncated_normal": st.tuples(locations, scales, st.floats(-3.0, 0.5), st.floats(1.0, 4.0)).map(
         lambda t: (*t[:2], t[0] + t[1] * t[2], t[0] + t[1] * t[3])
     ),
@@ -54,7 +55,7 @@ def variables(draw, names=tuple(SCATTERED)):
 
 def size(d):
     """Return what rounding errors of x are measured by."""
-    return float(d.sd) + max(abs(float(v)) for v in d.parameters.values())
+    return spread(d) + max(abs(float(v)) for v in d.parameters.values())
 
 
 def test_every_family_is_drawn():

@@ -96,6 +96,11 @@ def student_t(x, location, scale, freedom):
     return (tail, 1 - tail, pdf) if t < 0 else (1 - tail, tail, pdf)
 
 
+def log_student_t(x, median, log_scale, freedom):
+    cdf, sf, pdf = student_t(mp.log(x / median) / log_scale, 0, 1, freedom)
+    return cdf, sf, pdf / (log_scale * x)
+
+
 def truncated_normal(x, location, scale, lower, upper):
     z, a, b = ((v - location) / scale for v in (x, lower, upper))
     # All three as upper tails, or all as lower ones: whichever is small, so that differences keep their digits.
@@ -112,12 +117,12 @@ TWINS = {
     f.__name__: f
     for f in (
         normal, lognormal, gumbel, gumbel_min, weibull, frechet, gamma, uniform, exponential, weibull3, lognormal3,
-        gev, beta, student_t, truncated_normal,
+        gev, beta, student_t, log_student_t, truncated_normal,
     )
 }  # fmt: skip
 
 
-POSITIVE = ("lognormal", "weibull", "frechet", "gamma", "exponential")
+POSITIVE = ("lognormal", "weibull", "frechet", "gamma", "exponential", "log_student_t")
 
 
 def ends(name, parameters):
