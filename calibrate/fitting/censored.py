@@ -20,8 +20,9 @@ import numpy as np
 from calibrate.distributions import Distribution, family
 from calibrate.fitting.jets import Array, Number, seed, total
 from calibrate.fitting.likelihood import Estimate, standardised
-from calibrate.fitting.model import Model, NoMaximumError, Rule
+from calibrate.fitting.model import Data, Model, NoMaximumError, Rule
 from calibrate.fitting.newton import maximise
+from calibrate.fitting.registry import model_of
 from calibrate.records.observations import Observations
 
 DIFFERENCE = 2e-5
@@ -48,21 +49,13 @@ def censored_likelihood(
     The gradient is exact: that of densities by forward differentiation, that of probabilities from
     dF/dp = -f dx/dp at fixed u. The observed information is its central difference.
     """
-    data = standardised(seen.values, model)
-    rules = {rule.name: rule for rule in model.rules}
-    inner = {name: data.inward(rules[name].kind, value) for name, value in fixed.items()}
-    scaled = Observations(
-        (seen.lower - data.shift) / data.unit,
-        (seen.upper - data.shift) / data.unit,
-        (seen.above - data.shift) / data.unit,
-        (seen.below - data.shift) / data.unit,
-    )
+    search = search_of(seen, model.family, fixed, free)
+    data = search.data
     with np.errstate(all="ignore"):
-        search = _Search(model, scaled, inner, tuple(rules[name] for name in free))
         try:
-            starts = [search.coordinates(p) for p in model.starts(data.z, inner)]
+            starts = [search.coordinates(p) for p in model.starts(data.z, search.fixed)]
         except NoMaximumError:
-            starts = [search.coordinates({**inner, **_rough(data.z, search.free)})]
+            starts = [search.coordinates({**search.fixed, **_rough(data.z, search.free)})]
         tops = [maximise(search, t) for t in starts]
         top = max(tops, key=lambda m: (m.converged, m.value if math.isfinite(m.value) else -math.inf))
         p = search.parameters(top.t)
@@ -75,6 +68,31 @@ def censored_likelihood(
     return Estimate(
         outward, free, 0.5 * (covariance + covariance.T), data.n * top.value - exact * math.log(data.unit)
     )
+
+
+def search_of(seen: Observations, name: str, fixed: Mapping[str, float], free: tuple[str, ...]) -> Search:
+    """Return the likelihood of a family for a sample as a function of its free coordinates.
+
+    Parameters
+    ----------
+    seen : Observations
+    name : str
+        Of the family.
+    fixed : mapping
+        Values of all other parameters, in the unit of the sample.
+    free : tuple of str
+    """
+    model = model_of(name)
+    data = standardised(seen.values, model)
+    rules = {rule.name: rule for rule in model.rules}
+    scaled = Observations(
+        (seen.lower - data.shift) / data.unit,
+        (seen.upper - data.shift) / data.unit,
+        (seen.above - data.shift) / data.unit,
+        (seen.below - data.shift) / data.unit,
+    )
+    inner = {p: data.inward(rules[p].kind, value) for p, value in fixed.items()}
+    return Search(model, data, scaled, inner, tuple(rules[p] for p in free))
 
 
 def log_likelihood(law: Distribution, seen: Observations) -> float:
@@ -115,10 +133,23 @@ def _rough(z: Array, free: tuple[Rule, ...]) -> dict[str, float]:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Search:
-    """Mean log-likelihood, gradient and Hessian as a function of the free coordinates."""
+class Search:
+    """Mean log-likelihood, gradient and Hessian as a function of the free coordinates.
+
+    Attributes
+    ----------
+    model : Model
+    data : Data
+        How values are scaled.
+    seen : Observations
+        Scaled.
+    fixed : mapping
+        Scaled.
+    free : tuple of Rule
+    """
 
     model: Model
+    data: Data
     seen: Observations
     fixed: Mapping[str, float]
     free: tuple[Rule, ...]
@@ -130,6 +161,7 @@ class _Search:
         return float(np.min(exact)) if exact.size else float(np.min(self.seen.values))
 
     def coordinates(self, p: Mapping[str, float]) -> Array:
+        """Return the free coordinates of scaled parameters."""
         t = []
         for rule in self.free:
             value = p[rule.name]
@@ -140,6 +172,7 @@ class _Search:
         return np.array(t)
 
     def parameters(self, t: Array) -> dict[str, float]:
+        """Return all parameters, scaled."""
         p = dict(self.fixed)
         for rule, ti in zip(self.free, t, strict=True):
             if rule.kind == "threshold":
@@ -155,7 +188,8 @@ class _Search:
         return value if rule.positive else 1.0
 
     def __call__(self, t: Array) -> tuple[float, Array, Array]:
-        value, gradient = self._first(t)
+        """Return value, gradient and Hessian; value -inf where the point is not allowed."""
+        value, gradient = self.first(t)
         count = len(self.free)
         hessian = np.full((count, count), np.nan)
         if not math.isfinite(value):
@@ -163,10 +197,10 @@ class _Search:
         for i in range(count):
             step = np.zeros(count)
             step[i] = DIFFERENCE
-            hessian[i] = (self._first(t + step)[1] - self._first(t - step)[1]) / (2.0 * DIFFERENCE)
+            hessian[i] = (self.first(t + step)[1] - self.first(t - step)[1]) / (2.0 * DIFFERENCE)
         return value, gradient, 0.5 * (hessian + hessian.T)
 
-    def _first(self, t: Array) -> tuple[float, Array]:
+    def first(self, t: Array) -> tuple[float, Array]:
         """Return value and exact gradient."""
         nowhere = (-math.inf, np.full(len(self.free), np.nan))
         if np.max(np.abs(t)) > 300.0:
