@@ -27,7 +27,9 @@ def fit(
         list[str] | None,
         typer.Option("--family", metavar="F", help="A candidate; may be repeated.", show_default=False),
     ] = None,
-    method: Annotated[str, typer.Option("--method", help="likelihood or moments.")] = "likelihood",
+    method: Annotated[
+        str, typer.Option("--method", help="Way of estimation: likelihood, moments, …")
+    ] = "likelihood",
     sheet: Annotated[
         str | None, typer.Option("--sheet", help="Sheet of an XLSX file.", show_default=False)
     ] = None,

@@ -108,6 +108,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             for name, v in result.variables.items()
             if v.comparison is not None
         },
+        "sized": any(r.size is not None for r in study.rules.values()),
         "sizes": outcome.size_table(result, changes) if changes else None,
         "smaller": _rows(result, losers[0]),
         "larger": _rows(result, losers[1]),
@@ -203,8 +204,8 @@ def _weight(text: str) -> Html:
 
 def _fit_methods(result: Result) -> str:
     words = {"likelihood": "maximum likelihood", "moments": "the method of moments"}
-    used = {v.method for v in result.study.variables.values() if v.records is not None}
-    return " or ".join(text for method, text in words.items() if method in used)
+    used = dict.fromkeys(v.method for v in result.study.variables.values() if v.records is not None)
+    return " or ".join(words.get(method, method.replace("_", " ")) for method in used)
 
 
 def _axis_caption(result: Result) -> str:

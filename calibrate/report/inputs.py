@@ -89,7 +89,8 @@ def variable_table(result: Result) -> Table:
 
 def _source(variable: Variable, n: int | None) -> str:
     known = [] if n is None else [f"own records, n = {n}"]
-    known += [text for text in (variable.source, variable.grade) if text]
+    grade = "" if known and variable.grade == "own data" else variable.grade
+    known += [text for text in (variable.source, grade) if text]
     return "; ".join(known) or "given"
 
 

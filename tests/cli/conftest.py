@@ -101,6 +101,19 @@ def change(study: Path) -> Callable[[str, str], None]:
     return replace
 
 
+@pytest.fixture
+def light(monkeypatch: pytest.MonkeyPatch) -> set[str]:
+    """Results without figures and page, which take most of the time; returns the names of the files."""
+    from calibrate.study.export import table_files
+
+    def files(result: object) -> dict[str, bytes]:
+        return {**table_files(result), "figures/a.svg": b"<svg/>"}
+
+    monkeypatch.setattr("calibrate.report.folder.result_files", files)
+    names = {"result.json", "situations.csv", "factors.csv", "required_factors.csv", "units.json"}
+    return names | {"figures/a.svg"}
+
+
 @pytest.fixture(scope="session")
 def finished(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, Path, Ended]:
     """A study that was run once: its file, its results, and what was printed; not to be changed."""

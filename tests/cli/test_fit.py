@@ -92,7 +92,7 @@ def test_its_own_folder_is_replaced_and_another_refused(column, calibrate, tmp_p
         (["--column", "g"], "strength.csv:1: There is no column 'g'. Known: f."),
         (["--column", "f", "--unit", "MPx"], "--unit: unknown unit 'MPx'."),
         (["--column", "f", "--family", "normall"], "There is no family 'normall'. Did you mean 'normal'?"),
-        (["--column", "f", "--method", "magic"], "There is no method 'magic'. Known: likelihood, moments."),
+        (["--column", "f", "--method", "magic"], "There is no method 'magic'. Known: likelihood, moments"),
     ],
 )
 def test_wrong_input_is_told_and_nothing_written(study, calibrate, tmp_path, arguments, message):

@@ -32,7 +32,7 @@ def test_no_colour_codes_and_no_line_beyond_the_width_when_piped(finished, calib
         assert max(map(len, re.sub(r"Report: \S+", "", text).splitlines())) <= 118
 
 
-def test_json_is_the_text_of_the_result_and_nothing_else(study, calibrate, tmp_path):
+def test_json_is_the_text_of_the_result_and_nothing_else(study, calibrate, light, tmp_path):
     ended = calibrate("run", study, "--out", tmp_path / "out", "--json", "--seed", "11")
     assert ended.code == 0
     assert ended.err == ""
@@ -53,7 +53,9 @@ def test_a_floor_that_cannot_be_met_is_named_and_ends_with_3(study, calibrate, c
     assert "Constraint not met" in (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
 
 
-def test_situations_without_beta_are_named_even_when_quiet_and_end_with_3(study, calibrate, change, tmp_path):
+def test_situations_without_beta_are_named_even_when_quiet_and_end_with_3(
+    study, calibrate, change, light, tmp_path
+):
     change('limit_state = "A * f >= Q"', 'limit_state = "A * f >= where(chi >= 0.8, 0, 1) * Q"')
     ended = calibrate("run", study, "--out", tmp_path / "out", "--quiet")
     assert ended.code == 3
