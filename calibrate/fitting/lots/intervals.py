@@ -2,7 +2,8 @@
 
 A parameter's interval is the range that it takes in the region where the log-likelihood falls short of its maximum
 by less than half the chi-squared fractile with one degree of freedom. For a given ratio of variances the region is
-an interval of the within variance whose ends are known in closed form, so that each limit is a search along one line.
+an interval of the within variance whose ends are the roots of one convex function, so that each limit is a search
+along one line. The restricted likelihood of uneven lots can have two maxima; an interval then spans both parts.
 
 References
 ----------
@@ -29,6 +30,8 @@ NEAR = 1e-10
 """Below this the parabola's root with one more term is as exact as the difference of exponentials."""
 STEPS = 16
 """Newton's steps: full precision for every level up to 1 - 1e-12, from two values on; three to six are usual."""
+EDGE = 1e-7
+"""The deviance at the edge of the region is known to rounding only."""
 
 
 def fall(level: float) -> float:
@@ -92,9 +95,11 @@ def sd_intervals(c: Criterion, best: float, ratios: Interval, level: float) -> t
     low, high = (math.log1p(grain * r) for r in ratios)
 
     def within(t: Array, *, upper: bool) -> Array:
-        """Return an end of the within variance; both ends meet at the edge of the region."""
+        """Return an end of the within variance; NaN in a gap between two parts of the region."""
         ratio = np.expm1(t) / grain
-        return c.residual(ratio) * variance_factor(limit - c.deviance(ratio), c.n - 1, upper=upper)
+        excess = limit - c.deviance(ratio)
+        end = c.residual(ratio) * variance_factor(excess, c.n - 1, upper=upper)
+        return np.asarray(np.where(excess < -EDGE, np.nan, end))
 
     def between(t: Array, *, upper: bool) -> Array:
         return np.expm1(t) / grain * within(t, upper=upper)
@@ -112,7 +117,7 @@ def _largest(function: Callable[[Array], Array], low: float, high: float) -> flo
     for _ in range(ZOOMS):
         t = np.linspace(low, high, GRID)
         values = function(t)
-        i = int(np.argmax(values))
+        i = int(np.nanargmax(values))
         value = max(value, float(values[i]))
         low, high = float(t[max(i - 1, 0)]), float(t[min(i + 1, GRID - 1)])
     return value

@@ -60,6 +60,15 @@ def test_statistics_equal_scipys(simulate, sizes, decimals):
         assert "fewer than two lots have 3 specimens" in found.scatter.reason
 
 
+def test_a_tie_across_the_end_of_one_lot_and_the_start_of_the_next():
+    groups = [[1, 2, 3, 3], [3, 3, 4, 5], [5, 5, 6]]
+    found = pooled(np.concatenate(groups), np.repeat(list("abc"), [4, 4, 3]), replicates=1)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        expected = stats.anderson_ksamp(groups).statistic
+    assert found.distributions.statistic == pytest.approx(expected, rel=1e-10)
+
+
 def squared_distance(values, chosen) -> float:
     """A² of two lots by mid-ranks, term by term from its definition."""
     n, total = len(values), 0.0

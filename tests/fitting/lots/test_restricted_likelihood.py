@@ -8,6 +8,7 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
+from scipy import optimize
 
 from calibrate.fitting.lots import lot_scatter
 
@@ -86,6 +87,36 @@ def test_mean_is_the_generalised_least_squares_mean(uneven):
     weights = np.linalg.inv(found.between_sd**2 * same + found.within_sd**2 * np.eye(found.n)).sum(axis=1)
     assert found.mean == pytest.approx(weights @ uneven.values / weights.sum(), rel=1e-12)
     assert found.se_mean == pytest.approx(1 / math.sqrt(weights.sum()), rel=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("sizes", "means", "mean_square", "zero_is_best"),
+    [
+        ([1, 20, 2, 1, 3], [-3.5, 0.01, 0.49, 0.36, 0.33], 1.3073, True),
+        ([1, 20, 20, 1], [-1.51, -0.16, 0.09, 3.47], 1.0558, False),
+        ([1, 1, 2, 3, 1], [3.27, -3.07, -0.9, 0.01, -4.63], 3.6854, False),
+    ],
+)
+def test_the_higher_of_two_maxima(dense_log_likelihood, sizes, means, mean_square, zero_is_best):
+    noise = np.concatenate([np.arange(m) - (m - 1) / 2 for m in sizes])
+    noise *= math.sqrt(mean_square * (len(noise) - len(sizes)) / (noise @ noise))
+    values, lots = np.repeat(means, sizes) + noise, np.repeat(np.arange(len(sizes)), sizes)
+    found = lot_scatter(values, lots)
+    assert (found.between_sd == 0.0) == zero_is_best
+
+    def height(ratio):
+        spread = optimize.minimize_scalar(
+            lambda v: -dense_log_likelihood(values, lots, math.exp(v) * math.sqrt(ratio), math.exp(v)),
+            bounds=(-1.0, 2.0),
+            method="bounded",
+            options={"xatol": 1e-8},
+        )
+        return -spread.fun
+
+    heights = np.array([height(r) for r in np.r_[0.0, np.geomspace(1e-3, 30.0, 40)]])
+    fence = np.r_[-np.inf, heights, -np.inf]
+    assert np.count_nonzero((heights > fence[:-2]) & (heights > fence[2:])) == 2
+    assert found.log_likelihood >= np.max(heights) - 1e-9
 
 
 def test_order_of_rows_does_not_matter(uneven):
