@@ -50,12 +50,13 @@ def tail_integral(length: Array, integrand: Callable[[Array], tuple[Array, ...]]
 
     Notes
     -----
-    Two panels, because a long exponential decay may follow a short bend near s = 0.
+    Two panels in the root of s, because a long exponential decay may follow a short bend near s = 0.
     """
     total: list[Array] = []
     for start, width in ((0.0, 0.15), (0.15, 0.85)):
         for node, weight in zip(_NODES, _WEIGHTS, strict=True):
-            terms = integrand(length * (start + width * node))
-            scaled = [weight * width * t for t in terms]
+            v = start + width * node
+            terms = integrand(length * v * v)
+            scaled = [2.0 * v * weight * width * t for t in terms]
             total = scaled if not total else [a + b for a, b in zip(total, scaled, strict=True)]
     return [length * t for t in total]

@@ -73,6 +73,18 @@ def test_derivatives_by_parameters(name, parameters):
         assert_close(slopes, expected, 1e-9, 1e-12 * spread(d))
 
 
+@pytest.mark.parametrize("u", [-1.0, -0.3, 0.0, 0.3])
+def test_derivatives_by_shapes_of_a_density_that_is_all_ends(u):
+    """So small shapes leave a bend and a long decay in the integrals; far out x itself is no double any more."""
+    parameters = (0.05, 0.1, 0.0, 1.0)
+    d = made("beta", parameters)
+    exact = tuple(mp.mpf(p) for p in parameters)
+    x, pdf = twins.quantile("beta", mp.mpf(u), exact, float(d.x(u)))
+    for i, slope in enumerate(d.parameter_slopes(u).values()):
+        expected = twins.parameter_slope("beta", mp.mpf(u), exact, x, pdf, i)
+        assert abs(float(slope) - expected) <= max(1e-9 * abs(expected), 1e-12)
+
+
 @pytest.mark.parametrize(("name", "parameters"), SETS)
 def test_probabilities_and_densities(name, parameters):
     """Relative error of at most 1e-9, or what the rounding of x and the parameters explains."""
