@@ -73,8 +73,9 @@ class Mixture(Distribution):
         u = np.asarray(u, dtype=np.float64)
         each = self.components.x(self._column(u))
         low, high = each.min(axis=-1), each.max(axis=-1)
-        x = np.asarray(each @ self.weights)
+        x = np.asarray(np.sum(each * self.weights, axis=-1))
         x = np.where((x > low) & (x < high), x, 0.5 * (low + high))
+        done = np.zeros(u.shape, dtype=np.bool_)
         with np.errstate(all="ignore"):
             for _ in range(MAX_STEPS):
                 log_cdf, log_sf = self._log_tails(x)
@@ -84,7 +85,9 @@ class Mixture(Distribution):
                 high, low = np.where(above, x, high), np.where(above, low, x)
                 moved = x - (here - u) / slope
                 moved = np.where((moved >= low) & (moved <= high), moved, 0.5 * (low + high))
-                done = np.abs(moved - x) <= 1e-14 * np.maximum(np.abs(x), np.abs(high - low))
+                # What has arrived stays, so that no element depends on how far its neighbours are.
+                moved = np.where(done, x, moved)
+                done |= np.abs(moved - x) <= 1e-14 * np.maximum(np.abs(x), np.abs(high - low))
                 x = moved
                 if done.all():
                     break
