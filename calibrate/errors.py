@@ -62,6 +62,9 @@ class ProblemList:
     def __bool__(self) -> bool:
         return bool(self._problems)
 
+    def __len__(self) -> int:
+        return len(self._problems)
+
     def add(self, message: str, line: int | None = None, suggestion: str | None = None) -> None:
         """Record one problem of this file."""
         problem = Problem(message, self.file, line, suggestion)

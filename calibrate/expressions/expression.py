@@ -49,6 +49,7 @@ class Expression:
     kinks: int = field(repr=False)
     constant: float | None = field(repr=False)
     _programs: dict[tuple[tuple[str, ...], int], Program] = field(default_factory=dict, repr=False)
+    _staged: dict[tuple[tuple[str, ...], int], Staged] = field(default_factory=dict, repr=False)
 
     def __eq__(self, other: object) -> bool:
         return isinstance(other, Expression) and other.text == self.text
@@ -105,8 +106,11 @@ class Expression:
         return self._programs[key]
 
     def staged(self, wrt: tuple[str, ...], order: int = 1) -> Staged:
-        """Return the program in two stages, for repeated evaluation while only ``wrt`` moves."""
-        return Staged(self.tree, wrt, order, (_restore_staged, (self.text, wrt, order)))
+        """Return the program in two stages, for repeated evaluation while only ``wrt`` moves; compiled once."""
+        key = (wrt, order)
+        if key not in self._staged:
+            self._staged[key] = Staged(self.tree, wrt, order, (_restore_staged, (self.text, wrt, order)))
+        return self._staged[key]
 
     def interpret(self, values: Values) -> Array:
         """Evaluate node by node on the syntax tree: slow, independent of graph and compiler."""

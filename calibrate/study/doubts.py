@@ -9,6 +9,7 @@ from scipy.special import ndtr
 
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration
+from calibrate.study.evidence_doubts import evidence_doubts
 from calibrate.study.fits import FittedVariable, fit_doubts
 from calibrate.study.model import Study
 
@@ -31,7 +32,12 @@ def study_doubts(
         When a resistance that should be positive has so much mass below zero
         that it makes up more than 5 % of a failure probability.
     """
-    return (*fit_doubts(fitted), *_negative_mass(study, calibration), *_period_doubts(study))
+    return (
+        *fit_doubts(fitted),
+        *evidence_doubts(study, fitted, calibration),
+        *_negative_mass(study, calibration),
+        *_period_doubts(study),
+    )
 
 
 def _negative_mass(study: Study, calibration: Calibration) -> list[Doubt]:

@@ -44,6 +44,8 @@ def _variable(variable: VariableResult) -> dict[str, Any]:
     }
     if varies:
         figures["varies"] = True
+    if variable.predictive:
+        figures["predictive"] = True
     if variable.period is not None:
         figures["period"] = variable.period
         figures["parameters_for_period"] = variable.parameters_period
@@ -89,9 +91,25 @@ def result_dict(result: Result) -> dict[str, Any]:
                 "unit": sample.unit.text,
                 "n": sample.n,
                 "sha256": sample.sha256,
+                "n_exact": sample.observations.n_exact,
+                "excluded": [{"row": e.row, "reason": e.reason} for e in sample.excluded],
             }
             for name, sample in study.records.items()
         },
+        "bonds": [
+            {
+                "quantity": b.quantity,
+                "variable": b.variable,
+                "value_type": b.value_type,
+                "bias": [_number(v) for v in b.bias],
+                "probability_below": [_number(v) for v in b.fractile],
+            }
+            for b in result.biases
+        ],
+        "pedigree": [
+            {"grade": p.grade, "variables": list(p.variables), "share_of_alpha_squared": _number(p.share)}
+            for p in result.pedigree
+        ],
         "variables": {name: _variable(v) for name, v in result.variables.items()},
         "factors": {
             factor.name: {

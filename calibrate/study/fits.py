@@ -3,21 +3,54 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
-from calibrate.distributions import Distribution
+import numpy as np
+
+from calibrate.distributions import Distribution, distribution
+from calibrate.engine import stream
 from calibrate.errors import Doubt, InputError, ProblemList
 from calibrate.fitting import Comparison, Fit, compare
+from calibrate.fitting.fit_tests import FitTests, run_fit_tests
+from calibrate.fitting.lots import LotScatter, Pooling, lot_scatter, pooling, population
+from calibrate.fitting.predictive import predictive
+from calibrate.records import Sample
 from calibrate.study.model import Study, Variable
+
+WORTH_TESTING = 10.0
+"""Candidates farther than this from the smallest AICc are out of the question without a test."""
 
 
 @dataclass(frozen=True, slots=True)
 class FittedVariable:
-    """The fit that a variable uses, its rivals, and its distribution in SI units."""
+    """The fit that a variable uses, its rivals, and its distribution in SI units.
+
+    Attributes
+    ----------
+    fit : Fit
+        The chosen one.
+    comparison : Comparison
+        All candidates.
+    distribution : Distribution
+        As used, in SI units: the fit's, or the one that carries parameter uncertainty, or that of a lot.
+    tests : mapping of str to FitTests
+        By family; empty for samples with bounds.
+    lots : LotScatter or None
+        Where the records name lots.
+    pooled : Pooling or None
+    doubts : tuple of Doubt
+        Of lots and of the choice among candidates; the fit has its own.
+    """
 
     fit: Fit
     comparison: Comparison
     distribution: Distribution
+    tests: Mapping[str, FitTests] = field(default_factory=dict)
+    lots: LotScatter | None = None
+    pooled: Pooling | None = None
+    doubts: tuple[Doubt, ...] = ()
+    fit_factor: float = 1.0
+    """SI value of the unit of the records."""
 
 
 def fit_variables(study: Study) -> dict[str, FittedVariable]:
@@ -54,17 +87,124 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
     sample = study.records[variable.records]
     fixed = _fixed_in_sample_unit(variable, sample.unit.factor)
     comparison = compare(
-        sample.values,
+        sample.observations,
         variable.families or None,
         method=variable.method,
         fixed=fixed,
         estimate=variable.estimate,
+        options=variable.method_options,
     )
-    chosen = next((c for c in comparison.candidates if c.family == comparison.recommended), None)
+    chosen = comparison.best
     if chosen is None or chosen.distribution is None:
         reasons = "; ".join(f"{c.family}: {c.reason}" for c in comparison.candidates)
         raise InputError(f"No distribution can be fitted to records '{variable.records}' ({reasons}).")
-    return FittedVariable(chosen, comparison, chosen.distribution.scaled(sample.unit.factor))
+    scatter, pooled, doubts = _lots(study, variable, sample, chosen)
+    used = _used(variable, chosen, scatter)
+    tests = {
+        c.family: found
+        for c in comparison.candidates
+        if c.converged and c.aicc - chosen.aicc < WORTH_TESTING
+        if (found := run_fit_tests(c, stream(study.seed, "fit tests", variable.name, c.family))) is not None
+    }
+    doubts = (*doubts, *_choice_doubts(variable, chosen, tests))
+    return FittedVariable(
+        chosen,
+        comparison,
+        used.scaled(sample.unit.factor),
+        tests,
+        scatter,
+        pooled,
+        doubts,
+        sample.unit.factor,
+    )
+
+
+def _used(variable: Variable, chosen: Fit, scatter: LotScatter | None) -> Distribution:
+    """Return the distribution that the variable stands for, in the unit of the records."""
+    assert chosen.distribution is not None
+    if variable.stands_for and scatter is not None:
+        found = population(scatter, variable.stands_for, lot=variable.lot)  # type: ignore[arg-type]
+        return distribution(found.family, **found.parameters)
+    if not variable.predictive:
+        return chosen.distribution
+    wider = predictive(chosen)
+    if wider is None:
+        raise InputError(
+            f"The method '{variable.method}' gives no covariance of the parameters here, so that there is no "
+            "predictive distribution; use 'likelihood', or leave 'predictive' out."
+        )
+    return wider
+
+
+def _lots(
+    study: Study, variable: Variable, sample: Sample, chosen: Fit
+) -> tuple[LotScatter | None, Pooling | None, tuple[Doubt, ...]]:
+    """Analyse lots where the records name them: specimens that were observed exactly."""
+    if "lot" not in sample.labels:
+        return None, None, ()
+    exact = sample.observations.exact
+    lots, values = sample.labels["lot"][exact], sample.observations.lower[exact]
+    if values.size < 2 or np.ptp(values) == 0.0:
+        return None, None, ()
+    where = f"variables.{variable.name}"
+    scale = (
+        "as measured" if chosen.family in ("normal", "gumbel", "gumbel_min", "student_t") else "logarithmic"
+    )
+    if scale == "logarithmic" and not (values > 0.0).all():
+        scale = "as measured"
+    scatter = lot_scatter(values, lots, scale=scale, where=where)  # type: ignore[arg-type]
+    rng = stream(study.seed, "pooling", variable.name)
+    pooled = pooling(values, lots, rng, scale=scale) if len(scatter.shares) > 1 else None  # type: ignore[arg-type]
+    doubts = list(scatter.doubts)
+    if not sample.observations.complete:
+        left = sample.n - int(np.count_nonzero(exact))
+        doubts.append(
+            Doubt(
+                "lots-of-exact-values",
+                f"The scatter between and within lots comes from specimens observed exactly; {left} known by bounds "
+                "are left out of it, which makes it smaller than it is.",
+                where,
+            )
+        )
+    if variable.stands_for:
+        doubts += population(scatter, variable.stands_for, lot=variable.lot, where=where).doubts  # type: ignore[arg-type]
+        # What was said of pooling is answered by the choice; the other doubts remain.
+        doubts = [d for d in doubts if d.code != "lots-matter"]
+    return scatter, pooled, tuple(doubts)
+
+
+def _choice_doubts(variable: Variable, chosen: Fit, tests: Mapping[str, FitTests]) -> list[Doubt]:
+    """Doubt a family that the sample speaks against, and one whose tail is on the wrong side for the role."""
+    where = f"variables.{variable.name}"
+    doubts = []
+    found = tests.get(chosen.family)
+    if found is not None and found.rejected("anderson_darling"):
+        doubts.append(
+            Doubt(
+                "family-rejected",
+                f"The sample speaks against the family {chosen.family}: an Anderson–Darling distance as large as A² = "
+                f"{found.statistics['anderson_darling']:.3g} has a probability of "
+                f"{found.p_values['anderson_darling']:.2g} under it.",
+                where,
+            )
+        )
+    tail = {"resistance": "lower_tail", "action": "upper_tail"}.get(variable.role)
+    if (
+        found is not None
+        and tail is not None
+        and found.rejected(tail)
+        and not found.rejected("anderson_darling")
+    ):
+        side = tail.partition("_")[0]
+        doubts.append(
+            Doubt(
+                "tail-rejected",
+                f"In the {side} tail, where failures come from, the sample speaks against the family {chosen.family} "
+                f"(p = {found.p_values[tail]:.2g}), although over the whole range it does not.",
+                where,
+            )
+        )
+    return doubts
 
 
 def _fixed_in_sample_unit(variable: Variable, factor: float) -> dict[str, float]:
@@ -83,8 +223,8 @@ UNIT_BEARING = frozenset({"threshold", "lower", "upper"})
 
 def fit_doubts(fitted: Mapping[str, FittedVariable]) -> list[Doubt]:
     """Return the reservations of the chosen fits, placed at their variables."""
-    return [
-        Doubt(doubt.code, doubt.message, f"variables.{name}")
-        for name, variable in fitted.items()
-        for doubt in variable.fit.doubts
-    ]
+    doubts = []
+    for name, variable in fitted.items():
+        doubts += [Doubt(d.code, d.message, f"variables.{name}") for d in variable.fit.doubts]
+        doubts += variable.doubts
+    return doubts

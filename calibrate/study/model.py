@@ -9,6 +9,7 @@ from pathlib import Path
 from calibrate.errors import Doubt
 from calibrate.expressions import Comparison, Expression
 from calibrate.factors import Factor
+from calibrate.fitting.characteristic import CharacteristicValue
 from calibrate.records import Sample
 from calibrate.situations import Axis, Situations
 from calibrate.units import Dimension, Unit
@@ -27,6 +28,14 @@ class Quantity:
     value: float
     unit: Unit
     line: int | None = None
+    characteristic: CharacteristicValue | None = None
+    """What it was computed as, in the unit of the records; None for a typed value."""
+    of: str | None = None
+    """The basic variable whose value it is, where the study says so."""
+    value_type: str = ""
+    """``5 % fractile``, ``mean``, ``nominal`` or ``declared``; empty where nothing is said."""
+    bias: float | None = None
+    """Mean over value as typed."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,6 +64,15 @@ class Variable:
     """Parameters that a fit estimates although its family would keep them fixed (``threshold``)."""
     description: str = ""
     source: str = ""
+    method_options: Mapping[str, float] = field(default_factory=dict)
+    """What the estimator was told, in the unit of the records."""
+    stands_for: str = ""
+    """``whole population``, ``lot mean`` or ``within a lot``; empty where lots play no part."""
+    lot: str | None = None
+    predictive: bool = False
+    """Whether the variable carries the uncertainty of its estimated parameters."""
+    role: str = ""
+    """``resistance``, ``action``, ``geometry`` or ``model``; empty where nothing is said."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
 
@@ -108,6 +126,8 @@ class Study:
     seed: int
     target_beta: float
     records: Mapping[str, Sample]
+    declared: Mapping[str, tuple[float, float]]
+    """Range in which the values of some records are expected, in their unit; both ends equal for a nominal value."""
     quantities: Mapping[str, Quantity]
     variables: Mapping[str, Variable]
     situations: Situations

@@ -13,6 +13,10 @@ from calibrate.errors import Doubt
 from calibrate.factors import Calibration
 from calibrate.fitting import Comparison as FitComparison
 from calibrate.provenance import Provenance
+from calibrate.records.screening import Screening
+from calibrate.study.bonds import ImpliedBias
+from calibrate.study.evidence_doubts import PedigreeShare
+from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Study
 from calibrate.units import Unit
 
@@ -47,6 +51,7 @@ class VariableResult:
     period: float | None
     parameters_period: float
     comparison: FitComparison | None
+    predictive: bool = False
 
     @property
     def varies(self) -> bool:
@@ -68,6 +73,13 @@ class Result:
     units : mapping
         Unit text of every column of ``situations``; a mapping by rule for the
         sizes where rules differ in unit.
+    fitted : mapping of str to FittedVariable
+        By variable: candidates, tests, lots.
+    screenings : mapping of str to Screening
+        By name of the records.
+    biases : tuple of ImpliedBias
+        Of quantities that stand for a variable.
+    pedigree : tuple of PedigreeShare
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
     required : DataFrame
@@ -83,6 +95,10 @@ class Result:
     situations: pd.DataFrame
     units: Mapping[str, str | Mapping[str, str]]
     required: pd.DataFrame
+    fitted: Mapping[str, FittedVariable]
+    screenings: Mapping[str, Screening]
+    biases: tuple[ImpliedBias, ...]
+    pedigree: tuple[PedigreeShare, ...]
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

@@ -14,11 +14,20 @@ from calibrate.factors import Calibration, Response, calibrate_factors, make_pen
 from calibrate.provenance import Provenance, versions
 from calibrate.situations import BasicVariable
 from calibrate.study.assemble import basic_variables, rule_models
+from calibrate.study.bonds import implied_biases
 from calibrate.study.doubts import study_doubts
+from calibrate.study.evidence_doubts import pedigree
 from calibrate.study.fits import fit_variables
 from calibrate.study.model import Study
 from calibrate.study.result import Result
-from calibrate.study.tables import factor_table, required_table, situation_table, variable_results
+from calibrate.study.screening import screen_records
+from calibrate.study.tables import (
+    factor_table,
+    required_table,
+    situation_table,
+    used_distributions,
+    variable_results,
+)
 
 Progress = Callable[[str, float], None]
 
@@ -69,13 +78,22 @@ def run(
 
     report("Fitting distributions", 0.0)
     fitted = fit_variables(study)
+    screenings = screen_records(study)
     variables = basic_variables(study, fitted)
     calibration = _calibrate(study, variables, workers, report)
 
     report("Collecting results", 0.95)
     sets = (calibration.present, calibration.optimal, calibration.proposed)
     table, units = situation_table(study, calibration)
-    doubts = (*study.doubts, *study_doubts(study, fitted, calibration), *calibration.doubts)
+    biases, bias_doubts = implied_biases(study, used_distributions(study, calibration))
+    screening_doubts = [d for name, s in screenings.items() for d in s.doubts(f"records.{name}")]
+    doubts = (
+        *study.doubts,
+        *screening_doubts,
+        *bias_doubts,
+        *study_doubts(study, fitted, calibration),
+        *calibration.doubts,
+    )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
     return Result(
         study=study,
@@ -84,6 +102,10 @@ def run(
         situations=table,
         units=units,
         required=required_table(study, calibration),
+        fitted=fitted,
+        screenings=screenings,
+        biases=biases,
+        pedigree=pedigree(study, calibration),
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.distributions import Distribution, Extreme
+from calibrate.distributions import Distribution, Extreme, Mixture
 from calibrate.factors import Calibration, Evaluation
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Rule, Study
@@ -155,13 +155,15 @@ def variable_results(
             continue
         unit, fit = variable.unit, fitted.get(name)
         shown = [_named(d).scaled(1.0 / unit.factor) for d in distributions]
+        # A mixture over uncertain parameters is shown with those of the fit; its moments are its own.
+        own = [_named_fit(d, fit, unit.factor) for d in shown]
         converted = any(isinstance(d, Extreme) for d in shown)
         period = variable.period if converted else study.reference_period
         results[name] = VariableResult(
             name=name,
-            family=shown[0].family.name,
+            family=own[0].family.name,
             unit=unit,
-            parameters={p: _merge([d.parameters[p] for d in shown]) for p in shown[0].parameters},
+            parameters={p: _merge([d.parameters[p] for d in own]) for p in own[0].parameters},
             mean=_merge([d.mean for d in shown]),
             sd=_merge([d.sd for d in shown]),
             cov=_merge([d.cov for d in shown]),
@@ -169,8 +171,22 @@ def variable_results(
             period=variable.period,
             parameters_period=study.reference_period if period is None else period,
             comparison=None if fit is None else fit.comparison,
+            predictive=variable.predictive,
         )
     return results
+
+
+def used_distributions(study: Study, calibration: Calibration) -> dict[str, list[Distribution]]:
+    """Return the distributions of each variable in each rule that uses it, with the proposed factors, in SI units."""
+    return {name: _distributions(study, name, calibration.proposed.evaluation) for name in study.variables}
+
+
+def _named_fit(shown: Distribution, fit: FittedVariable | None, factor: float) -> Distribution:
+    base = shown.base if isinstance(shown, Extreme) else shown
+    if fit is None or not isinstance(base, Mixture):
+        return shown
+    assert fit.fit.distribution is not None
+    return fit.fit.distribution.scaled(fit.fit_factor / factor)
 
 
 def _distributions(study: Study, name: str, evaluation: Evaluation) -> list[Distribution]:

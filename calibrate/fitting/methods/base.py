@@ -74,6 +74,16 @@ class Method(ABC):
                 f"The sample holds {listed(refused)} observations, which the method '{self.name}' would misread; "
                 f"{honoured}. Use 'likelihood'."
             )
+        self.check_options(options)
+
+    def check_options(self, options: Mapping[str, float]) -> None:
+        """Refuse options that the method does not take, and the lack of those that it needs.
+
+        Raises
+        ------
+        InputError
+            All of one kind at once.
+        """
         unknown = [name for name in options if name not in self.options]
         if unknown:
             takes = f"it takes {listed(sorted(self.options))}" if self.options else "it takes none"

@@ -29,12 +29,17 @@ class Definition:
 
 
 def read_definitions(
-    reading: Reading, names: NameSpace, table: Mapping[str, Any], section: Place, use: Use
+    reading: Reading,
+    names: NameSpace,
+    table: Mapping[str, Any],
+    section: Place,
+    use: Use,
+    known: Mapping[str, Value] | None = None,
 ) -> dict[str, Definition]:
     """Read named values that may use one another; the names are already declared.
 
-    Reports cycles, names that may not be used and wrong dimensions, and notes
-    the dimension of each sound name.
+    ``known`` are values that were read already. Reports cycles, names that may not be used and wrong dimensions,
+    and notes the dimension of each sound name.
 
     Returns
     -------
@@ -43,6 +48,9 @@ def read_definitions(
     """
     values: dict[str, Value] = {}
     for name, raw in table.items():
+        if known is not None and name in known:
+            values[name] = known[name]
+            continue
         typed = read_plain(reading, "value", raw, (*section, name))
         value = None if typed is None else read_value(reading, typed, (*section, name))
         if value is not None:

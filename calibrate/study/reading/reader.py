@@ -11,11 +11,12 @@ from calibrate.factors import PENALTIES
 from calibrate.study.model import Objective, Study
 from calibrate.study.paths import project_folder
 from calibrate.study.reading import schema
+from calibrate.study.reading.bonds import bound, read_bonds
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.correlations import check_correlations
 from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
 from calibrate.study.reading.document import check_format, read_document
-from calibrate.study.reading.evidence import read_records
+from calibrate.study.reading.evidence import read_declared, read_records
 from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
 from calibrate.study.reading.rules import check_designs, finish_rules, parse_rules
@@ -73,8 +74,15 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     drafts = parse_rules(reading, names, sections["rules"])
 
     records = read_records(reading, sections["records"])
-    quantities = evaluate_quantities(
-        reading, read_definitions(reading, names, quantities_raw, ("quantities",), QUANTITIES)
+    declared = read_declared(reading, sections["records"], records)
+    bonds = read_bonds(reading, quantities_raw, variables_raw, records, 0 if head is None else head.seed)
+    typed = {k: v for k, v in quantities_raw.items() if k not in bonds.faulty}
+    known = {k: bond.value for k, bond in bonds.found.items()}
+    quantities = bound(
+        evaluate_quantities(
+            reading, read_definitions(reading, names, typed, ("quantities",), QUANTITIES, known)
+        ),
+        bonds.found,
     )
     derived = read_definitions(reading, names, grid.content.derived, _DERIVED, DERIVED)
     weight = read_weight(reading, names, grid)
@@ -108,6 +116,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         seed=head.seed,
         target_beta=target.beta,
         records={k: v for k, v in records.items() if v is not None},
+        declared=declared,
         quantities={k: quantities[k] for k in quantities_raw},
         variables={k: v for k, v in variables.items() if v is not None},
         situations=situations,

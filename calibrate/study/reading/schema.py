@@ -90,14 +90,56 @@ class TargetSection(Section):
     beta: Number
 
 
+class ExcludeTable(Section):
+    """A row, or rows with one entry, that are left out for a reason."""
+
+    reason: Text
+    row: Annotated[int, Field(ge=1)] | None = None
+    where: Text | None = None
+    equals: str | float | bool | None = None
+
+
+class UnitByTable(Section):
+    """Rows of another unit, by the entry of a column."""
+
+    column: Text
+    units: dict[str, str]
+
+
+class CovariateTable(Section):
+    """Reference conditions of one covariate."""
+
+    reference: Value
+    exponent: float | Literal["fit"]
+    standard_error: Annotated[float, Field(ge=0)] = 0.0
+
+
 class RecordsEntry(Section):
-    """``[records.NAME]``."""
+    """``[records.NAME]``; ``normalise`` is read covariate by covariate."""
 
     file: Text
-    column: Text
-    unit: str = ""
+    column: Text | None = None
+    value: Text | None = None
+    unit: str | None = None
     sheet: Text | None = None
     description: str = ""
+    separator: str | None = None
+    decimal: str | None = None
+    encoding: str | None = None
+    censored: Text | None = None
+    above: Value | None = None
+    below: Value | None = None
+    lot: Text | None = None
+    laboratory: Text | None = None
+    mode: Text | None = None
+    specimen: Text | None = None
+    order: Text | None = None
+    exclude: list[ExcludeTable] = []
+    units: dict[str, str] = {}
+    measured: Text | None = None
+    unit_by: UnitByTable | None = None
+    normalise: dict[str, Any] = {}
+    declared: Value | list[Value] | None = None
 
 
 class VariableEntry(Section):
@@ -105,14 +147,53 @@ class VariableEntry(Section):
 
     family: Annotated[list[str], BeforeValidator(_families)]
     records: Text | None = None
-    method: Literal["likelihood", "moments"] | None = None
+    method: Any = None
     estimate: Annotated[list[str], BeforeValidator(_names)] = []
+    stands_for: Literal["whole population", "lot mean", "within a lot"] | None = None
+    lot: Text | None = None
+    predictive: bool = False
+    role: Literal["resistance", "action", "geometry", "model"] | None = None
     period: Positive | None = None
     unit: str | None = None
     description: str = ""
     source: str = ""
     grade: Literal["own data", "published data", "code value", "judgement"] | None = None
     may_be_negative: bool = False
+
+
+class MethodTable(Section):
+    """An estimator with its options; which it takes is known by the estimator."""
+
+    name: Text
+    fraction: float | None = None
+    cov: float | None = None
+    prior_mean: Value | None = None
+    prior_cov: float | None = None
+    prior_n: float | None = None
+    prior_nu: float | None = None
+
+
+class CharacteristicTable(Section):
+    """A quantity that is a characteristic value of a basic variable with records."""
+
+    characteristic_of: Text
+    fractile: Annotated[float, Field(gt=0, lt=1)] = 0.05
+    confidence: Annotated[float, Field(gt=0, lt=1)] | None = None
+    route: Text | None = None
+    least_cov: Annotated[float, Field(gt=0)] | None = None
+    known_cov: Annotated[float, Field(gt=0)] | None = None
+    from_lots: bool = False
+    family: Text | None = None
+    unit: str | None = None
+
+
+class StatedTable(Section):
+    """A quantity with its value type."""
+
+    value: Value
+    of: Text
+    is_: Annotated[Text, Field(alias="is")]
+    bias: Annotated[float, Field(gt=0)] | None = None
 
 
 class SituationsSection(Section):

@@ -9,6 +9,7 @@ from calibrate.distributions import Family, family, family_names
 from calibrate.errors import InputError
 from calibrate.study.model import Variable
 from calibrate.study.reading import schema
+from calibrate.study.reading.estimators import MethodChoice, read_method
 from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
 from calibrate.study.reading.subject import Model, Subject, Surroundings
@@ -41,9 +42,12 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     families = _families(subject, content)
     unit = read_unit(reading, content.unit, subject.place("unit"))
     if content.records is None:
-        for key in ("method", "estimate"):
+        for key in ("method", "estimate", "stands_for", "lot", "predictive"):
             if getattr(content, key):
                 subject.problem("says how to fit, but the variable has no records.", key)
+    method = read_method(subject, content)
+    if method is None:
+        return None
     unit_is_faulty = content.unit is not None and unit is None
     if (
         unit_is_faulty
@@ -56,7 +60,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         model = fitted_model(subject, content, families, values, unit)
     else:
         model = given_model(subject, families[0], values, unit)
-    return None if model is None else _variable(subject, content, model, values)
+    return None if model is None else _variable(subject, content, model, values, method)
 
 
 def _values(subject: Subject, arguments: Mapping[str, Any]) -> dict[str, Value] | None:
@@ -99,7 +103,11 @@ def _families(subject: Subject, content: schema.VariableEntry) -> list[Family] |
 
 
 def _variable(
-    subject: Subject, content: schema.VariableEntry, model: Model, values: Mapping[str, Value]
+    subject: Subject,
+    content: schema.VariableEntry,
+    model: Model,
+    values: Mapping[str, Value],
+    method: MethodChoice,
 ) -> Variable:
     names = subject.around.names
     if names.kind(subject.name) == "variable":
@@ -114,7 +122,12 @@ def _variable(
         unit=model.unit,
         dimension=model.dimension,
         line=subject.around.reading.line(subject.place()),
-        method=content.method or "likelihood",
+        method=method.name,
+        method_options=method.options,
+        stands_for=content.stands_for or "",
+        lot=content.lot,
+        predictive=content.predictive,
+        role=content.role or "",
         may_be_negative=content.may_be_negative,
         description=content.description.strip(),
         source=content.source.strip(),

@@ -1,0 +1,136 @@
+"""The bond between a rule's values and the random variables: what kind of value each is, and the bias that follows."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calibrate.distributions import Distribution
+from calibrate.errors import Doubt, InputError, Problem
+from calibrate.study.model import Quantity, Study
+from calibrate.study.reading.bonds import fractile_of
+
+Array = NDArray[np.float64]
+
+CONTRADICTS = 0.01
+"""Relative difference between a typed and the implied bias that is a contradiction."""
+
+
+@dataclass(frozen=True, slots=True)
+class ImpliedBias:
+    """A quantity that a rule uses in place of a basic variable, against that variable.
+
+    Attributes
+    ----------
+    quantity, variable : str
+    value_type : str
+        ``5 % fractile``, ``mean``, ``nominal`` or ``declared``.
+    bias : (float, float)
+        Mean of the variable over the value, smallest and largest over the design situations.
+    fractile : (float, float)
+        Probability that the variable lies below the value.
+    """
+
+    quantity: str
+    variable: str
+    value_type: str
+    bias: tuple[float, float]
+    fractile: tuple[float, float]
+
+
+def implied_biases(
+    study: Study, distributions: Mapping[str, Sequence[Distribution]]
+) -> tuple[tuple[ImpliedBias, ...], tuple[Doubt, ...]]:
+    """Compare every bound quantity with its variable.
+
+    Parameters
+    ----------
+    study : Study
+    distributions : mapping of str to sequence of Distribution
+        Of each variable, as used in each rule, in SI units.
+
+    Returns
+    -------
+    biases, doubts
+
+    Raises
+    ------
+    InputError
+        A typed bias contradicts the model.
+    """
+    found, doubts, problems = [], [], []
+    for quantity in study.quantities.values():
+        if quantity.of is None or not distributions.get(quantity.of):
+            continue
+        bias, below = _against(quantity, distributions[quantity.of])
+        found.append(
+            ImpliedBias(
+                quantity.name,
+                quantity.of,
+                quantity.value_type,
+                (bias.min(), bias.max()),
+                (below.min(), below.max()),
+            )
+        )
+        typed = quantity.bias
+        if typed is not None and float(np.max(np.abs(bias / typed - 1.0))) > CONTRADICTS:
+            problems.append(_contradiction(study, quantity, typed, bias))
+        doubts += _type_doubts(quantity, bias, below, study.variables[quantity.of].role)
+    if problems:
+        raise InputError(problems)
+    return tuple(found), tuple(doubts)
+
+
+def _against(quantity: Quantity, laws: Sequence[Distribution]) -> tuple[Array, Array]:
+    means = np.concatenate([np.atleast_1d(law.mean) for law in laws])
+    # A predictive distribution may have no mean; its median then takes its place.
+    medians = np.concatenate([np.atleast_1d(law.x(np.zeros(law.shape))) for law in laws])
+    level = np.where(np.isfinite(means), means, medians)
+    below = np.concatenate([np.atleast_1d(law.cdf(quantity.value)) for law in laws])
+    return level / quantity.value, below
+
+
+def _contradiction(study: Study, quantity: Quantity, typed: float, bias: Array) -> Problem:
+    implied = f"{bias.min():.3g}" if np.ptp(bias) < 1e-9 else f"{bias.min():.3g} to {bias.max():.3g}"
+    return Problem(
+        f"quantities.{quantity.name} is stated as the {quantity.value_type} of '{quantity.of}' with a bias of "
+        f"{typed:g}, but the model of '{quantity.of}' implies a mean over this value of {implied}.",
+        study.shown,
+        quantity.line,
+        "Correct the one that is wrong, or leave the bias out: it is computed.",
+    )
+
+
+def _type_doubts(quantity: Quantity, bias: Array, below: Array, role: str) -> list[Doubt]:
+    where = f"quantities.{quantity.name}"
+    if quantity.characteristic is not None:
+        return []
+    share = fractile_of(quantity.value_type)
+    if share is not None:
+        far = (
+            (below < 0.5 * share) | (below > 2.0 * share)
+            if share <= 0.5
+            else np.abs(below - share) > 0.5 * (1 - share)
+        )
+        if not far.any():
+            return []
+        worst = float(below[int(np.argmax(np.abs(np.log(np.maximum(below, 1e-300) / share))))])
+        text = (
+            f"'{quantity.name}' is stated as the {quantity.value_type} of '{quantity.of}', but in its model the "
+            f"probability below this value is {100.0 * worst:.2g} %."
+        )
+        return [Doubt("fractile-differs", text, where)]
+    if quantity.value_type == "mean" and float(np.max(np.abs(bias - 1.0))) > CONTRADICTS:
+        ratio = f"{bias[0]:.3g} times"
+        text = f"'{quantity.name}' is stated as the mean of '{quantity.of}', whose mean is {ratio} as large."
+        return [Doubt("mean-differs", text, where)]
+    if quantity.value_type in ("nominal", "declared") and role == "resistance" and float(bias.min()) < 1.0:
+        text = (
+            f"The {quantity.value_type} value '{quantity.name}' exceeds the mean of the resistance '{quantity.of}' "
+            f"(mean over value {bias.min():.3g}): is it a mean or a target strength?"
+        )
+        return [Doubt("nominal-above-mean", text, where)]
+    return []
