@@ -112,7 +112,6 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
     below = _BOTTOM + legend + max(down - 2.0, 0.0)
     figure = style.figure(WIDTH, _TOP + PANEL_HEIGHT + below)
     limits = beta_limits(result)
-    panels = []
     for k, kind in enumerate(TITLES):
         axes = style.panel(figure, first + k * (width + _GAP), below, width, PANEL_HEIGHT)
         axes.set_ylim(*limits)
@@ -126,12 +125,25 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
             axes.tick_params(labelleft=False)
         else:
             axes.set_ylabel("reliability index β")
-        panels.append(axes)
     if legend:
-        handles, labels = panels[0].get_legend_handles_labels()
-        middle = (first + width + _GAP / 2) / WIDTH
-        figure.legend(handles, labels, loc="lower center", bbox_to_anchor=(middle, 0.0), ncols=columns)
+        rule_legend(figure, rules, (first + width + _GAP / 2) / WIDTH, columns)
     return figure
+
+
+def rule_legend(figure: Figure, rules: list[str], middle: float, columns: int) -> None:
+    """Name the marks of the rules at the foot of a figure, also those that have no point in a panel."""
+    from matplotlib.lines import Line2D
+
+    handles = []
+    for i, rule in enumerate(rules):
+        colour = style.colour(i)
+        handles.append(
+            Line2D(
+                [], [], linestyle="none", marker=style.mark(i), markersize=4.5, markeredgecolor=colour,
+                markerfacecolor=colour if style.filled(i) else "white", markeredgewidth=0.8, label=rule,
+            )
+        )  # fmt: skip
+    figure.legend(handles=handles, loc="lower center", bbox_to_anchor=(middle, 0.0), ncols=columns)
 
 
 def axis_label(result: Result, axis: str) -> str:
@@ -228,7 +240,6 @@ def scatter_by_rule(
             alpha=0.45 if many else 0.9,
             zorder=3,
             rasterized=many,
-            label=rule,
         )
 
 

@@ -5,6 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from calibrate.report import style, symbols
 from calibrate.report.axis_figure import beta_by_axis, panel_axes
 from calibrate.report.distribution_figure import beta_distribution
@@ -17,6 +19,7 @@ from calibrate.units import format_unit
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
+    from calibrate.records import Sample
     from calibrate.report.style import Rendered
     from calibrate.study.result import Result
 
@@ -26,8 +29,9 @@ def figures(result: Result) -> dict[str, Rendered]:
 
     ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
     does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
-    ``sensitivity`` where a beta was found, ``probability_<variable>`` for every
-    fitted variable.
+    ``sensitivity`` where a beta was found, ``sample_<records>`` for every sample,
+    ``probability_<variable>``, ``density_<variable>`` and ``tail_<variable>`` for
+    every fitted variable.
     """
     drawn: dict[str, Rendered] = {}
     with style.context():
@@ -50,14 +54,52 @@ def _all(result: Result) -> Iterator[tuple[str, Figure]]:
 
 
 def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
+    from calibrate.report.density_figure import density_figure
     from calibrate.report.probability_paper import probability_figure
+    from calibrate.report.sample_figure import sample_figure
+    from calibrate.report.tail_figure import tail_figure
 
-    for name, variable in result.variables.items():
-        if variable.comparison is None:
-            continue
-        chosen = next(
-            f for f in variable.comparison.candidates if f.family == variable.comparison.recommended
-        )
+    for name, screening in result.screenings.items():
+        sample = result.study.records[name]
+        label = symbols.literal(name.replace("_", " "))
+        yield f"sample_{name}", sample_figure(sample, screening, label=label, unit=_unit(sample))
+    for name, fitted in result.fitted.items():
         record = result.study.records[result.study.variables[name].records or ""]
-        unit = format_unit(record.unit.text) if record.unit.text else ""
-        yield f"probability_{name}", probability_figure(chosen, label=symbols.drawn(name), unit=unit)
+        label, unit = symbols.drawn(name), _unit(record)
+        chosen = [fitted.fit, *(c for c in fitted.comparison.candidates if c.family in fitted.tests)]
+        shown = list(dict.fromkeys(chosen))
+        yield f"probability_{name}", probability_figure(fitted.fit, label=label, unit=unit)
+        yield f"density_{name}", density_figure(shown, label=label, unit=unit)
+        side = tail_of(result, name)
+        if side is not None:
+            yield (
+                f"tail_{name}",
+                tail_figure(
+                    shown, lower=side == "lower", label=label, unit=unit, design=_design_range(result, name)
+                ),
+            )
+
+
+def _unit(sample: Sample) -> str:
+    return format_unit(sample.unit.text) if sample.unit.text else ""
+
+
+def tail_of(result: Result, name: str) -> str | None:
+    """Return the tail of a variable that decides: by its role, else by the sign of its sensitivity factors."""
+    role = result.study.variables[name].role
+    if role in ("resistance", "action"):
+        return "lower" if role == "resistance" else "upper"
+    alpha = (
+        result.situations[f"alpha_{name}"].to_numpy(float) if f"alpha_{name}" in result.situations else None
+    )
+    if alpha is None or not np.isfinite(alpha).any():
+        return None
+    return "lower" if np.nansum(alpha) >= 0.0 else "upper"
+
+
+def _design_range(result: Result, name: str) -> tuple[float, float] | None:
+    """Return the smallest and largest distance |u| of the design points of a variable, over situations with weight."""
+    frame = result.situations
+    alpha, beta = frame[f"alpha_{name}"].to_numpy(float), frame["beta_proposed"].to_numpy(float)
+    found = np.abs(alpha * beta)[np.isfinite(alpha) & (frame["weight"].to_numpy(float) > 0)]
+    return (float(found.min()), float(found.max())) if found.size else None

@@ -7,8 +7,18 @@ from collections.abc import Mapping
 from functools import cache
 from typing import TYPE_CHECKING, Any
 
-from calibrate.report import inputs, numbers, outcome, symbols
+from calibrate.report import (
+    density_figure,
+    evidence,
+    inputs,
+    numbers,
+    outcome,
+    sample_figure,
+    symbols,
+    tail_figure,
+)
 from calibrate.report.axis_figure import BY_RULE, panel_axes
+from calibrate.report.figures import tail_of
 from calibrate.report.fit_files import candidate_table
 from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
 from calibrate.report.probability_paper import CAPTION
@@ -107,6 +117,32 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             name: (v, candidate_table(v.comparison))
             for name, v in result.variables.items()
             if v.comparison is not None
+        },
+        "how_read": evidence.how_read(study.records),
+        "exclusions": evidence.exclusion_table(study.records),
+        "screening": evidence.screening_table(result.screenings) if result.screenings else None,
+        "findings": evidence.findings(result.screenings),
+        "tests": {
+            name: evidence.comparison_table(f.comparison, f.tests) for name, f in result.fitted.items()
+        },
+        "verdicts": {
+            name: evidence.verdict(f.comparison, f.tests, tail_of(result, name))
+            for name, f in result.fitted.items()
+        },
+        "lots": {
+            name: (
+                evidence.lot_table(f.lots),
+                evidence.lot_sentences(f.lots, f.pooled, study.variables[name].stands_for),
+            )
+            for name, f in result.fitted.items()
+            if f.lots is not None
+        },
+        "bonds": evidence.bond_table(result),
+        "pedigree": evidence.pedigree_table(result),
+        "captions": {
+            "sample": sample_figure.CAPTION,
+            "tail": tail_figure.CAPTION,
+            "density": density_figure.CAPTION,
         },
         "sized": any(r.size is not None for r in study.rules.values()),
         "sizes": outcome.size_table(result, changes) if changes else None,
@@ -210,8 +246,8 @@ def _fit_methods(result: Result) -> str:
 
 def _axis_caption(result: Result) -> str:
     floor = ", dashed: floor" if result.study.objective.floor is not None else ""
-    by_rule = " by rule" if len(result.study.rules) > 1 else ""
+    marks = "Marks by rule," if len(result.study.rules) > 1 else "Marks are"
     return (
         f"every design situation with present and proposed factors; horizontal line: target{floor}. "
-        f"Marks{by_rule}, larger with more weight; lines show the weighted means."
+        f"{marks} larger with more weight; lines: weighted means of several situations."
     )

@@ -2,12 +2,21 @@
 
 from __future__ import annotations
 
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from calibrate.report import numbers, style, symbols
-from calibrate.report.axis_figure import BY_RULE, axis_label, level_ticks, panel_axes, scale, scatter_by_rule
+from calibrate.report.axis_figure import (
+    BY_RULE,
+    axis_label,
+    level_ticks,
+    panel_axes,
+    rule_legend,
+    scale,
+    scatter_by_rule,
+)
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -40,8 +49,9 @@ def required_factors(result: Result, names: list[str]) -> Figure:
     below = _BOTTOM + max(down - 2.0, 0.0)
     pitch = _TOP + _PANEL_HEIGHT + below
     figure = style.figure(_WIDTH, rows * pitch + _LEGEND)
-    panels = []
+    steps = {f.name: f.step for f in result.study.factors}
     for k, name in enumerate(names):
+        shown = partial(numbers.factor, step=steps[name])
         left = _LEFT + (k % 2) * (_PANEL_WIDTH + _GAP)
         bottom = _LEGEND + (rows - 1 - k // 2) * pitch + below
         axes = style.panel(figure, left, bottom, _PANEL_WIDTH, _PANEL_HEIGHT)
@@ -49,8 +59,13 @@ def required_factors(result: Result, names: list[str]) -> Figure:
         part = np.isfinite(required) & (weight > 0)
         scatter_by_rule(axes, result, required, part, ruler, by_rule=axis == BY_RULE)
         sets = result.calibration
-        _line(axes, sets.present.factors[name], "present", (0, (4, 2)))
-        _line(axes, sets.proposed.factors[name], "proposed", "-")
+        present, proposed = sets.present.factors[name], sets.proposed.factors[name]
+        if present == proposed:
+            _line(axes, proposed, f"unchanged {shown(proposed)}", "-", "center")
+        else:
+            above, below_it = ("bottom", "top") if proposed > present else ("top", "bottom")
+            _line(axes, present, f"present {shown(present)}", (0, (4, 2)), below_it)
+            _line(axes, proposed, f"proposed {shown(proposed)}", "-", above)
         axes.margins(y=0.12)
         axes.set_title(symbols.drawn(name), parse_math=True)
         axes.set_xlabel(axis_label(result, axis), parse_math=True)
@@ -58,24 +73,20 @@ def required_factors(result: Result, names: list[str]) -> Figure:
             axes.set_ylabel("required value")
         axes.grid(visible=True, axis="y")
         level_ticks(axes, ruler, _PANEL_WIDTH)
-        panels.append(axes)
     if axis != BY_RULE and len(result.study.rules) > 1:
-        handles, labels = panels[0].get_legend_handles_labels()
-        figure.legend(
-            handles, labels, loc="lower center", bbox_to_anchor=(0.5, 0.0), ncols=min(len(labels), 4)
-        )
+        rule_legend(figure, list(result.study.rules), 0.5, min(len(result.study.rules), 4))
     return figure
 
 
-def _line(axes: Axes, value: float, name: str, dash: Any) -> None:
+def _line(axes: Axes, value: float, text: str, dash: Any, align: str) -> None:
     axes.axhline(value, color=style.INK, linewidth=0.9, linestyle=dash, zorder=1.5)
     axes.annotate(
-        f"{name} {numbers.significant(value)}",
+        text,
         (1.0, value),
         (3, 0),
         xycoords=("axes fraction", "data"),
         textcoords="offset points",
-        va="bottom" if name == "proposed" else "top",
+        va=align,
         fontsize=6.5,
         annotation_clip=False,
     )
