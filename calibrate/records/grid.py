@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from calibrate.errors import InputError, Problem
+from calibrate.records.notation import POINT, Notation
 
 Cell = str | float | int | bool | None
 """CSV cells are text, XLSX cells keep their type, None is an empty cell; dates and errors are an `Oddity`."""
@@ -34,13 +35,20 @@ class Row:
 
 @dataclass(frozen=True, slots=True)
 class Grid:
-    """Column names and the rows below them, all of one length."""
+    """Column names and the rows below them, all of one length.
+
+    ``header_row`` is None where the file stores the names apart from the rows;
+    ``notation`` is that of numbers in text cells; ``note`` says how the file
+    is written.
+    """
 
     file: str
     sheet: str | None
-    header_row: int
+    header_row: int | None
     header: tuple[str, ...]
     rows: tuple[Row, ...]
+    notation: Notation = POINT
+    note: str = ""
 
 
 def is_empty(cell: Cell | Oddity) -> bool:

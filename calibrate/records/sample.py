@@ -3,13 +3,25 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.errors import InputError, Problem, did_you_mean
+from calibrate.errors import InputError, Problem
+from calibrate.records.columns import which_column
+from calibrate.records.normalise import Normalisation
+from calibrate.records.observations import Observations
 from calibrate.units import Unit
+
+
+@dataclass(frozen=True, slots=True)
+class Exclusion:
+    """A row that was left out: its row in the file, why, and what stood in the cells of the value."""
+
+    row: int
+    reason: str
+    value_text: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -19,20 +31,37 @@ class Sample:
     Attributes
     ----------
     name : str
-        Name of the column.
+        Name of the column, or of the derived value.
     values : ndarray, shape (n,)
-        As written in the file, in ``unit``; finite; in file order; read-only.
+        In ``unit``; finite; in file order; read-only. As written in the file
+        where the sample is complete and nothing was converted; of a specimen
+        known by bounds the finite bound, or the middle of its interval.
     unit : Unit
-        Unit of ``values``.
+        Unit of ``values`` and ``observations``.
     file : str
         The file as the user named it.
     sheet : str or None
-        Sheet of a workbook; None for CSV.
+        Sheet of a workbook; None for other files.
     rows : ndarray of int, shape (n,)
         Row of each value, from 1, as a spreadsheet or an editor numbers it
-        (the row with the column names counts); read-only.
+        (the row with the column names counts); read-only. In a Parquet file
+        rows of data count from 1.
     sha256 : str
         Digest of the file.
+    observations : Observations
+        What is known of each specimen, and the truncation limits.
+    labels : mapping of str to ndarray of str, shape (n,)
+        By role: ``lot``, ``laboratory``, ``mode``, ``specimen``, as far as asked for.
+    order : ndarray, shape (n,), or None
+        Ranks in the order of testing, from 1; ties share their mean.
+    excluded : tuple of Exclusion
+        What was left out, in row order.
+    format_note : str
+        How the file is written, such as "semicolons, decimal comma, Windows-1252".
+    formula : str
+        The expression of a derived value, else empty.
+    normalisation : Normalisation or None
+        How the values were brought to reference conditions.
     """
 
     name: str
@@ -42,6 +71,13 @@ class Sample:
     sheet: str | None
     rows: NDArray[np.int64]
     sha256: str
+    observations: Observations
+    labels: Mapping[str, NDArray[np.object_]] = field(default_factory=dict)
+    order: NDArray[np.float64] | None = None
+    excluded: tuple[Exclusion, ...] = ()
+    format_note: str = ""
+    formula: str = ""
+    normalisation: Normalisation | None = None
 
     @property
     def n(self) -> int:
@@ -52,6 +88,11 @@ class Sample:
     def si_values(self) -> NDArray[np.float64]:
         """The values in coherent SI units, shape (n,)."""
         return self.values * self.unit.factor
+
+    @property
+    def si_observations(self) -> Observations:
+        """The observations in coherent SI units."""
+        return self.observations.scaled(self.unit.factor)
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,6 +111,8 @@ class Table:
     not_numbers : mapping of str to tuple of Problem
         For each column of text, the cells that are not numbers, in row order:
         whoever needs numbers from that column can say where they fail.
+    format_note : str
+        As in `Sample`.
     """
 
     columns: Mapping[str, NDArray[np.float64] | NDArray[np.object_]]
@@ -78,6 +121,7 @@ class Table:
     sheet: str | None
     sha256: str
     not_numbers: Mapping[str, tuple[Problem, ...]]
+    format_note: str = ""
 
     @property
     def n(self) -> int:
@@ -99,7 +143,7 @@ class Table:
         """
         if name not in self.columns:
             message = f"There is no column '{name}'."
-            raise InputError(Problem(message, self.file, None, did_you_mean(name, self.columns)))
+            raise InputError(Problem(message, self.file, None, which_column(name, self.columns)))
         if name in self.not_numbers:
             raise InputError(self.not_numbers[name])
         return np.asarray(self.columns[name], dtype=np.float64)
