@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Literal
 
 from calibrate.records.screening.modes import NOT_STATED, FailureMode
-from calibrate.records.screening.outliers import Esd, Influence
+from calibrate.records.screening.outliers import Esd, EsdStep, Influence
 from calibrate.records.screening.repeats import Repeats, Tie
 from calibrate.records.screening.tail import Tail
 from calibrate.records.screening.trend import LEVEL, Trend
@@ -18,6 +18,10 @@ COARSE = 0.02
 
 INFLUENTIAL = 0.25
 """Relative change of the coefficient of variation from which an unsuspected specimen is mentioned."""
+
+ODD = 0.02
+"""Chance of an extreme of a Weibull or Gumbel sample below which it is doubted; since the moments without the suspect
+flatter the rest, about 5 % of such samples are."""
 
 Namer = Callable[[int], str]
 
@@ -125,35 +129,46 @@ def outlier_findings(tests: Sequence[Esd], influences: Sequence[Influence], name
     """Tell suspects and the specimen that weighs most.
 
     A specimen is doubted that is an outlier on every scale on which it was
-    tested, in the sample or within its lot.
+    tested, in the sample or within its lot, and would be one of a Weibull or
+    Gumbel sample too.
     """
     for found in influences:
         i = found.specimen
         change = _influence_message(found, name)
-        named = [t for t in tests if i in t.specimens]
-        everywhere = [
-            within
-            for within in (False, True)
-            if (group := [t for t in tests if t.within_lots == within])
-            and all(i in t.specimens for t in group)
-        ]
-        if everywhere:
-            where = "" if False in everywhere else " within its lot"
+        steps = {(t.within_lots, t.scale): s for t in tests for s in t.named if s.specimen == i}
+        groups = {within: [t for t in tests if t.within_lots == within] for within in (False, True)}
+        everywhere = [w for w, g in groups.items() if g and all((w, t.scale) in steps for t in g)]
+        odd = [w for w in everywhere if all(_is_odd(steps[w, t.scale]) for t in groups[w])]
+        if odd:
+            where = "" if False in odd else " within its lot"
             text = (
                 f"{change} Suspected as an outlier{where}. Show results with and without; "
                 "removal needs a physical cause."
             )
             yield Finding("outlier", "doubt", text, (i,))
-        elif named:
-            family, other = ("normal", "lognormal") if named[0].scale == "raw" else ("lognormal", "normal")
+        elif everywhere:
             text = (
-                f"{change} It is an outlier on the {named[0].scale} scale only: odd for a {family} population, "
+                f"{change} It is an outlier for a normal or lognormal population, "
+                "not for one with a longer tail (Weibull below, Gumbel above). Removal needs a physical cause."
+            )
+            yield Finding("outlier", "note", text, (i,))
+        elif steps:
+            family, other = ("normal", "lognormal")
+            scale = next(iter(steps))[1]
+            if scale == "logarithmic":
+                family, other = other, family
+            text = (
+                f"{change} It is an outlier on the {scale} scale only: odd for a {family} population, "
                 f"not for a {other} one. Removal needs a physical cause."
             )
             yield Finding("outlier", "note", text, (i,))
         elif _share(found.cov, found.cov_without) > INFLUENTIAL:
             text = f"{change} That is not unusual in a sample of this size, but the result hangs on it."
             yield Finding("influential", "note", text, (i,))
+
+
+def _is_odd(step: EsdStep) -> bool:
+    return step.chance is not None and step.chance < ODD
 
 
 def _share(with_it: float | None, without: float | None) -> float:

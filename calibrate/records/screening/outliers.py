@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -12,7 +12,9 @@ from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
 from calibrate.records.observations import Array
-from calibrate.records.screening.groups import coded, group_medians
+from calibrate.records.screening.groups import coded
+
+Scale = Literal["raw", "logarithmic"]
 
 LEVEL = 0.05
 MOST = 10
@@ -35,12 +37,18 @@ class EsdStep:
         ``R_i``, in standard deviations.
     critical : float
         ``lambda_i``.
+    chance : float or None
+        Of named outliers: that the lowest value of a Weibull sample, or the
+        highest of a Gumbel sample, of this size lies as far out, with the
+        moments of the values that are not named. Normal populations are not
+        the only ordinary ones.
     """
 
     specimen: int
     value: float
     distance: float
     critical: float
+    chance: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -51,7 +59,7 @@ class Esd:
     ----------
     scale : {"raw", "logarithmic"}
     within_lots : bool
-        Whether the values were divided by the median of their lot.
+        Whether values were divided by the mean of their lot.
     steps : tuple of EsdStep
         All that were tried, in order.
     n_outliers : int
@@ -59,7 +67,7 @@ class Esd:
         to it names an outlier.
     """
 
-    scale: Literal["raw", "logarithmic"]
+    scale: Scale
     within_lots: bool
     steps: tuple[EsdStep, ...]
     n_outliers: int
@@ -67,7 +75,12 @@ class Esd:
     @property
     def specimens(self) -> tuple[int, ...]:
         """Positions of the outliers, the farthest first."""
-        return tuple(s.specimen for s in self.steps[: self.n_outliers])
+        return tuple(s.specimen for s in self.named)
+
+    @property
+    def named(self) -> tuple[EsdStep, ...]:
+        """Steps that name an outlier."""
+        return self.steps[: self.n_outliers]
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,22 +134,20 @@ def generalised_esd(
        e-Handbook 1.3.5.17.3 (from memory, recomputed).
     """
     x = np.asarray(values, dtype=np.float64)
-    y = np.log(x) if logarithmic else x
-    return _esd(
-        x, y, np.arange(x.size), "logarithmic" if logarithmic else "raw", level, most, within_lots=False
-    )
+    scale: Scale = "logarithmic" if logarithmic else "raw"
+    return _esd(_Tested(x, np.arange(x.size), scale, within_lots=False), x, level, most)
 
 
 def esd_within_lots(
     values: ArrayLike, lots: Sequence[str | None], *, level: float = LEVEL
 ) -> tuple[Esd, ...]:
-    """Test the ratios of values to the median of their lot: lots may differ, specimens of one lot may not.
+    """Test the distances of values from the mean of their lot: lots may differ, specimens of one lot may not.
 
     Parameters
     ----------
     values : array_like, shape (n,)
     lots : sequence of str or None, length n
-        Lots of fewer than five specimens, or with a median that is not
+        Lots of fewer than five specimens, or with a mean that is not
         positive, and specimens without a lot take no part.
     level : float
         As in `generalised_esd`.
@@ -144,37 +155,56 @@ def esd_within_lots(
     Returns
     -------
     tuple of Esd
-        On the raw scale and, where all values that take part are positive, on
-        the logarithmic one. Empty where fewer than two lots take part.
+        On the raw scale (ratios to the lot's mean) and, where all values that
+        take part are positive, on the logarithmic one. Empty where fewer than
+        two lots take part.
+
+    Notes
+    -----
+    Distances in a lot of m are enlarged by ``sqrt(m/(m-1))``, so that all have
+    the same variance in spite of the estimated mean.
     """
     x = np.asarray(values, dtype=np.float64)
     names, codes = coded(lots)
-    medians, sizes = group_medians(x, codes, len(names))
-    fit = (sizes >= _LEAST_IN_LOT) & (medians > 0.0)
+    means, sizes = _group_means(x, codes, len(names))
+    fit = (sizes >= _LEAST_IN_LOT) & (means > 0.0)
     if np.count_nonzero(fit) < 2:
         return ()
     at = np.flatnonzero(np.append(fit, False)[codes])
-    ratio = x[at] / medians[codes[at]]
-    tests = [_esd(x, ratio, at, "raw", level, None, within_lots=True)]
-    if ratio.min() > 0.0:
-        tests.append(_esd(x, np.log(ratio), at, "logarithmic", level, None, within_lots=True))
+    lot = codes[at]
+    larger = np.sqrt(sizes[lot] / (sizes[lot] - 1.0))
+    ratio = 1.0 + larger * (x[at] / means[lot] - 1.0)
+    tests = [_esd(_Tested(ratio, at, "raw", within_lots=True), x, level, None)]
+    if x[at].min() > 0.0:
+        logs = np.zeros(x.size)
+        logs[at] = np.log(x[at])
+        ratio = np.exp(larger * (logs[at] - _group_means(logs, codes, len(names))[0][lot]))
+        tests.append(_esd(_Tested(ratio, at, "logarithmic", within_lots=True), x, level, None))
     return tuple(tests)
 
 
-def _esd(
-    x: Array,
-    y: Array,
-    at: NDArray[np.int64],
-    scale: Literal["raw", "logarithmic"],
-    level: float,
-    most: int | None,
-    *,
-    within_lots: bool,
-) -> Esd:
-    """Test y, which stands for the specimens ``at`` of x."""
+def _group_means(x: Array, codes: NDArray[np.int64], groups: int) -> tuple[Array, NDArray[np.int64]]:
+    sizes = np.bincount(codes + 1, minlength=groups + 1)[1:]
+    sums = np.bincount(codes + 1, weights=x, minlength=groups + 1)[1:]
+    return np.asarray(sums / np.maximum(sizes, 1)), sizes.astype(np.int64)
+
+
+@dataclass(frozen=True, slots=True)
+class _Tested:
+    """Values under test on the raw scale, and the specimens to which they belong."""
+
+    values: Array
+    at: NDArray[np.int64]
+    scale: Scale
+    within_lots: bool
+
+
+def _esd(tested: _Tested, x: Array, level: float, most: int | None) -> Esd:
+    y = np.log(tested.values) if tested.scale == "logarithmic" else tested.values
     n = int(y.size)
     most = min(MOST, n // 4) if most is None else most
     left = np.arange(n)
+    taken: list[int] = []
     steps: list[EsdStep] = []
     found = 0
     for i in range(1, min(most, n - 2) + 1):
@@ -183,12 +213,31 @@ def _esd(
         if sd <= 1e-14 * float(np.abs(y[left]).max()):
             break  # the rest is equal to rounding: no scale to measure by
         j = int(np.argmax(np.abs(d)))
-        specimen = int(at[left[j]])
+        taken.append(int(left[j]))
+        specimen = int(tested.at[taken[-1]])
         steps.append(EsdStep(specimen, float(x[specimen]), float(abs(d[j])) / sd, critical_esd(n, i, level)))
         if steps[-1].distance > steps[-1].critical:
             found = i
         left = np.delete(left, j)
-    return Esd(scale, within_lots, tuple(steps), found)
+    rest = np.delete(tested.values, taken[:found])
+    named = [
+        replace(s, chance=_extreme_chance(rest, float(tested.values[j]), n))
+        for s, j in zip(steps[:found], taken, strict=False)
+    ]
+    return Esd(tested.scale, tested.within_lots, (*named, *steps[found:]), found)
+
+
+def _extreme_chance(rest: Array, value: float, n: int) -> float:
+    """Return the chance that one of n lies as far out as a value: below, Weibull; above, Gumbel."""
+    low = value < float(rest.mean())
+    if low and value > 0.0 and rest.min() > 0.0:
+        rest, value = (
+            np.log(rest),
+            math.log(value),
+        )  # the logarithms of a Weibull sample are of the Gumbel kind
+    scale = float(rest.std(ddof=1)) * math.sqrt(6.0) / math.pi
+    outwards = abs(value - float(rest.mean())) / scale + np.euler_gamma
+    return -math.expm1(-n * math.exp(-outwards))
 
 
 def critical_esd(n: int, i: int, level: float = LEVEL) -> float:

@@ -132,8 +132,8 @@ def repeats(observations: Observations) -> Repeats:
     probability ``q = 2/(2 + b)`` at most; with K specimens in the window but
     not on v, the chance of m or more is the binomial upper tail
     ``P(Bin(m-1+K, q) >= m-1)`` (one specimen puts v there). The window reaches
-    one robust standard deviation to both sides, or inwards at either end of
-    the sample. The chance is multiplied by the number of different values
+    one robust standard deviation to both sides, but not beyond the ends of the
+    sample. The chance is multiplied by the number of different values
     (Bonferroni). Where rounding is coarser than a standard deviation nothing
     can be said. The argument needs no family; the factor two is a
     precaution for peaked densities (own derivation).
@@ -182,9 +182,9 @@ def _chances(x: Array, distinct: Array, counts: NDArray[np.int64], common: float
     first = below[np.searchsorted(distinct, distinct - reach, side="left")]
     last = below[np.searchsorted(distinct, distinct + reach, side="right")]
     around = last - first - counts
-    sides = np.full(distinct.size, 2.0)
-    sides[[0, -1]] = 1.0
-    q = _DENSITY_RATIO / (_DENSITY_RATIO + sides * round(reach / step))
+    # Beyond the ends of the sample there may be no density: the window stops there.
+    width = np.minimum(distinct + reach, distinct[-1]) - np.maximum(distinct - reach, distinct[0])
+    q = _DENSITY_RATIO / (_DENSITY_RATIO + np.rint(width / step))
     p = special.betainc(np.maximum(counts - 1.0, 1.0), around + 1.0, q)
     return np.asarray(np.minimum(np.where(counts > 1, p, 1.0) * distinct.size, 1.0))
 
