@@ -8,7 +8,7 @@ import openpyxl
 import pytest
 
 from calibrate.errors import InputError
-from calibrate.records import read_column, read_table, xlsx_file
+from calibrate.records import ReadOptions, read_column, read_table, xlsx_file
 from calibrate.units import ONE, parse_unit
 
 
@@ -111,3 +111,20 @@ def test_what_is_not_a_workbook(tmp_path, monkeypatch, book):
     assert "cannot be read as an XLSX workbook" in str(refusal(path))
     monkeypatch.setattr(xlsx_file, "MAX_UNPACKED", 1000)
     assert "unpacks to" in str(refusal(book({"Tests": [["f_u"], [1]]})))
+
+
+def test_cells_keep_their_type_in_labels_flags_and_order(book):
+    day = datetime.datetime
+    rows = [
+        ["f_u", "lot", "kept", "when"],
+        [5, 1, True, day(2024, 5, 2)],
+        ["4..6", 2.0, None, day(2024, 5, 1, 8)],
+        [7, " A ", 0, day(2024, 5, 1, 7)],
+    ]
+    options = ReadOptions(censoring=True, lot="lot", censored="kept", order="when")
+    sample = read_column(book({"Tests": rows}), "f_u", unit=ONE, options=options)
+    assert list(sample.labels["lot"]) == ["1", "2", "A"]
+    np.testing.assert_array_equal(sample.observations.lower, [5, 4, 7])
+    np.testing.assert_array_equal(sample.observations.upper, [np.inf, 6, 7])
+    np.testing.assert_array_equal(sample.order, [3, 2, 1])
+    assert sample.format_note == "XLSX"
