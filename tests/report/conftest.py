@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -59,7 +59,7 @@ period = 1
 source = '{text}'
 grade = "judgement"
 [factors]
-gamma_Q = {{ present = 1.50, lower = 1.2, upper = 2.5, step = 0.05, description = '{text}' }}
+gamma_Q = {{ present = 1.50, lower = 1.5, upper = 2.0, step = 0.25, description = '{text}' }}
 gamma_M = 1.2
 [rules.tension]
 design_check = "A * f_k / gamma_M >= gamma_Q * Q_k"
@@ -124,6 +124,14 @@ def start(folder: Path, own: str, *, file: str, text: str) -> Result:
     study = folder / "study.toml"
     study.write_text(COMMON.format(file=file, text=text) + own, encoding="utf-8")
     return run(read_study(study))
+
+
+@pytest.fixture(scope="session", autouse=True)
+def coarse_pictures() -> Iterator[None]:
+    """Draw small pictures: their content is the same, and they take less time."""
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr("calibrate.report.style.RESOLUTION", 40)
+        yield
 
 
 @pytest.fixture(scope="session")

@@ -60,11 +60,12 @@ def bad(hostile):
 
 def test_every_section_has_its_heading_and_is_in_the_contents(page):
     headings = [t.strip() for tag, t in page.texts if tag == "h2" and t.strip()]
-    assert headings == ["Contents", *HEADINGS]
+    assert [h for h in headings if h in HEADINGS] == HEADINGS
     targets = [a["href"][1:] for tag, a in page.elements if tag == "a" and a["href"].startswith("#")]
     sections = [a["id"] for tag, a in page.elements if tag == "section"]
     assert targets[: len(sections)] == sections
-    assert len(sections) == len(HEADINGS)
+    assert headings[0] == "Contents"
+    assert len(sections) == len(headings) - 1
 
 
 @pytest.mark.parametrize("run", ["page", "bad"])
