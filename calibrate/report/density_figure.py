@@ -28,7 +28,7 @@ def density_figure(fits: Sequence[Fit], *, label: str, unit: str) -> Figure:
     values = seen.values[seen.exact] if seen.n_exact else seen.values
     share = values.size / seen.n
     edges = np.histogram_bin_edges(values, bins=_bins(values.size))
-    axes.hist(
+    heights, _, _ = axes.hist(
         values, bins=list(edges), weights=np.full(values.size, share / (values.size * (edges[1] - edges[0]))),
         color=style.PALE, edgecolor=style.GREY, linewidth=0.5, zorder=1,
     )  # fmt: skip
@@ -45,7 +45,7 @@ def density_figure(fits: Sequence[Fit], *, label: str, unit: str) -> Figure:
             x, finite, color=style.colour(k), linewidth=1.5 if k == 0 else 0.9,
             linestyle="-" if k == 0 else (0, (5, 1 + k)), label=fit.family, zorder=2,
         )  # fmt: skip
-    axes.set_ylim(0.0, 1.15 * max(top, axes.get_ylim()[1] / 1.3))
+    axes.set_ylim(0.0, 1.12 * max(top, float(np.max(heights))))
     axes.set_yticks([])
     axes.set_ylabel("density")
     axes.set_xlabel(f"{label} ({unit})" if unit else label, parse_math=True)

@@ -61,10 +61,10 @@ def screening_table(screenings: Mapping[str, Screening]) -> Table:
     return Table(tuple(columns))
 
 
-def _with_error(value: float, error: float) -> str:
-    if not math.isfinite(value):
+def _with_error(value: float | None, error: float | None) -> str:
+    if value is None or not math.isfinite(value):
         return ""
-    tail = f" ± {numbers.fixed(error, 2)}" if math.isfinite(error) else ""
+    tail = f" ± {numbers.fixed(error, 2)}" if error is not None and math.isfinite(error) else ""
     return numbers.fixed(value, 2) + tail
 
 
@@ -118,7 +118,7 @@ def _normalised(sample: Sample) -> str:
         found.covariates, found.exponents, found.standard_errors, strict=True
     ):
         scatter = f" ± {numbers.significant(error, 2)}" if error > 0 else ""
-        texts.append(f"{covariate.column}^{numbers.significant(exponent, 3)}{scatter}")
+        texts.append(f"{covariate}^{numbers.significant(exponent, 3)}{scatter}")
     return "normalised to reference conditions by " + ", ".join(texts)
 
 
@@ -156,7 +156,7 @@ def verdict(comparison: Comparison, tests: Mapping[str, FitTests], tail: str | N
     kept = [name for name, t in tests.items() if not t.rejected("anderson_darling")]
     if best.family in kept:
         others = [name for name in kept if name != best.family]
-        also = f", nor {_listed(others)}" if others else ""
+        also = f", nor {_listed(others, 'or')}" if others else ""
         first = f"The sample does not reject {best.family}{also} (Anderson–Darling, 5 %)."
     elif best.family in tests:
         first = f"The sample speaks against {best.family} (Anderson–Darling, 5 %), although it has the smallest AICc."
@@ -172,8 +172,8 @@ def verdict(comparison: Comparison, tests: Mapping[str, FitTests], tail: str | N
     )
 
 
-def _listed(names: Sequence[str]) -> str:
-    return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
+def _listed(names: Sequence[str], word: str = "and") -> str:
+    return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} {word} {names[-1]}"
 
 
 def lot_table(scatter: LotScatter) -> Table:

@@ -8,7 +8,7 @@ import numpy as np
 from scipy.special import ndtr
 
 from calibrate.fitting.paper import positions
-from calibrate.report import style
+from calibrate.report import numbers, style
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -76,6 +76,9 @@ def tail_figure(
             axes.axhline(at, color=style.INK, linewidth=0.8, linestyle=(0, (1, 2)), zorder=1.5)
     axes.set_yscale("log")
     axes.set_ylim(deepest, 0.6)
+    decades = np.arange(-1, int(np.floor(np.log10(deepest))), -1)
+    axes.set_yticks([10.0**d for d in decades], [numbers.probability(10.0**d) for d in decades])
+    axes.minorticks_off()
     axes.set_xlabel(f"{label} ({unit})" if unit else label, parse_math=True)
     axes.set_ylabel("probability of not being exceeded" if lower else "probability of exceedance")
     axes.set_title(f"{'Lower' if lower else 'Upper'} tail, n = {n}")
