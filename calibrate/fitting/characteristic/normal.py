@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -70,15 +70,16 @@ def normal_value(
         own = scatter(known_cov)
     used = own if least_cov is None else max(own, scatter(least_cov))
     floored = used > own
-    if not used > 0.0:
+    # Rounding of the mean may leave a trace of scatter among equal values.
+    if not used > 0.0 or (used == own and not known and np.ptp(values) == 0.0):
         raise no_scatter(n)
     k = _factor(request, n)
     interval = None
     if not floored:
-        factor = tolerance_factor_known if known else tolerance_factor
-        ends = _interval_factors(factor, n, request.fractile)
+        factor = _known if known else _estimated
+        ends = (factor(n, request.fractile, 0.5 + side * 0.5 * INTERVAL_LEVEL) for side in (-1.0, 1.0))
         interval = ordered(*(natural(request.sign * end * own) for end in ends))
-    z = float(tolerance_factor_known(1, request.fractile, 0.5))
+    z = _known(1, request.fractile, 0.5)
     return request.answer(
         values,
         value=natural(request.sign * k * used),
@@ -103,26 +104,31 @@ def no_scatter(n: int) -> InputError:
     )
 
 
+@lru_cache(maxsize=1024)
+def _estimated(n: int, fractile: float, confidence: float) -> float:
+    """Return `tolerance_factor`; samples of one size ask for the same numbers again and again."""
+    return float(tolerance_factor(n, fractile, confidence))
+
+
+def _known(n: int, fractile: float, confidence: float) -> float:
+    return float(tolerance_factor_known(n, fractile, confidence))
+
+
 def _factor(request: Request, n: int) -> float:
     p, c = request.fractile, request.confidence
     match request.route:
         case "tolerance":
             assert c is not None
-            return float(tolerance_factor(n, p, c))
+            return _estimated(n, p, c)
         case "tolerance_known":
             assert c is not None
-            return float(tolerance_factor_known(n, p, c))
+            return _known(n, p, c)
         case "prediction":
             return float(prediction_factor(n, p))
         case "prediction_known":
             return float(prediction_factor_known(n, p))
         case _:
-            return float(tolerance_factor_known(1, p, 0.5))
-
-
-def _interval_factors(factor: Callable[..., Array], n: int, fractile: float) -> tuple[float, float]:
-    low, high = factor(n, fractile, np.array([0.5 - 0.5 * INTERVAL_LEVEL, 0.5 + 0.5 * INTERVAL_LEVEL]))
-    return float(low), float(high)
+            return _known(1, p, 0.5)
 
 
 def _extra(known_cov: float | None, least_cov: float | None) -> str:

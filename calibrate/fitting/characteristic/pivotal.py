@@ -86,7 +86,7 @@ def pivotal_value(
         raise no_scatter(values.size)
     location, own = (float(a[0]) for a in gumbel_rows(kind.sign * y[None, :]))
     location *= kind.sign
-    least = 0.0 if least_cov is None else _least_scale(request.family, least_cov, location, own)
+    least = 0.0 if least_cov is None else _least_scale(request.family, least_cov, location)
     scale = max(own, least)
 
     def natural(moved: float) -> float:
@@ -152,12 +152,16 @@ def _needed(rng: np.random.Generator | None, family: str) -> np.random.Generator
     return rng
 
 
-def _least_scale(family: str, cov: float, location: float, scale: float) -> float:
+def _least_scale(family: str, cov: float, location: float) -> float:
     """Return the scale, of logarithms where the family has them, at which the family has this cov."""
     if _KINDS[family].of_logs:
         return 1.0 / float(distribution(family, mean=1.0, cov=cov).parameters["shape"])
-    mean = float(_gumbel_like(family, 1.0, location, scale).mean)
-    return cov * abs(mean) * math.sqrt(6.0) / math.pi
+    # sd = pi/sqrt(6) scale is cov times |location + sign gamma scale|.
+    towards = _KINDS[family].sign * math.copysign(np.euler_gamma, location)
+    slope = math.pi / math.sqrt(6.0) - towards * cov
+    if slope <= 0.0:
+        raise InputError(f"A least cov of {cov:g} is more than the family '{family}' can have.")
+    return cov * abs(location) / slope
 
 
 def _gumbel_like(family: str, centre: float, location: float, scale: float) -> Distribution:
@@ -185,13 +189,14 @@ def _exponential(x: Array, request: Request, least_cov: float | None) -> Charact
         raise no_scatter(n)
     exceeded = -math.log1p(-request.fractile)
 
-    def limit(level_above: float) -> float:
-        return exceeded * mean * n / float(special.gammainccinv(n, 1.0 - level_above))
+    def limit(level: float) -> float:
+        """Return what lies below the fractile with this probability."""
+        return exceeded * mean * n / float(special.gammaincinv(n, level))
 
     value = exceeded * mean
     if request.route == "tolerance":
         assert request.confidence is not None
-        value = limit(1.0 - request.confidence if request.lower else request.confidence)
+        value = limit(request.confidence if request.lower else 1.0 - request.confidence)
     elif request.route == "prediction":
         value = n * mean * math.expm1(exceeded / n)
     half = 0.5 * INTERVAL_LEVEL
@@ -201,5 +206,5 @@ def _exponential(x: Array, request: Request, least_cov: float | None) -> Charact
         factor=None,
         point_estimate=exceeded * mean,
         cov_used=1.0,
-        interval=(limit(0.5 - half), limit(0.5 + half)),
+        interval=(limit(0.5 + half), limit(0.5 - half)),
     )

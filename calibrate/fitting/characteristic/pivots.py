@@ -74,11 +74,9 @@ class Pivots:
         """
         w = self.quantile(tail, upper)
         pivot = (self.location - w) / self.scale
-        half = math.sqrt(level * (1.0 - level) / pivot.size)
-        levels = np.clip([level, level - half, level + half], 0.0, 1.0)
-        k, low, high = (float(q) for q in np.quantile(pivot, levels, method="median_unbiased"))
+        k, error = spaced_quantile(pivot, level)
         slope = float(special.ndtri(level)) * math.sqrt(self._information_variance(w))
-        return self._extrapolated(n, k, w, slope), 0.5 * (high - low) * self.n / n
+        return self._extrapolated(n, k, w, slope), error * self.n / n
 
     def prediction(self, n: int, tail: float, upper: bool) -> tuple[float, float]:
         """Return k such that a further value lies below location - k scale with probability ``tail``.
@@ -147,6 +145,14 @@ def simulated(
         locations.append(location)
         scales.append(scale)
     return Pivots(np.concatenate(locations), np.concatenate(scales), size, normal)
+
+
+def spaced_quantile(x: Array, level: float) -> tuple[float, float]:
+    """Return a quantile of simulated numbers and its standard error, from the spacing of the numbers around it."""
+    half = math.sqrt(level * (1.0 - level) / x.size)
+    levels = np.clip([level, level - half, level + half], 0.0, 1.0)
+    value, low, high = (float(q) for q in np.quantile(x, levels, method="median_unbiased"))
+    return value, 0.5 * (high - low)
 
 
 def gumbel_rows(y: Array) -> tuple[Array, Array]:
