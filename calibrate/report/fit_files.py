@@ -13,11 +13,13 @@ import numpy as np
 
 from calibrate.report import numbers, symbols
 from calibrate.report.table import Column, Table, aligned, each
+from calibrate.study.sample_fit import CONFIDENCE
 from calibrate.units import format_unit
 
 if TYPE_CHECKING:
     from calibrate.fitting import Comparison, Fit
     from calibrate.records import Sample
+    from calibrate.study.sample_fit import SampleFit
 
 FORMAT = "calibrate-fit/1"
 FIT_FILE = "fit.json"
@@ -67,8 +69,23 @@ def sample_sentence(sample: Sample) -> str:
     return (
         f"n = {values.size}, mean {numbers.significant(mean, 5)}{unit}, sd {numbers.significant(sd, 4)}{unit}, "
         f"cov {numbers.significant(cov, 3)}, from {numbers.significant(float(values.min()), 5)} to "
-        f"{numbers.significant(float(values.max()), 5)}{unit}."
+        f"{numbers.significant(float(values.max()), 5)}{unit}.{_bounds(sample)}"
     )
+
+
+def _bounds(sample: Sample) -> str:
+    """Return how many specimens are known by bounds only."""
+    seen = sample.observations
+    parts = [
+        f"{count} {what}"
+        for count, what in (
+            (int(seen.right.sum()), "survived"),
+            (int(seen.left.sum()), "known from above"),
+            (int(seen.interval.sum()), "known within an interval"),
+        )
+        if count
+    ]
+    return f" Of these {', '.join(parts)}; mean and sd take them at their bounds." if parts else ""
 
 
 def recommendation(comparison: Comparison) -> str:
@@ -89,18 +106,57 @@ def recommendation(comparison: Comparison) -> str:
     )
 
 
-def fit_dict(sample: Sample, comparison: Comparison) -> dict[str, Any]:
+def fit_dict(found: SampleFit) -> dict[str, Any]:
     """Return the content of fit.json."""
-    return {
+    sample, comparison = found.sample, found.comparison
+    content: dict[str, Any] = {
         "format": FORMAT,
         "column": sample.name,
         "unit": sample.unit.text,
         "file": sample.file,
         "sha256": sample.sha256,
         "n": sample.n,
+        "n_exact": sample.observations.n_exact,
         "candidates": [_candidate(c) for c in comparison.candidates],
         "recommended": comparison.recommended,
+        "tests_of_fit": {
+            name: {
+                "statistics": {k: _number(v) for k, v in t.statistics.items()},
+                "p_values": {k: _number(v) for k, v in t.p_values.items()},
+                "replicates": t.replicates,
+            }
+            for name, t in found.tests.items()
+        },
+        "intervals": {
+            "confidence": CONFIDENCE,
+            "parameters": {k: [_number(v) for v in ends] for k, ends in found.intervals.items()},
+        },
+        "findings": [
+            {"code": f.code, "level": f.level, "message": f.message} for f in found.screening.findings
+        ],
+        "doubts": [{"code": d.code, "message": d.message, "where": d.where} for d in found.doubts],
     }
+    if found.lots is not None:
+        content["lots"] = {
+            "scale": found.lots.scale,
+            "between_sd": _number(found.lots.between_sd),
+            "within_sd": _number(found.lots.within_sd),
+            "effective_n": _number(found.lots.effective_n),
+            "intraclass": _number(found.lots.intraclass),
+        }
+    if found.characteristic is not None:
+        value = found.characteristic
+        content["characteristic"] = {
+            "value": _number(value.value),
+            "route": value.route,
+            "fractile": value.fractile,
+            "confidence": value.confidence,
+            "family": value.family,
+            "factor": None if value.factor is None else _number(value.factor),
+            "point_estimate": _number(value.point_estimate),
+            "statement": value.statement,
+        }
+    return content
 
 
 def _candidate(fit: Fit) -> dict[str, Any]:
@@ -123,22 +179,40 @@ def _number(value: float) -> float | None:
     return float(value) if math.isfinite(value) else None
 
 
-def fit_files(sample: Sample, comparison: Comparison) -> dict[str, bytes]:
-    """Return fit.json, candidates.csv and a probability paper for each converged candidate."""
+def fit_files(found: SampleFit) -> dict[str, bytes]:
+    """Return fit.json, candidates.csv, fit.html, and the figures of the sample and of each converged candidate."""
     from calibrate.report import style
+    from calibrate.report.density_figure import density_figure
+    from calibrate.report.fit_page import fit_html
     from calibrate.report.probability_paper import probability_figure
+    from calibrate.report.sample_figure import sample_figure
+    from calibrate.report.tail_figure import tail_figure
 
-    content = json.dumps(fit_dict(sample, comparison), indent=2, ensure_ascii=False, allow_nan=False)
-    files = {FIT_FILE: f"{content}\n".encode(), "candidates.csv": _csv(comparison)}
+    sample, comparison = found.sample, found.comparison
     unit = format_unit(sample.unit.text) if sample.unit.text else ""
+    label = symbols.drawn(sample.name) if sample.name.isidentifier() else symbols.literal(sample.name)
+    converged = [c for c in comparison.candidates if c.converged]
+    near = [c for c in converged if c.family in found.tests] or converged[:3]
+    drawn: dict[str, style.Rendered] = {}
     with style.context():
-        for fit in comparison.candidates:
-            if not fit.converged:
-                continue
-            label = symbols.drawn(sample.name) if sample.name.isidentifier() else symbols.literal(sample.name)
-            drawn = style.render(probability_figure(fit, label=label, unit=unit))
-            files[f"figures/probability_{fit.family}.svg"] = drawn.svg
-            files[f"figures/probability_{fit.family}.png"] = drawn.png
+        drawn["sample"] = style.render(sample_figure(sample, found.screening, label=label, unit=unit))
+        for fit in converged:
+            figure = probability_figure(fit, label=label, unit=unit)
+            drawn[f"probability_{fit.family}"] = style.render(figure)
+        if near:
+            drawn["density"] = style.render(density_figure(near, label=label, unit=unit))
+            for side in ("lower", "upper"):
+                figure = tail_figure(near, lower=side == "lower", label=label, unit=unit)
+                drawn[f"tail_{side}"] = style.render(figure)
+    content = json.dumps(fit_dict(found), indent=2, ensure_ascii=False, allow_nan=False)
+    files = {
+        FIT_FILE: f"{content}\n".encode(),
+        "candidates.csv": _csv(comparison),
+        "fit.html": fit_html(found, drawn),
+    }
+    for name, figure_files in drawn.items():
+        files[f"figures/{name}.svg"] = figure_files.svg
+        files[f"figures/{name}.png"] = figure_files.png
     return files
 
 

@@ -63,11 +63,12 @@ def inline_svg(svg: bytes, prefix: str, title: str) -> Html:
 
 def report_html(result: Result, figures: Mapping[str, Rendered]) -> bytes:
     """Return the report of a result with its figures as one HTML page."""
-    return _environment().get_template("report.html.j2").render(_content(result, figures)).encode("utf-8")
+    return environment().get_template("report.html.j2").render(_content(result, figures)).encode("utf-8")
 
 
 @cache
-def _environment() -> Environment:
+def environment() -> Environment:
+    """Return the templates, which escape everything."""
     from jinja2 import Environment, PackageLoader, StrictUndefined
 
     environment = Environment(

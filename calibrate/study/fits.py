@@ -13,6 +13,7 @@ from calibrate.errors import Doubt, InputError, ProblemList
 from calibrate.fitting import Comparison, Fit, compare
 from calibrate.fitting.fit_tests import FitTests, run_fit_tests
 from calibrate.fitting.lots import LotScatter, Pooling, lot_scatter, pooling, population
+from calibrate.fitting.lots.grouping import Scale
 from calibrate.fitting.predictive import predictive
 from calibrate.records import Sample
 from calibrate.study.model import Study, Variable
@@ -139,38 +140,50 @@ def _used(variable: Variable, chosen: Fit, scatter: LotScatter | None) -> Distri
 def _lots(
     study: Study, variable: Variable, sample: Sample, chosen: Fit
 ) -> tuple[LotScatter | None, Pooling | None, tuple[Doubt, ...]]:
-    """Analyse lots where the records name them: specimens that were observed exactly."""
+    """Analyse lots for a variable, and take what it stands for into account."""
+    where = f"variables.{variable.name}"
+    scatter, pooled, doubts = analyse_lots(sample, chosen.family, where, study.seed)
+    if variable.stands_for and scatter is not None:
+        found = population(scatter, variable.stands_for, lot=variable.lot, where=where)  # type: ignore[arg-type]
+        # What was said of pooling is answered by the choice; the other doubts remain.
+        doubts = (*(d for d in doubts if d.code != "lots-matter"), *found.doubts)
+    return scatter, pooled, doubts
+
+
+def analyse_lots(
+    sample: Sample, family: str, where: str, seed: int
+) -> tuple[LotScatter | None, Pooling | None, tuple[Doubt, ...]]:
+    """Analyse lots where the records name them, from the specimens that were observed exactly.
+
+    Parameters
+    ----------
+    sample : Sample
+    family : str
+        Of the fit: families of the location and scale type are analysed as measured, all others by their logarithms.
+    where : str
+        Place that doubts name.
+    seed : int
+    """
     if "lot" not in sample.labels:
         return None, None, ()
     exact = sample.observations.exact
     lots, values = sample.labels["lot"][exact], sample.observations.lower[exact]
     if values.size < 2 or np.ptp(values) == 0.0:
         return None, None, ()
-    where = f"variables.{variable.name}"
-    scale = (
-        "as measured" if chosen.family in ("normal", "gumbel", "gumbel_min", "student_t") else "logarithmic"
-    )
-    if scale == "logarithmic" and not (values > 0.0).all():
-        scale = "as measured"
-    scatter = lot_scatter(values, lots, scale=scale, where=where)  # type: ignore[arg-type]
-    rng = stream(study.seed, "pooling", variable.name)
-    pooled = pooling(values, lots, rng, scale=scale) if len(scatter.shares) > 1 else None  # type: ignore[arg-type]
-    doubts = list(scatter.doubts)
+    plain = family in ("normal", "gumbel", "gumbel_min", "student_t") or not (values > 0.0).all()
+    scale: Scale = "as measured" if plain else "logarithmic"
+    scatter = lot_scatter(values, lots, scale=scale, where=where)
+    rng = stream(seed, "pooling", where)
+    pooled = pooling(values, lots, rng, scale=scale) if len(scatter.shares) > 1 else None
+    doubts = scatter.doubts
     if not sample.observations.complete:
         left = sample.n - int(np.count_nonzero(exact))
-        doubts.append(
-            Doubt(
-                "lots-of-exact-values",
-                f"The scatter between and within lots comes from specimens observed exactly; {left} known by bounds "
-                "are left out of it, which makes it smaller than it is.",
-                where,
-            )
+        text = (
+            f"The scatter between and within lots comes from specimens observed exactly; {left} known by bounds "
+            "are left out of it, which makes it smaller than it is."
         )
-    if variable.stands_for:
-        doubts += population(scatter, variable.stands_for, lot=variable.lot, where=where).doubts  # type: ignore[arg-type]
-        # What was said of pooling is answered by the choice; the other doubts remain.
-        doubts = [d for d in doubts if d.code != "lots-matter"]
-    return scatter, pooled, tuple(doubts)
+        doubts = (*doubts, Doubt("lots-of-exact-values", text, where))
+    return scatter, pooled, doubts
 
 
 def _choice_doubts(variable: Variable, chosen: Fit, tests: Mapping[str, FitTests]) -> list[Doubt]:
