@@ -82,11 +82,10 @@ def characteristic_value(
     observations = _observations(values)
     _check_cov("known", known_cov, needed=request.route in KNOWN_ROUTES, route=request.route)
     _check_cov("least", least_cov, needed=False, route=request.route)
-    known_enough = request.route in KNOWN_ROUTES
-    least_n = 1 if known_enough else 2
+    least_n, words = (1, "one value") if request.route in KNOWN_ROUTES else (2, "two values")
     if observations.n < least_n:
         raise InputError(
-            f"A characteristic value by the route '{request.route}' needs at least {least_n} values; "
+            f"A characteristic value by the route '{request.route}' needs at least {words}; "
             f"there {'is' if observations.n == 1 else 'are'} {observations.n}."
         )
     if request.route == "order_statistic":
