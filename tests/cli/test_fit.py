@@ -59,8 +59,12 @@ def test_out_gets_tables_and_a_figure_of_each_candidate(column, calibrate, tmp_p
     out = tmp_path / "fits"
     ended = calibrate("fit", *column, "--unit", "MPa", *TWO, "--out", out)
     assert ended.code == 0
-    figures = {f"probability_{f}.{ending}" for f in ("normal", "lognormal") for ending in ("svg", "png")}
+    names = ("probability_normal", "probability_lognormal", "sample", "density", "tail_lower", "tail_upper")
+    figures = {f"{name}.{ending}" for name in names for ending in ("svg", "png")}
     assert {p.name for p in (out / "figures").iterdir()} == figures
+    page = (out / "fit.html").read_text(encoding="utf-8")
+    assert page.count("<svg ") == len(names)
+    assert "licensed practice prevail" in page
     content = json.loads((out / "fit.json").read_text(encoding="utf-8"))
     with (out / "candidates.csv").open(encoding="utf-8") as stream:
         rows = list(csv.DictReader(stream))
@@ -83,7 +87,7 @@ def test_its_own_folder_is_replaced_and_another_refused(column, calibrate, tmp_p
     assert calibrate(*arguments, "--force").code == 0
     (out / "old.txt").write_text("old")
     assert calibrate(*arguments).code == 0
-    assert sorted(p.name for p in out.iterdir()) == ["candidates.csv", "figures", "fit.json"]
+    assert sorted(p.name for p in out.iterdir()) == ["candidates.csv", "figures", "fit.html", "fit.json"]
 
 
 @pytest.mark.parametrize(
@@ -101,3 +105,64 @@ def test_wrong_input_is_told_and_nothing_written(study, calibrate, tmp_path, arg
     assert (ended.code, ended.out) == (2, "")
     assert message in ended.err
     assert not (tmp_path / "fits").exists()
+
+
+LIFE = (
+    "t,state\n"
+    + "".join(f"{x},failed\n" for x in (54, 187, 216, 240, 244, 335, 361, 373, 375, 386))
+    + "500,survived\n" * 10
+)
+
+
+def test_survivors_tests_lots_and_a_characteristic_value(study, calibrate):
+    # NIST/SEMATECH e-Handbook, section 8.4.1.3: ten of twenty units failed by 500 hours; printed scale 606.5280,
+    # shape 1.7208 (recalled from memory, recomputed).
+    file = study.with_name("life.csv")
+    file.write_text(LIFE, encoding="utf-8")
+    arguments = ["fit", file, "--column", "t", "--unit", "hour", "--censored", "state", "--family", "weibull"]
+    content = json.loads(calibrate(*arguments, "--json").out)
+    (found,) = content["candidates"]
+    assert math.isclose(found["parameters"]["scale"], 606.528, rel_tol=1e-5)
+    assert math.isclose(found["parameters"]["shape"], 1.7208, rel_tol=1e-4)
+    assert found["anderson_darling"] is None
+    assert (content["n"], content["n_exact"], content["tests_of_fit"]) == (20, 10, {})
+    low, high = content["intervals"]["parameters"]["shape"]
+    assert low < 1.7208 < high
+    shown = calibrate(*arguments).out
+    assert "10 survived" in shown
+    ignored = calibrate(*arguments, "--method", "moments")
+    assert ignored.code == 2
+    assert "right-censored" in ignored.err
+    assert "would misread" in ignored.err
+
+
+def test_a_characteristic_value_is_that_of_the_table(column, calibrate):
+    content = json.loads(
+        calibrate(
+            "fit", *column, "--family", "normal", "--fractile", 0.05, "--confidence", 0.75, "--json"
+        ).out
+    )
+    value = content["characteristic"]
+    # k for n = 12 from the non-central t: between 2.1037 (n = 10) and 1.9908 (n = 15), EN 14358 and ISO 16269-6.
+    assert 1.9908 < value["factor"] < 2.1037
+    assert value["value"] < value["point_estimate"]
+    assert "5 % fractile at 75 % confidence" in value["statement"]
+    assert calibrate("fit", *column, "--confidence", 0.75).code == 2
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (["--method", "lower_tail"], "needs fraction"),
+        (["--method", "lower_tail", "--option", "fraction"], "is no option of a method"),
+        (["--method", "lower_tail", "--option", "fraction=2"], "must lie above 0 and not above 1"),
+        (["--option", "cov=0.1"], "has no option cov"),
+        (["--lot", "batch"], "no column 'batch'"),
+        (["--above", "1000"], "is 461, but only"),
+    ],
+)
+def test_wrong_options_are_refused_in_words(column, calibrate, arguments, words):
+    ended = calibrate("fit", *column, "--family", "normal", *arguments)
+    assert ended.code == 2
+    assert words in " ".join(ended.err.split())
+    assert "Traceback" not in ended.err
