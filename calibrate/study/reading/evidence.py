@@ -91,6 +91,8 @@ def read_declared(
             continue
         place = ("records", name, "declared")
         texts = stated if isinstance(stated, list) else [stated, stated]
+        if not all(isinstance(text, (str, int, float)) for text in texts):
+            continue  # reported with the records
         if len(texts) != 2:
             reading.problem("must be one nominal value, or the two ends of a range.", place)
             continue

@@ -62,6 +62,24 @@ def _families(raw: Any) -> list[str]:
         raise PydanticCustomError("calibrate_families", "families") from None
 
 
+def _exponent(raw: Any) -> float | str:
+    if raw == "fit":
+        return str(raw)
+    if isinstance(raw, bool) or not isinstance(raw, (int, float)) or not math.isfinite(raw):
+        raise PydanticCustomError("calibrate_exponent", "a number")
+    return float(raw)
+
+
+def _entry(raw: Any) -> str | float | bool:
+    if not isinstance(raw, (str, bool, int, float)):
+        raise PydanticCustomError("calibrate_entry", "an entry")
+    return raw
+
+
+def _value_or_range(raw: Any) -> list[float | str]:
+    return [_value(v) for v in raw] if isinstance(raw, list) else [_value(raw)]
+
+
 Number = float
 Positive = Annotated[float, Field(gt=0)]
 Text = Annotated[str, AfterValidator(_text)]
@@ -96,7 +114,7 @@ class ExcludeTable(Section):
     reason: Text
     row: Annotated[int, Field(ge=1)] | None = None
     where: Text | None = None
-    equals: str | float | bool | None = None
+    equals: Annotated[Any, BeforeValidator(_entry)] = None
 
 
 class UnitByTable(Section):
@@ -110,7 +128,7 @@ class CovariateTable(Section):
     """Reference conditions of one covariate."""
 
     reference: Value
-    exponent: float | Literal["fit"]
+    exponent: Annotated[Any, BeforeValidator(_exponent)]
     standard_error: Annotated[float, Field(ge=0)] = 0.0
 
 
@@ -139,7 +157,7 @@ class RecordsEntry(Section):
     measured: Text | None = None
     unit_by: UnitByTable | None = None
     normalise: dict[str, Any] = {}
-    declared: Value | list[Value] | None = None
+    declared: Annotated[list[Any] | None, BeforeValidator(_value_or_range)] = None
 
 
 class VariableEntry(Section):
@@ -324,7 +342,8 @@ def read_entry(
             )
         elif fault["type"] == "missing":
             if loc[0] not in meant:
-                reading.raw_problem(f"the key '{loc[0]}' is missing in [{reading.dotted(place)}].", place)
+                inside = (*place, *loc[:-1])
+                reading.raw_problem(f"the key '{loc[-1]}' is missing in [{reading.dotted(inside)}].", inside)
         else:
             reading.problem(*_told(fault, (*place, *loc)))
     dropped = frozenset(str(f["loc"][0]) for f in faults if f["type"] != "missing")

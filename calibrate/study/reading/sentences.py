@@ -78,6 +78,8 @@ _REQUIREMENTS = {
     "string_type": "a text",
     "finite_number": "a finite number",
     "greater_than": "greater than {gt}",
+    "less_than": "less than {lt}",
+    "model_type": "a table with keys",
     "greater_than_equal": "at least {ge}",
     "dict_type": "a table of named entries",
     "list_type": "an array",
@@ -85,6 +87,8 @@ _REQUIREMENTS = {
     "calibrate_one_line": "one line of text",
     "calibrate_value": 'a number, a text such as "500 MPa", or an expression in quotation marks',
     "calibrate_names": "a name or an array of names",
+    "calibrate_exponent": 'a number, or "fit"',
+    "calibrate_entry": "a text, a number, or true or false",
     "calibrate_families": 'the name of a family, an array of such names, or "best"',
 }
 
