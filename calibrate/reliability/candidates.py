@@ -105,10 +105,17 @@ class Candidates:
             found |= np.isfinite(distance) & other & (special.log_ndtr(-distance) > least)
         return found
 
-    def stuck(self, nearest: Array) -> Flags:
-        """Return where a search got stuck on the limit state, nearer than the nearest candidate."""
+    def unfinished(self, most: int) -> Flags:
+        """Return which searches, (slots, n), used up ``most`` passes and came to no end."""
+        return np.asarray((self.code == TOO_MANY) & (self.passes >= most))
+
+    def stuck(self, nearest: Array, most: int) -> Flags:
+        """Return where a search got stuck on the limit state, nearer than the nearest candidate.
+
+        At a corner of more than two branches searches wander without end; ``most`` is their number of passes.
+        """
         radius = np.sqrt(np.sum(self.end**2, axis=0))
-        stuck = (self.code == KINK) & (self.off < ON_SURFACE)
+        stuck = ((self.code == KINK) | self.unfinished(most)) & (self.off < ON_SURFACE)
         return np.asarray(np.any(stuck & (radius < nearest * (1.0 - NEARER)), axis=0))
 
     def points(self, slot: Counts) -> Points:

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 import numpy.typing as npt
 
-from calibrate.reliability.candidates import Candidates
+from calibrate.reliability.candidates import NEARER, Candidates
 from calibrate.reliability.descent import BISECTIONS, STEPS, reach_other_side
 from calibrate.reliability.directions import RADII, axes, between, corners, scan, unit
 from calibrate.reliability.kink import meet
@@ -96,7 +96,7 @@ def _resolve(problem: Problem, found: Points, passes: Counts, settings: FormSett
     side = np.where(g < 0.0, -1.0, 1.0)
     direction, always = _directions(problem, found, a, side)
     slots = always.size
-    found = _crossing(problem, found, side)
+    found = replace(found, good=found.good & _crosses(problem, found, found.u, side))
     pool = Candidates.empty(m, slots + 1, side)
     pool.put(np.full(n, slots), np.arange(n), found, np.where(found.good, CONVERGED, TOO_MANY), passes)
     # Slot s of situation j is column s n + j of everything wide.
@@ -156,29 +156,37 @@ def _run(wide: Problem, start: Array, at: Counts, pool: Candidates, settings: Fo
     part = wide.take(at, at.size)
     result = search(part, start[:, at], settings)
     slot, column = np.divmod(at, pool.side.size)
-    points = _crossing(part, settle(part, result.u), pool.side[column])
+    points = settle(part, result.u)
+    crosses = _crosses(part, points, result.u, pool.side[column])
+    points = replace(points, good=points.good & crosses)
     pool.put(slot, column, points, result.code, result.passes)
     pool.end[:, slot, column] = result.u
     # By the linearisation at the end of the search, g/|a| = beta + alpha u.
-    pool.off[slot, column] = np.abs(points.beta + dot(points.alpha, result.u))
+    off = np.abs(points.beta + dot(points.alpha, result.u))
+    # The end of a search that wandered says something only where a failure is seen beside it.
+    pool.off[slot, column] = np.where(crosses | (result.code == KINK), off, np.inf)
     return int(np.sum(result.passes)) + 2 * at.size
 
 
-def _crossing(problem: Problem, points: Points, side: Array) -> Points:
-    """Return the points, good only where the limit state has the other sign just beyond.
+def _crosses(problem: Problem, points: Points, end: Array, side: Array) -> npt.NDArray[np.bool_]:
+    """Return where the limit state has the other sign just beyond the points, or the ends where there are none.
 
     A limit state may touch zero and turn back, as ``abs`` and squares do. And a step of the linearisation may be
     short without a zero nearby, where the gradient grows without bound, as at the end of a root.
     """
-    beyond = np.where(points.good, points.alpha, 0.0) * -(points.beta + side * BEYOND)
-    return replace(points, good=points.good & (side * problem.value(beyond) < 0.0))
+    # Of an end that counts as nearer than a design point this is nearer still.
+    further = end * (1.0 + 0.5 * NEARER)
+    beyond = np.where(points.good, -(points.beta + side * BEYOND) * points.alpha, further)
+    return np.asarray(side * problem.value(beyond) < 0.0)
 
 
 def _kinks(wide: Problem, pool: Candidates, seen: Array, settings: FormSettings) -> int:
     """Where searches failed and nothing better explains it, look for kinks at their ends; return the evaluations."""
     nearest = pool.best()[1]
     needed = (
-        (np.isinf(nearest) & np.isfinite(seen)) | (seen < nearest * (1.0 - CONTRADICTS)) | pool.stuck(nearest)
+        (np.isinf(nearest) & np.isfinite(seen))
+        | (seen < nearest * (1.0 - CONTRADICTS))
+        | pool.stuck(nearest, settings.search_passes)
     )
     tried = ~np.isnan(pool.end[0]) & ((pool.code == KINK) | (pool.code == TOO_MANY))
     slot, column = np.nonzero(tried & needed)
@@ -206,13 +214,13 @@ def _judged(
     code[pool.several(slot, nearest, settings.several)] = SEVERAL
     # Nothing is told that was contradicted: a failure seen nearer, a search that got stuck nearer.
     code[seen < nearest * (1.0 - CONTRADICTS)] = HIDDEN
-    code[pool.stuck(nearest)] = KINK
+    code[pool.stuck(nearest, settings.search_passes)] = KINK
     code[~some & (pool.side > 0.0)] = NO_FAILURE
     code[~some & (pool.side < 0.0)] = NO_SAFETY
     code[~some & np.isinf(seen) & undefined] = NOT_FINITE
     crossed = ~some & np.isfinite(seen)
     code[crossed] = KINK
-    unfinished = (pool.code == TOO_MANY) & (pool.passes >= settings.search_passes)
+    unfinished = pool.unfinished(settings.search_passes)
     ends = ((TOO_MANY, unfinished), (NOT_FINITE, pool.code == NOT_FINITE), (KINK, pool.code == KINK))
     for reason, where in ends:
         code[crossed & np.any(where, axis=0)] = reason
