@@ -11,6 +11,7 @@ J. F. Lawless, Statistical Models and Methods for Lifetime Data, 2nd ed., Wiley 
 
 from __future__ import annotations
 
+import contextlib
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -18,15 +19,23 @@ from dataclasses import dataclass
 import numpy as np
 
 from calibrate.distributions import Distribution, family
+from calibrate.fitting.bound_probabilities import log_probability
 from calibrate.fitting.jets import Array, Number, seed, total
 from calibrate.fitting.likelihood import Estimate, standardised
 from calibrate.fitting.model import Data, Model, NoMaximumError, Rule
-from calibrate.fitting.newton import maximise
+from calibrate.fitting.newton import Maximum, maximise
+from calibrate.fitting.paper import PAPERS
 from calibrate.fitting.registry import model_of
 from calibrate.records.observations import Observations
 
 DIFFERENCE = 2e-5
-"""Step of the differences of the exact gradient that give the Hessian, in the free coordinates."""
+"""Step of the differences of the gradient of probabilities that give their Hessian, in the free coordinates."""
+
+FLAT = 1e-10
+"""Information per specimen, in the free coordinates, below which a top is a plateau: rounding gives about 1e-12."""
+
+CERTAIN = -1e-8
+"""Mean log-probability of bounds above which all of them hold with certainty, and no maximum is left to find."""
 
 
 def censored_likelihood(
@@ -37,7 +46,6 @@ def censored_likelihood(
     Parameters
     ----------
     seen : Observations
-        At least two different exact values or finite intervals.
     model : Model
     fixed : mapping
         Values of all other parameters, in the unit of the sample.
@@ -46,28 +54,34 @@ def censored_likelihood(
 
     Notes
     -----
-    The gradient is exact: that of densities by forward differentiation, that of probabilities from
-    dF/dp = -f dx/dp at fixed u. The observed information is its central difference.
+    The gradient is exact. So is the Hessian of the densities; that of the probabilities of bounds is the central
+    difference of their gradient.
     """
+    boundless = _boundless(model, seen, free)
+    if boundless:
+        return Estimate.failed(free, boundless)
     search = search_of(seen, model.family, fixed, free)
     data = search.data
     with np.errstate(all="ignore"):
-        try:
-            starts = [search.coordinates(p) for p in model.starts(data.z, search.fixed)]
-        except NoMaximumError:
-            starts = [search.coordinates({**search.fixed, **_rough(data.z, search.free)})]
-        tops = [maximise(search, t) for t in starts]
+        tops = []
+        for t in _starts(search):
+            tops.append(maximise(search, t))
+            if tops[-1].converged and _one_top(search):
+                break
         top = max(tops, key=lambda m: (m.converged, m.value if math.isfinite(m.value) else -math.inf))
         p = search.parameters(top.t)
-        if not top.converged:
+        if not top.converged or _plateau(search, top):
             return Estimate.failed(free, _obstacle(model, data.z, p, seen))
         stretch = np.array([data.stretch(r.kind) * search.slope(r, p[r.name]) for r in search.free])
         covariance = np.linalg.inv(-top.hessian * data.n) * np.outer(stretch, stretch)
+    irregular = model.irregular(p, free)
+    if irregular is not None:
+        covariance = np.full_like(covariance, np.nan)
     outward = {r.name: fixed.get(r.name, data.outward(r.kind, p[r.name])) for r in model.rules}
     exact = int(np.count_nonzero(seen.exact))
-    return Estimate(
-        outward, free, 0.5 * (covariance + covariance.T), data.n * top.value - exact * math.log(data.unit)
-    )
+    log_likelihood = data.n * top.value - exact * math.log(data.unit)
+    notes = (("not-regular", irregular),) if irregular is not None else ()
+    return Estimate(outward, free, 0.5 * (covariance + covariance.T), log_likelihood, "", notes)
 
 
 def search_of(seen: Observations, name: str, fixed: Mapping[str, float], free: tuple[str, ...]) -> Search:
@@ -92,7 +106,11 @@ def search_of(seen: Observations, name: str, fixed: Mapping[str, float], free: t
         (seen.below - data.shift) / data.unit,
     )
     inner = {p: data.inward(rules[p].kind, value) for p, value in fixed.items()}
-    return Search(model, data, scaled, inner, tuple(rules[p] for p in free))
+    exact = scaled.exact
+    return Search(
+        model, data, scaled, inner, tuple(rules[p] for p in free),
+        scaled.lower[exact], scaled.lower[~exact], scaled.upper[~exact],
+    )  # fmt: skip
 
 
 def log_likelihood(law: Distribution, seen: Observations) -> float:
@@ -101,35 +119,76 @@ def log_likelihood(law: Distribution, seen: Observations) -> float:
         exact = seen.exact
         value = float(np.sum(law.logpdf(seen.lower[exact])))
         if not exact.all():
-            value += float(np.sum(_log_probability(law, seen.lower[~exact], seen.upper[~exact])))
+            value += float(np.sum(log_probability(law, seen.lower[~exact], seen.upper[~exact])[0]))
         if seen.truncated:
-            limits = _log_probability(law, np.array([seen.above]), np.array([seen.below]))
+            limits, _ = log_probability(law, np.array([seen.above]), np.array([seen.below]))
             value -= seen.n * float(limits[0])
     return value if not math.isnan(value) else -math.inf
 
 
-def _log_probability(law: Distribution, lower: Array, upper: Array) -> Array:
-    below, above = _end(law, lower, ()), _end(law, upper, ())
-    return _between(below, above)
+def _boundless(model: Model, seen: Observations, free: tuple[str, ...]) -> str:
+    """Say why it is already plain that the likelihood has no maximum, or return an empty text."""
+    for bounded, side in ((seen.right, "above"), (seen.left, "below")):
+        if bounded.all():
+            return f"every specimen is only known to lie {side} its bound, and no family fits that best"
+    exact = seen.lower[seen.exact]
+    scatter_free = len(free) > 1 and (model.family != "student_t" or "scale" in free)
+    if exact.size and scatter_free and np.ptp(exact) == 0.0:
+        value = exact[0]
+        if np.all((seen.lower <= value) & (value <= seen.upper)):
+            return (
+                f"all values observed exactly are {value:.12g}, which every bound allows, and the likelihood of any "
+                "family with scatter grows without bound around it"
+            )
+    return ""
 
 
-def _obstacle(model: Model, z: Array, p: Mapping[str, float], seen: Observations) -> str:
-    if seen.n_exact == 0:
-        return "no specimen was observed exactly, and the bounds alone do not determine a maximum of the likelihood"
-    if seen.truncated:
-        return f"{model.obstacle(z, p)}; within the truncation limits the sample may not tell the scatter"
-    return model.obstacle(z, p)
+def _starts(search: Search) -> list[Array]:
+    z = search.data.z
+    if np.ptp(z) > 0.0:
+        with contextlib.suppress(NoMaximumError):
+            return [search.coordinates(p) for p in search.model.starts(z, search.fixed)]
+    return [search.coordinates({**search.fixed, **_rough(search)})]
 
 
-def _rough(z: Array, free: tuple[Rule, ...]) -> dict[str, float]:
-    spread = float(np.std(z)) or 1.0
+def _one_top(search: Search) -> bool:
+    """Whether the likelihood has no more than one maximum.
+
+    So it is for location and scale of log-concave densities, seen exactly or by bounds (J. Burridge, J. R. Statist.
+    Soc. B 43 (1981) 41-45, from memory), which those of the families with a paper are on it.
+    """
+    kinds = {rule.kind for rule in search.free}
+    return search.model.family in PAPERS and "threshold" not in kinds and not search.seen.truncated
+
+
+def _rough(search: Search) -> dict[str, float]:
+    z, seen = search.data.z, search.seen
+    widths = (seen.upper - seen.lower)[seen.interval]
+    spread = float(np.std(z)) or 0.25 * float(np.mean(widths) if widths.size else 4.0)
     guess = {
         "location": float(np.mean(z)),
         "scale": spread,
         "shape": 1.0,
         "threshold": float(np.min(z)) - spread,
     }
-    return {rule.name: guess[rule.kind] for rule in free}
+    return {rule.name: guess[rule.kind] for rule in search.free}
+
+
+def _plateau(search: Search, top: Maximum) -> bool:
+    """Whether the top is level: the sample leaves a direction in which no value is better than another."""
+    certain = not search.seen.exact.any() and top.value > CERTAIN
+    return certain or float(np.linalg.eigvalsh(-top.hessian)[0]) < FLAT
+
+
+def _obstacle(model: Model, z: Array, p: Mapping[str, float], seen: Observations) -> str:
+    told = model.obstacle(z, p)
+    if told != Model.obstacle(model, z, p):
+        return told
+    if seen.n_exact == 0:
+        return "no specimen was observed exactly, and the bounds alone do not determine a maximum of the likelihood"
+    if seen.truncated:
+        return f"{told}; within the truncation limits the sample may not tell the scatter"
+    return told
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -146,6 +205,10 @@ class Search:
     fixed : mapping
         Scaled.
     free : tuple of Rule
+    exact : array
+        Values observed exactly, scaled.
+    lower, upper : array, shape (k,)
+        Bounds of all others, scaled.
     """
 
     model: Model
@@ -153,6 +216,9 @@ class Search:
     seen: Observations
     fixed: Mapping[str, float]
     free: tuple[Rule, ...]
+    exact: Array
+    lower: Array
+    upper: Array
 
     @property
     def lowest(self) -> float:
@@ -189,105 +255,69 @@ class Search:
 
     def __call__(self, t: Array) -> tuple[float, Array, Array]:
         """Return value, gradient and Hessian; value -inf where the point is not allowed."""
-        value, gradient = self.first(t)
         count = len(self.free)
-        hessian = np.full((count, count), np.nan)
-        if not math.isfinite(value):
-            return -math.inf, np.full(count, np.nan), hessian
+        nowhere = (-math.inf, np.full(count, np.nan), np.full((count, count), np.nan))
+        p = self._allowed(t)
+        if p is None:
+            return nowhere
+        value, gradient, hessian = self._exact_part(p)
+        if self.seen.complete:
+            return self._mean(value, gradient, hessian)
+        more, slope = self._bounds_part(p)
+        bends = np.empty((count, count))
         for i in range(count):
-            step = np.zeros(count)
-            step[i] = DIFFERENCE
-            hessian[i] = (self.first(t + step)[1] - self.first(t - step)[1]) / (2.0 * DIFFERENCE)
-        return value, gradient, 0.5 * (hessian + hessian.T)
+            step = DIFFERENCE * np.eye(count)[i]
+            up, down = (self._bounds_part(self.parameters(t + s))[1] for s in (step, -step))
+            bends[i] = (up - down) / (2.0 * DIFFERENCE)
+        return self._mean(value + more, gradient + slope, hessian + 0.5 * (bends + bends.T))
 
     def first(self, t: Array) -> tuple[float, Array]:
         """Return value and exact gradient."""
-        nowhere = (-math.inf, np.full(len(self.free), np.nan))
+        p = self._allowed(t)
+        if p is None:
+            return -math.inf, np.full(len(self.free), np.nan)
+        value, gradient, _ = self._exact_part(p)
+        more, slope = self._bounds_part(p)
+        return self._mean(value + more, gradient + slope, np.zeros((0, 0)))[:2]
+
+    def _mean(self, value: float, gradient: Array, hessian: Array) -> tuple[float, Array, Array]:
+        if not (math.isfinite(value) and np.all(np.isfinite(gradient))):
+            return -math.inf, np.full_like(gradient, np.nan), np.full_like(hessian, np.nan)
+        n = self.seen.n
+        return value / n, gradient / n, hessian / n
+
+    def _allowed(self, t: Array) -> dict[str, float] | None:
         if np.max(np.abs(t)) > 300.0:
-            return nowhere
+            return None
         p = self.parameters(t)
+        exact = self.exact if self.exact.size > 1 else self.seen.values
+        return p if self.model.allowed(exact, p) else None
+
+    def _exact_part(self, p: Mapping[str, float]) -> tuple[float, Array, Array]:
+        count = len(self.free)
+        if not self.exact.size:
+            return 0.0, np.zeros(count), np.zeros((count, count))
+        seeded: dict[str, Number] = dict(p)
+        for i, rule in enumerate(self.free):
+            slope = self.slope(rule, p[rule.name])
+            bend = slope if rule.positive or rule.kind == "threshold" else 0.0
+            seeded[rule.name] = seed(i, count, p[rule.name], slope, bend)
+        return total(self.model.log_density(self.exact, seeded), self.exact.size)
+
+    def _bounds_part(self, p: Mapping[str, float]) -> tuple[float, Array]:
+        """Return value and gradient of what bounds and truncation contribute."""
         seen = self.seen
-        exact = seen.lower[seen.exact]
         value, gradient = 0.0, np.zeros(len(self.free))
-        if exact.size:
-            if not self.model.allowed(exact, p):
-                return nowhere
-            seeded: dict[str, Number] = dict(p)
-            for i, rule in enumerate(self.free):
-                seeded[rule.name] = seed(i, len(self.free), p[rule.name], self.slope(rule, p[rule.name]), 0.0)
-            value, gradient, _ = total(self.model.log_density(exact, seeded), exact.size)
+        if seen.complete:
+            return value, gradient
         member = family(self.model.family)
         law = Distribution.of(member, tuple(np.asarray(p[name]) for name in member.parameter_names))
-        inexact = ~seen.exact
-        if inexact.any():
-            log_p, slopes = self._probability(law, p, seen.lower[inexact], seen.upper[inexact])
-            value += float(np.sum(log_p))
-            gradient = gradient + np.sum(slopes, axis=1)
+        names = tuple(rule.name for rule in self.free)
+        if self.lower.size:
+            log_p, slopes = log_probability(law, self.lower, self.upper, names)
+            value, gradient = float(np.sum(log_p)), np.sum(slopes, axis=1)
         if seen.truncated:
-            log_p, slopes = self._probability(law, p, np.array([seen.above]), np.array([seen.below]))
+            log_p, slopes = log_probability(law, np.array([seen.above]), np.array([seen.below]), names)
             value -= seen.n * float(log_p[0])
             gradient = gradient - seen.n * slopes[:, 0]
-        if not (math.isfinite(value) and np.all(np.isfinite(gradient))):
-            return nowhere
-        return value / seen.n, gradient / seen.n
-
-    def _probability(
-        self, law: Distribution, p: Mapping[str, float], lower: Array, upper: Array
-    ) -> tuple[Array, Array]:
-        """Return ln P(lower < x < upper), and its derivatives by the free coordinates, shape (f, k)."""
-        below, above = _end(law, lower, self.free), _end(law, upper, self.free)
-        log_p = _between(below, above)
-        slopes = np.array(
-            [
-                (below.weight(name, log_p) - above.weight(name, log_p)) * self.slope(rule, p[rule.name])
-                for name, rule in ((rule.name, rule) for rule in self.free)
-            ]
-        )
-        return log_p, slopes
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class _End:
-    """Probabilities at one end of intervals, and dx/dp at fixed u there."""
-
-    log_cdf: Array
-    log_sf: Array
-    log_density: Array
-    slopes: Mapping[str, Array]
-
-    def weight(self, name: str, log_p: Array) -> Array:
-        """Return f dx/dp over the interval's probability; 0 at an infinite end."""
-        ratio = np.exp(self.log_density - log_p)
-        return np.where(ratio > 0.0, ratio * self.slopes[name], 0.0)
-
-
-def _end(law: Distribution, x: Array, free: tuple[Rule, ...]) -> _End:
-    finite = np.isfinite(x)
-    median = float(law.x(0.0))
-    safe = np.where(finite, x, median)
-    u = law.u(safe)
-    inside = finite & np.isfinite(u)
-    slopes = law.parameter_slopes(np.where(inside, u, 0.0))
-    low, high = x == -np.inf, x == np.inf
-    log_cdf = np.where(low, -np.inf, np.where(high, 0.0, law.logcdf(safe)))
-    log_sf = np.where(low, 0.0, np.where(high, -np.inf, law.logsf(safe)))
-    log_density = np.where(inside, law.logpdf(safe), -np.inf)
-    return _End(
-        log_cdf, log_sf, log_density, {r.name: np.broadcast_to(slopes[r.name], x.shape) for r in free}
-    )
-
-
-def _between(below: _End, above: _End) -> Array:
-    """Return the log-probability between two ends, as a difference in the tail in which it does not cancel."""
-    low_tail = below.log_cdf + above.log_cdf < below.log_sf + above.log_sf
-    return np.where(
-        low_tail,
-        _log_difference(above.log_cdf, below.log_cdf),
-        _log_difference(below.log_sf, above.log_sf),
-    )
-
-
-def _log_difference(larger: Array, smaller: Array) -> Array:
-    """Return ln(exp(larger) - exp(smaller))."""
-    gap = smaller - larger
-    return np.asarray(larger + np.where(gap > -0.693, np.log(-np.expm1(gap)), np.log1p(-np.exp(gap))))
+        return value, gradient * np.array([self.slope(rule, p[rule.name]) for rule in self.free])

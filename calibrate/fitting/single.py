@@ -58,7 +58,7 @@ def fit_one(seen: Observations, choice: Choice) -> Fit:
     refusal = model.refusal(x, settled.fixed)
     if refusal is not None:
         raise InputError(f"The family '{model.family}' cannot be fitted: {refusal}.")
-    if _all_equal(x) and model.family != "exponential" and not seen.interval.any():
+    if _all_equal(x) and model.family != "exponential" and seen.exact.any() and not seen.interval.any():
         reason = "all values are equal, and the likelihood of any family with scatter grows without bound"
         return no_fit(seen, choice, settled.free, reason)
     found = method.estimate(seen, model, settled.fixed, settled.free, choice.options)
