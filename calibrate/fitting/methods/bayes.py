@@ -78,15 +78,15 @@ class Bayes(Method):
             predictive = ("student_t", {"location": centre, "scale": wide, "freedom": freedom})
         law = Distribution.of(family(model.family), tuple(np.asarray(v) for v in values.values()))
         notes = [("prior-knowledge", _words(options, n))]
-        distance = abs(mean - prior_mean) / (
-            prior_sd * math.sqrt(1.0 / n + (1.0 / prior_n if prior_n > 0 else 0.0))
-        )
-        if prior_n > 0.0 and distance > 2.0:
-            message = (
-                f"The mean of the sample lies {distance:.1f} standard errors from the prior mean; the prior and "
-                "the sample may not be of one population."
-            )
-            notes.append(("prior-contradicted", message))
+        if prior_n > 0.0:
+            within = prior_sd if prior_nu > 0.0 else float(np.std(x, ddof=1))
+            distance = abs(mean - prior_mean) / (within * math.sqrt(1.0 / n + 1.0 / prior_n))
+            if distance > 2.0:
+                message = (
+                    f"The mean of the sample lies {distance:.1f} standard errors from the prior mean; the prior and "
+                    "the sample may not be of one population."
+                )
+                notes.append(("prior-contradicted", message))
         return Estimate(
             values, free, stretch @ log_covariance @ stretch, float(np.sum(law.logpdf(seen.values))), "",
             tuple(notes), None, predictive,
@@ -103,6 +103,10 @@ def _prior(options: Mapping[str, float], *, logarithmic: bool) -> tuple[float, f
     if not math.isfinite(mean) or (logarithmic and mean <= 0.0):
         raise InputError(
             f"prior_mean must be {'positive' if logarithmic else 'a finite number'}; got {mean:g}."
+        )
+    if mean == 0.0 and nu > 0.0:
+        raise InputError(
+            "prior_mean must not be zero where prior_nu counts: a cov says nothing of its scatter."
         )
     if not logarithmic:
         return mean, cov * abs(mean), n, nu

@@ -5,6 +5,9 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import replace
 
+import numpy as np
+
+from calibrate.distributions import Distribution, family
 from calibrate.fitting.censored import censored_likelihood
 from calibrate.fitting.likelihood import Estimate, maximum_likelihood
 from calibrate.fitting.methods.base import INTERVAL, LEFT, RIGHT, TRUNCATED, Method
@@ -73,4 +76,6 @@ class UnbiasedWeibull(Method):
         i = free.index("shape")
         covariance[i] *= ratio
         covariance[:, i] *= ratio
-        return replace(found, parameters=parameters, covariance=covariance, log_likelihood=float("nan"))
+        law = Distribution.of(family(model.family), tuple(np.asarray(v) for v in parameters.values()))
+        density = float(np.sum(law.logpdf(seen.values)))
+        return replace(found, parameters=parameters, covariance=covariance, log_likelihood=density)

@@ -64,7 +64,8 @@ class LowerTail(Method):
             raise InputError(f"The fraction of the tail must lie above 0 and not above 1; got {fraction:g}.")
         values = seen.values
         order = np.sort(values if self.lower else -values)
-        count = min(max(math.ceil(fraction * seen.n), parameters + 1), seen.n)
+        share = math.ceil(fraction * seen.n * (1.0 - 1e-12))  # 0.07 of 100 values are 7, not 8
+        count = min(max(share, parameters + 1), seen.n)
         cut = float(order[count - 1]) if self.lower else -float(order[count - 1])
         if self.lower:
             beyond = values > cut
