@@ -61,10 +61,7 @@ def test_without_prior_knowledge_the_prediction_is_that_of_en_1990(family):
 def test_what_is_not_counted_does_not_matter(family):
     other = updated(X, family, prior_mean=900.0, prior_cov=2.0)
     assert other.parameters == updated(X, family).parameters
-    assert [d.code for d in other.doubts] == [
-        "few-values",
-        "prior-knowledge",
-    ] or "prior-contradicted" not in {d.code for d in other.doubts}
+    assert "prior-contradicted" not in {d.code for d in other.doubts}
 
 
 def test_overwhelming_knowledge_stays():

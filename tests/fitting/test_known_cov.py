@@ -77,13 +77,13 @@ def test_only_the_level_is_uncertain_and_counted(family):
     assert found.aicc == pytest.approx(-2 * found.log_likelihood + 2 * N / (N - 2), rel=1e-12)
 
 
-@pytest.mark.parametrize("family", CLOSED)
+@pytest.mark.parametrize("family", ["normal", "gumbel", "weibull"])
 def test_standard_error_of_the_level_is_its_scatter(family):
     law, rng = distribution(family, mean=30.0, cov=COV), np.random.default_rng(6)
-    fits = [known(family, x) for x in law.sample(rng, (300, 20))]
+    fits = [known(family, x) for x in law.sample(rng, (200, 20))]
     level = next(iter(p for p, e in fits[0].standard_errors.items() if e > 0.0))
     scatter = np.std([f.parameters[level] for f in fits], ddof=1)
-    assert np.mean([f.standard_errors[level] for f in fits]) == pytest.approx(scatter, rel=4 / math.sqrt(600))
+    assert np.mean([f.standard_errors[level] for f in fits]) == pytest.approx(scatter, rel=4 / math.sqrt(400))
 
 
 def test_a_negative_mean_has_no_cov():

@@ -59,8 +59,7 @@ def test_size_of_the_tail(fraction, n, count):
 
 
 def test_specimens_that_did_not_fail_stay_bounds():
-    limit = 35.0
-    seen = Observations(np.minimum(X, limit), np.where(X > limit, INF, X))
+    seen = Observations(np.minimum(X, 35.0), np.where(X > 35.0, INF, X))
     found = tail(seen, "weibull", "lower", 0.25)
     assert_same(found, fit_family(explicit(X, "lower", 10), "weibull"), 1e-8)
 
