@@ -21,7 +21,7 @@ INFLUENTIAL = 0.25
 
 ODD = 0.02
 """Chance of an extreme of a Weibull or Gumbel sample below which it is doubted; since the moments without the suspect
-flatter the rest, about 5 % of such samples are."""
+flatter the rest, 5 to 10 % of such samples are."""
 
 Namer = Callable[[int], str]
 

@@ -34,7 +34,7 @@ class EsdStep:
     value : float
         As in the sample, on either scale.
     distance : float
-        ``R_i``, in standard deviations.
+        ``R_i``, in standard deviations; within lots, a studentised residual.
     critical : float
         ``lambda_i``.
     chance : float or None
@@ -59,7 +59,7 @@ class Esd:
     ----------
     scale : {"raw", "logarithmic"}
     within_lots : bool
-        Whether values were divided by the mean of their lot.
+        Whether distances are those from the mean of the lot.
     steps : tuple of EsdStep
         All that were tried, in order.
     n_outliers : int
@@ -134,8 +134,8 @@ def generalised_esd(
        e-Handbook 1.3.5.17.3 (from memory, recomputed).
     """
     x = np.asarray(values, dtype=np.float64)
-    scale: Scale = "logarithmic" if logarithmic else "raw"
-    return _esd(_Tested(x, np.arange(x.size), scale, within_lots=False), x, level, most)
+    one_lot = np.zeros(x.size, dtype=np.int64)
+    return _esd(x, one_lot, "logarithmic" if logarithmic else "raw", level, most, within_lots=False)
 
 
 def esd_within_lots(
@@ -157,74 +157,93 @@ def esd_within_lots(
     tuple of Esd
         On the raw scale (ratios to the lot's mean) and, where all values that
         take part are positive, on the logarithmic one. Empty where fewer than
-        two lots take part.
-
-    Notes
-    -----
-    Distances in a lot of m are enlarged by ``sqrt(m/(m-1))``, so that all have
-    the same variance in spite of the estimated mean.
+        two lots take part. Distances are studentised residuals of the lots'
+        means, which are computed anew when a value has been taken out.
     """
     x = np.asarray(values, dtype=np.float64)
     names, codes = coded(lots)
-    means, sizes = _group_means(x, codes, len(names))
+    sizes = np.bincount(codes + 1, minlength=len(names) + 1)[1:]
+    means = np.bincount(codes + 1, weights=x, minlength=len(names) + 1)[1:] / np.maximum(sizes, 1)
     fit = (sizes >= _LEAST_IN_LOT) & (means > 0.0)
     if np.count_nonzero(fit) < 2:
         return ()
     at = np.flatnonzero(np.append(fit, False)[codes])
-    lot = codes[at]
-    larger = np.sqrt(sizes[lot] / (sizes[lot] - 1.0))
-    ratio = 1.0 + larger * (x[at] / means[lot] - 1.0)
-    tests = [_esd(_Tested(ratio, at, "raw", within_lots=True), x, level, None)]
-    if x[at].min() > 0.0:
-        logs = np.zeros(x.size)
-        logs[at] = np.log(x[at])
-        ratio = np.exp(larger * (logs[at] - _group_means(logs, codes, len(names))[0][lot]))
-        tests.append(_esd(_Tested(ratio, at, "logarithmic", within_lots=True), x, level, None))
-    return tuple(tests)
+    ratio = x[at] / means[codes[at]]
+    lot = np.unique(codes[at], return_inverse=True)[1].astype(np.int64)
+    scales: tuple[Scale, ...] = ("raw", "logarithmic") if ratio.min() > 0.0 else ("raw",)
+    tests = (_esd(ratio, lot, scale, level, None, within_lots=True) for scale in scales)
+    return tuple(
+        replace(
+            t,
+            steps=tuple(
+                replace(s, specimen=int(at[s.specimen]), value=float(x[at[s.specimen]])) for s in t.steps
+            ),
+        )
+        for t in tests
+    )
 
 
-def _group_means(x: Array, codes: NDArray[np.int64], groups: int) -> tuple[Array, NDArray[np.int64]]:
-    sizes = np.bincount(codes + 1, minlength=groups + 1)[1:]
-    sums = np.bincount(codes + 1, weights=x, minlength=groups + 1)[1:]
-    return np.asarray(sums / np.maximum(sizes, 1)), sizes.astype(np.int64)
-
-
-@dataclass(frozen=True, slots=True)
-class _Tested:
-    """Values under test on the raw scale, and the specimens to which they belong."""
-
-    values: Array
-    at: NDArray[np.int64]
-    scale: Scale
-    within_lots: bool
-
-
-def _esd(tested: _Tested, x: Array, level: float, most: int | None) -> Esd:
-    y = np.log(tested.values) if tested.scale == "logarithmic" else tested.values
+def _esd(
+    x: Array, lot: NDArray[np.int64], scale: Scale, level: float, most: int | None, *, within_lots: bool
+) -> Esd:
+    y = np.log(x) if scale == "logarithmic" else x
     n = int(y.size)
     most = min(MOST, n // 4) if most is None else most
-    left = np.arange(n)
+    left = np.ones(n, dtype=np.bool_)
     taken: list[int] = []
     steps: list[EsdStep] = []
     found = 0
     for i in range(1, min(most, n - 2) + 1):
-        d = y[left] - y[left].mean()
-        sd = float(d.std(ddof=1))
-        if sd <= 1e-14 * float(np.abs(y[left]).max()):
+        residual, size = _residuals(y, lot, left)
+        freedom = n - i + 1 - np.unique(lot[left]).size
+        scatter = math.sqrt(float(residual[left] @ residual[left]) / freedom)
+        if scatter <= 1e-14 * float(np.abs(y[left]).max()):
             break  # the rest is equal to rounding: no scale to measure by
-        j = int(np.argmax(np.abs(d)))
-        taken.append(int(left[j]))
-        specimen = int(tested.at[taken[-1]])
-        steps.append(EsdStep(specimen, float(x[specimen]), float(abs(d[j])) / sd, critical_esd(n, i, level)))
-        if steps[-1].distance > steps[-1].critical:
+        # The one lot of the plain test is measured in standard deviations, as its author does.
+        unit = np.sqrt(1.0 - 1.0 / size) if within_lots else np.ones(n)
+        distance = np.divide(np.abs(residual), scatter * unit, out=np.zeros(n), where=left & (size > 1))
+        j = int(np.argmax(distance))
+        critical = critical_residual(n - i + 1, freedom, level) if within_lots else critical_esd(n, i, level)
+        taken.append(j)
+        steps.append(EsdStep(j, float(x[j]), float(distance[j]), critical))
+        if distance[j] > critical:
             found = i
-        left = np.delete(left, j)
-    rest = np.delete(tested.values, taken[:found])
-    named = [
-        replace(s, chance=_extreme_chance(rest, float(tested.values[j]), n))
-        for s, j in zip(steps[:found], taken, strict=False)
-    ]
-    return Esd(tested.scale, tested.within_lots, (*named, *steps[found:]), found)
+        left[j] = False
+    left = np.ones(n, dtype=np.bool_)
+    left[taken[:found]] = False
+    centred = _residuals(y, lot, left)[0] + float(y[left].mean())
+    level_values = np.exp(centred) if scale == "logarithmic" else centred
+    for k in range(found):
+        chance = _extreme_chance(level_values[left], float(level_values[taken[k]]), n)
+        steps[k] = replace(steps[k], chance=chance)
+    return Esd(scale, within_lots, tuple(steps), found)
+
+
+def _residuals(y: Array, lot: NDArray[np.int64], left: NDArray[np.bool_]) -> tuple[Array, Array]:
+    """Return distances from the mean of what is left of each lot, and how many are left there, shape (n,)."""
+    groups = int(lot.max()) + 1
+    sizes = np.maximum(np.bincount(lot[left], minlength=groups), 1)
+    centre = y[left].mean()  # first, so that no digits are lost in the sums
+    means = np.bincount(lot[left], weights=y[left] - centre, minlength=groups) / sizes
+    return (y - centre) - means[lot], sizes[lot].astype(np.float64)
+
+
+def critical_esd(n: int, i: int, level: float = LEVEL) -> float:
+    """Return the critical distance of step i in a sample of n, in standard deviations."""
+    m = n - i + 1
+    return critical_residual(m, m - 1, level) * math.sqrt((m - 1) / m)
+
+
+def critical_residual(n: int, freedom: int, level: float = LEVEL) -> float:
+    """Return the critical largest studentised residual of n with so many degrees of freedom (Bonferroni).
+
+    References
+    ----------
+    .. [1] R. E. Lund, Tables for an approximate test for outliers in linear
+       models, Technometrics 17 (1975) 473-476 (from memory, recomputed).
+    """
+    t = float(special.stdtrit(freedom - 1, 1.0 - level / (2.0 * n)))
+    return t * math.sqrt(freedom / (freedom - 1 + t * t))
 
 
 def _extreme_chance(rest: Array, value: float, n: int) -> float:
@@ -236,15 +255,10 @@ def _extreme_chance(rest: Array, value: float, n: int) -> float:
             math.log(value),
         )  # the logarithms of a Weibull sample are of the Gumbel kind
     scale = float(rest.std(ddof=1)) * math.sqrt(6.0) / math.pi
+    if scale == 0.0:
+        return 0.0
     outwards = abs(value - float(rest.mean())) / scale + np.euler_gamma
     return -math.expm1(-n * math.exp(-outwards))
-
-
-def critical_esd(n: int, i: int, level: float = LEVEL) -> float:
-    """Return the critical distance of step i in a sample of n."""
-    m = n - i
-    t = float(special.stdtrit(m - 1, 1.0 - level / (2.0 * (m + 1))))
-    return m * t / math.sqrt((m - 1 + t * t) * (m + 1))
 
 
 def influence(values: ArrayLike, specimen: int) -> Influence:

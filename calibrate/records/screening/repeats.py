@@ -20,6 +20,7 @@ TIE_LEVEL = 0.01
 _SHARE_FOR_TIES = 0.8
 _DENSITY_RATIO = 2.0
 _DIGITS = 10
+_MOST = 5
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,7 +75,7 @@ class Repeats:
         Variance ``resolution^2/12`` that rounding adds, relative to the
         sample variance.
     ties : tuple of Tie
-        The heaviest first.
+        The heaviest first, five at most.
     """
 
     resolution: float | None
@@ -126,7 +127,8 @@ def repeats(observations: Observations) -> Repeats:
 
     Notes
     -----
-    Let h be the step to which most values are rounded and v a value that m
+    Let h be the step to which most values are rounded, a decimal one or, after
+    a conversion of units, any other, and v a value that m
     specimens share. Were the density at v at most twice the average around
     it, each other specimen in a window of b more steps would fall on v with
     probability ``q = 2/(2 + b)`` at most; with K specimens in the window but
@@ -140,14 +142,19 @@ def repeats(observations: Observations) -> Repeats:
     """
     where = np.flatnonzero(observations.exact)
     x = observations.values[where]
-    distinct, inverse, counts = np.unique(x, return_inverse=True, return_counts=True)
+    # Equal to twelve digits is equal: arithmetic on the values may have left its rounding errors.
+    key = np.rint(x / (float(np.abs(x).max()) or 1.0) * 1e12)
+    _, first, inverse, counts = np.unique(key, return_index=True, return_inverse=True, return_counts=True)
+    distinct = x[first]
     step, common = resolution(x), resolution(x, _SHARE_FOR_TIES)
     variance = float(np.var(x, ddof=1)) if x.size > 1 and distinct.size > 1 else 0.0
     ties = []
     if distinct.size > 1 and counts.max() >= 3:
         chance = _chances(x, distinct, counts.astype(np.int64), common)
         as_they_are = censored_normal(observations)
-        for i in sorted(np.flatnonzero((counts >= 3) & (chance < TIE_LEVEL)), key=lambda i: -counts[i]):
+        for i in sorted(np.flatnonzero((counts >= 3) & (chance < TIE_LEVEL)), key=lambda i: -counts[i])[
+            :_MOST
+        ]:
             specimens = where[inverse == i]
             ties.append(
                 Tie(
@@ -174,7 +181,7 @@ def repeats(observations: Observations) -> Repeats:
 def _chances(x: Array, distinct: Array, counts: NDArray[np.int64], common: float | None) -> Array:
     """Return the chance of each count, times the number of different values, shape (distinct,)."""
     spread = robust_sd(x) or robust_sd(distinct) or float(np.std(x))
-    step = common if common is not None else 10.0**-_DIGITS * float(np.abs(x).max())
+    step = common or _other_step(distinct) or 10.0**-_DIGITS * float(np.abs(x).max())
     if step > spread:
         return np.ones(distinct.size)
     reach = math.floor(spread / step + 1e-9) * step * (1.0 + 1e-9)
@@ -187,6 +194,15 @@ def _chances(x: Array, distinct: Array, counts: NDArray[np.int64], common: float
     q = _DENSITY_RATIO / (_DENSITY_RATIO + np.rint(width / step))
     p = special.betainc(np.maximum(counts - 1.0, 1.0), around + 1.0, q)
     return np.asarray(np.minimum(np.where(counts > 1, p, 1.0) * distinct.size, 1.0))
+
+
+def _other_step(distinct: Array) -> float | None:
+    """Return the smallest distance between values if most distances are multiples of it."""
+    gaps = np.diff(distinct)
+    step = float(gaps.min())
+    count = gaps / step
+    on_grid = np.abs(count - np.rint(count)) < 1e-4 * count
+    return step if np.mean(on_grid) >= _SHARE_FOR_TIES else None
 
 
 def _mean_if(observations: Observations, specimens: Array, *, upwards: bool) -> float | None:

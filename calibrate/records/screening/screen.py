@@ -61,7 +61,8 @@ class Screening:
     Notes
     -----
     ``repeats``, ``esd``, ``influences``, ``trend`` and ``tail`` leave out
-    lots that are suspected of another unit, which would hide all else.
+    lots that are suspected of another unit, which would hide all else; ``esd``
+    and ``influences`` also specimens that share one load suspiciously.
     """
 
     n: int
@@ -164,8 +165,8 @@ def screen(
         expected = nominal if whole is None and resistance else None
         found.extend(tell.declared_findings(float(x.mean()), outside, expected, unit, name))
 
-    of_lot = None if lots is None else [lots[i] for i in sure]
-    esd, influences = _outliers(x, sure, of_lot)
+    tied = () if repeated is None else tuple(i for tie in repeated.ties for i in tie.specimens)
+    esd, influences = _outliers(observations.values, np.setdiff1d(sure, tied), lots)
     found.extend(tell.outlier_findings(esd, influences, name))
     drift = trend(x, np.asarray(order)[sure]) if order is not None else None
     if drift is not None:
@@ -223,15 +224,16 @@ def _outside(
 
 
 def _outliers(
-    x: Array, at: NDArray[np.int64], lots: Sequence[str | None] | None
+    values: Array, at: NDArray[np.int64], lots: Sequence[str | None] | None
 ) -> tuple[tuple[Esd, ...], tuple[Influence, ...]]:
-    """Test values and return their positions in the whole sample."""
+    """Test some of the specimens; positions in the results are those in the whole sample."""
+    x = values[at]
     if x.size < 3:
         return (), ()
     scales = (False, True) if x.min() > 0.0 else (False,)
     tests = [generalised_esd(x, logarithmic=s) for s in scales]
     if lots is not None:
-        tests.extend(esd_within_lots(x, lots))
+        tests.extend(esd_within_lots(x, [lots[i] for i in at]))
     weighty = dict.fromkeys([*(i for t in tests for i in t.specimens), most_influential(x)])
     influences = tuple(replace(influence(x, i), specimen=int(at[i])) for i in weighty)
     moved = tuple(

@@ -31,10 +31,10 @@ FACTORS: tuple[tuple[float, str], ...] = (
 definition, the others follow."""
 
 _STANDARD_ERRORS = 5.0
-_LEAST_TOLERANCE = 0.15
+_LEAST_TOLERANCE = 0.3
 _MOST_TOLERANCE = 0.4
 _NOMINAL_SPAN = 1.5
-_LEAST_DISTANCE = math.log(3.0)
+_LEAST_DISTANCE = math.log(2.5)
 _MEDIAN_EFFICIENCY = math.pi / 2.0
 
 
@@ -83,13 +83,14 @@ def lot_slips(values: ArrayLike, lots: Sequence[str | None]) -> tuple[Slip, ...]
     -----
     Suspects are left out and the others judged again, until none is suspect;
     where half of the lots or more are, only the farthest is left out, of two
-    equally far ones the smaller, then the later one. With s
-    the robust coefficient of variation within lots and t that of the other
-    lots' medians (from three of them), ``se^2 = pi/2 s^2 (1/n_lot + 1/n_others)
-    + t^2`` is the standard error of the log-ratio. It has to exceed 5 se and
-    to lie within 3 se of a factor (no less than 15 % and no more than 40 %),
-    so that lots that differ by thickness or grade stay in peace. The limits
-    are a choice; common practice, no source.
+    equally far ones the smaller, then the later one. The span of the others
+    is that of their medians, without those that are off by three. With s the
+    robust coefficient of variation within lots, the log-median of a lot has an
+    error of ``se^2 = pi/2 s^2 (1/n_lot + 1/n_others)`` against the others. A
+    suspect lies beyond their span by a factor of 2.5, by 5 se and by the span
+    itself, and comes to lie in it, give or take 3 se or the span (30 % at
+    least and 40 % at most), when divided by a ratio of units: lots that differ by thickness
+    or grade stay in peace. The limits are a choice.
     """
     x = np.asarray(values, dtype=np.float64)
     names, codes = coded(lots)
@@ -117,24 +118,33 @@ def _suspects(x: Array, names: Sequence[str], codes: NDArray[np.int64]) -> list[
     within = robust_sd(x[labelled] / medians[codes[labelled]])
     # Without the lot, the others' median lies between these two at least.
     low, high = ordered[(n - sizes - 1) // 2], ordered[np.minimum((n - sizes) // 2 + sizes, n - 1)]
-    least = math.exp(math.log(FACTORS[0][0]) - _MOST_TOLERANCE)
+    least = math.exp(_LEAST_DISTANCE)
     found: list[tuple[tuple[float, int, int], Slip]] = []
     for i in np.flatnonzero((sizes > 0) & ((medians >= least * low) | (least * medians <= high))):
         reference = _median_without(ordered, np.flatnonzero(owner == i))
         if reference <= 0.0:
             continue
-        log_ratio = math.log(float(medians[i]) / reference)
-        others = np.delete(medians, i)[np.delete(sizes, i) > 0]
-        between = robust_sd(others / np.median(others)) if others.size > 2 else 0.0
-        share = 1.0 / sizes[i] + 1.0 / (n - sizes[i])
-        error = math.sqrt(_MEDIAN_EFFICIENCY * within**2 * share + between**2)
-        near = _near(abs(log_ratio), min(max(3.0 * error, _LEAST_TOLERANCE), _MOST_TOLERANCE))
-        if near and abs(log_ratio) >= _STANDARD_ERRORS * error:
+        error = math.sqrt(_MEDIAN_EFFICIENCY * within**2 * (1.0 / sizes[i] + 1.0 / (n - sizes[i])))
+        low_end, high_end = _span(np.delete(medians, i)[np.delete(sizes, i) > 0], reference)
+        median = math.log(float(medians[i]))
+        beyond = max(median - high_end, low_end - median)
+        if beyond < max(_LEAST_DISTANCE, _STANDARD_ERRORS * error, high_end - low_end):
+            continue
+        tolerance = min(max(3.0 * error, high_end - low_end, _LEAST_TOLERANCE), _MOST_TOLERANCE)
+        near = _near(median, low_end - tolerance, high_end + tolerance, math.log(reference))
+        if near:
             at = tuple(int(j) for j in np.flatnonzero(codes == i))
-            slip = Slip(names[int(i)], float(medians[i]), reference, math.exp(log_ratio), *_told(near), at)
-            distance = round(abs(log_ratio) / max(error, 1e-9), 6)
-            found.append(((-distance, len(at), -int(i)), slip))
+            ratio = float(medians[i]) / reference
+            slip = Slip(names[int(i)], float(medians[i]), reference, ratio, *_told(near), at)
+            found.append(((-round(beyond, 9), len(at), -int(i)), slip))
     return [slip for _, slip in sorted(found, key=lambda f: f[0])]
+
+
+def _span(medians: Array, reference: float) -> tuple[float, float]:
+    """Return the logarithms between which lots lie that are not themselves far off."""
+    logs = np.log(medians[(medians < 3.0 * reference) & (3.0 * medians > reference)])
+    middle = math.log(reference)
+    return min([middle, *logs]), max([middle, *logs])
 
 
 def _median_without(ordered: Array, ranks: NDArray[np.int64]) -> float:
@@ -162,7 +172,7 @@ def sample_slip(
 
     Notes
     -----
-    The median has to lie beyond three times the nearer end of the range, and
+    The median has to lie beyond 2.5 times the nearer end of the range, and
     by more than five standard errors; divided by a factor it has to come to
     lie in the range.
     """
@@ -174,22 +184,24 @@ def sample_slip(
     low, high = declared_range
     median = float(np.median(x))
     if not (0.0 < low <= high and median > 0.0):
-        return None
+        return None  # logarithms need a positive quantity
     error = math.sqrt(_MEDIAN_EFFICIENCY / x.size) * robust_sd(x) / median
     beyond = max(math.log(median / high), math.log(low / median))
     if beyond < max(_LEAST_DISTANCE, _STANDARD_ERRORS * error):
         return None
     reference = math.sqrt(low) * math.sqrt(high)
-    half_width = 0.5 * math.log(high / low) + max(3.0 * error, 0.02)
-    near = _near(abs(math.log(median / reference)), half_width)
+    allowance = max(3.0 * error, 0.02)
+    near = _near(math.log(median), math.log(low) - allowance, math.log(high) + allowance, math.log(reference))
     if not near:
         return None
     return Slip(None, median, reference, median / reference, *_told(near), tuple(range(x.size)))
 
 
-def _near(log_ratio: float, tolerance: float) -> list[tuple[float, str]]:
-    near = [f for f in FACTORS if abs(log_ratio - math.log(f[0])) <= tolerance]
-    return sorted(near, key=lambda f: abs(log_ratio - math.log(f[0])))
+def _near(median: float, low: float, high: float, middle: float) -> list[tuple[float, str]]:
+    """Return the factors that bring a median into the span, that which brings it nearest to the middle first."""
+    sign = 1.0 if median > middle else -1.0
+    moved = [(median - sign * math.log(factor), (factor, text)) for factor, text in FACTORS]
+    return [f for _, f in sorted((abs(m - middle), f) for m, f in moved if low <= m <= high)]
 
 
 def _told(near: list[tuple[float, str]]) -> tuple[tuple[float, ...], tuple[str, ...]]:
