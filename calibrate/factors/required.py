@@ -1,4 +1,4 @@
-"""The inverse question: which value of one factor gives a situation exactly the target?"""
+"""The inverse question: the value of one factor that gives a situation exactly the target."""
 
 from __future__ import annotations
 

@@ -30,8 +30,7 @@ def figures(result: Result) -> dict[str, Rendered]:
     ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
     does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
     ``sensitivity`` where a beta was found, ``sample_<records>`` for every sample,
-    ``probability_<variable>``, ``density_<variable>`` and ``tail_<variable>`` for
-    every fitted variable.
+    ``probability_<variable>`` and ``tail_<variable>`` for every fitted variable.
     """
     drawn: dict[str, Rendered] = {}
     with style.context():
@@ -54,7 +53,6 @@ def _all(result: Result) -> Iterator[tuple[str, Figure]]:
 
 
 def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
-    from calibrate.report.density_figure import density_figure
     from calibrate.report.probability_paper import probability_figure
     from calibrate.report.sample_figure import sample_figure
     from calibrate.report.tail_figure import tail_figure
@@ -69,7 +67,6 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
         chosen = [fitted.fit, *(c for c in fitted.comparison.candidates if c.family in fitted.tests)]
         shown = list(dict.fromkeys(chosen))
         yield f"probability_{name}", probability_figure(fitted.fit, label=label, unit=unit)
-        yield f"density_{name}", density_figure(shown, label=label, unit=unit)
         side = tail_of(result, name)
         if side is not None:
             yield (

@@ -8,7 +8,6 @@ from functools import cache
 from typing import TYPE_CHECKING, Any
 
 from calibrate.report import (
-    density_figure,
     evidence,
     inputs,
     numbers,
@@ -140,11 +139,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         },
         "bonds": evidence.bond_table(result),
         "pedigree": evidence.pedigree_table(result),
-        "captions": {
-            "sample": sample_figure.CAPTION,
-            "tail": tail_figure.CAPTION,
-            "density": density_figure.CAPTION,
-        },
+        "captions": {"sample": sample_figure.CAPTION, "tail": tail_figure.CAPTION},
         "sized": any(r.size is not None for r in study.rules.values()),
         "sizes": outcome.size_table(result, changes) if changes else None,
         "smaller": _rows(result, losers[0]),
