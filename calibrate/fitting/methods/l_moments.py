@@ -13,12 +13,19 @@ from calibrate.distributions import Distribution, family
 from calibrate.fitting.jets import Array
 from calibrate.fitting.likelihood import Estimate
 from calibrate.fitting.methods.base import Method
+from calibrate.fitting.methods.order_scatter import combination_covariance
 from calibrate.fitting.model import Model
 from calibrate.records.observations import Observations
 
 LOG2 = math.log(2.0)
 STEP = 1e-4
 """Of the central differences, relative to the second L-moment, whose natural size is one."""
+
+
+# l_r as combinations of the probability-weighted moments b_k (shifted Legendre polynomials).
+_FROM_WEIGHTED = np.array(
+    [[1.0, 0.0, 0.0, 0.0], [-1.0, 2.0, 0.0, 0.0], [1.0, -6.0, 6.0, 0.0], [-1.0, 12.0, -30.0, 20.0]]
+)
 
 
 def sample_l_moments(x: Array, count: int = 4) -> Array:
@@ -28,46 +35,32 @@ def sample_l_moments(x: Array, count: int = 4) -> Array:
     ----------
     x : array, shape (n,)
         At least ``count`` values.
+    count : int
+        At most four.
 
     References
     ----------
     J. R. M. Hosking, J. R. Statist. Soc. B 52 (1990) 105-124.
     """
-    return np.asarray(_FROM_WEIGHTED[:count, :count] @ _weighted(np.sort(x), count))
+    return _weights(x.size, count) @ np.sort(x)
 
 
-# l_r as combinations of the probability-weighted moments b_k (shifted Legendre polynomials).
-_FROM_WEIGHTED = np.array(
-    [[1.0, 0.0, 0.0, 0.0], [-1.0, 2.0, 0.0, 0.0], [1.0, -6.0, 6.0, 0.0], [-1.0, 12.0, -30.0, 20.0]]
-)
-
-
-def _weighted(ordered: Array, count: int) -> Array:
-    n = ordered.size
+def _weights(n: int, count: int) -> Array:
+    """Return the weights of the ordered values in the unbiased L-moments, shape (count, n)."""
     rank = np.arange(n, dtype=np.float64)
-    weight, found = np.ones(n), []
+    weight, rows = np.full(n, 1.0 / n), []
     for k in range(count):
-        found.append(float(np.mean(weight * ordered)))
-        weight = weight * (rank - k) / (n - 1 - k) if n - 1 - k > 0 else weight * 0.0
-    return np.array(found)
-
-
-def _influence(ordered: Array, count: int) -> Array:
-    """Return influence functions of l1, l2, ... at the ordered values, shape (count, n)."""
-    n = ordered.size
-    p = (np.arange(n) + 0.5) / n
-    rows = [ordered - np.mean(ordered)]
-    for k in range(1, count):
-        # b_k = E[x F^k]: a specimen adds its own term and lifts the ranks of all that are larger.
-        larger = ordered * p ** (k - 1)
-        above = (np.cumsum(larger[::-1])[::-1] - larger) / n
-        row = ordered * p**k + k * above
-        rows.append(row - np.mean(row))
+        rows.append(weight)
+        weight = weight * (rank - k) / max(n - 1 - k, 1)
     return np.asarray(_FROM_WEIGHTED[:count, :count] @ np.array(rows))
 
 
 class LMoments(Method):
-    """Parameters with the L-moments of the sample; standard errors by the delta method."""
+    """Parameters with the L-moments of the sample.
+
+    Standard errors by the delta method, from the scatter of order statistics at the fitted distribution: influence
+    functions at the values themselves miss it by up to a factor of two at 20 values.
+    """
 
     name = "l_moments"
     title = "method of L-moments"
@@ -105,8 +98,7 @@ class LMoments(Method):
             return Estimate.failed(free, f"{count} L-moments need as many values")
         logarithmic = model.family in ("lognormal", "lognormal3")
         x = seen.values - threshold
-        ordered = np.sort(np.log(x) if logarithmic else x)
-        moments = np.asarray(_FROM_WEIGHTED[:count, :count] @ _weighted(ordered, count))
+        moments = sample_l_moments(np.log(x) if logarithmic else x, count)
         if not moments[min(1, count - 1)] > 0.0:
             return Estimate.failed(free, "the second L-moment of the sample is not positive")
 
@@ -127,11 +119,13 @@ class LMoments(Method):
                     free, "the L-moments of this sample lie at the edge of what the family can have"
                 )
             slopes[:, k] = (sides[0] - sides[1]) / (2.0 * step[k])
-        influence = _influence(ordered, count)
-        covariance = slopes @ (influence @ influence.T) @ slopes.T / seen.n**2
         every = {**dict(zip(free, values.tolist(), strict=True)), **fixed}
         result = {n: float(every[n]) for n in names}
         law = Distribution.of(family(model.family), tuple(np.asarray(v) for v in result.values()))
+        scatter = combination_covariance(
+            _weights(seen.n, count), law, log_above=threshold if logarithmic else None
+        )
+        covariance = slopes @ scatter @ slopes.T
         density = law.logpdf(seen.values)
         notes: tuple[tuple[str, str], ...] = ()
         if not np.isfinite(density).all():

@@ -10,6 +10,7 @@ from calibrate.distributions import Distribution, family
 from calibrate.fitting.jets import Array
 from calibrate.fitting.likelihood import Estimate
 from calibrate.fitting.methods.base import INTERVAL, LEFT, RIGHT, Method
+from calibrate.fitting.methods.order_scatter import combination_covariance
 from calibrate.fitting.model import Model
 from calibrate.fitting.paper import PAPERS, Paper, positions
 from calibrate.records.observations import Observations
@@ -18,8 +19,8 @@ from calibrate.records.observations import Observations
 class ProbabilityPaper(Method):
     """Ordered values against the reduced variate of their plotting positions, by least squares.
 
-    Standard errors carry the scatter and the dependence of order statistics at the fitted distribution (H. A. David
-    and H. N. Nagaraja, Order Statistics, 3rd ed., Wiley 2003, section 10.2); they are not given for censored samples.
+    Standard errors carry the scatter and the dependence of order statistics at the fitted distribution; they are not
+    given for censored samples.
     """
 
     name = "probability_paper"
@@ -54,7 +55,7 @@ class ProbabilityPaper(Method):
         parameters = {**fixed, **paper.parameters(a, b)}
         ordered = {name: float(parameters[name]) for name in family(model.family).parameter_names}
         law = Distribution.of(family(model.family), tuple(np.asarray(v) for v in ordered.values()))
-        covariance, notes = self._covariance(seen, law, paper, free, (a, b), weights, values, p, threshold)
+        covariance, notes = self._covariance(seen, law, paper, free, (a, b), weights, threshold)
         from calibrate.fitting.censored import log_likelihood
 
         return Estimate(ordered, free, covariance, log_likelihood(law, seen), "", notes)
@@ -67,8 +68,6 @@ class ProbabilityPaper(Method):
         free: tuple[str, ...],
         line: tuple[float, float],
         weights: Array,
-        values: Array,
-        p: Array,
         threshold: float,
     ) -> tuple[Array, tuple[tuple[str, str], ...]]:
         if not seen.complete:
@@ -76,11 +75,7 @@ class ProbabilityPaper(Method):
                 "Standard errors of a line through a censored sample are not known; use method 'likelihood'."
             )
             return np.full((len(free), len(free)), np.nan), (("no-standard-errors", message),)
-        fitted = law.ppf(p)
-        rate = law.pdf(fitted)
-        # Standard deviations of the ordered y per unit of the uniform order statistic.
-        spread = 1.0 / (rate * (fitted - threshold)) if paper.logarithmic else 1.0 / rate
-        scatter = order_covariance(weights * spread, p) / values.size
+        scatter = combination_covariance(weights, law, log_above=threshold if paper.logarithmic else None)
         slopes = paper.slopes(*line)
         jacobian = np.array([slopes[name] for name in free])
         return np.asarray(jacobian @ scatter @ jacobian.T), ()
@@ -93,14 +88,3 @@ def _line_weights(q: Array, *, through_origin: bool) -> Array:
     centred = q - q.mean()
     slope = centred / np.dot(centred, centred)
     return np.vstack([1.0 / q.size - q.mean() * slope, slope])
-
-
-def order_covariance(weights: Array, p: Array) -> Array:
-    """Return W K W' with K_ij = min(p_i, p_j) - p_i p_j for rising p, in time proportional to n.
-
-    sum_ij v_i w_j min(p_i, p_j) is a sum over the steps of p of the products of what lies above each.
-    """
-    steps = np.diff(p, prepend=0.0)
-    above = np.cumsum(weights[:, ::-1], axis=1)[:, ::-1]
-    mean = weights @ p
-    return np.asarray((above * steps) @ above.T - np.outer(mean, mean))
