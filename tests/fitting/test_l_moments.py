@@ -77,9 +77,9 @@ def test_sample_moments_are_means_over_all_subsets():
         assert found == pytest.approx(np.mean(each), rel=1e-12)
 
 
-@pytest.mark.parametrize("family", LAWS)
+@pytest.mark.parametrize("family", ["normal", "lognormal", "frechet", "exponential", "weibull3", "gev"])
 def test_standard_errors_are_the_scatter(family):
-    law, rng, count = distribution(family, **LAWS[family]), np.random.default_rng(9), 250
+    law, rng, count = distribution(family, **LAWS[family]), np.random.default_rng(9), 500
     n = 200 if len(LAWS[family]) == 3 else 60  # first-order theory comes later where three parameters compete
     fits = [by_l_moments(x, family) for x in law.sample(rng, (count, n))]
     estimates = np.array([[f.parameters[n] for n in f.free] for f in fits])
