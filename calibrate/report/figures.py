@@ -24,13 +24,17 @@ if TYPE_CHECKING:
     from calibrate.study.result import Result
 
 
+MATTERS = 0.05
+"""Weighted mean of alpha squared below which the tail of a variable is not drawn."""
+
+
 def figures(result: Result) -> dict[str, Rendered]:
     """Return the figures of a result by name, in the order of the report.
 
     ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
     does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
-    ``sensitivity`` where a beta was found, ``sample_<records>`` for every sample,
-    ``probability_<variable>`` and ``tail_<variable>`` for every fitted variable.
+    ``sensitivity`` where a beta was found, ``sample_<records>`` for samples that need a look,
+    ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those that matter.
     """
     drawn: dict[str, Rendered] = {}
     with style.context():
@@ -57,8 +61,8 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
     from calibrate.report.sample_figure import sample_figure
     from calibrate.report.tail_figure import tail_figure
 
-    for name, screening in result.screenings.items():
-        sample = result.study.records[name]
+    for name in drawn_samples(result):
+        sample, screening = result.study.records[name], result.screenings[name]
         label = symbols.literal(name.replace("_", " "))
         yield f"sample_{name}", sample_figure(sample, screening, label=label, unit=_unit(sample))
     for name, fitted in result.fitted.items():
@@ -68,13 +72,35 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
         shown = list(dict.fromkeys(chosen))
         yield f"probability_{name}", probability_figure(fitted.fit, label=label, unit=unit)
         side = tail_of(result, name)
-        if side is not None:
+        if side is not None and matters(result, name):
             yield (
                 f"tail_{name}",
                 tail_figure(
                     shown, lower=side == "lower", label=label, unit=unit, design=_design_range(result, name)
                 ),
             )
+
+
+def drawn_samples(result: Result) -> list[str]:
+    """Return the records worth a look at single specimens: with lots, bounds, something left out, or findings."""
+    return [
+        name
+        for name, screening in result.screenings.items()
+        if screening.findings
+        or result.study.records[name].excluded
+        or "lot" in result.study.records[name].labels
+        or not result.study.records[name].observations.complete
+    ]
+
+
+def matters(result: Result, name: str) -> bool:
+    """Whether a variable takes a share of the reliability that makes its tail worth a figure."""
+    frame = result.situations
+    if f"alpha_{name}" not in frame:
+        return False
+    alpha, weight = frame[f"alpha_{name}"].to_numpy(float), frame["weight"].to_numpy(float)
+    there = np.isfinite(alpha) & (weight > 0)
+    return bool(there.any() and np.average(alpha[there] ** 2, weights=weight[there]) > MATTERS)
 
 
 def _unit(sample: Sample) -> str:

@@ -17,6 +17,8 @@ from scipy.special import betaincinv, ndtri
 
 from calibrate.distributions import Distribution
 from calibrate.fitting import Fit, plotting_positions
+from calibrate.fitting.paper import positions
+from calibrate.records import Observations
 from calibrate.report import style
 
 if TYPE_CHECKING:
@@ -27,7 +29,8 @@ Array = npt.NDArray[np.float64]
 
 CAPTION = (
     "Ordered values at Hazen positions, fitted distribution (line) and the band that holds each ordered value with "
-    "probability 0.9 if the fit is true."
+    "probability 0.9 if the fit is true. With bounds in the sample: product-limit positions, the bounds along the "
+    "lower edge, and no band."
 )
 BAND = 0.9
 MOST_POINTS = 500
@@ -117,27 +120,33 @@ def probability_figure(
     """
     assert fit.distribution is not None, "a failed fit has no line"
     distribution, paper = fit.distribution, _paper(fit.distribution)
-    values = np.sort(fit.values)
-    n = values.size
-    shown = _shown(n)
-    lower = plotting_positions(n)[shown]
-    upper = plotting_positions(n)[::-1][shown]
+    seen = fit.observations
+    values, at = positions(seen)
+    n = seen.n
+    shown = _shown(values.size)
+    lower, upper = at[shown], 1.0 - at[shown]
+    if seen.complete:
+        upper = plotting_positions(n)[::-1][shown]
     drawn = style.figure(width_mm, height_mm)
     axes = style.panel(drawn, 17.0, 10.5, width_mm - 20.0, height_mm - 15.5)
     if paper.log:
         axes.set_xscale("log")
     heights = paper.ordinate(lower, upper)
-    _draw_band(axes, distribution, heights, np.asarray(shown + 1.0, dtype=np.float64), n)
+    if seen.complete:
+        _draw_band(axes, distribution, heights, np.asarray(shown + 1.0, dtype=np.float64), n)
     _draw_line(axes, distribution, paper, 0.4 / n)
+    _draw_bounds(axes, seen)
     _draw_points(axes, values[shown], heights, n)
     _rule(axes, paper, 0.4 / n)
-    _limit(axes, _extent(values, distribution, 0.4 / n), paper.log)
+    _limit(axes, _extent(np.sort(seen.values), distribution, 0.4 / n), paper.log)
     if fractile is not None:
         at = paper.ordinate(np.array([fractile]), np.array([1.0 - fractile]))[0]
         axes.axhline(at, color=style.PLUM, linewidth=0.7, linestyle=(0, (4, 2)))
     axes.set_xlabel(f"{label} ({unit})" if unit else label, parse_math=True)
     axes.set_ylabel("probability of not being exceeded")
-    axes.set_title(f"{fit.family}, n = {n}")
+    axes.set_title(
+        f"{fit.family}, n = {n}" + (f", {n - seen.n_exact} known by bounds" if seen.censored else "")
+    )
     return drawn
 
 
@@ -178,6 +187,16 @@ def _draw_points(axes: Axes, values: Array, heights: Array, n: int) -> None:
         markeredgewidth=0.7 if n <= 400 else 0.4,
         zorder=3,
     )
+
+
+def _draw_bounds(axes: Axes, seen: Observations) -> None:
+    """Mark specimens that are known by a bound along the lower edge: they have no height of their own."""
+    for mask, mark in ((seen.right, ">"), (seen.left, "<"), (seen.interval, "|")):
+        if mask.any():
+            axes.plot(
+                seen.values[mask], np.full(int(mask.sum()), 0.03), transform=axes.get_xaxis_transform(),
+                linestyle="none", marker=mark, markersize=3.5, color=style.OCHRE, zorder=3,
+            )  # fmt: skip
 
 
 def _rule(axes: Axes, paper: Paper, smallest: float) -> None:

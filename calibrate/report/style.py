@@ -109,7 +109,9 @@ def render(figure: Figure) -> Rendered:
     svg, png = io.BytesIO(), io.BytesIO()
     with context():
         figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": None})
-        figure.savefig(png, format="png", dpi=RESOLUTION, metadata={"Software": None})
+        figure.savefig(
+            png, format="png", dpi=RESOLUTION, metadata={"Software": None}, pil_kwargs={"compress_level": 3}
+        )
     return Rendered(svg.getvalue(), png.getvalue())
 
 
