@@ -49,9 +49,11 @@ def fit_rows(
     search = _Rows(model, inner, [rules[name] for name in free])
     # Blocks that stay in the cache; every column is for itself, so that blocks change no result.
     width = max(1, BLOCK // z.shape[0])
-    done = np.concatenate(
-        [search.climb(z[:, at : at + width], t[:, at : at + width]) for at in range(0, z.shape[1], width)]
-    )
+    with np.errstate(all="ignore"):
+        done = np.concatenate(
+            [search.climb(z[:, at : at + width], t[:, at : at + width]) for at in range(0, z.shape[1], width)]
+        )
+    done &= search.allowed(z, t)
     found: dict[str, Array] = {name: np.asarray(float(value)) for name, value in fixed.items()}
     for i, name in enumerate(free):
         value = np.exp(t[i]) if rules[name].positive else t[i]
@@ -92,6 +94,17 @@ class _Rows:
                 share = np.where(worse, 0.4 * share, share)
             t[:, active] = here + share * step
         return done
+
+    def allowed(self, z: Array, t: Array) -> NDArray[np.bool_]:
+        """Return for every column whether it ended where the search of a single sample may go."""
+        own = [(rule.name, np.exp(t[i]) if rule.positive else t[i]) for i, rule in enumerate(self.free)]
+        return np.array(
+            [
+                self.model.allowed(column, {**self.fixed, **{name: float(v[k]) for name, v in own}})
+                for k, column in enumerate(z.T)
+            ],
+            dtype=np.bool_,
+        )
 
     def __call__(self, z: Array, t: Array) -> tuple[Array, Array, Array]:
         p = len(self.free)

@@ -48,7 +48,8 @@ class FitTests:
         ``upper_tail`` (A² of one tail), ``plot_correlation`` (r of ordered values, on the family's paper or,
         where it has none, turned into standard normal values, with the plotting positions).
     p_values : mapping of str to float
-        NaN where the test is not defined.
+        NaN where the test is not defined: for the tails of a family that ends at the extreme values, for a correlation
+        with more than 200 values.
     replicates : int
         Simulated samples with a fit.
     """
@@ -77,7 +78,8 @@ def run_fit_tests(fit: Fit, rng: np.random.Generator, replicates: int = REPLICAT
     rivals = _statistics(simulated.x, simulated.laws, threshold) if count else {}
     p_values = {}
     for name in STATISTICS:
-        if not count or (name == "plot_correlation" and size < fit.n):
+        beyond_all = np.isinf(own[name][0]) and count > 0 and bool(np.isinf(rivals[name]).all())
+        if not count or beyond_all or (name == "plot_correlation" and size < fit.n):
             p_values[name] = float("nan")
             continue
         # A correlation is the worse the smaller it is; Kolmogorov's distance shrinks with the root of n.
