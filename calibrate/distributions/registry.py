@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
-from types import MappingProxyType
+from collections.abc import Mapping
 from typing import Any
 
 from calibrate.distributions.distribution import Distribution
@@ -25,17 +24,7 @@ from calibrate.distributions.families.weibull import Weibull
 from calibrate.distributions.families.weibull3 import Weibull3
 from calibrate.distributions.family import Family
 from calibrate.errors import InputError, Problem, did_you_mean
-
-
-def registered(families: Iterable[Family]) -> Mapping[str, Family]:
-    """Return the families by name, in order; a name that comes twice is a mistake of ours."""
-    by_name: dict[str, Family] = {}
-    for member in families:
-        if member.name in by_name:
-            raise ValueError(f"the family '{member.name}' is registered twice")
-        by_name[member.name] = member
-    return MappingProxyType(by_name)
-
+from calibrate.registry import registered
 
 FAMILIES: Mapping[str, Family] = registered(
     (

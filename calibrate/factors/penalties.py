@@ -5,13 +5,13 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Mapping
 from dataclasses import dataclass
-from types import MappingProxyType
 from typing import ClassVar
 
 import numpy as np
 import numpy.typing as npt
 
 from calibrate.errors import InputError, Problem, did_you_mean
+from calibrate.registry import registered
 
 Array = npt.NDArray[np.float64]
 
@@ -116,16 +116,7 @@ class Minimax(Penalty):
         return float(np.max(np.abs(r)))
 
 
-def _registered(*classes: type[Penalty]) -> Mapping[str, type[Penalty]]:
-    by_name: dict[str, type[Penalty]] = {}
-    for penalty in classes:
-        if penalty.name in by_name:
-            raise ValueError(f"the penalty '{penalty.name}' is registered twice")
-        by_name[penalty.name] = penalty
-    return MappingProxyType(by_name)
-
-
-PENALTIES: Mapping[str, type[Penalty]] = _registered(Squared, Asymmetric, Minimax)
+PENALTIES: Mapping[str, type[Penalty]] = registered((Squared, Asymmetric, Minimax))
 
 
 def make_penalty(name: str, d: float = 0.23) -> Penalty:

@@ -242,9 +242,9 @@ class Search:
         p = dict(self.fixed)
         for rule, ti in zip(self.free, t, strict=True):
             if rule.kind == "threshold":
-                p[rule.name] = self.lowest - math.exp(ti)
+                p[rule.name] = self.lowest - float(np.exp(ti))
             else:
-                p[rule.name] = math.exp(ti) if rule.positive else float(ti)
+                p[rule.name] = float(np.exp(ti)) if rule.positive else float(ti)
         return p
 
     def slope(self, rule: Rule, value: float) -> float:

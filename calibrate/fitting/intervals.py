@@ -13,6 +13,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,6 +26,9 @@ from calibrate.fitting.result import Fit
 Array = NDArray[np.float64]
 Quantity = Callable[[Array], tuple[float, Array]]
 """Value and gradient of a quantity as a function of the free coordinates."""
+
+FARTHEST = 40.0
+"""How far an end is sought, in units of its distance in a large sample."""
 
 Interval = tuple[float, float]
 NONE: Interval = (math.nan, math.nan)
@@ -99,40 +103,68 @@ def _top(fit: Fit) -> tuple[Search, Array]:
 
 
 def _ends(search: Search, top: Array, quantity: Quantity, confidence: float) -> Interval:
-    from scipy.optimize import minimize
-
     with np.errstate(all="ignore"):
         best, _, hessian = search(top)
         drop = 0.5 * float(special.chdtri(1.0, 1.0 - confidence)) / search.seen.n
         gradient = quantity(top)[1]
         try:
-            along = np.linalg.solve(-hessian, gradient)
+            half = np.linalg.cholesky(np.linalg.inv(-hessian))
         except np.linalg.LinAlgError:
             return NONE
-        reach = float(gradient @ along)
-        if not reach > 0.0:
+        if not np.any(half.T @ gradient):
             return NONE
-        first = along * math.sqrt(2.0 * drop / reach)
-        level = best - drop
-        ends = []
-        for sign in (-1.0, 1.0):
-            size = max(abs(sign * float(gradient @ first)), 1e-300)
+        region = _Region(search, top, best, math.sqrt(2.0 * drop) * half, drop)
+        low, high = (region.extreme(quantity, sign) for sign in (-1.0, 1.0))
+    return low, high
 
-            def cost(t: Array, sign: float = sign, size: float = size) -> tuple[float, Array]:
-                value, slope = quantity(t)
-                return -sign * value / size, -sign * slope / size
 
-            def rest(t: Array) -> float:
-                value = search.first(t)[0]
-                return (value - level) / drop if math.isfinite(value) else -1e6
+@dataclass(frozen=True, slots=True, eq=False)
+class _Region:
+    """Parameters whose log-likelihood has not fallen by more than the drop.
 
-            def slopes(t: Array) -> Array:
-                return np.nan_to_num(search.first(t)[1]) / drop
+    Seen in coordinates s, t = top + root s, in which the region of a large sample is the unit ball.
+    """
 
-            found = minimize(
-                cost, top + 0.9 * sign * first, jac=True, method="SLSQP",
-                constraints={"type": "ineq", "fun": rest, "jac": slopes}, options={"ftol": 1e-12, "maxiter": 200},
-            )  # fmt: skip
-            on_level = abs(rest(found.x)) < 1e-4
-            ends.append(quantity(found.x)[0] if on_level else math.nan)
-    return ends[0], ends[1]
+    search: Search
+    top: Array
+    best: float
+    root: Array
+    drop: float
+
+    def extreme(self, quantity: Quantity, sign: float) -> float:
+        """Return the largest value of the quantity in the region, the smallest for sign -1; NaN if it is not found."""
+        slope = self.root.T @ quantity(self.top)[1]
+        first = sign * slope / np.linalg.norm(slope)
+        for shares in ((1.0,), (0.05, 0.2, 0.5, 1.0)):  # where the way is bent, in stages
+            s = first * math.sqrt(shares[0])
+            before = shares[0]
+            for share in shares:
+                s, found = self._climbed(quantity, sign, s * math.sqrt(share / before), share)
+                before = share
+            if found:
+                return quantity(self.top + self.root @ s)[0]
+        return math.nan
+
+    def _climbed(self, quantity: Quantity, sign: float, start: Array, share: float) -> tuple[Array, bool]:
+        """Return where the quantity is extreme with a share of the drop, and whether that is on its level."""
+        from scipy.optimize import minimize
+
+        size = float(np.linalg.norm(self.root.T @ quantity(self.top)[1]))
+        centre = quantity(self.top)[0]
+
+        def cost(s: Array) -> tuple[float, Array]:
+            value, slope = quantity(self.top + self.root @ s)
+            return -sign * (value - centre) / size, -sign * (self.root.T @ slope) / size
+
+        def rest(s: Array) -> float:
+            value = self.search.first(self.top + self.root @ s)[0]
+            return (value - self.best) / self.drop + share if math.isfinite(value) else -1e3
+
+        def slopes(s: Array) -> Array:
+            return np.nan_to_num(self.root.T @ self.search.first(self.top + self.root @ s)[1]) / self.drop
+
+        found = minimize(
+            cost, 0.9 * start, jac=True, method="SLSQP", bounds=[(-FARTHEST, FARTHEST)] * start.size,
+            constraints={"type": "ineq", "fun": rest, "jac": slopes}, options={"ftol": 1e-12, "maxiter": 100},
+        )  # fmt: skip
+        return np.asarray(found.x), bool(abs(rest(found.x)) < 1e-4)

@@ -1,8 +1,11 @@
 """The distribution of a further specimen, which carries the uncertainty of the estimated parameters.
 
 Normal and lognormal variables from a complete sample: Student's t, exactly (the prediction of EN 1990 Annex D.7). All
-others: the fitted family, mixed over the parameters as a normal distribution in the coordinates of the search, with the
-observed information (Laplace's approximation), by Gauss-Hermite quadrature.
+others: the fitted family, mixed over the parameters by Gauss-Hermite quadrature in the coordinates of the search. Nodes
+weigh by the likelihood, which for location and scale, and for what is that after taking logarithms, is the exact
+prediction (flat priors of location and logarithm of scale: J. F. Lawless, Statistical Models
+and Methods for Lifetime Data, 2nd ed., Wiley 2003, chapter 4, from memory). Where the fit is not one of largest
+likelihood they weigh as a normal distribution with its covariance.
 """
 
 from __future__ import annotations
@@ -14,7 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.distributions import Distribution, distribution, family, mixture
-from calibrate.fitting.censored import search_of
+from calibrate.fitting.censored import Search, search_of
 from calibrate.fitting.result import Fit
 
 Array = NDArray[np.float64]
@@ -71,6 +74,8 @@ def _mixed(fit: Fit) -> Distribution | None:
     grid = np.array(list(itertools.product(nodes, repeat=centre.size)))
     weight = np.prod(np.array(list(itertools.product(weights, repeat=centre.size))), axis=1)
     points = centre + grid @ root.T
+    if fit.method == "likelihood":
+        weight = weight * _likelihood_ratio(search, centre, points, grid)
     rows = [search.parameters(t) for t in points]
     member = family(fit.family)
     kinds = {r.name: r.kind for r in search.model.rules}
@@ -79,3 +84,11 @@ def _mixed(fit: Fit) -> Distribution | None:
         for p in member.parameter_names
     )
     return mixture(Distribution.of(member, parameters), weight)
+
+
+def _likelihood_ratio(search: Search, centre: Array, points: Array, grid: Array) -> Array:
+    """Return the likelihood at the points over that of the normal approximation, both one at the centre."""
+    with np.errstate(all="ignore"):
+        best = search.first(centre)[0]
+        logs = np.array([search.first(t)[0] for t in points]) - best
+        return np.where(np.isfinite(logs), np.exp(search.seen.n * logs + 0.5 * np.sum(grid**2, axis=1)), 0.0)

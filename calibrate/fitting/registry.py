@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from types import MappingProxyType
 
 from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.fitting.model import Model
@@ -14,17 +13,7 @@ from calibrate.fitting.models.gev import GevModel
 from calibrate.fitting.models.normal import LognormalModel, NormalModel
 from calibrate.fitting.models.student_t import StudentTModel
 from calibrate.fitting.models.threshold import Lognormal3Model, Weibull3Model
-
-
-def registered(models: Iterable[Model]) -> Mapping[str, Model]:
-    """Return the models by family, in order; a family that comes twice is a mistake of ours."""
-    by_name: dict[str, Model] = {}
-    for model in models:
-        if model.family in by_name:
-            raise ValueError(f"the family '{model.family}' has two likelihoods")
-        by_name[model.family] = model
-    return MappingProxyType(by_name)
-
+from calibrate.registry import registered
 
 MODELS: Mapping[str, Model] = registered(
     (
@@ -43,7 +32,8 @@ MODELS: Mapping[str, Model] = registered(
         BetaModel(),
         StudentTModel(),
         TruncatedNormalModel(),
-    )
+    ),
+    by="family",
 )
 
 FITTABLE: tuple[str, ...] = tuple(MODELS)

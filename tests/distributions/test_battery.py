@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 
 from calibrate.distributions import family, family_names
-from calibrate.distributions.registry import registered
+from calibrate.registry import registered
 
 from .cases import CASES, made, sets, spread
 from .twins import TWINS

@@ -7,8 +7,9 @@ from calibrate.distributions import distribution
 from calibrate.errors import InputError
 from calibrate.fitting import compare, fit, fit_family
 from calibrate.fitting.characteristic.pivots import gumbel_rows
-from calibrate.fitting.methods.registry import METHODS, method_of, registered
+from calibrate.fitting.methods.registry import METHODS, method_of
 from calibrate.records.observations import Observations
+from calibrate.registry import registered
 
 VALUES = np.array([18.2, 21.5, 19.9, 24.1, 20.3, 22.8, 17.6, 23.0, 21.1, 19.4, 20.8, 22.2])
 INF = np.inf

@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
-from types import MappingProxyType
+from collections.abc import Mapping
 
 from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.fitting.methods.base import Method
@@ -14,17 +13,7 @@ from calibrate.fitting.methods.likelihood import Likelihood, UnbiasedWeibull
 from calibrate.fitting.methods.moments import Moments
 from calibrate.fitting.methods.probability_paper import ProbabilityPaper
 from calibrate.fitting.methods.tails import LowerTail, UpperTail
-
-
-def registered(methods: Iterable[Method]) -> Mapping[str, Method]:
-    """Return the methods by name, in order; a name that comes twice is a mistake of ours."""
-    by_name: dict[str, Method] = {}
-    for method in methods:
-        if method.name in by_name:
-            raise ValueError(f"the method '{method.name}' is registered twice")
-        by_name[method.name] = method
-    return MappingProxyType(by_name)
-
+from calibrate.registry import registered
 
 METHODS: Mapping[str, Method] = registered(
     (
