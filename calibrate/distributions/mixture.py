@@ -162,9 +162,10 @@ def mixture(components: Distribution, weights: npt.ArrayLike) -> Mixture:
         raise InputError(f"A mixture of {components.shape} components needs as many weights; got {w.shape}.")
     if not (np.isfinite(w).all() and (w >= 0.0).all() and w.sum() > 0.0):
         raise InputError("The weights of a mixture must be zero or positive, and not all zero.")
+    w = w / w.sum()
     kept = np.flatnonzero(w > 0.0)
     chosen = components.take(kept)
-    w = w[kept] / w[kept].sum()
+    w = w[kept]
     w.setflags(write=False)
     first = tuple(np.asarray(v.flat[0]) for v in chosen.values)
     return Mixture(chosen.family, first, (), chosen, w)

@@ -25,20 +25,20 @@ def log_probability(
     Parameters
     ----------
     law : Distribution
-        Of shape ().
+        Of shape (), or of shape (K, 1) where no derivatives are asked for.
     lower, upper : array, shape (k,)
         May be infinite.
     names : tuple of str
 
     Returns
     -------
-    log_p : array, shape (k,)
+    log_p : array, shape (k,) or (K, k)
     slopes : array, shape (len(names), k)
     """
     below, above = _end(law, lower, names), _end(law, upper, names)
     log_p = _between(below, above)
     slopes = [below.weight(name, log_p) - above.weight(name, log_p) for name in names]
-    return log_p, np.array(slopes).reshape(len(names), log_p.size)
+    return log_p, np.array(slopes) if names else np.zeros((0, *log_p.shape))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -67,7 +67,7 @@ def _end(law: Distribution, x: Array, names: tuple[str, ...]) -> _End:
         )
     safe = x if finite.all() else np.where(finite, x, law.x(0.0))
     log_cdf, log_sf = law.logcdf(safe), law.logsf(safe)
-    log_density, slopes = np.full(x.shape, -np.inf), {}
+    log_density, slopes = np.asarray(-np.inf), {}
     if names:
         u = u_from_log_tails(log_cdf, log_sf)
         inside = finite & np.isfinite(u)

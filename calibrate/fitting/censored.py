@@ -115,15 +115,28 @@ def search_of(seen: Observations, name: str, fixed: Mapping[str, float], free: t
 
 def log_likelihood(law: Distribution, seen: Observations) -> float:
     """Return the log-likelihood of a distribution of shape () for observations of any kind, -inf where impossible."""
+    return float(log_likelihoods(law, seen))
+
+
+def log_likelihoods(laws: Distribution, seen: Observations) -> Array:
+    """Return the log-likelihood of each of several distributions, -inf where impossible.
+
+    Parameters
+    ----------
+    laws : Distribution
+        Of shape () or (K, 1).
+    seen : Observations
+        In the unit of the distributions.
+    """
     with np.errstate(all="ignore"):
         exact = seen.exact
-        value = float(np.sum(law.logpdf(seen.lower[exact])))
+        value = np.sum(laws.logpdf(seen.lower[exact]), axis=-1)
         if not exact.all():
-            value += float(np.sum(log_probability(law, seen.lower[~exact], seen.upper[~exact])[0]))
+            value = value + np.sum(log_probability(laws, seen.lower[~exact], seen.upper[~exact])[0], axis=-1)
         if seen.truncated:
-            limits, _ = log_probability(law, np.array([seen.above]), np.array([seen.below]))
-            value -= seen.n * float(limits[0])
-    return value if not math.isnan(value) else -math.inf
+            limits, _ = log_probability(laws, np.array([seen.above]), np.array([seen.below]))
+            value = value - seen.n * limits[..., 0]
+    return np.where(np.isnan(value), -np.inf, value)
 
 
 def _boundless(model: Model, seen: Observations, free: tuple[str, ...]) -> str:

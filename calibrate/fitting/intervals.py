@@ -156,12 +156,21 @@ class _Region:
             value, slope = quantity(self.top + self.root @ s)
             return -sign * (value - centre) / size, -sign * (self.root.T @ slope) / size
 
+        last: dict[bytes, tuple[float, Array]] = {}
+
+        def level(s: Array) -> tuple[float, Array]:
+            key = s.tobytes()
+            if key not in last:
+                last.clear()
+                last[key] = self.search.first(self.top + self.root @ s)
+            return last[key]
+
         def rest(s: Array) -> float:
-            value = self.search.first(self.top + self.root @ s)[0]
+            value = level(s)[0]
             return (value - self.best) / self.drop + share if math.isfinite(value) else -1e3
 
         def slopes(s: Array) -> Array:
-            return np.nan_to_num(self.root.T @ self.search.first(self.top + self.root @ s)[1]) / self.drop
+            return np.nan_to_num(self.root.T @ level(s)[1]) / self.drop
 
         found = minimize(
             cost, 0.9 * start, jac=True, method="SLSQP", bounds=[(-FARTHEST, FARTHEST)] * start.size,

@@ -17,13 +17,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.distributions import Distribution, distribution, family, mixture
-from calibrate.fitting.censored import Search, search_of
+from calibrate.fitting.censored import log_likelihoods, search_of
 from calibrate.fitting.result import Fit
 
 Array = NDArray[np.float64]
 
 NODES = {1: 15, 2: 9, 3: 7, 4: 5}
 """Quadrature points per parameter, by the number of parameters."""
+
+BLOCK = 1_000_000
+"""Densities held at a time."""
 
 
 def predictive(fit: Fit) -> Distribution | None:
@@ -67,28 +70,41 @@ def _mixed(fit: Fit) -> Distribution | None:
     centre = search.coordinates(inner)
     stretch = np.array([data.stretch(r.kind) * search.slope(r, inner[r.name]) for r in search.free])
     covariance = scatter / np.outer(stretch, stretch)
-    values, vectors = np.linalg.eigh(covariance)
-    root = vectors * np.sqrt(np.maximum(values, 0.0))
-    count = NODES.get(len(search.free), 5)
-    nodes, weights = np.polynomial.hermite_e.hermegauss(count)
-    grid = np.array(list(itertools.product(nodes, repeat=centre.size)))
-    weight = np.prod(np.array(list(itertools.product(weights, repeat=centre.size))), axis=1)
-    points = centre + grid @ root.T
-    if fit.method == "likelihood":
-        weight = weight * _likelihood_ratio(search, centre, points, grid)
-    rows = [search.parameters(t) for t in points]
+    nodes, weight = _nodes(covariance)
+    points = [search.parameters(centre + step) for step in nodes]
     member = family(fit.family)
     kinds = {r.name: r.kind for r in search.model.rules}
     parameters = tuple(
-        np.array([fit.fixed.get(p, data.outward(kinds[p], row[p])) for row in rows])
+        np.array([fit.fixed.get(p, data.outward(kinds[p], point[p])) for point in points])
         for p in member.parameter_names
     )
-    return mixture(Distribution.of(member, parameters), weight)
+    laws = Distribution.of(member, parameters)
+    if fit.method == "likelihood":
+        allowed = np.array([search.model.allowed(search.exact, p) for p in points])
+        weight = np.where(allowed, weight * _likelihood_ratios(fit, laws, nodes, covariance), 0.0)
+    return mixture(laws, weight)
 
 
-def _likelihood_ratio(search: Search, centre: Array, points: Array, grid: Array) -> Array:
-    """Return the likelihood at the points over that of the normal approximation, both one at the centre."""
-    with np.errstate(all="ignore"):
-        best = search.first(centre)[0]
-        logs = np.array([search.first(t)[0] for t in points]) - best
-        return np.where(np.isfinite(logs), np.exp(search.seen.n * logs + 0.5 * np.sum(grid**2, axis=1)), 0.0)
+def _nodes(covariance: Array) -> tuple[Array, Array]:
+    """Return points around zero, shape (K, f), and weights of Gauss-Hermite quadrature over a normal distribution.
+
+    The axes are those of the correlation, so that they do not turn with the unit of a coordinate.
+    """
+    spread = np.sqrt(np.diag(covariance))
+    scale = np.where(spread > 0.0, spread, 1.0)
+    values, vectors = np.linalg.eigh(covariance / np.outer(scale, scale))
+    root = scale[:, None] * vectors * np.sqrt(np.maximum(values, 0.0))
+    one, weights = np.polynomial.hermite_e.hermegauss(NODES.get(spread.size, 5))
+    grid = np.array(list(itertools.product(one, repeat=spread.size)))
+    return grid @ root.T, np.prod(np.array(list(itertools.product(weights, repeat=spread.size))), axis=1)
+
+
+def _likelihood_ratios(fit: Fit, laws: Distribution, nodes: Array, covariance: Array) -> Array:
+    """Return the likelihood of each distribution over that of the normal approximation, both one at the estimate."""
+    block = max(1, BLOCK // fit.n)
+    found = []
+    for at in range(0, len(nodes), block):
+        rows = tuple(np.reshape(v[at : at + block], (-1, 1)) if v.ndim else v for v in laws.values)
+        found.append(log_likelihoods(Distribution.of(laws.family, rows), fit.observations))
+    squares = np.sum(nodes * np.linalg.solve(covariance, nodes.T).T, axis=1)
+    return np.asarray(np.exp(np.concatenate(found) - fit.log_likelihood + 0.5 * squares))

@@ -157,6 +157,7 @@ def test_draws_follow_the_mixture():
 def test_components_without_weight_are_left_out():
     components = distribution("normal", location=np.array([0.0, 1e6, 2.0]), scale=np.array([1.0, 1.0, 1.0]))
     m = mixture(components, [2.0, 0.0, 2.0])
+    assert repr(mixture(components, [2e200, 1e-200, 2e200])) == repr(m)
     assert repr(m) == "<mixture of 2 normal distributions>"
     assert float(m.mean) == pytest.approx(1.0)
 
