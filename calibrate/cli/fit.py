@@ -184,8 +184,11 @@ def _print(found: SampleFit, out: Path | None) -> None:
     console.line(evidence.verdict(comparison, found.tests, None))
     intervals = interval_table(found)
     if intervals is not None and comparison.best is not None:
-        console.heading(f"95 % intervals of {comparison.best.family} (profile likelihood)")
+        console.heading(f"95 % intervals of {comparison.best.family}")
         console.report_table(intervals)
+    if found.modes:
+        console.heading("Failure modes as competing risks")
+        console.report_table(evidence.mode_table(found.modes))
     if found.lots is not None:
         console.heading("Lots")
         console.report_table(evidence.lot_table(found.lots))

@@ -80,6 +80,8 @@ def replicate(fit: Fit, count: int, n: int, rng: np.random.Generator) -> Replica
 def _row_fitter(fit: Fit) -> RowFitter | None:
     """Return the function that fits all rows at once, or None where there is none."""
     name, fixed = fit.family, fit.fixed
+    if fit.method == "moments" and model_of(name).third_parameter not in fit.free:
+        return lambda x: _by_moments(name, fixed, x)
     if fit.method != "likelihood":
         return None
     simple = set(fixed) <= {"threshold"}
@@ -111,6 +113,18 @@ def _on_paper(name: str, fixed: Mapping[str, float], x: Array) -> dict[str, Arra
     found = {paper.scale_name: 1.0 / scale if paper.inverse else scale}
     found[paper.level_name] = np.exp(level) if paper.logarithmic else level
     return {**{k: np.asarray(v) for k, v in fixed.items()}, **found}
+
+
+def _by_moments(name: str, fixed: Mapping[str, float], x: Array) -> dict[str, Array]:
+    """Return the parameters that have the mean and the standard deviation (n - 1) of each row."""
+    member = family(name)
+    sd = x.std(axis=1, ddof=1)
+    kept = {k: np.asarray(v) for k, v in fixed.items() if k in member.moments_keep}
+    given = {"mean": x.mean(axis=1), "sd": sd} if len(member.moment_names) == 2 else {"mean": x.mean(axis=1)}
+    try:
+        return member.solve({**kept, **given})
+    except InputError:  # some row has moments that no member has
+        return {p: np.full(x.shape[0], np.nan) for p in member.parameter_names}
 
 
 def _one_by_one(fit: Fit, x: Array) -> dict[str, Array]:

@@ -15,8 +15,10 @@ if TYPE_CHECKING:
     from calibrate.fitting import Comparison
     from calibrate.fitting.fit_tests import FitTests
     from calibrate.fitting.lots import LotScatter, Pooling
+    from calibrate.fitting.modes import ModeFit
     from calibrate.records import Sample
     from calibrate.records.screening import Finding, Screening
+    from calibrate.study.model import Quantity
     from calibrate.study.result import Result
 
 _TESTS = (
@@ -224,30 +226,57 @@ def lot_sentences(scatter: LotScatter, pooled: Pooling | None, stands_for: str) 
     return texts
 
 
+def mode_table(modes: Sequence[ModeFit]) -> Table:
+    """Return failures and fit of each failure mode."""
+    return Table(
+        (
+            Column("mode", [m.name for m in modes]),
+            Column("failures", [m.failures for m in modes], kind="number"),
+            Column("survived it", [m.survivors for m in modes], kind="number"),
+            Column("fit", [_mode_fit(m) for m in modes]),
+        )
+    )
+
+
+def _mode_fit(mode: ModeFit) -> str:
+    if mode.fit is None:
+        return "too few failures"
+    if not mode.fit.converged:
+        return mode.fit.reason
+    values = ", ".join(f"{k} = {numbers.significant(v, 4)}" for k, v in mode.fit.parameters.items())
+    return f"{mode.fit.family}, {values}"
+
+
 def bond_table(result: Result) -> Table:
     """Return every quantity that stands for a variable: what it is, and what the model implies for it."""
     found = result.biases
-    quantities = [result.study.quantities[b.quantity] for b in found]
+    quantities = [result.study.quantities.get(b.quantity) for b in found]
     return Table(
         (
             Column("quantity", [b.quantity for b in found], kind="name"),
             Column("of", [b.variable for b in found], kind="name"),
             Column("is", [b.value_type for b in found]),
             Column(
-                "value", [q.value / q.unit.factor for q in quantities], each(numbers.significant), "number"
+                "value",
+                [None if q is None else q.value / q.unit.factor for q in quantities],
+                each(numbers.significant),
+                "number",
             ),
-            Column("unit", [format_unit(q.unit.text) if q.unit.text else "" for q in quantities]),
+            Column(
+                "unit",
+                [format_unit(q.unit.text) if q is not None and q.unit.text else "" for q in quantities],
+            ),
             Column("mean / value", [numbers.span(b.bias, 4) for b in found], kind="number"),
             Column("P(variable < value)", [_percent_span(b.fractile) for b in found], kind="number"),
-            Column(
-                "how",
-                [
-                    q.characteristic.statement if q.characteristic is not None else "as typed"
-                    for q in quantities
-                ],
-            ),
+            Column("how", [_how(q) for q in quantities]),
         )
     )
+
+
+def _how(quantity: Quantity | None) -> str:
+    if quantity is None:
+        return "differs between situations"
+    return quantity.characteristic.statement if quantity.characteristic is not None else "as typed"
 
 
 def _percent_span(values: tuple[float, float]) -> str:

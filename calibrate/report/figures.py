@@ -109,6 +109,8 @@ def _unit(sample: Sample) -> str:
 
 def tail_of(result: Result, name: str) -> str | None:
     """Return the tail of a variable that decides: by its role, else by the sign of its sensitivity factors."""
+    if result.study.variables[name].tail:
+        return result.study.variables[name].tail
     role = result.study.variables[name].role
     if role in ("resistance", "action"):
         return "lower" if role == "resistance" else "upper"

@@ -130,12 +130,22 @@ def fit_dict(found: SampleFit) -> dict[str, Any]:
         "intervals": {
             "confidence": CONFIDENCE,
             "parameters": {k: [_number(v) for v in ends] for k, ends in found.intervals.items()},
+            "fractiles": {f"{p:g}": [_number(v) for v in ends] for p, ends in found.fractiles.items()},
         },
         "findings": [
             {"code": f.code, "level": f.level, "message": f.message} for f in found.screening.findings
         ],
         "doubts": [{"code": d.code, "message": d.message, "where": d.where} for d in found.doubts],
     }
+    if found.modes:
+        content["modes"] = [
+            {
+                "name": m.name,
+                "failures": m.failures,
+                "parameters": {} if m.fit is None else {k: _number(v) for k, v in m.fit.parameters.items()},
+            }
+            for m in found.modes
+        ]
     if found.lots is not None:
         content["lots"] = {
             "scale": found.lots.scale,

@@ -38,6 +38,8 @@ def fit_html(found: SampleFit, figures: Mapping[str, Rendered]) -> bytes:
         "lots": None if found.lots is None else evidence.lot_table(found.lots),
         "lot_sentences": [] if found.lots is None else evidence.lot_sentences(found.lots, found.pooled, ""),
         "characteristic": found.characteristic,
+        "modes": evidence.mode_table(found.modes) if found.modes else None,
+        "by_profile": found.comparison.best is not None and found.comparison.best.method == "likelihood",
         "doubts": found.doubts,
         "figures": drawn,
         "papers": [name for name in drawn if name.startswith("probability_")],
@@ -52,17 +54,18 @@ def fit_html(found: SampleFit, figures: Mapping[str, Rendered]) -> bytes:
 
 
 def interval_table(found: SampleFit) -> Table | None:
-    """Return the profile-likelihood intervals of the recommended family; None where there are none."""
+    """Return intervals of parameters and fractiles of the recommended family; None where there are none."""
     best = found.comparison.best
-    if best is None or not found.intervals:
+    if best is None or best.distribution is None or not found.intervals:
         return None
-    names = list(found.intervals)
-    ends = [found.intervals[name] for name in names]
+    rows = [(name, best.parameters[name], ends) for name, ends in found.intervals.items()]
+    for p, ends in found.fractiles.items():
+        rows.append((f"{100.0 * p:g} % fractile", float(best.distribution.ppf(p)), ends))
     return Table(
         (
-            Column("parameter", names),
-            Column("estimate", [numbers.significant(best.parameters[n], 5) for n in names], kind="number"),
-            Column("from", [numbers.significant(low, 5) for low, _ in ends], kind="number"),
-            Column("to", [numbers.significant(high, 5) for _, high in ends], kind="number"),
+            Column("parameter or fractile", [name for name, _, _ in rows]),
+            Column("estimate", [numbers.significant(value, 5) for _, value, _ in rows], kind="number"),
+            Column("from", [numbers.significant(ends[0], 5) for _, _, ends in rows], kind="number"),
+            Column("to", [numbers.significant(ends[1], 5) for _, _, ends in rows], kind="number"),
         )
     )

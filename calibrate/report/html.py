@@ -137,6 +137,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             for name, f in result.fitted.items()
             if f.lots is not None
         },
+        "modes": {name: evidence.mode_table(f.modes) for name, f in result.fitted.items() if f.modes},
         "bonds": evidence.bond_table(result),
         "pedigree": evidence.pedigree_table(result),
         "captions": {"sample": sample_figure.CAPTION, "tail": tail_figure.CAPTION},

@@ -27,7 +27,8 @@ class ImpliedBias:
     ----------
     quantity, variable : str
     value_type : str
-        ``5 % fractile``, ``mean``, ``nominal`` or ``declared``.
+        ``5 % fractile``, ``mean``, ``nominal`` or ``declared``; ``basis of the model`` where the mean of the variable
+        is written in terms of the quantity.
     bias : (float, float)
         Mean of the variable over the value, smallest and largest over the design situations.
     fractile : (float, float)
@@ -81,7 +82,36 @@ def implied_biases(
         doubts += _type_doubts(quantity, bias, below, study.variables[quantity.of].role)
     if problems:
         raise InputError(problems)
+    said = {b.variable for b in found}
+    found += [b for name in study.variables if name not in said for b in _basis(study, name, distributions)]
     return tuple(found), tuple(doubts)
+
+
+def _basis(study: Study, name: str, distributions: Mapping[str, Sequence[Distribution]]) -> list[ImpliedBias]:
+    """Return the bias of a variable over the one quantity of its dimension that its mean is written in terms of."""
+    variable = study.variables[name]
+    expression = variable.arguments.get("mean") or variable.arguments.get("median")
+    laws = distributions.get(name)
+    if expression is None or len(expression.names) != 1 or not laws:
+        return []
+    basis = expression.names[0]
+    if basis in study.quantities:
+        value = np.asarray(study.quantities[basis].value)
+        dimension = study.quantities[basis].unit.dimension
+    elif basis in study.situations.derived or basis in study.situations.columns:
+        value = np.asarray({**study.situations.columns, **study.situations.derived}[basis])
+        unit = study.situations.units.get(basis)
+        dimension = variable.dimension if unit is None else unit.dimension
+    else:
+        return []
+    if dimension != variable.dimension or value.dtype.kind != "f" or not (value > 0.0).all():
+        return []
+    bias = np.concatenate([np.atleast_1d(law.mean / value) for law in laws])
+    below = np.concatenate([np.atleast_1d(law.cdf(value)) for law in laws])
+    if not np.isfinite(bias).all():
+        return []
+    ends = (float(bias.min()), float(bias.max()))
+    return [ImpliedBias(basis, name, "basis of the model", ends, (float(below.min()), float(below.max())))]
 
 
 def _against(quantity: Quantity, laws: Sequence[Distribution]) -> tuple[Array, Array]:

@@ -14,8 +14,11 @@ from calibrate.fitting import Comparison, Fit, compare
 from calibrate.fitting.fit_tests import FitTests, run_fit_tests
 from calibrate.fitting.lots import LotScatter, Pooling, lot_scatter, pooling, population
 from calibrate.fitting.lots.grouping import Scale
+from calibrate.fitting.modes import ModeFit, fit_modes
 from calibrate.fitting.predictive import predictive
 from calibrate.records import Sample
+from calibrate.records.screening import FailureMode, failure_modes
+from calibrate.study.family_doubts import choice_doubts, rival_doubts
 from calibrate.study.model import Study, Variable
 
 WORTH_TESTING = 10.0
@@ -52,6 +55,8 @@ class FittedVariable:
     doubts: tuple[Doubt, ...] = ()
     fit_factor: float = 1.0
     """SI value of the unit of the records."""
+    modes: tuple[ModeFit, ...] = ()
+    """Failure modes fitted as competing risks, where the records name several."""
 
 
 def fit_variables(study: Study) -> dict[str, FittedVariable]:
@@ -87,8 +92,12 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
     assert variable.records is not None
     sample = study.records[variable.records]
     fixed = _fixed_in_sample_unit(variable, sample.unit.factor)
+    modes = _modes(sample)
+    observations = sample.observations
+    if variable.failure_mode is not None:
+        observations = next(m.observations for m in modes if m.name == variable.failure_mode)
     comparison = compare(
-        sample.observations,
+        observations,
         variable.families or None,
         method=variable.method,
         fixed=fixed,
@@ -107,16 +116,24 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
         if c.converged and c.aicc - chosen.aicc < WORTH_TESTING
         if (found := run_fit_tests(c, stream(study.seed, "fit tests", variable.name, c.family))) is not None
     }
-    doubts = (*doubts, *_choice_doubts(variable, chosen, tests))
+    used, normalised = _with_normalisation(used, sample, f"variables.{variable.name}")
+    doubts = (
+        *doubts,
+        *choice_doubts(variable, chosen, tests),
+        *rival_doubts(variable, chosen),
+        *normalised,
+    )
+    mode_fits = fit_modes(modes, chosen.family) if len(modes) > 1 else ()
     return FittedVariable(
-        chosen,
-        comparison,
-        used.scaled(sample.unit.factor),
-        tests,
-        scatter,
-        pooled,
-        doubts,
-        sample.unit.factor,
+        fit=chosen,
+        comparison=comparison,
+        distribution=used.scaled(sample.unit.factor),
+        tests=tests,
+        lots=scatter,
+        pooled=pooled,
+        doubts=doubts,
+        fit_factor=sample.unit.factor,
+        modes=mode_fits,
     )
 
 
@@ -186,38 +203,39 @@ def analyse_lots(
     return scatter, pooled, doubts
 
 
-def _choice_doubts(variable: Variable, chosen: Fit, tests: Mapping[str, FitTests]) -> list[Doubt]:
-    """Doubt a family that the sample speaks against, and one whose tail is on the wrong side for the role."""
-    where = f"variables.{variable.name}"
-    doubts = []
-    found = tests.get(chosen.family)
-    if found is not None and found.rejected("anderson_darling"):
-        doubts.append(
-            Doubt(
-                "family-rejected",
-                f"The sample speaks against the family {chosen.family}: an Anderson–Darling distance as large as A² = "
-                f"{found.statistics['anderson_darling']:.3g} has a probability of "
-                f"{found.p_values['anderson_darling']:.2g} under it.",
-                where,
-            )
+def _modes(sample: Sample) -> tuple[FailureMode, ...]:
+    if "mode" not in sample.labels:
+        return ()
+    return failure_modes(sample.observations, [str(m) or None for m in sample.labels["mode"]])
+
+
+def _with_normalisation(
+    used: Distribution, sample: Sample, where: str
+) -> tuple[Distribution, tuple[Doubt, ...]]:
+    """Carry the scatter of fitted exponents: the mean variance that it adds to the logarithm of a specimen."""
+    if sample.normalisation is None:
+        return used, ()
+    added = float(np.mean(sample.normalisation.added_variance))
+    if not added > 0.0:
+        return used, ()
+    share = f"a cov of {np.sqrt(added):.2g}"
+    if used.family.name == "lognormal":
+        median, log_sd = (float(v) for v in used.values)
+        text = f"The exponents of the normalisation are estimates; their scatter, {share}, was added to the variable."
+        wider = distribution("lognormal", median=median, log_sd=float(np.sqrt(log_sd**2 + added)))
+        return wider, (Doubt("normalisation-carried", text, where),)
+    if used.family.name == "normal":
+        location, scale = (float(v) for v in used.values)
+        text = f"The exponents of the normalisation are estimates; their scatter, {share}, was added to the variable."
+        wider = distribution(
+            "normal", location=location, scale=float(np.sqrt(scale**2 + location**2 * added))
         )
-    tail = {"resistance": "lower_tail", "action": "upper_tail"}.get(variable.role)
-    if (
-        found is not None
-        and tail is not None
-        and found.rejected(tail)
-        and not found.rejected("anderson_darling")
-    ):
-        side = tail.partition("_")[0]
-        doubts.append(
-            Doubt(
-                "tail-rejected",
-                f"In the {side} tail, where failures come from, the sample speaks against the family {chosen.family} "
-                f"(p = {found.p_values[tail]:.2g}), although over the whole range it does not.",
-                where,
-            )
-        )
-    return doubts
+        return wider, (Doubt("normalisation-carried", text, where),)
+    text = (
+        f"The exponents of the normalisation are estimates; their scatter, {share}, is not in the variable. It is "
+        "carried for the families normal and lognormal."
+    )
+    return used, (Doubt("normalisation-not-carried", text, where),)
 
 
 def _fixed_in_sample_unit(variable: Variable, factor: float) -> dict[str, float]:

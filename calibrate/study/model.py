@@ -73,6 +73,10 @@ class Variable:
     """Whether the variable carries the uncertainty of its estimated parameters."""
     role: str = ""
     """``resistance``, ``action``, ``geometry`` or ``model``; empty where nothing is said."""
+    tail: str = ""
+    """``lower`` or ``upper``: the tail that decides, where the study says so."""
+    failure_mode: str | None = None
+    """Which of the modes named by the records it is the strength of; failures in others are survivors of this one."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
 

@@ -5,25 +5,30 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
+import numpy as np
+
 from calibrate.distributions import Distribution
 from calibrate.engine import stream
 from calibrate.errors import Doubt
-from calibrate.fitting import Comparison, compare, fit_family
+from calibrate.fitting import Comparison, Fit, compare, fit_family
+from calibrate.fitting.bootstrap_intervals import bootstrap_intervals
 from calibrate.fitting.characteristic import (
     CharacteristicValue,
     characteristic_value,
     characteristic_value_of_lots,
 )
 from calibrate.fitting.fit_tests import FitTests, run_fit_tests
-from calibrate.fitting.intervals import Interval, parameter_intervals
+from calibrate.fitting.intervals import Interval, fractile_interval, parameter_intervals
 from calibrate.fitting.lots import LotScatter, Pooling
+from calibrate.fitting.modes import ModeFit, fit_modes
 from calibrate.records import Observations, Sample
 from calibrate.records.screening import Screening
 from calibrate.study.fits import WORTH_TESTING, analyse_lots
 from calibrate.study.screening import screen_sample
 
 CONFIDENCE = 0.95
-"""Of the intervals of parameters."""
+"""Of the intervals of parameters and fractiles."""
+FRACTILES = (0.01, 0.05, 0.5, 0.95, 0.99)
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,9 +62,11 @@ class SampleFit:
     comparison: Comparison
     tests: Mapping[str, FitTests]
     intervals: Mapping[str, Interval]
+    fractiles: Mapping[float, Interval]
     lots: LotScatter | None = None
     pooled: Pooling | None = None
     characteristic: CharacteristicValue | None = None
+    modes: tuple[ModeFit, ...] = ()
     doubts: tuple[Doubt, ...] = field(default=())
 
 
@@ -94,6 +101,7 @@ def fit_sample(
     best = comparison.best
     tests: dict[str, FitTests] = {}
     intervals: Mapping[str, Interval] = {}
+    fractiles: Mapping[float, Interval] = {}
     lots, pooled = None, None
     doubts: tuple[Doubt, ...] = ()
     if best is not None:
@@ -103,8 +111,7 @@ def fit_sample(
             found = run_fit_tests(candidate, stream(seed, "fit tests", sample.name, candidate.family))
             if found is not None:
                 tests[candidate.family] = found
-        if method == "likelihood" and best.family != "uniform":
-            intervals = parameter_intervals(best, CONFIDENCE)
+        intervals, fractiles = _intervals(best, stream(seed, "intervals", sample.name))
         lots, pooled, doubts = analyse_lots(sample, best.family, f"records.{sample.name}", seed)
     characteristic = None
     if asked is not None and best is not None:
@@ -112,7 +119,34 @@ def fit_sample(
         doubts = (*doubts, *characteristic.doubts)
     screening = screen_sample(sample, seed=seed)
     doubts = (*screening.doubts(f"records.{sample.name}"), *doubts)
-    return SampleFit(sample, screening, comparison, tests, intervals, lots, pooled, characteristic, doubts)
+    modes: tuple[ModeFit, ...] = ()
+    if best is not None and len(screening.modes) > 1:
+        modes = fit_modes(screening.modes, best.family)
+    return SampleFit(
+        sample,
+        screening,
+        comparison,
+        tests,
+        intervals,
+        fractiles,
+        lots,
+        pooled,
+        characteristic,
+        modes,
+        doubts,
+    )
+
+
+def _intervals(
+    best: Fit, rng: np.random.Generator
+) -> tuple[Mapping[str, Interval], Mapping[float, Interval]]:
+    """Return intervals of parameters and fractiles: by profile likelihood, else by bootstrap where that is possible."""
+    if best.method == "likelihood" and best.family != "uniform":
+        found = parameter_intervals(best, CONFIDENCE)
+        return found, {p: fractile_interval(best, p, CONFIDENCE) for p in FRACTILES}
+    if best.observations.complete and best.family != "uniform":
+        return bootstrap_intervals(best, rng, CONFIDENCE, FRACTILES)
+    return {}, {}
 
 
 def _characteristic(sample: Sample, family: str, asked: Asked, seed: int) -> CharacteristicValue:

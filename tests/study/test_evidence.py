@@ -228,3 +228,86 @@ def test_slips_of_records_are_told(study, text, words):
     with pytest.raises(InputError) as caught:
         study(records=text)
     assert words in str(caught.value)
+
+
+def test_the_bias_of_a_model_over_its_own_basis_is_computed(study):
+    made = study(quantities='S_k = "25 kN"')
+    import dataclasses
+
+    from calibrate.expressions import parse
+
+    basis = dataclasses.replace(
+        made.variables["S"], arguments={**made.variables["S"].arguments, "mean": parse("0.8 * S_k")}
+    )
+    result = calibrate.run(dataclasses.replace(made, variables={**made.variables, "S": basis}))
+    (bias,) = result.biases
+    assert (bias.quantity, bias.variable, bias.value_type) == ("S_k", "S", "basis of the model")
+    assert bias.bias == pytest.approx((0.8, 0.8), rel=1e-12)
+
+
+def test_failure_modes_are_fitted_as_competing_risks(study):
+    lines = (study().path.parent / "rods.csv").read_text(encoding="utf-8").splitlines()
+    modes = ["thread", "shank"] * 16
+    records = 'mode = "mode"'
+    made = study()
+    path = made.path.parent / "rods.csv"
+    path.write_text(
+        "\n".join([lines[0] + ",mode", *(f"{a},{m}" for a, m in zip(lines[1:], modes, strict=True))]) + "\n"
+    )
+    text = made.path.read_text(encoding="utf-8")
+    for variable, count in (("", None), ('failure_mode = "shank"', 16)):
+        made.path.write_text(
+            text.replace('lot = "lot"\n', f'lot = "lot"\n{records}\n').replace(
+                'role = "resistance"', f'role = "resistance"\n{variable}'
+            ),
+            encoding="utf-8",
+        )
+        result = calibrate.run(calibrate.read_study(made.path))
+        fits = {m.name: m for m in result.fitted["F"].modes}
+        assert {(n, m.failures, m.survivors) for n, m in fits.items()} == {
+            ("thread", 16, 16),
+            ("shank", 16, 16),
+        }
+        if count is not None:
+            used = result.fitted["F"].fit
+            assert used.observations.n_exact == count
+            assert used.parameters == fits["shank"].fit.parameters
+        # The weakest of both modes has the strength of all specimens together.
+        from calibrate.fitting.modes import weakest_below
+
+        median = np.median(VALUES)
+        assert float(weakest_below(list(fits.values()), np.array([median]))[0]) == pytest.approx(0.5, abs=0.1)
+    made.path.write_text(
+        text.replace('lot = "lot"\n', f'lot = "lot"\n{records}\n').replace(
+            'role = "resistance"', 'failure_mode = "weld"'
+        )
+    )
+    with pytest.raises(InputError, match="does not occur among the failure modes"):
+        calibrate.read_study(made.path)
+
+
+def test_a_family_that_others_beat_is_kept_and_reported(study):
+    result = calibrate.run(study(variable="").__class__(**_changed(study, "frechet")))
+    assert result.variables["F"].family == "frechet"
+    assert "not-recommended" in {d.code for d in result.doubts}
+
+
+def test_the_scatter_of_fitted_exponents_widens_the_variable(study):
+    made = study()
+    path = made.path.parent / "rods.csv"
+    lines = path.read_text(encoding="utf-8").splitlines()
+    t = np.round(np.exp(RNG.normal(0.0, 0.15, 32)) * 1.4, 3)
+    path.write_text(
+        "\n".join([lines[0] + ",t", *(f"{a},{x}" for a, x in zip(lines[1:], t, strict=True))]) + "\n"
+    )
+    text = made.path.read_text(encoding="utf-8")
+    options = 'normalise = { t = { reference = "1.5", exponent = "fit" } }'.replace('"1.5"', "1.5")
+    made.path.write_text(text.replace('lot = "lot"\n', f'lot = "lot"\n{options}\n'), encoding="utf-8")
+    result = calibrate.run(calibrate.read_study(made.path))
+    added = float(np.mean(result.study.records["rods"].normalisation.added_variance))
+    plain = result.fitted["F"].fit.parameters["log_sd"]
+    assert added > 0
+    assert result.variables["F"].parameters["log_sd"][0] == pytest.approx(
+        np.hypot(plain, np.sqrt(added)), rel=1e-12
+    )
+    assert "normalisation-carried" in {d.code for d in result.doubts}

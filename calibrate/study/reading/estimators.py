@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
-from calibrate.errors import InputError
+from calibrate.errors import InputError, did_you_mean
 from calibrate.fitting.methods.registry import method_of
 from calibrate.study.reading import schema
 from calibrate.study.reading.subject import Subject
@@ -24,7 +24,7 @@ class MethodChoice:
 
 def read_method(subject: Subject, content: schema.VariableEntry) -> MethodChoice | None:
     """Return how a variable is fitted; None with problems."""
-    if not _lots_fit(subject, content):
+    if not _lots_fit(subject, content) or not _mode_fits(subject, content):
         return None
     raw = content.method
     if raw is None:
@@ -72,6 +72,31 @@ def _prior_mean(subject: Subject, content: schema.VariableEntry, raw: float | st
         )
         return None
     return value.number * value.unit.factor / sample.unit.factor
+
+
+def _mode_fits(subject: Subject, content: schema.VariableEntry) -> bool:
+    """Check the failure mode that a variable names."""
+    if content.failure_mode is None:
+        return True
+    sample = subject.around.records.get(content.records or "")
+    if sample is None:
+        return False
+    if "mode" not in sample.labels:
+        subject.problem(
+            f"names a failure mode, but the records '{content.records}' name no column of modes.",
+            "failure_mode",
+            suggestion='Add mode = "COLUMN" to the records.',
+        )
+        return False
+    known = list(dict.fromkeys(str(m) for m in sample.labels["mode"] if m))
+    if content.failure_mode not in known:
+        subject.problem(
+            f"'{content.failure_mode}' does not occur among the failure modes of the records.",
+            "failure_mode",
+            suggestion=did_you_mean(content.failure_mode, known),
+        )
+        return False
+    return True
 
 
 def _lots_fit(subject: Subject, content: schema.VariableEntry) -> bool:

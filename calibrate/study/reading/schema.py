@@ -171,6 +171,8 @@ class VariableEntry(Section):
     lot: Text | None = None
     predictive: bool = False
     role: Literal["resistance", "action", "geometry", "model"] | None = None
+    tail: Literal["lower", "upper"] | None = None
+    failure_mode: Text | None = None
     period: Positive | None = None
     unit: str | None = None
     description: str = ""

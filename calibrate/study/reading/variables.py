@@ -42,7 +42,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     families = _families(subject, content)
     unit = read_unit(reading, content.unit, subject.place("unit"))
     if content.records is None:
-        for key in ("method", "estimate", "stands_for", "lot", "predictive"):
+        for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode"):
             if getattr(content, key):
                 subject.problem("says how to fit, but the variable has no records.", key)
     method = read_method(subject, content)
@@ -128,6 +128,8 @@ def _variable(
         lot=content.lot,
         predictive=content.predictive,
         role=content.role or "",
+        tail=content.tail or "",
+        failure_mode=content.failure_mode,
         may_be_negative=content.may_be_negative,
         description=content.description.strip(),
         source=content.source.strip(),
