@@ -77,7 +77,7 @@ def test_only_the_level_is_uncertain_and_counted(family):
     assert found.aicc == pytest.approx(-2 * found.log_likelihood + 2 * N / (N - 2), rel=1e-12)
 
 
-@pytest.mark.parametrize("family", ["normal", "gumbel", "weibull"])
+@pytest.mark.parametrize("family", ["normal", "lognormal", "gumbel"])
 def test_standard_error_of_the_level_is_its_scatter(family):
     law, rng = distribution(family, mean=30.0, cov=COV), np.random.default_rng(6)
     fits = [known(family, x) for x in law.sample(rng, (200, 20))]

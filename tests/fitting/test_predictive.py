@@ -67,7 +67,7 @@ def test_large_samples_leave_the_fit(cases):
 @pytest.mark.parametrize("family", ["weibull", "gumbel"])
 def test_a_further_specimen_lies_below_as_often_as_predicted(family):
     """Over samples of twenty, the true probability below the predicted 1 % fractile is 1 % on average."""
-    law, rng, count = distribution(family, mean=30.0, cov=0.2), np.random.default_rng(5), 200
+    law, rng, count = distribution(family, mean=30.0, cov=0.2), np.random.default_rng(5), 150
     fits = [fit_family(x, family) for x in law.sample(rng, (count, 20))]
     below = np.array([float(law.cdf(predictive(f).ppf(0.01))) for f in fits])
     plain = np.array([float(law.cdf(f.distribution.ppf(0.01))) for f in fits])
