@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
@@ -123,8 +124,13 @@ def _by_moments(name: str, fixed: Mapping[str, float], x: Array) -> dict[str, Ar
     given = {"mean": x.mean(axis=1), "sd": sd} if len(member.moment_names) == 2 else {"mean": x.mean(axis=1)}
     try:
         return member.solve({**kept, **given})
-    except InputError:  # some row has moments that no member has
-        return {p: np.full(x.shape[0], np.nan) for p in member.parameter_names}
+    except InputError:  # some rows have moments that no member has; the others are solved one by one
+        found = {p: np.full(x.shape[0], np.nan) for p in member.parameter_names}
+        for k in range(x.shape[0]):
+            with contextlib.suppress(InputError):
+                for p, value in member.solve({**kept, **{m: v[k] for m, v in given.items()}}).items():
+                    found[p][k] = value
+        return found
 
 
 def _one_by_one(fit: Fit, x: Array) -> dict[str, Array]:
