@@ -43,7 +43,7 @@ def whole_lattice(response, penalty, floor):
 
 @pytest.mark.parametrize("penalty", ["squared", "asymmetric", "minimax"])
 @pytest.mark.parametrize("floor", [None, 3.65])
-@pytest.mark.parametrize("step", [0.1, 0.07])
+@pytest.mark.parametrize("step", [0.1, 0.14])
 def test_the_search_finds_the_best_point_of_the_whole_lattice(kit, penalty, floor, step):
     factors = (
         kit.free("gamma_M", 1.1, 0.8, 1.6, step),

@@ -159,7 +159,7 @@ def test_the_unit_does_not_matter(cases, name):
 def test_random_censoring_does_not_bias():
     family, truth = "weibull", {"scale": 40.0, "shape": 3.0}
     rng = np.random.default_rng(11)
-    law, count, n = distribution(family, **truth), 200, 60
+    law, count, n = distribution(family, **truth), 100, 60
     estimates, errors, censored = [], [], []
     for _ in range(count):
         # The limit has the life's own distribution, raised so that it comes first in about 40 of 100.

@@ -96,7 +96,7 @@ def test_ends_lie_on_the_level_and_hold_the_estimate(regular):
 
 
 def test_coverage_of_the_five_per_cent_fractile():
-    law, rng, count = distribution("weibull", scale=40.0, shape=3.0), np.random.default_rng(15), 300
+    law, rng, count = distribution("weibull", scale=40.0, shape=3.0), np.random.default_rng(15), 150
     truth, hits = float(law.ppf(0.05)), 0
     for x in law.sample(rng, (count, 40)):
         low, high = fractile_interval(fit_family(x, "weibull"), 0.05, 0.9)

@@ -75,7 +75,7 @@ def test_one_lot_is_an_ordinary_sample():
 @pytest.mark.parametrize(("sizes", "share"), [([6, 4, 8, 5] * 3, 0.5), ([3, 10, 5, 2, 7], 0.8)])
 def test_intervals_cover_as_often_as_they_claim(simulate, sizes, share):
     rng = np.random.default_rng(11)
-    between, within, samples = math.sqrt(share), math.sqrt(1 - share), 300
+    between, within, samples = math.sqrt(share), math.sqrt(1 - share), 200
     covered = np.zeros(3, dtype=int)
     for _ in range(samples):
         sample = simulate(rng, sizes, between, within)
