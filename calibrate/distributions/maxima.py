@@ -15,6 +15,7 @@ import numpy.typing as npt
 
 from calibrate.distributions.arguments import as_array, require
 from calibrate.distributions.distribution import Distribution
+from calibrate.distributions.mixture import Mixture
 from calibrate.distributions.normal_tails import (
     from_log_hazard,
     log_hazard,
@@ -168,7 +169,8 @@ def _repeated(base: Distribution, ratio: npt.ArrayLike, of_maxima: bool) -> Dist
     if isinstance(base, Extreme) and base.of_maxima == of_maxima:
         return _repeated(base.base, base.ratio * ratio, of_maxima)
     equivalent = None
-    if not isinstance(base, Extreme):
+    # A mixture has the name of a family, but is none of its members.
+    if not isinstance(base, Extreme | Mixture):
         declared = base.family.maximum_parameters if of_maxima else base.family.minimum_parameters
         closed = declared(base.values, ratio)
         equivalent = None if closed is None else Distribution.of(base.family, closed)

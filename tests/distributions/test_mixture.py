@@ -183,3 +183,16 @@ def test_components_must_be_a_row():
     one = distribution("normal", location=0.0, scale=1.0)
     with pytest.raises(InputError, match="as many weights"):
         mixture(one, 1.0)
+
+
+def test_the_maximum_of_a_mixture_is_not_that_of_a_member():
+    from calibrate.distributions import distribution, maximum_of, mixture
+
+    components = distribution("gumbel", location=np.array([1.0, 2.0]), scale=np.array([0.2, 0.5]))
+    mixed = mixture(components, [0.7, 0.3])
+    largest = maximum_of(mixed, 50.0)
+    x = np.array([1.5, 2.5, 4.0, 6.0])
+    exact = (0.7 * components.take(np.array([0])).cdf(x) + 0.3 * components.take(np.array([1])).cdf(x)) ** 50
+    np.testing.assert_allclose(largest.cdf(x), exact, rtol=1e-10)
+    u = np.array([-2.0, 0.0, 3.0])
+    np.testing.assert_allclose(largest.u(largest.x(u)), u, atol=1e-9)
