@@ -6,7 +6,7 @@ Knows nothing of units, files, samples or limit states.
 
 from calibrate.distributions.distribution import Distribution
 from calibrate.distributions.family import Family
-from calibrate.distributions.maxima import Extreme, maximum_of, minimum_of
+from calibrate.distributions.maxima import Extreme, maximum_of, minimum_of, ratio_slope
 from calibrate.distributions.mixture import Mixture, mixture
 from calibrate.distributions.parameter import Parameter
 from calibrate.distributions.registry import distribution, family, family_names
@@ -23,4 +23,5 @@ __all__ = [
     "maximum_of",
     "minimum_of",
     "mixture",
+    "ratio_slope",
 ]

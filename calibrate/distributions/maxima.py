@@ -177,6 +177,27 @@ def _repeated(base: Distribution, ratio: npt.ArrayLike, of_maxima: bool) -> Dist
     return _extreme(base, ratio, of_maxima, equivalent)
 
 
+def ratio_slope(base: Distribution, ratio: npt.ArrayLike, u: npt.ArrayLike, *, of_maxima: bool) -> Array:
+    """Return dx/d ratio at fixed u of the maximum (minimum) of ``ratio`` repetitions.
+
+    Parameters
+    ----------
+    base : Distribution
+        Distribution of one repetition.
+    ratio : float or array
+        Number of repetitions, positive.
+    u : array
+        Standard normal values of the extreme.
+    of_maxima : bool
+    """
+    sign = 1.0 if of_maxima else -1.0
+    r, u = np.asarray(ratio, dtype=np.float64), np.asarray(u, dtype=np.float64)
+    w = from_log_hazard(log_hazard(sign * u) - np.log(r))
+    # k(w) = k(u) - ln r, so that dw/d ln r = -1/k'(w).
+    slope = base.x_slope(sign * w)[1]
+    return np.asarray(-sign * slope / (log_hazard_slope(w)[1] * r))
+
+
 def maximum_of(base: Distribution, ratio: npt.ArrayLike) -> Distribution:
     """Return the distribution F**ratio of the maximum of ``ratio`` independent repetitions.
 

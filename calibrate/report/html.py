@@ -22,6 +22,7 @@ from calibrate.report.fit_files import candidate_table
 from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
 from calibrate.report.probability_paper import CAPTION
 from calibrate.report.symbols import Html
+from calibrate.study.other_periods import WHY
 
 if TYPE_CHECKING:
     from jinja2 import Environment
@@ -141,6 +142,8 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "bonds": evidence.bond_table(result),
         "pedigree": evidence.pedigree_table(result),
         "captions": {"sample": sample_figure.CAPTION, "tail": tail_figure.CAPTION},
+        "periods": outcome.period_table(result),
+        "why_periods": WHY,
         "sized": any(r.size is not None for r in study.rules.values()),
         "sizes": outcome.size_table(result, changes) if changes else None,
         "smaller": _rows(result, losers[0]),

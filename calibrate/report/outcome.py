@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -152,6 +153,31 @@ class SizeChange:
         """Return the weight of the situations whose size grows (+1), shrinks (−1) or stays (0)."""
         change = np.where(np.abs(self.ratio - 1.0) < SAME_SIZE, 0, np.sign(self.ratio - 1.0))
         return float(self.weight[change == sign].sum())
+
+
+def period_table(result: Result) -> Table | None:
+    """Return beta for other periods, with the proposed factors; None where the study asks for none."""
+    if not result.other_periods:
+        return None
+    weight = result.situations["weight"].to_numpy(float)
+
+    def figures(beta: NDArray[np.float64]) -> tuple[float, float]:
+        there = np.isfinite(beta) & (weight > 0)
+        if not there.any():
+            return math.nan, math.nan
+        return float(np.average(beta[there], weights=weight[there])), float(beta[there].min())
+
+    converted = [figures(p.converted) for p in result.other_periods]
+    direct = [figures(p.direct) for p in result.other_periods]
+    return Table(
+        (
+            Column("period", [numbers.years(p.period) for p in result.other_periods]),
+            Column("mean", [m for m, _ in converted], each(numbers.beta), "number", group="β converted"),
+            Column("min", [m for _, m in converted], each(numbers.beta), "number", group="β converted"),
+            Column("mean", [m for m, _ in direct], each(numbers.beta), "number", group="β recomputed"),
+            Column("min", [m for _, m in direct], each(numbers.beta), "number", group="β recomputed"),
+        )
+    )
 
 
 def size_changes(result: Result) -> list[SizeChange]:

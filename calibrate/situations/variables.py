@@ -9,7 +9,15 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from calibrate.distributions import Distribution, Extreme, distribution, family, maximum_of
+from calibrate.distributions import (
+    Distribution,
+    Extreme,
+    distribution,
+    family,
+    maximum_of,
+    minimum_of,
+    ratio_slope,
+)
 from calibrate.errors import InputError, Problem
 from calibrate.expressions import Expression
 
@@ -32,6 +40,8 @@ class BasicVariable:
         Reference period over the period of the model; the variable is the maximum of that many repetitions.
     fitted : Distribution, optional
         A distribution that was fitted to records, the same in all situations.
+    size_ratio : Expression, optional
+        Size of a part over the size that the model is for: the strength is the smallest of so many (weakest link).
     """
 
     name: str
@@ -39,10 +49,13 @@ class BasicVariable:
     arguments: Mapping[str, Expression]
     ratio: float = 1.0
     fitted: Distribution | None = None
+    size_ratio: Expression | None = None
 
     def depends_on(self, name: str) -> bool:
         """Whether an argument contains the name."""
-        return any(e.depends_on(name) for e in self.arguments.values())
+        return any(e.depends_on(name) for e in self.arguments.values()) or (
+            self.size_ratio is not None and self.size_ratio.depends_on(name)
+        )
 
     def distribution(self, values: Mapping[str, Any]) -> Distribution:
         """Return the distribution over the reference period.
@@ -63,7 +76,14 @@ class BasicVariable:
             In some situation the arguments make no distribution of the family; variable, argument, value and
             situation are named.
         """
-        return self._converted(self._given(values))
+        converted = self._converted(self._given(values))
+        if self.size_ratio is None:
+            return converted
+        try:
+            return minimum_of(converted, self.size_ratio.value(values))
+        except InputError as error:
+            problems = [Problem(f"Variable '{self.name}', size_ratio: {p}") for p in error.problems]
+            raise InputError(problems) from error
 
     def _given(self, values: Mapping[str, Any]) -> Distribution:
         if self.fitted is not None:
@@ -102,9 +122,15 @@ class BasicVariable:
         """
         if not self.depends_on(name):
             return None
+        total = np.zeros(np.shape(u))
+        if self.size_ratio is not None and self.size_ratio.depends_on(name):
+            ratio, (by_ratio,) = self.size_ratio.gradient(values, (name,))
+            base = self._converted(self._given(values))
+            total = total + ratio_slope(base, ratio, u, of_maxima=False) * by_ratio
+        if not any(e.depends_on(name) for e in self.arguments.values()):
+            return total
         by_argument = family(self.family).argument_slopes(self._arguments(values))
         by_parameter = model.parameter_slopes(u)
-        total = np.zeros(np.shape(u))
         for argument, expression in self.arguments.items():
             if not expression.depends_on(name):
                 continue

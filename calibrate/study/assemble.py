@@ -14,16 +14,21 @@ from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Rule, Study, Variable
 
 
-def basic_variables(study: Study, fitted: Mapping[str, FittedVariable]) -> dict[str, BasicVariable]:
-    """Return each variable as a model over design situations, in SI units, for the reference period."""
-    return {name: _basic_variable(study, v, fitted.get(name)) for name, v in study.variables.items()}
+def basic_variables(
+    study: Study, fitted: Mapping[str, FittedVariable], period: float | None = None
+) -> dict[str, BasicVariable]:
+    """Return each variable as a model over design situations, in SI units, for the reference or another period."""
+    years = study.reference_period if period is None else period
+    return {name: _basic_variable(years, v, fitted.get(name)) for name, v in study.variables.items()}
 
 
-def _basic_variable(study: Study, variable: Variable, fit: FittedVariable | None) -> BasicVariable:
-    ratio = 1.0 if variable.period is None else study.reference_period / variable.period
+def _basic_variable(years: float, variable: Variable, fit: FittedVariable | None) -> BasicVariable:
+    ratio = years / variable.period if variable.period is not None and variable.converted else 1.0
     if fit is not None:
-        return BasicVariable(variable.name, fit.fit.family, {}, ratio, fit.distribution)
-    return BasicVariable(variable.name, variable.families[0], variable.arguments, ratio, None)
+        return BasicVariable(variable.name, fit.fit.family, {}, ratio, fit.distribution, variable.size_ratio)
+    return BasicVariable(
+        variable.name, variable.families[0], variable.arguments, ratio, None, variable.size_ratio
+    )
 
 
 def rule_models(study: Study, variables: Mapping[str, BasicVariable]) -> list[RuleModel]:

@@ -83,6 +83,16 @@ def _period_doubts(study: Study) -> list[Doubt]:
     for name, variable in study.variables.items():
         if variable.period is None or variable.period == study.reference_period:
             continue
+        if not variable.converted:
+            doubts.append(
+                Doubt(
+                    "period-not-converted",
+                    f"Variable '{name}' is given for {_years(variable.period)} and was not converted to the reference "
+                    f"period of {_years(study.reference_period)}: {variable.conversion_reason}",
+                    f"variables.{name}",
+                )
+            )
+            continue
         doubts.append(
             Doubt(
                 "period-converted",

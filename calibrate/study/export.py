@@ -67,6 +67,17 @@ def _summary(result: Result, chosen: FactorSet) -> dict[str, Any]:
     }
 
 
+def _weighted(result: Result, beta: NDArray[np.float64]) -> float | None:
+    weight = result.situations["weight"].to_numpy(float)
+    there = np.isfinite(beta) & (weight > 0)
+    return _number(float(np.average(beta[there], weights=weight[there]))) if there.any() else None
+
+
+def _smallest(result: Result, beta: NDArray[np.float64]) -> float | None:
+    there = np.isfinite(beta) & (result.situations["weight"].to_numpy(float) > 0)
+    return _number(float(beta[there].min())) if there.any() else None
+
+
 def result_dict(result: Result) -> dict[str, Any]:
     """Return the content of result.json: plain dictionaries, lists, numbers and None."""
     study, calibration = result.study, result.calibration
@@ -96,6 +107,16 @@ def result_dict(result: Result) -> dict[str, Any]:
             }
             for name, sample in study.records.items()
         },
+        "other_periods": [
+            {
+                "period": p.period,
+                **{
+                    kind: {"mean": _weighted(result, values), "min": _smallest(result, values)}
+                    for kind, values in (("converted", p.converted), ("direct", p.direct))
+                },
+            }
+            for p in result.other_periods
+        ],
         "bonds": [
             {
                 "quantity": b.quantity,

@@ -77,6 +77,11 @@ class Variable:
     """``lower`` or ``upper``: the tail that decides, where the study says so."""
     failure_mode: str | None = None
     """Which of the modes named by the records it is the strength of; failures in others are survivors of this one."""
+    converted: bool = True
+    """Whether an action of another period is converted; if not, ``conversion_reason`` says why."""
+    conversion_reason: str = ""
+    size_ratio: Expression | None = None
+    """Size of the part over the size that the model is for; the strength is that of the weakest of so many."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
 
@@ -151,3 +156,7 @@ class Study:
     """Axes of the grid; none where a table or nothing gives the situations."""
     table: str | None = None
     """The table of situations as the study names it."""
+    other_periods: tuple[float, ...] = ()
+    """Further periods, in years, for which beta is reported alongside."""
+    independence: float = 1.0
+    """Interval in years between independent failures, for the conversion of beta itself."""

@@ -18,6 +18,7 @@ from calibrate.study.bonds import ImpliedBias
 from calibrate.study.evidence_doubts import PedigreeShare
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Study
+from calibrate.study.other_periods import PeriodBeta
 from calibrate.units import Unit
 
 if TYPE_CHECKING:
@@ -80,6 +81,7 @@ class Result:
     biases : tuple of ImpliedBias
         Of quantities that stand for a variable.
     pedigree : tuple of PedigreeShare
+    other_periods : tuple of PeriodBeta
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
     required : DataFrame
@@ -99,6 +101,7 @@ class Result:
     screenings: Mapping[str, Screening]
     biases: tuple[ImpliedBias, ...]
     pedigree: tuple[PedigreeShare, ...]
+    other_periods: tuple[PeriodBeta, ...]
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

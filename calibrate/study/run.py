@@ -19,6 +19,7 @@ from calibrate.study.doubts import study_doubts
 from calibrate.study.evidence_doubts import pedigree
 from calibrate.study.fits import fit_variables
 from calibrate.study.model import Study
+from calibrate.study.other_periods import other_periods, period_doubts
 from calibrate.study.result import Result
 from calibrate.study.screening import screen_records
 from calibrate.study.tables import (
@@ -86,12 +87,14 @@ def run(
     sets = (calibration.present, calibration.optimal, calibration.proposed)
     table, units = situation_table(study, calibration)
     biases, bias_doubts = implied_biases(study, used_distributions(study, calibration))
+    periods = other_periods(study, fitted, calibration, workers)
     screening_doubts = [d for name, s in screenings.items() for d in s.doubts(f"records.{name}")]
     doubts = (
         *study.doubts,
         *screening_doubts,
         *bias_doubts,
         *study_doubts(study, fitted, calibration),
+        *period_doubts(study, periods),
         *calibration.doubts,
     )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
@@ -106,6 +109,7 @@ def run(
         screenings=screenings,
         biases=biases,
         pedigree=pedigree(study, calibration),
+        other_periods=periods,
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

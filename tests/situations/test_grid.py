@@ -86,3 +86,23 @@ def test_a_model_without_the_name_has_no_slope():
 def test_a_model_without_meaning_names_variable_and_value():
     with pytest.raises(InputError, match="Variable 'Q'"):
         model("lognormal", mean="Q_k", cov="0.2").distribution({"Q_k": np.array([1.0, -2.0])})
+
+
+@pytest.mark.parametrize("family", ["weibull", "lognormal", "normal"])
+def test_weakest_link_follows_the_size_and_its_slope(family):
+    from calibrate.expressions import parse as expression
+
+    variable = BasicVariable(
+        "f", family, {"mean": expression("40"), "cov": expression("0.15")}, size_ratio=expression("z**2 / 4")
+    )
+    z = np.array([1.0, 2.0, 3.0, 6.0])
+    u = np.array([-4.0, -1.0, 0.5, 3.0])
+    model = variable.distribution({"z": z})
+    if family == "weibull":
+        # The closed form of Weibull's weakest link: strength falls with (A1/A2)^(1/m).
+        base = distribution("weibull", mean=40.0, cov=0.15)
+        m = float(base.parameters["shape"])
+        np.testing.assert_allclose(model.x(u), base.x(u) * (z**2 / 4) ** (-1 / m), rtol=1e-10)
+    h = 1e-5
+    up, down = (variable.distribution({"z": z + d}).x(u) for d in (h, -h))
+    np.testing.assert_allclose(variable.slope(model, u, {"z": z}, "z"), (up - down) / (2 * h), rtol=1e-6)

@@ -19,6 +19,7 @@ from calibrate.study.reading.document import check_format, read_document
 from calibrate.study.reading.evidence import read_declared, read_records
 from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
+from calibrate.study.reading.periods import check_target_period
 from calibrate.study.reading.rules import check_designs, finish_rules, parse_rules
 from calibrate.study.reading.situations import finish_situations, read_grid, read_weight
 from calibrate.study.reading.subject import Surroundings
@@ -94,6 +95,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     variables = read_variables(around, variables_raw)
     rules = finish_rules(reading, names, drafts, variables)
     check_correlations(reading, names, sections["correlations"])
+    check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)
     if not problems:
         note_unused(reading, names, factors, variables, records)
@@ -132,6 +134,8 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         factor_descriptions=factor_texts,
         axis_descriptions=grid.descriptions,
         doubts=tuple(reading.doubts),
+        other_periods=tuple(dict.fromkeys(head.other_periods)),
+        independence=head.independence,
     )
 
 

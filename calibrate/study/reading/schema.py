@@ -99,6 +99,8 @@ class StudySection(Section):
     title: Annotated[Text, AfterValidator(_one_line)]
     summary: str = ""
     reference_period: Positive
+    other_periods: list[Positive] = []
+    independence: Positive = 1.0
     seed: Annotated[int, Field(ge=0)] = 0
 
 
@@ -106,6 +108,7 @@ class TargetSection(Section):
     """``[target]``."""
 
     beta: Number
+    period: Positive | None = None
 
 
 class ExcludeTable(Section):
@@ -174,6 +177,9 @@ class VariableEntry(Section):
     tail: Literal["lower", "upper"] | None = None
     failure_mode: Text | None = None
     period: Positive | None = None
+    conversion: Literal["maximum", "none"] | None = None
+    conversion_reason: str = ""
+    size_ratio: Value | None = None
     unit: str | None = None
     description: str = ""
     source: str = ""

@@ -7,11 +7,13 @@ from typing import Any
 
 from calibrate.distributions import Family, family, family_names
 from calibrate.errors import InputError
+from calibrate.expressions import Expression
 from calibrate.study.model import Variable
 from calibrate.study.reading import schema
 from calibrate.study.reading.estimators import MethodChoice, read_method
 from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
+from calibrate.study.reading.periods import check_conversion, read_size_ratio
 from calibrate.study.reading.subject import Model, Subject, Surroundings
 from calibrate.study.reading.values import Value, read_unit, read_value
 
@@ -46,7 +48,12 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
             if getattr(content, key):
                 subject.problem("says how to fit, but the variable has no records.", key)
     method = read_method(subject, content)
-    if method is None:
+    ratio = read_size_ratio(subject, content)
+    if (
+        method is None
+        or not check_conversion(subject, content)
+        or (content.size_ratio is not None and ratio is None)
+    ):
         return None
     unit_is_faulty = content.unit is not None and unit is None
     if (
@@ -60,7 +67,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         model = fitted_model(subject, content, families, values, unit)
     else:
         model = given_model(subject, families[0], values, unit)
-    return None if model is None else _variable(subject, content, model, values, method)
+    return None if model is None else _variable(subject, content, model, values, method, ratio)
 
 
 def _values(subject: Subject, arguments: Mapping[str, Any]) -> dict[str, Value] | None:
@@ -108,6 +115,7 @@ def _variable(
     model: Model,
     values: Mapping[str, Value],
     method: MethodChoice,
+    size_ratio: Expression | None,
 ) -> Variable:
     names = subject.around.names
     if names.kind(subject.name) == "variable":
@@ -128,6 +136,9 @@ def _variable(
         lot=content.lot,
         predictive=content.predictive,
         role=content.role or "",
+        converted=content.conversion != "none",
+        conversion_reason=content.conversion_reason.strip(),
+        size_ratio=size_ratio,
         tail=content.tail or "",
         failure_mode=content.failure_mode,
         may_be_negative=content.may_be_negative,
