@@ -105,13 +105,12 @@ def panel(figure: Figure, left: float, bottom: float, width: float, height: floa
 
 
 def render(figure: Figure) -> Rendered:
-    """Return the SVG and PNG files of a figure, without date and without version."""
+    """Return the SVG and PNG files of a figure, without date and without version; use it inside :func:`context`."""
     svg, png = io.BytesIO(), io.BytesIO()
-    with context():
-        figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": None})
-        figure.savefig(
-            png, format="png", dpi=RESOLUTION, metadata={"Software": None}, pil_kwargs={"compress_level": 3}
-        )
+    figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": None})
+    figure.savefig(
+        png, format="png", dpi=RESOLUTION, metadata={"Software": None}, pil_kwargs={"compress_level": 3}
+    )
     return Rendered(svg.getvalue(), png.getvalue())
 
 

@@ -12,6 +12,7 @@ from calibrate.actions.thresholds.diagnostics import (
     stability,
 )
 from calibrate.actions.thresholds.excesses import ExcessFit, fit_excesses
+from calibrate.actions.thresholds.level_intervals import level_interval
 from calibrate.actions.thresholds.periods import PeriodMaximum, annual_maximum
 
 __all__ = [
@@ -24,6 +25,7 @@ __all__ = [
     "decluster",
     "dispersion",
     "fit_excesses",
+    "level_interval",
     "mean_residual_life",
     "stability",
 ]

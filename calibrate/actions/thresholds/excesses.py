@@ -46,8 +46,8 @@ class ExcessFit:
     ----------
     threshold, scale, shape : float
         In the unit of the values; the shape has none.
-    n : int
-        Number of exceedances.
+    excesses : array, shape (n,)
+        Values above the threshold, less the threshold.
     covariance : array, shape (2, 2)
         Of scale and shape, by the observed information; NaN for a shape below -0.5.
     standard_errors : mapping of str to float
@@ -62,13 +62,18 @@ class ExcessFit:
     threshold: float
     scale: float
     shape: float
-    n: int
+    excesses: Array
     covariance: Array
     standard_errors: Mapping[str, float]
     log_likelihood: float
     years: float
     rate: float
     doubts: tuple[Doubt, ...]
+
+    @property
+    def n(self) -> int:
+        """Number of exceedances."""
+        return int(self.excesses.size)
 
     def exceedance(self, x: ArrayLike) -> Array:
         """Return P(X > x | X > threshold); 1 below the threshold."""
@@ -182,10 +187,10 @@ def fit_excesses(values: ArrayLike, threshold: float, years: float | None = None
     if years is not None:
         rate = y.size / years
         errors["rate"] = math.sqrt(y.size) / years
-    covariance.flags.writeable = False
+    covariance.flags.writeable = y.flags.writeable = False
     log_likelihood = y.size * (top.value - math.log(unit))
     return ExcessFit(
-        float(threshold), scale, shape, int(y.size), covariance, errors, log_likelihood,
+        float(threshold), scale, shape, y, covariance, errors, log_likelihood,
         math.nan if years is None else float(years), rate, tuple(doubts),
     )  # fmt: skip
 

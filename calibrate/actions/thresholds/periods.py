@@ -19,7 +19,6 @@ from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
 from calibrate.distributions import Distribution, distribution
-from calibrate.distributions.exponentials import log1mexp
 from calibrate.errors import Doubt, InputError, Problem
 
 Array = NDArray[np.float64]
@@ -38,8 +37,8 @@ class PeriodMaximum:
         `gev`, or `gumbel` for shape 0. Exact above the threshold; below it the lower tail is that of the family, which
         the record does not know.
     threshold : float
-    mass_below : float
-        Probability that nothing exceeds the threshold, which is F(threshold).
+    expected : float
+        Exceedances of the threshold in the period, on average.
     years : float
         The period.
     doubts : tuple of Doubt
@@ -47,19 +46,24 @@ class PeriodMaximum:
 
     distribution: Distribution
     threshold: float
-    mass_below: float
+    expected: float
     years: float
     doubts: tuple[Doubt, ...]
 
+    @property
+    def mass_below(self) -> float:
+        """Probability that nothing exceeds the threshold, which is F(threshold)."""
+        return math.exp(-self.expected)
+
     def conditional_cdf(self, x: ArrayLike) -> Array:
         """Return F(x) given that the threshold is exceeded at least once; 0 up to the threshold."""
-        p = self.distribution.cdf(x)
-        return np.maximum(p - self.mass_below, 0.0) / -math.expm1(math.log(self.mass_below))
+        above = self.distribution.cdf(x) - self.mass_below
+        return np.asarray(np.maximum(above, 0.0) / -math.expm1(-self.expected))
 
     def conditional_ppf(self, p: ArrayLike) -> Array:
         """Return the quantile given that the threshold is exceeded at least once."""
-        share = math.exp(float(log1mexp(np.asarray(math.log(self.mass_below)))))
-        return self.distribution.isf(share * (1.0 - np.asarray(p, dtype=np.float64)))
+        exceeded = -math.expm1(-self.expected)
+        return self.distribution.isf(exceeded * (1.0 - np.asarray(p, dtype=np.float64)))
 
 
 def annual_maximum(
@@ -116,4 +120,4 @@ def annual_maximum(
             "record. A lower threshold would tell more."
         )
         doubts.append(Doubt("seldom-exceeded", message, "excesses"))
-    return PeriodMaximum(law, float(threshold), mass, float(years), tuple(doubts))
+    return PeriodMaximum(law, float(threshold), rate * years, float(years), tuple(doubts))
