@@ -184,9 +184,10 @@ def _top(likelihood: _Likelihood, seen: Mapping[str, Observations], separate: Ma
     tops = [end for end in ends if end.converged]
     if not tops:
         message = "The likelihood of all stations with one shape has no maximum that could be found."
-        raise InputError(
-            Problem(message, suggestion="Give the shape, or leave out stations that have no fit.")
-        )
+        alone = [
+            Problem(f"Station '{k}' by itself: {f.reason}.") for k, f in separate.items() if not f.converged
+        ]
+        raise InputError([Problem(message, suggestion="Leave out stations that have no fit."), *alone])
     return max(tops, key=lambda top: top.value)
 
 
