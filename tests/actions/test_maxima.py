@@ -9,7 +9,6 @@ from scipy import optimize, stats
 from calibrate.actions.maxima import fit_maxima, with_detection_limit
 from calibrate.actions.pooling import fit_pooled_shape
 from calibrate.errors import InputError
-
 from tests.published.test_fits_ozone import OZONE
 from tests.published.test_fits_sea_levels import LEVELS
 

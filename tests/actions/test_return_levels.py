@@ -19,7 +19,6 @@ from calibrate.actions.return_levels import (
 from calibrate.distributions import distribution
 from calibrate.errors import InputError
 from calibrate.fitting.intervals import fractile_interval
-
 from tests.published.test_fits_sea_levels import LEVELS
 
 
