@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from calibrate.fitting.modes import ModeFit
     from calibrate.records import Sample
     from calibrate.records.screening import Finding, Screening
+    from calibrate.study.maxima import BlockMaxima
     from calibrate.study.model import Quantity
     from calibrate.study.result import Result
 
@@ -224,6 +225,20 @@ def lot_sentences(scatter: LotScatter, pooled: Pooling | None, stands_for: str) 
     if stands_for:
         texts.append(f"In this study the variable stands for: {stands_for}.")
     return texts
+
+
+def return_level_table(found: BlockMaxima) -> Table:
+    """Return the levels of several return periods with their intervals."""
+    levels = found.levels
+    return Table(
+        (
+            Column("return period", [numbers.years(t) for t in levels.years]),
+            Column("level", [numbers.significant(v) for v in levels.levels], kind="number"),
+            Column("from", [numbers.significant(v) for v in levels.lower], kind="number"),
+            Column("to", [numbers.significant(v) for v in levels.upper], kind="number"),
+            Column("", ["longer than the record" if b else "" for b in levels.beyond_record]),
+        )
+    )
 
 
 def mode_table(modes: Sequence[ModeFit]) -> Table:

@@ -34,7 +34,8 @@ def figures(result: Result) -> dict[str, Rendered]:
     ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
     does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
     ``sensitivity`` where a beta was found, ``sample_<records>`` for samples that need a look,
-    ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those that matter.
+    ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those
+    that matter, ``return_levels_<variable>`` for block maxima.
     """
     drawn: dict[str, Rendered] = {}
     with style.context():
@@ -58,6 +59,7 @@ def _all(result: Result) -> Iterator[tuple[str, Figure]]:
 
 def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
     from calibrate.report.probability_paper import probability_figure
+    from calibrate.report.return_figure import return_figure
     from calibrate.report.sample_figure import sample_figure
     from calibrate.report.tail_figure import tail_figure
 
@@ -71,6 +73,8 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
         chosen = [fitted.fit, *(c for c in fitted.comparison.candidates if c.family in fitted.tests)]
         shown = list(dict.fromkeys(chosen))
         yield f"probability_{name}", probability_figure(fitted.fit, label=label, unit=unit)
+        if fitted.maxima is not None:
+            yield f"return_levels_{name}", return_figure(fitted.maxima, label=label, unit=unit)
         side = tail_of(result, name)
         if side is not None and matters(result, name):
             yield (

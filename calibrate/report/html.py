@@ -12,6 +12,7 @@ from calibrate.report import (
     inputs,
     numbers,
     outcome,
+    return_figure,
     sample_figure,
     symbols,
     tail_figure,
@@ -138,10 +139,19 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             for name, f in result.fitted.items()
             if f.lots is not None
         },
+        "return_levels": {
+            name: evidence.return_level_table(f.maxima)
+            for name, f in result.fitted.items()
+            if f.maxima is not None
+        },
         "modes": {name: evidence.mode_table(f.modes) for name, f in result.fitted.items() if f.modes},
         "bonds": evidence.bond_table(result),
         "pedigree": evidence.pedigree_table(result),
-        "captions": {"sample": sample_figure.CAPTION, "tail": tail_figure.CAPTION},
+        "captions": {
+            "sample": sample_figure.CAPTION,
+            "tail": tail_figure.CAPTION,
+            "return": return_figure.CAPTION,
+        },
         "periods": outcome.period_table(result),
         "why_periods": WHY,
         "sized": any(r.size is not None for r in study.rules.values()),

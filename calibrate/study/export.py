@@ -117,6 +117,19 @@ def result_dict(result: Result) -> dict[str, Any]:
             }
             for p in result.other_periods
         ],
+        "return_levels": {
+            name: {
+                "unit": result.study.records[result.study.variables[name].records or ""].unit.text,
+                "years": [float(t) for t in f.maxima.levels.years],
+                "level": [_number(v) for v in f.maxima.levels.levels],
+                "lower": [_number(v) for v in f.maxima.levels.lower],
+                "upper": [_number(v) for v in f.maxima.levels.upper],
+                "confidence": f.maxima.levels.confidence,
+                "method": f.maxima.levels.method,
+            }
+            for name, f in result.fitted.items()
+            if f.maxima is not None
+        },
         "bonds": [
             {
                 "quantity": b.quantity,

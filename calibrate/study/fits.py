@@ -19,6 +19,7 @@ from calibrate.fitting.predictive import predictive
 from calibrate.records import Sample
 from calibrate.records.screening import FailureMode, failure_modes
 from calibrate.study.family_doubts import choice_doubts, rival_doubts
+from calibrate.study.maxima import BlockMaxima, block_maxima
 from calibrate.study.model import Study, Variable
 
 WORTH_TESTING = 10.0
@@ -57,6 +58,8 @@ class FittedVariable:
     """SI value of the unit of the records."""
     modes: tuple[ModeFit, ...] = ()
     """Failure modes fitted as competing risks, where the records name several."""
+    maxima: BlockMaxima | None = None
+    """Return levels, where the variable is an action with a period."""
 
 
 def fit_variables(study: Study) -> dict[str, FittedVariable]:
@@ -123,6 +126,8 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
         *rival_doubts(variable, chosen),
         *normalised,
     )
+    maxima, maxima_doubts = block_maxima(variable, chosen, study.blocks.get(variable.records))
+    doubts = (*doubts, *maxima_doubts)
     mode_fits = fit_modes(modes, chosen.family) if len(modes) > 1 else ()
     return FittedVariable(
         fit=chosen,
@@ -134,6 +139,7 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
         doubts=doubts,
         fit_factor=sample.unit.factor,
         modes=mode_fits,
+        maxima=maxima,
     )
 
 

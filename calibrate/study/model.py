@@ -156,6 +156,8 @@ class Study:
     """Axes of the grid; none where a table or nothing gives the situations."""
     table: str | None = None
     """The table of situations as the study names it."""
+    blocks: Mapping[str, int] = field(default_factory=dict)
+    """Blocks between begin and end of records of maxima, by name of the records, where stated."""
     other_periods: tuple[float, ...] = ()
     """Further periods, in years, for which beta is reported alongside."""
     independence: float = 1.0

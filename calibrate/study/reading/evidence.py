@@ -79,6 +79,12 @@ def _sample(reading: Reading, name: str, raw: Any) -> Sample | None:
         return None
 
 
+def read_blocks(raw: Any, records: Mapping[str, Sample | None]) -> dict[str, int]:
+    """Return the number of blocks of records of maxima, where it is stated (checked with the records)."""
+    stated = {name: raw[name].get("blocks") for name, sample in records.items() if sample is not None}
+    return {name: count for name, count in stated.items() if isinstance(count, int)}
+
+
 def read_declared(
     reading: Reading, raw: Any, records: Mapping[str, Sample | None]
 ) -> dict[str, tuple[float, float]]:

@@ -16,7 +16,7 @@ from calibrate.study.reading.context import Reading
 from calibrate.study.reading.correlations import check_correlations
 from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
 from calibrate.study.reading.document import check_format, read_document
-from calibrate.study.reading.evidence import read_declared, read_records
+from calibrate.study.reading.evidence import read_blocks, read_declared, read_records
 from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
 from calibrate.study.reading.periods import check_target_period
@@ -134,6 +134,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         factor_descriptions=factor_texts,
         axis_descriptions=grid.descriptions,
         doubts=tuple(reading.doubts),
+        blocks=read_blocks(sections["records"], records),
         other_periods=tuple(dict.fromkeys(head.other_periods)),
         independence=head.independence,
     )

@@ -160,6 +160,7 @@ class RecordsEntry(Section):
     measured: Text | None = None
     unit_by: UnitByTable | None = None
     normalise: dict[str, Any] = {}
+    blocks: Annotated[int, Field(ge=1)] | None = None
     declared: Annotated[list[Any] | None, BeforeValidator(_value_or_range)] = None
 
 
