@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
+from calibrate.actions.arguments import positive
 from calibrate.distributions import Distribution, maximum_of
 from calibrate.errors import Doubt, InputError, Problem, did_you_mean
 from calibrate.fitting import Fit, fit
@@ -80,8 +81,7 @@ class MaximaFit:
         InputError
             The period is not positive.
         """
-        if not (math.isfinite(years) and years > 0.0):
-            raise InputError(f"A period must be a positive number of years; got {years!r}.")
+        positive("A period", years)
         if years == self.block_years:
             return self.distribution
         return maximum_of(self.distribution, years / self.block_years)
@@ -166,6 +166,13 @@ def with_detection_limit(values: ArrayLike, limit: float) -> Observations:
     if below.all():
         raise InputError(f"None of the {x.size} values reaches the detection limit {limit:g}.")
     return Observations(np.where(below, -np.inf, x), np.where(below, limit, x))
+
+
+def checked_confidence(confidence: float) -> float:
+    """Return a confidence, or raise InputError for what is none."""
+    if not 0.0 < confidence < 1.0:
+        raise InputError(f"A confidence must lie between 0 and 1; got {confidence!r}.")
+    return confidence
 
 
 # Doubts ------------------------------

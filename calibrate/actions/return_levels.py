@@ -12,7 +12,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
-from calibrate.actions.maxima import MaximaFit
+from calibrate.actions.arguments import positive
+from calibrate.actions.maxima import MaximaFit, checked_confidence
 from calibrate.distributions import Distribution
 from calibrate.errors import Doubt, InputError
 from calibrate.fitting import Fit, plotting_positions
@@ -40,7 +41,7 @@ def non_exceedance(years: ArrayLike, n: ArrayLike = 1.0) -> Array:
     >>> round(float(non_exceedance(50, 50)), 7)
     0.3641697
     """
-    return np.exp(_positive(n, "A period") * np.log1p(-1.0 / _return_periods(years)))
+    return np.exp(positive("A period", n) * np.log1p(-1.0 / _return_periods(years)))
 
 
 def return_period(probability: ArrayLike, n: ArrayLike = 1.0) -> Array:
@@ -61,7 +62,7 @@ def return_period(probability: ArrayLike, n: ArrayLike = 1.0) -> Array:
     p = np.asarray(probability, dtype=np.float64)
     if not np.all((p > 0.0) & (p < 1.0)):
         raise InputError(f"A probability of non-exceedance must lie between 0 and 1; got {probability!r}.")
-    return np.asarray(-1.0 / np.expm1(np.log(p) / _positive(n, "A period")))
+    return np.asarray(-1.0 / np.expm1(np.log(p) / positive("A period", n)))
 
 
 def return_level(distribution: Distribution, years: ArrayLike, block_years: float = 1.0) -> Array:
@@ -129,8 +130,7 @@ def return_levels(maxima: MaximaFit, years: ArrayLike = YEARS, confidence: float
     InputError
         As `return_level`, or for a confidence that is none.
     """
-    if not 0.0 < confidence < 1.0:
-        raise InputError(f"A confidence must lie between 0 and 1; got {confidence!r}.")
+    checked_confidence(confidence)
     periods = np.atleast_1d(_return_periods(years))
     exceedance = _block_exceedance(periods, maxima.block_years)
     profile = maxima.fit.method == "likelihood"
@@ -176,7 +176,7 @@ def _by_delta(fit: Fit, u: float, confidence: float) -> tuple[float, float]:
 
 
 def _block_exceedance(years: ArrayLike, block_years: float) -> Array:
-    blocks = _positive(block_years, "The length of a block")
+    blocks = positive("The length of a block", block_years)
     return np.asarray(-np.expm1(blocks * np.log1p(-1.0 / _return_periods(years))))
 
 
@@ -185,10 +185,3 @@ def _return_periods(years: ArrayLike) -> Array:
     if not np.all(np.isfinite(t) & (t > 1.0)):
         raise InputError(f"A return period must be more than 1 year; got {years!r}.")
     return t
-
-
-def _positive(value: ArrayLike, what: str) -> Array:
-    x = np.asarray(value, dtype=np.float64)
-    if not np.all(np.isfinite(x) & (x > 0.0)):
-        raise InputError(f"{what} must be a positive number of years; got {value!r}.")
-    return x

@@ -124,8 +124,8 @@ def test_points_of_the_plot(sea):
         (lambda sea: return_levels(sea, [50.0, math.nan]), "more than 1 year"),
         (lambda sea: return_levels(sea, confidence=1.0), "confidence"),
         (lambda sea: return_period(1.0), "between 0 and 1"),
-        (lambda sea: non_exceedance(50.0, 0.0), "A period must be a positive number"),
-        (lambda sea: sea.over(math.inf), "A period must be a positive number"),
+        (lambda sea: non_exceedance(50.0, 0.0), "A period must be positive"),
+        (lambda sea: sea.over(math.inf), "A period must be positive"),
     ],
 )
 def test_refusals(sea, call, message):

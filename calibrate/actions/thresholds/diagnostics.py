@@ -11,13 +11,13 @@ Davison and R. L. Smith, J. R. Statist. Soc. B 52 (1990) 393-442 (both from memo
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
+from calibrate.actions.maxima import checked_confidence
 from calibrate.actions.thresholds.excesses import LEAST, fit_excesses
 from calibrate.errors import InputError
 from calibrate.fitting.fits import checked_values
@@ -157,6 +157,4 @@ def _prepared(values: ArrayLike, thresholds: ArrayLike | None, least: int) -> tu
 
 
 def _normal(confidence: float) -> float:
-    if not 0.0 < confidence < 1.0:
-        raise InputError(f"A confidence must lie between 0 and 1; got {confidence!r}.")
-    return math.fabs(float(special.ndtri(0.5 + 0.5 * confidence)))
+    return float(special.ndtri(0.5 + 0.5 * checked_confidence(confidence)))

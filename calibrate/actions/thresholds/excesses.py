@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
+from calibrate.actions.arguments import positive
 from calibrate.actions.maxima import CONFIDENCE, shape_sign
 from calibrate.actions.thresholds.periods import PeriodMaximum, annual_maximum
 from calibrate.distributions.exponentials import exprel_slope
@@ -163,8 +164,8 @@ def fit_excesses(values: ArrayLike, threshold: float, years: float | None = None
     x = checked_values(values)
     if not math.isfinite(threshold):
         raise InputError(f"A threshold must be a finite number; got {threshold!r}.")
-    if years is not None and not (math.isfinite(years) and years > 0.0):
-        raise InputError(f"The length of a record must be a positive number of years; got {years!r}.")
+    if years is not None:
+        positive("The length of a record, in years,", years)
     y = x[x > threshold] - threshold
     if y.size < LEAST:
         raise InputError(

@@ -18,9 +18,9 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import special
 
+from calibrate.actions.maxima import checked_confidence
 from calibrate.actions.thresholds.excesses import HEAVIEST, ExcessFit
 from calibrate.distributions.exponentials import log1p_ratio
-from calibrate.errors import InputError
 
 Array = NDArray[np.float64]
 
@@ -55,8 +55,7 @@ def level_interval(fit: ExcessFit, years: float, confidence: float = 0.95) -> tu
     """
     from scipy.optimize import brentq
 
-    if not 0.0 < confidence < 1.0:
-        raise InputError(f"A confidence must lie between 0 and 1; got {confidence!r}.")
+    checked_confidence(confidence)
     best = float(fit.level(years)) - fit.threshold
     profile = _Profile.of(fit, math.log(fit.rate * years))
     lowest = fit.log_likelihood - 0.5 * float(special.chdtri(1.0, 1.0 - confidence))
