@@ -106,7 +106,8 @@ def table(
 
 def report_table(content: Table, strong: int = -1) -> None:
     """Print a table of the report."""
-    heads = [c.head for c in content.columns]
+    plain = [c.head for c in content.columns]
+    heads = [f"{c.group}, {c.head}" if plain.count(c.head) > 1 else c.head for c in content.columns]
     numeric = [c.kind == "number" for c in content.columns]
     table(heads, content.plain_rows(), numeric, strong)
 

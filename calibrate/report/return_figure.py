@@ -35,7 +35,7 @@ def return_figure(found: BlockMaxima, *, label: str, unit: str) -> Figure:
         zorder=1,
     )
     axes.plot(levels.years, levels.levels, color=style.BLUE, linewidth=1.2, zorder=2)
-    shown = years > levels.years[0] * 0.55
+    shown = years >= levels.years[0] * 0.95
     axes.plot(
         years[shown], values[shown], linestyle="none", marker="o", markersize=3.0, markerfacecolor="white",
         markeredgecolor=style.INK, markeredgewidth=0.7, zorder=3,
@@ -45,6 +45,7 @@ def return_figure(found: BlockMaxima, *, label: str, unit: str) -> Figure:
     ticks = [t for t in (2, 5, 10, 50, 100, 500, 1000) if levels.years[0] <= t <= levels.years[-1]]
     axes.set_xticks(ticks, [numbers.whole(t) for t in ticks])
     axes.minorticks_off()
+    axes.set_xlim(levels.years[0] * 0.9, levels.years[-1] * 1.15)
     axes.set_xlabel("return period (years)")
     axes.set_ylabel(f"{label} ({unit})" if unit else label, parse_math=True)
     axes.set_title(f"{found.maxima.fit.family}, {found.maxima.blocks} blocks")
