@@ -38,6 +38,7 @@ _KNOTS = np.array(
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(8)
 _FEW_NODES, _FEW_WEIGHTS = np.polynomial.legendre.leggauss(6)
 _FARTHEST = 20.0
+_NEGLIGIBLE = 1e-15
 _AT_ONCE = 200_000
 
 
@@ -106,18 +107,37 @@ def _sum_tails(
     own = _KNOTS if p == 1.0 else np.append(_KNOTS, np.clip(base.u(0.0), -_REACH, _REACH))
     other = np.clip(np.nan_to_num(base.u(x - knots[:, None])), -_REACH, _REACH)
     ends = np.sort(np.concatenate((np.broadcast_to(own[:, None], (own.size, x.size)), other)), axis=0)
-    half = 0.5 * np.diff(ends, axis=0)
-    v = (ends[:-1] + half)[..., None] + half[..., None] * _NODES
-    value = base.x(v)
-    mass = half[..., None] * _WEIGHTS * np.exp(log_phi(v))
-    tails = rest.tails(x[:, None] - (value if p == 1.0 else np.maximum(value, 0.0)))
-    low, high = (np.sum(mass * np.exp(t), axis=(0, 2)) for t in tails)
+
+    def log_tails_at(v: Array, at: Array) -> tuple[Array, Array]:
+        value = base.x(v)
+        return rest.tails(at - (value if p == 1.0 else np.maximum(value, 0.0)))
+
+    # The tails are monotonic, so their values at the ends enclose what each piece adds.
+    share = _share(ends)
+    low, high = (np.exp(t) for t in log_tails_at(ends, x[None, :]))
+    most_low, least_low = share * low[:-1], share * low[1:]
+    most_high, least_high = share * high[1:], share * high[:-1]
+    # The tail that seems smaller is integrated: its relative error is small, and so is that of its complement.
+    use_low = np.sum(most_low + least_low, axis=0) < np.sum(most_high + least_high, axis=0)
+    most, least = (np.where(use_low, *pair) for pair in ((most_low, most_high), (least_low, least_high)))
+    piece, column = np.nonzero(most > _NEGLIGIBLE * np.sum(least, axis=0))
+    half = 0.5 * (ends[piece + 1, column] - ends[piece, column])[:, None]
+    v = ends[piece, column][:, None] + half * (1.0 + _NODES)
+    tails = log_tails_at(v, x[column][:, None])
+    terms = half * _WEIGHTS * np.exp(log_phi(v) + np.where(use_low[column][:, None], *tails))
+    smaller: Array = np.bincount(column, weights=np.sum(terms, axis=1), minlength=x.size).astype(np.float64)
     if p < 1.0:
-        absent = rest.tails(x)
-        low, high = (p * t + (1.0 - p) * np.exp(a) for t, a in zip((low, high), absent, strict=True))
-    # The smaller tail is the one with small relative error; the other is its complement.
-    log_max = repetitions * np.where(low < high, np.log(low), np.log1p(-np.minimum(high, 1.0)))
+        smaller = p * smaller + (1.0 - p) * np.exp(np.where(use_low, *rest.tails(x)))
+    smaller = np.minimum(smaller, 1.0)
+    log_max = repetitions * np.where(use_low, np.log(smaller), np.log1p(-smaller))
     return log_max, log1mexp(log_max)
+
+
+def _share(ends: Array) -> Array:
+    """Return the probabilities between successive values, from whichever tail is smaller."""
+    upper = ends[:-1] > 0.0
+    below, above = special.ndtr(ends), special.ndtr(-ends)
+    return np.where(upper, above[:-1] - above[1:], below[1:] - below[:-1])
 
 
 def _level(actions: Sequence[Action], within: float) -> _Level:

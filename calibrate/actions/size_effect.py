@@ -21,6 +21,9 @@ Field = Callable[..., npt.ArrayLike]
 PRECISION = 1e-10
 """Relative error that is asked of stress integrals."""
 
+MOST_PIECES = 3_000
+"""Divisions of the part after which a stress integral is given up."""
+
 
 def size_effect(strength: Distribution, size_ratio: npt.ArrayLike) -> Distribution:
     """Return the strength of a part from that of the specimens.
@@ -95,8 +98,8 @@ def stress_integral(
     element : callable, optional
         Size of an element per unit of the coordinates (in polar coordinates r); 1 by default.
     points : sequence of points
-        Coordinates of peaks narrower than about a twentieth of the range, which could otherwise be missed; there
-        ``stress`` is not evaluated.
+        Where to divide the part before anything else: jumps, and the places and the edges of peaks that are narrower
+        than about a hundredth of the range, which would otherwise be missed.
 
     Returns
     -------
@@ -136,7 +139,7 @@ def stress_integral(
         return risk * size.reshape((-1,) + (1,) * m.ndim)
 
     found = integrate.cubature(
-        integrand, low, high, rtol=PRECISION, atol=0.0, max_subdivisions=20_000,
+        integrand, low, high, rtol=PRECISION, atol=0.0, max_subdivisions=MOST_PIECES,
         points=[np.asarray(p, dtype=np.float64).reshape(low.shape) for p in points],
     )  # fmt: skip
     value = np.asarray(found.estimate)

@@ -44,17 +44,18 @@ def _print(summary: dict[str, Any], shown: str) -> None:
     if summary["records"]:
         console.heading("Records")
         rows = [
-            [name, r["file"], r["column"], _unit(r["unit"]), str(r["n"])]
+            [name, _short(r["file"]), r["value"] or r["column"], _unit(r["unit"]), str(r["n"]), _kinds(r)]
             for name, r in summary["records"].items()
         ]
-        console.table(["name", "file", "column", "unit", "n"], rows, [False, False, False, False, True])
+        heads = ["name", "file", "column or value", "unit", "n", "of these"]
+        console.table(heads, rows, [False, False, False, False, True, False])
     if summary["quantities"]:
         console.heading("Quantities")
         rows = [
-            [name, numbers.significant(q["value"], 6), _unit(q["unit"])]
+            [name, numbers.significant(q["value"], 6), _unit(q["unit"]), _stands_for(q)]
             for name, q in summary["quantities"].items()
         ]
-        console.table(["name", "value", "unit"], rows, [False, True, False])
+        console.table(["name", "value", "unit", "stands for"], rows, [False, True, False, False])
     if summary["variables"]:
         console.heading("Basic variables")
         rows = [_variable_row(name, v) for name, v in summary["variables"].items()]
@@ -84,6 +85,26 @@ def _unit(text: str) -> str:
     from calibrate.units import format_unit
 
     return format_unit(text)
+
+
+def _short(path: str) -> str:
+    """Return the last two parts of a path; the study has the whole."""
+    parts = path.split("/")
+    return path if len(parts) <= 2 else "…/" + "/".join(parts[-2:])
+
+
+def _kinds(record: dict[str, Any]) -> str:
+    """Return how the specimens are known, and how many were left out."""
+    parts = []
+    if record["n_exact"] < record["n"]:
+        parts.append(f"{record['n'] - record['n_exact']} bounds")
+    if record["excluded"]:
+        parts.append(f"{record['excluded']} left out")
+    return ", ".join(parts)
+
+
+def _stands_for(quantity: dict[str, Any]) -> str:
+    return f"{quantity['value_type']} of {quantity['of']}" if quantity["of"] else ""
 
 
 def _variable_row(name: str, variable: dict[str, Any]) -> list[str]:

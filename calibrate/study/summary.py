@@ -35,11 +35,26 @@ def check_summary(study: Study) -> dict[str, Any]:
         "reference_period": study.reference_period,
         "seed": study.seed,
         "records": {
-            name: {"n": s.n, "unit": s.unit.text, "file": s.file, "column": s.name, "sha256": s.sha256}
+            name: {
+                "n": s.n,
+                "n_exact": s.observations.n_exact,
+                "excluded": len(s.excluded),
+                "unit": s.unit.text,
+                "file": s.file,
+                "column": s.name,
+                "value": s.formula,
+                "sha256": s.sha256,
+            }
             for name, s in study.records.items()
         },
         "quantities": {
-            name: {"value": q.value / q.unit.factor, "unit": q.unit.text, "text": q.text}
+            name: {
+                "value": q.value / q.unit.factor,
+                "unit": q.unit.text,
+                "text": q.text,
+                "of": q.of,
+                "value_type": q.value_type,
+            }
             for name, q in study.quantities.items()
         },
         "variables": {name: _variable(v) for name, v in study.variables.items()},
