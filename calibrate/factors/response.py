@@ -170,8 +170,10 @@ class _Rule:
         sizing = self._sized(values, start)
         solved = sizing.code == SOLVED
         if rule.size_name is not None and self.solver is not None:
-            # Situations without size get a stand-in, so that the batch stays whole; their result is not used.
-            values[rule.size_name] = sizing.size if solved.all() else np.where(solved, sizing.size, 1.0)
+            # Situations without size get a stand-in, so that the batch stays whole; their result is not used. A size of
+            # another situation is one that FORM does not search for long.
+            usual = float(np.median(sizing.size[solved])) if solved.any() else 1.0
+            values[rule.size_name] = sizing.size if solved.all() else np.where(solved, sizing.size, usual)
         distributions = tuple(
             rule.variables[i].distribution(values) if d is None else d for i, d in enumerate(self.fixed)
         )
