@@ -36,7 +36,7 @@ _KNOTS = np.array(
     [-_REACH, -24.0, -16.0, -12.0, -10.0, *np.arange(-8.0, 8.5), 10.0, 12.0, 16.0, 24.0, _REACH]
 )
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(8)
-_FEW_NODES, _FEW_WEIGHTS = np.polynomial.legendre.leggauss(6)
+_AFTER_ZERO = np.array([0.05, 0.2, 0.5])
 _FARTHEST = 20.0
 _NEGLIGIBLE = 1e-15
 _AT_ONCE = 200_000
@@ -153,6 +153,8 @@ def _level(actions: Sequence[Action], within: float) -> _Level:
 
     def tails(x: Array) -> tuple[Array, Array]:
         flat = x.ravel()
+        if flat.size == 0:
+            return x, x
         parts = [
             _sum_tails(first, rest, knots, repetitions, flat[i : i + size]) for i in range(0, flat.size, size)
         ]
@@ -264,16 +266,17 @@ class CombinedMaximum:
 
         Above a probability of zero the quantile begins with an infinite slope, so there x itself runs, in squares.
         """
-        knots = self.level.knots()
+        zeros = np.setdiff1d(_knots_u(self.level.maxima), _KNOTS)
+        knots = np.union1d(self.level.knots(), zeros[:, None] + _AFTER_ZERO)
         half = 0.5 * np.diff(knots)[:, None]
-        t = 1.0 + _FEW_NODES
+        t = 1.0 + _NODES
         x, slope = self.level.scale(knots[:-1, None] + half * t)
-        width = half * slope * _FEW_WEIGHTS
-        begins = np.isin(knots[:-1], np.setdiff1d(_knots_u(self.level.maxima), _KNOTS))
+        width = half * slope * _WEIGHTS
+        begins = np.isin(knots[:-1], zeros)
         ends = self.level.scale(knots)[0]
         length = (np.diff(ends)[begins])[:, None]
         x[begins] = ends[:-1][begins][:, None] + length * (0.5 * t) ** 2
-        width[begins] = length * 0.5 * t * _FEW_WEIGHTS
+        width[begins] = length * 0.5 * t * _WEIGHTS
         return x.ravel(), width.ravel()
 
     @property

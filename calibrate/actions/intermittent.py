@@ -141,7 +141,9 @@ class Intermittent(Distribution):
         length = _REACH - cut
         v = cut + length * t.reshape(column)
         n = self.repetitions
-        log_density = np.log(n * self.presence) + (n - 1.0) * np.log1p(-self.presence * np.exp(log_ndtr(-v)))
+        with np.errstate(divide="ignore"):
+            log_one = np.logaddexp(np.log1p(-self.presence), np.log(self.presence) + log_ndtr(v))
+        log_density = np.log(n * self.presence) + (n - 1.0) * log_one
         mass = weights.reshape(column) * length * np.exp(log_density - 0.5 * v * v - LOG_SQRT_2PI)
         with np.errstate(over="ignore", invalid="ignore"):
             x = self.base.x(v)
