@@ -167,15 +167,35 @@ def _order(actions: Sequence[Action]) -> list[int]:
     return sorted(range(len(actions)), key=lambda i: actions[i].repetitions)
 
 
-def _alternative(actions: Sequence[Action], leading: int, chain: Sequence[int]) -> Alternative:
-    """Return the alternative that maximises the actions of the chain, each within an interval of the one before."""
-    repetitions = [1.0] * len(actions)
+def leading_repetitions(repetitions: Sequence[float], leading: int) -> tuple[float, ...]:
+    """Return of how many of its repetitions each action takes the maximum while one leads.
+
+    Parameters
+    ----------
+    repetitions : sequence of float
+        In the reference period, one for each action.
+    leading : int
+        Which action leads: it has all of its repetitions; actions with fewer have one, and each one with more those
+        within one interval of its predecessor (see :func:`turkstra`, ``leading interval``).
+    """
+    order = sorted(range(len(repetitions)), key=lambda i: repetitions[i])
+    return _chained(repetitions, order[order.index(leading) :])
+
+
+def _chained(repetitions: Sequence[float], chain: Sequence[int]) -> tuple[float, ...]:
+    found = [1.0] * len(repetitions)
     before = 1.0
     for i in chain:
-        repetitions[i] = actions[i].repetitions / before
-        before = actions[i].repetitions
+        found[i] = repetitions[i] / before
+        before = repetitions[i]
+    return tuple(found)
+
+
+def _alternative(actions: Sequence[Action], leading: int, chain: Sequence[int]) -> Alternative:
+    """Return the alternative that maximises the actions of the chain, each within an interval of the one before."""
+    repetitions = _chained([a.repetitions for a in actions], chain)
     maxima = tuple(a.maximum(n) for a, n in zip(actions, repetitions, strict=True))
-    return Alternative(leading, tuple(repetitions), maxima)
+    return Alternative(leading, repetitions, maxima)
 
 
 def combination_doubts(

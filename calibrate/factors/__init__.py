@@ -7,7 +7,7 @@ apart. Knows nothing of study files or reports.
 from calibrate.factors.calibration import Calibration, calibrate_factors
 from calibrate.factors.identify import Diagnostics
 from calibrate.factors.lattice import Candidate, LatticeSearch, levels, search_lattice
-from calibrate.factors.model import Factor, RuleModel
+from calibrate.factors.model import Alternative, Factor, RuleModel
 from calibrate.factors.objective import FactorSet, Goal, factor_set
 from calibrate.factors.optimise import Optimum, optimise
 from calibrate.factors.penalties import PENALTIES, Penalty, make_penalty
@@ -16,6 +16,7 @@ from calibrate.factors.response import Evaluation, Response, RuleEvaluation
 
 __all__ = [
     "PENALTIES",
+    "Alternative",
     "Calibration",
     "Candidate",
     "Diagnostics",

@@ -42,6 +42,22 @@ class Factor:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class Alternative:
+    """One way in which the variable actions of a rule may come together.
+
+    Parameters
+    ----------
+    leading : str
+        The action that leads.
+    variables : tuple of BasicVariable
+        Those of the limit state, in its order, the actions with their repetitions in this alternative.
+    """
+
+    leading: str
+    variables: tuple[BasicVariable, ...]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class RuleModel:
     """A design rule with its limit state, over n design situations, in SI units.
 
@@ -63,6 +79,9 @@ class RuleModel:
         Weights of the situations, sum 1.
     rule_weight : float
         Share of this rule; the shares of all rules sum to 1.
+    alternatives : tuple of Alternative
+        Where actions are combined: each situation has the smallest beta of these. Empty where ``variables`` alone
+        count.
     """
 
     name: str
@@ -73,6 +92,7 @@ class RuleModel:
     values: Mapping[str, Any]
     weight: Array
     rule_weight: float
+    alternatives: tuple[Alternative, ...] = ()
 
     @property
     def n(self) -> int:
@@ -93,4 +113,5 @@ class RuleModel:
             values,
             weight / total if total > 0 else weight,
             self.rule_weight,
+            self.alternatives,
         )

@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from calibrate.distributions import Distribution
+from calibrate.factors.branch import Branch, BranchResult, worst_of
 from calibrate.factors.model import Factor, RuleModel
-from calibrate.reliability import ExpressionLimitState, Reliability, form
+from calibrate.reliability import Reliability
 from calibrate.situations import SOLVED, SizeSolver, Sizing, sizing_reason
 
 Array = npt.NDArray[np.float64]
@@ -32,7 +33,11 @@ class RuleEvaluation:
     distributions : tuple of Distribution
         Of the basic variables, as used, in the order of the rule.
     reliability : Reliability
-        Meaningless in situations without size.
+        Meaningless in situations without size; of the worst alternative in each situation.
+    branches : tuple of array (m, n)
+        Design points of each alternative in standard normal space, to continue from.
+    by_alternative : mapping of str to array (n,)
+        Beta of each alternative by its leading action; empty without combination.
     """
 
     name: str
@@ -40,6 +45,8 @@ class RuleEvaluation:
     sizing_code: npt.NDArray[np.int8]
     distributions: tuple[Distribution, ...]
     reliability: Reliability
+    branches: tuple[Array, ...] = ()
+    by_alternative: Mapping[str, Array] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -144,28 +151,20 @@ class _Rule:
 
     def __init__(self, rule: RuleModel, free: Sequence[str], workers: int) -> None:
         self.rule = rule
-        self.workers = workers
         self.free = list(free)
-        self.names = tuple(v.name for v in rule.variables)
         self.solver = (
             SizeSolver(rule.check, rule.size_name)
             if rule.check is not None and rule.size_name is not None
             else None
         )
         self.check_free = tuple(f for f in free if rule.check is not None and rule.check.depends_on(f))
-        self.direct = tuple(f for f in free if rule.limit_state.depends_on(f))
-        size = rule.size_name
-        self.sized = tuple(i for i, v in enumerate(rule.variables) if size is not None and v.depends_on(size))
-        self.fixed = tuple(
-            None if i in self.sized else v.distribution(rule.values) for i, v in enumerate(rule.variables)
-        )
-        wanted = [*self.direct, *([size] if size is not None else []), *(self.names[i] for i in self.sized)]
-        self.by = tuple(wanted)
+        chosen = [a.variables for a in rule.alternatives] or [rule.variables]
+        self.branches = [Branch(rule, variables, self.free, self.check_free, workers) for variables in chosen]
 
     def __call__(
         self, factors: Mapping[str, Any], start: RuleEvaluation | None
     ) -> tuple[RuleEvaluation, Array, Array, npt.NDArray[Any]]:
-        rule, n = self.rule, self.rule.n
+        rule = self.rule
         values: dict[str, Any] = {**rule.values, **factors}
         sizing = self._sized(values, start)
         solved = sizing.code == SOLVED
@@ -174,23 +173,30 @@ class _Rule:
             # another situation is one that FORM does not search for long.
             usual = float(np.median(sizing.size[solved])) if solved.any() else 1.0
             values[rule.size_name] = sizing.size if solved.all() else np.where(solved, sizing.size, usual)
-        distributions = tuple(
-            rule.variables[i].distribution(values) if d is None else d for i, d in enumerate(self.fixed)
-        )
-        reliability = form(
-            ExpressionLimitState(rule.limit_state, self.names, _needed(values, rule, self.names)),
-            distributions,
-            n,
-            start=None if start is None else _usable(start.reliability.u),
-            workers=self.workers,
-        )
+        starts = [None] * len(self.branches) if start is None else list(start.branches)
+        parts = [branch(values, sizing, u) for branch, u in zip(self.branches, starts, strict=True)]
+        reliability, jacobian = parts[0].reliability, parts[0].jacobian
+        by_alternative: dict[str, Array] = {}
+        if rule.alternatives:
+            reliability, jacobian = worst_of(parts)
+            names = [a.leading for a in rule.alternatives]
+            by_alternative = {
+                n: np.where(solved, p.reliability.beta, np.nan) for n, p in zip(names, parts, strict=True)
+            }
         beta = np.where(solved, reliability.beta, np.nan)
-        jacobian = self._jacobian(values, sizing, distributions, reliability, beta)
+        jacobian = np.where(np.isfinite(beta), jacobian, np.nan)
         status = np.array(reliability.status, dtype=object)
         for code in np.unique(sizing.code[~solved]):
             status[sizing.code == code] = f"not converged: {sizing_reason(int(code))}"
-        size = sizing.size if self.solver is not None else None
-        evaluation = RuleEvaluation(rule.name, size, sizing.code, distributions, reliability)
+        evaluation = RuleEvaluation(
+            rule.name,
+            sizing.size if self.solver is not None else None,
+            sizing.code,
+            self._shown(parts),
+            reliability,
+            tuple(p.reliability.u for p in parts),
+            by_alternative,
+        )
         return evaluation, beta, jacobian, status
 
     def _sized(self, values: Mapping[str, Any], start: RuleEvaluation | None) -> Sizing:
@@ -200,45 +206,10 @@ class _Rule:
         near = None if start is None else start.size
         return self.solver(values, n, self.check_free, near)
 
-    def _jacobian(
-        self,
-        values: Mapping[str, Any],
-        sizing: Sizing,
-        distributions: Sequence[Distribution],
-        reliability: Reliability,
-        beta: Array,
-    ) -> Array:
-        """Return d beta/d gamma = (dg/d gamma at fixed u*) / |grad_u g|, the size carried along."""
-        rule = self.rule
-        jacobian = np.zeros((len(self.free), rule.n))
-        if not self.by:
-            jacobian[:, ~np.isfinite(beta)] = np.nan
-            return jacobian
-        point = {**values, **dict(zip(self.names, reliability.x, strict=True))}
-        _, slopes = rule.limit_state.program(self.by, 1)(point)
-        by = dict(zip(self.by, slopes, strict=True))
-        with np.errstate(all="ignore"):
-            for name in self.direct:
-                jacobian[self.free.index(name)] += by[name]
-            if rule.size_name is not None:
-                by_size = np.array(np.broadcast_to(by[rule.size_name], (rule.n,)))
-                for i in self.sized:
-                    moved = rule.variables[i].slope(
-                        distributions[i], reliability.u[i], values, rule.size_name
-                    )
-                    if moved is not None:
-                        by_size += by[self.names[i]] * moved
-                for name, slope in zip(self.check_free, sizing.slopes, strict=True):
-                    jacobian[self.free.index(name)] += by_size * slope
-            jacobian /= reliability.gradient_norm
-        jacobian[:, ~np.isfinite(beta)] = np.nan
-        return jacobian
-
-
-def _needed(values: Mapping[str, Any], rule: RuleModel, variables: Sequence[str]) -> dict[str, Any]:
-    return {n: values[n] for n in rule.limit_state.names if n not in variables}
-
-
-def _usable(u: Array) -> Array:
-    """Return design points to start from; the origin where there is none."""
-    return np.where(np.isfinite(u), u, 0.0)
+    def _shown(self, parts: Sequence[BranchResult]) -> tuple[Distribution, ...]:
+        """Return the distributions for tables: of an action, the one with which it leads."""
+        leading = [a.leading for a in self.rule.alternatives]
+        return tuple(
+            parts[leading.index(v.name) if v.name in leading else 0].distributions[i]
+            for i, v in enumerate(self.rule.variables)
+        )

@@ -155,6 +155,39 @@ class SizeChange:
         return float(self.weight[change == sign].sum())
 
 
+def combination_table(result: Result) -> Table | None:
+    """Return what governs by rule, and mean beta of each alternative and of their series bounds; None without any."""
+    frame = result.combinations
+    if frame is None:
+        return None
+    weight = result.situations["weight"].to_numpy(float)
+    rules = [r for r in result.study.rules if (frame["governing"][frame["rule"] == r] != "").any()]
+    columns: list[Column] = [Column("rule", rules)]
+
+    def mean(rule: str, values: NDArray[np.float64]) -> float:
+        rows = (frame["rule"] == rule).to_numpy() & np.isfinite(values) & (weight > 0)
+        return float(np.average(values[rows], weights=weight[rows])) if rows.any() else math.nan
+
+    for action in result.study.combination:
+        governs = np.asarray(frame["governing"] == action.name, dtype=np.float64)
+        beta = frame[f"beta_{action.name}"].to_numpy(float)
+        head = f"led by {action.name}"
+        columns.append(
+            Column("mean β", [mean(r, beta) for r in rules], each(numbers.beta), "number", group=head)
+        )
+        columns.append(
+            Column("governs", [mean(r, governs) for r in rules], each(numbers.share, 0), "number", group=head)
+        )
+    for name, head in (("beta_series_lower", "independent"), ("beta_series_upper", "dependent")):
+        values = frame[name].to_numpy(float)
+        columns.append(
+            Column(
+                head, [mean(r, values) for r in rules], each(numbers.beta), "number", group="series, mean β"
+            )
+        )
+    return Table(tuple(columns))
+
+
 def period_table(result: Result) -> Table | None:
     """Return beta for other periods, with the proposed factors; None where the study asks for none."""
     if not result.other_periods:

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from calibrate.actions.intermittent import intermittent
 from calibrate.distributions import (
     Distribution,
     Extreme,
@@ -40,6 +41,8 @@ class BasicVariable:
         Reference period over the period of the model; the variable is the maximum of that many repetitions.
     fitted : Distribution, optional
         A distribution that was fitted to records, the same in all situations.
+    presence : float
+        Probability that an intermittent action is present in one repetition; absent, it is zero.
     size_ratio : Expression, optional
         Size of a part over the size that the model is for: the strength is the smallest of so many (weakest link).
     """
@@ -50,6 +53,7 @@ class BasicVariable:
     ratio: float = 1.0
     fitted: Distribution | None = None
     size_ratio: Expression | None = None
+    presence: float = 1.0
 
     def depends_on(self, name: str) -> bool:
         """Whether an argument contains the name."""
@@ -99,6 +103,8 @@ class BasicVariable:
         return {name: expression.value(values) for name, expression in self.arguments.items()}
 
     def _converted(self, given: Distribution) -> Distribution:
+        if self.presence < 1.0:
+            return intermittent(given, self.presence, self.ratio)
         return given if self.ratio == 1.0 else maximum_of(given, self.ratio)
 
     def slope(self, model: Distribution, u: Array, values: Mapping[str, Any], name: str) -> Array | None:

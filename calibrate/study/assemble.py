@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+import dataclasses
 from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.factors import RuleModel
+from calibrate.actions.combination import leading_repetitions
+from calibrate.factors import Alternative, RuleModel
 from calibrate.situations import BasicVariable
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Rule, Study, Variable
@@ -31,13 +33,42 @@ def _basic_variable(years: float, variable: Variable, fit: FittedVariable | None
     )
 
 
-def rule_models(study: Study, variables: Mapping[str, BasicVariable]) -> list[RuleModel]:
-    """Return one model per rule, in the order of the study."""
+def rule_models(
+    study: Study, variables: Mapping[str, BasicVariable], years: float | None = None
+) -> list[RuleModel]:
+    """Return one model per rule, in the order of the study.
+
+    ``years`` is the period of the variables, by default the reference period; the repetitions of combined actions
+    follow it.
+    """
     situations = study.situations
     numeric = {n: v for n, v in situations.columns.items() if v.dtype.kind == "f"}
     values = {**{q.name: q.value for q in study.quantities.values()}, **numeric, **situations.derived}
     total = sum(rule.weight for rule in study.rules.values())
-    return [_rule_model(rule, variables, values, situations.weight, total) for rule in study.rules.values()]
+    share = 1.0 if years is None else years / study.reference_period
+    return [
+        _rule_model(
+            rule, variables, values, situations.weight, total, _alternatives(study, rule, variables, share)
+        )
+        for rule in study.rules.values()
+    ]
+
+
+def _alternatives(
+    study: Study, rule: Rule, variables: Mapping[str, BasicVariable], share: float
+) -> tuple[Alternative, ...]:
+    """Return one alternative for each leading action of a rule (Turkstra); none where no combined action acts in it."""
+    acting = [a for a in study.combination if a.name in rule.variables]
+    totals = [max(a.repetitions * share, 1.0) for a in acting]
+    found = []
+    for lead, leading in enumerate(acting):
+        repeats = leading_repetitions(totals, lead)
+        own = {
+            a.name: dataclasses.replace(variables[a.name], ratio=r, presence=a.presence)
+            for a, r in zip(acting, repeats, strict=True)
+        }
+        found.append(Alternative(leading.name, tuple(own.get(n, variables[n]) for n in rule.variables)))
+    return tuple(found)
 
 
 def _rule_model(
@@ -46,6 +77,7 @@ def _rule_model(
     values: Mapping[str, Any],
     weight: NDArray[np.float64],
     total: float,
+    alternatives: tuple[Alternative, ...],
 ) -> RuleModel:
     return RuleModel(
         name=rule.name,
@@ -56,4 +88,5 @@ def _rule_model(
         values=values,
         weight=weight,
         rule_weight=rule.weight / total,
+        alternatives=alternatives,
     )

@@ -175,4 +175,6 @@ def table_files(result: Result) -> dict[str, bytes]:
         "factors.csv": result.factors.to_csv(index=False, lineterminator="\n"),
         "units.json": json.dumps(dict(result.units), indent=2, ensure_ascii=False) + "\n",
     }
+    if result.combinations is not None:
+        texts["combinations.csv"] = result.combinations.to_csv(index=False, lineterminator="\n")
     return {name: text.encode("utf-8") for name, text in texts.items()}

@@ -87,6 +87,19 @@ class Variable:
 
 
 @dataclass(frozen=True, slots=True)
+class CombinedAction:
+    """A variable action as independent pulses: how often in the reference period, and how often present.
+
+    ``duration`` is the mean time in years that it lasts when present; None where it fills its interval.
+    """
+
+    name: str
+    repetitions: float
+    presence: float = 1.0
+    duration: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Rule:
     """A design check, the size that it determines, and the limit state of what it designs.
 
@@ -156,6 +169,8 @@ class Study:
     """Axes of the grid; none where a table or nothing gives the situations."""
     table: str | None = None
     """The table of situations as the study names it."""
+    combination: tuple[CombinedAction, ...] = ()
+    """Variable actions that are combined; their models are those of one repetition."""
     blocks: Mapping[str, int] = field(default_factory=dict)
     """Blocks between begin and end of records of maxima, by name of the records, where stated."""
     other_periods: tuple[float, ...] = ()

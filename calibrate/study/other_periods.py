@@ -51,7 +51,7 @@ def other_periods(
     evaluation = calibration.proposed.evaluation
     for years in study.other_periods:
         response = Response(
-            rule_models(study, basic_variables(study, fitted, years)), study.factors, workers=workers
+            rule_models(study, basic_variables(study, fitted, years), years), study.factors, workers=workers
         )
         direct = response(evaluation.gamma, evaluation).beta
         intervals = [max(t / study.independence, 1.0) for t in (years, study.reference_period)]

@@ -82,6 +82,8 @@ class Result:
         Of quantities that stand for a variable.
     pedigree : tuple of PedigreeShare
     other_periods : tuple of PeriodBeta
+    combinations : DataFrame or None
+        Columns of combinations.csv: beta of each alternative of combined actions; None without any.
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
     required : DataFrame
@@ -102,6 +104,7 @@ class Result:
     biases: tuple[ImpliedBias, ...]
     pedigree: tuple[PedigreeShare, ...]
     other_periods: tuple[PeriodBeta, ...]
+    combinations: pd.DataFrame | None
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

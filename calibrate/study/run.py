@@ -15,6 +15,7 @@ from calibrate.provenance import Provenance, versions
 from calibrate.situations import BasicVariable
 from calibrate.study.assemble import basic_variables, rule_models
 from calibrate.study.bonds import implied_biases
+from calibrate.study.combinations import combination_table, doubts_of_combination
 from calibrate.study.doubts import study_doubts
 from calibrate.study.evidence_doubts import pedigree
 from calibrate.study.fits import fit_variables
@@ -95,6 +96,7 @@ def run(
         *bias_doubts,
         *study_doubts(study, fitted, calibration),
         *period_doubts(study, periods),
+        *doubts_of_combination(study, calibration),
         *calibration.doubts,
     )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
@@ -110,6 +112,7 @@ def run(
         biases=biases,
         pedigree=pedigree(study, calibration),
         other_periods=periods,
+        combinations=combination_table(study, calibration),
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

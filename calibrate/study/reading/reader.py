@@ -12,6 +12,7 @@ from calibrate.study.model import Objective, Study
 from calibrate.study.paths import project_folder
 from calibrate.study.reading import schema
 from calibrate.study.reading.bonds import bound, read_bonds
+from calibrate.study.reading.combination import read_combination
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.correlations import check_correlations
 from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
@@ -94,6 +95,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     )
     variables = read_variables(around, variables_raw)
     rules = finish_rules(reading, names, drafts, variables)
+    combination = read_combination(reading, sections["combination"], variables)
     check_correlations(reading, names, sections["correlations"])
     check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)
@@ -134,6 +136,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         factor_descriptions=factor_texts,
         axis_descriptions=grid.descriptions,
         doubts=tuple(reading.doubts),
+        combination=combination,
         blocks=read_blocks(sections["records"], records),
         other_periods=tuple(dict.fromkeys(head.other_periods)),
         independence=head.independence,

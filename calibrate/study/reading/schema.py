@@ -275,6 +275,14 @@ class ObjectiveSection(Section):
     d: Positive | None = None
 
 
+class CombinedTable(Section):
+    """One action of ``[combination]``."""
+
+    repetitions: Annotated[float, Field(ge=1)]
+    presence: Annotated[float, Field(gt=0, le=1)] = 1.0
+    duration: Positive | None = None
+
+
 class TopLevel(Section):
     """The sections themselves; only their names are checked here."""
 
@@ -286,6 +294,7 @@ class TopLevel(Section):
     variables: Any = None
     situations: Any = None
     rules: Any = None
+    combination: Any = None
     correlations: Any = None
     factors: Any = None
     objective: Any = None

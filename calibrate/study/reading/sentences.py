@@ -79,6 +79,7 @@ _REQUIREMENTS = {
     "finite_number": "a finite number",
     "greater_than": "greater than {gt}",
     "less_than": "less than {lt}",
+    "less_than_equal": "at most {le}",
     "model_type": "a table with keys",
     "greater_than_equal": "at least {ge}",
     "dict_type": "a table of named entries",

@@ -1,0 +1,142 @@
+"""FORM of one rule with one set of variables, its derivatives by factor, and the worst of several alternatives."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from calibrate.distributions import Distribution
+from calibrate.factors.model import RuleModel
+from calibrate.reliability import ExpressionLimitState, Reliability, form
+from calibrate.situations import BasicVariable, Sizing
+
+Array = npt.NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class BranchResult:
+    """Distributions, reliability and d beta/d gamma, shape (f, n), of one branch."""
+
+    distributions: tuple[Distribution, ...]
+    reliability: Reliability
+    jacobian: Array
+
+
+class Branch:
+    """The limit state of a rule with one set of variables; what does not depend on factors is prepared.
+
+    Parameters
+    ----------
+    rule : RuleModel
+    variables : tuple of BasicVariable
+        In the order of the limit state.
+    free : sequence of str
+        Free factors.
+    check_free : tuple of str
+        Those that the design check contains.
+    workers : int
+    """
+
+    def __init__(
+        self,
+        rule: RuleModel,
+        variables: tuple[BasicVariable, ...],
+        free: Sequence[str],
+        check_free: tuple[str, ...],
+        workers: int,
+    ) -> None:
+        self.rule, self.variables, self.workers = rule, variables, workers
+        self.free, self.check_free = list(free), check_free
+        self.names = tuple(v.name for v in variables)
+        self.direct = tuple(f for f in free if rule.limit_state.depends_on(f))
+        size = rule.size_name
+        self.sized = tuple(i for i, v in enumerate(variables) if size is not None and v.depends_on(size))
+        self.fixed = tuple(
+            None if i in self.sized else v.distribution(rule.values) for i, v in enumerate(variables)
+        )
+        self.by = (*self.direct, *([size] if size is not None else []), *(self.names[i] for i in self.sized))
+
+    def __call__(self, values: Mapping[str, Any], sizing: Sizing, start: Array | None) -> BranchResult:
+        """Return FORM and its derivatives for these values, among them the size."""
+        distributions = tuple(
+            self.variables[i].distribution(values) if d is None else d for i, d in enumerate(self.fixed)
+        )
+        needed = {n: values[n] for n in self.rule.limit_state.names if n not in self.names}
+        reliability = form(
+            ExpressionLimitState(self.rule.limit_state, self.names, needed),
+            distributions,
+            self.rule.n,
+            start=None if start is None else np.where(np.isfinite(start), start, 0.0),
+            workers=self.workers,
+        )
+        jacobian = self._jacobian(values, sizing, distributions, reliability)
+        return BranchResult(distributions, reliability, jacobian)
+
+    def _jacobian(
+        self,
+        values: Mapping[str, Any],
+        sizing: Sizing,
+        distributions: Sequence[Distribution],
+        reliability: Reliability,
+    ) -> Array:
+        """Return d beta/d gamma = (dg/d gamma at fixed u*) / |grad_u g|, the size carried along."""
+        rule = self.rule
+        jacobian = np.zeros((len(self.free), rule.n))
+        if not self.by:
+            return jacobian
+        point = {**values, **dict(zip(self.names, reliability.x, strict=True))}
+        _, slopes = rule.limit_state.program(self.by, 1)(point)
+        by = dict(zip(self.by, slopes, strict=True))
+        with np.errstate(all="ignore"):
+            for name in self.direct:
+                jacobian[self.free.index(name)] += by[name]
+            if rule.size_name is not None:
+                by_size = np.array(np.broadcast_to(by[rule.size_name], (rule.n,)))
+                for i in self.sized:
+                    moved = self.variables[i].slope(
+                        distributions[i], reliability.u[i], values, rule.size_name
+                    )
+                    if moved is not None:
+                        by_size += by[self.names[i]] * moved
+                for name, slope in zip(self.check_free, sizing.slopes, strict=True):
+                    jacobian[self.free.index(name)] += by_size * slope
+            jacobian /= reliability.gradient_norm
+        return jacobian
+
+
+def worst_of(parts: Sequence[BranchResult]) -> tuple[Reliability, Array]:
+    """Return, in every situation, the result of the alternative with the smallest beta.
+
+    A situation in which an alternative has no beta has none itself, unless that alternative has no failure region
+    within reach: then the others decide.
+    """
+    beta = np.array([p.reliability.beta for p in parts])
+    out_of_reach = np.array([p.reliability.status == OUT_OF_REACH for p in parts])
+    rank = np.where(np.isnan(beta), np.where(out_of_reach, np.inf, -np.inf), beta)
+    chosen = np.argmin(rank, axis=0)
+    columns = np.arange(beta.shape[1])
+
+    def picked(arrays: Sequence[npt.NDArray[Any]]) -> npt.NDArray[Any]:
+        stacked = np.array(arrays)
+        return np.asarray(stacked[chosen, ..., columns].T if stacked.ndim == 3 else stacked[chosen, columns])
+
+    found = [p.reliability for p in parts]
+    merged = Reliability(
+        found[0].variables,
+        picked([r.beta for r in found]),
+        picked([r.u for r in found]),
+        picked([r.x for r in found]),
+        picked([r.alpha for r in found]),
+        picked([r.gradient_norm for r in found]),
+        picked([r.code for r in found]),
+        picked([r.iterations for r in found]),
+        sum(r.evaluations for r in found),
+    )
+    return merged, picked([p.jacobian for p in parts])
+
+
+OUT_OF_REACH = "no failure region within reach"

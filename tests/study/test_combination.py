@@ -1,0 +1,181 @@
+"""Combined variable actions: every alternative, the worst of them, derivatives, and what is said of it."""
+
+import numpy as np
+import pytest
+from scipy.special import log_ndtr, ndtr, ndtri_exp
+
+import calibrate
+from calibrate.distributions import distribution, maximum_of
+from calibrate.errors import InputError
+from calibrate.study.assemble import basic_variables, rule_models
+from calibrate.study.fits import fit_variables
+
+STUDY = """
+format = 1
+[study]
+title = "Gantry"
+reference_period = 50
+{study}
+[target]
+beta = 3.8
+[variables.R]
+family = "lognormal"
+mean = 1.0
+cov = 0.1
+[variables.Q]
+family = "gumbel"
+mean = "0.6 * chi"
+cov = 0.35
+{Q}
+[variables.W]
+family = "gumbel"
+mean = "0.5 * (1 - chi)"
+cov = 0.4
+[combination]
+Q = {{ repetitions = 5{present} }}
+W = {{ repetitions = 50 }}
+{more}
+[situations.axes]
+chi = [0.1, 0.3, 0.5, 0.7, 0.9]
+[rules.gantry]
+design_check = "z * phi >= gamma_Q * chi + gamma_W * (1 - chi)"
+sizes = "z"
+limit_state = "z * R >= Q + W"
+[factors]
+phi = {{ present = 0.6, lower = 0.3, upper = 1.2 }}
+gamma_Q = 1.2
+gamma_W = 1.5
+"""
+
+
+@pytest.fixture
+def study(tmp_path):
+    def write(**parts):
+        texts = {"study": "", "present": "", "more": "", "Q": "", **parts}
+        path = tmp_path / "study.toml"
+        path.write_text(STUDY.format(**texts), encoding="utf-8")
+        return calibrate.read_study(path)
+
+    return write
+
+
+def by_hand(chi, size, repeats_q, repeats_w):
+    """Return beta of one alternative through the public form."""
+    return calibrate.form(
+        "z * R - Q - W",
+        {
+            "R": distribution("lognormal", mean=1.0, cov=0.1),
+            "Q": maximum_of(distribution("gumbel", mean=0.6 * chi, cov=0.35), repeats_q),
+            "W": maximum_of(distribution("gumbel", mean=0.5 * (1 - chi), cov=0.4), repeats_w),
+        },
+        quantities={"z": size},
+    ).beta
+
+
+def test_each_alternative_is_form_with_its_own_maxima(study):
+    result = calibrate.run(study())
+    frame = result.combinations
+    chi, size = (result.situations[c].to_numpy() for c in ("chi", "size_proposed"))
+    # Q leads with five repetitions, W beside it with the ten within one of them; or W leads with all fifty.
+    led_by_q = by_hand(chi, size, 5, 10)
+    led_by_w = by_hand(chi, size, 1, 50)
+    np.testing.assert_allclose(frame["beta_Q"], led_by_q, atol=1e-8)
+    np.testing.assert_allclose(frame["beta_W"], led_by_w, atol=1e-8)
+    worst = np.minimum(led_by_q, led_by_w)
+    np.testing.assert_allclose(result.situations["beta_proposed"], worst, atol=1e-8)
+    assert list(frame["governing"]) == list(np.where(led_by_q <= led_by_w, "Q", "W"))
+    assert {"Q", "W"} == set(frame["governing"])
+    np.testing.assert_allclose(frame["beta_series_upper"], worst, atol=1e-8)
+    joint = ndtri_exp(log_ndtr(led_by_q) + log_ndtr(led_by_w))
+    np.testing.assert_allclose(frame["beta_series_lower"], joint, atol=1e-8)
+
+
+def test_the_combined_beta_lies_below_what_full_coincidence_would_give_and_above(study):
+    result = calibrate.run(study())
+    chi, size = (result.situations[c].to_numpy() for c in ("chi", "size_proposed"))
+    beta = result.situations["beta_proposed"].to_numpy()
+    assert (beta >= by_hand(chi, size, 5, 50) - 1e-9).all()
+    assert (beta <= by_hand(chi, size, 1, 50) + 1e-9).all()
+
+
+def test_beta_of_the_worst_alternative_agrees_with_simulation_of_the_pulses(study):
+    """The alternatives bound the true combination from above; simulation of the pulses says how far (seeded)."""
+    result = calibrate.run(study())
+    rng = np.random.default_rng(87)
+    row = 2
+    chi, z = (float(result.situations[c].iloc[row]) for c in ("chi", "size_proposed"))
+    n, size = 0, 0.62 * z  # a smaller member, so that failures are frequent enough to count
+    failed = 0
+    laws = (
+        distribution("gumbel", mean=0.6 * chi, cov=0.35),
+        distribution("gumbel", mean=0.5 * (1 - chi), cov=0.4),
+    )
+    for _ in range(20):
+        q = laws[0].sample(rng, (10_000, 5))
+        w = laws[1].sample(rng, (10_000, 5, 10)).max(axis=2)
+        r = distribution("lognormal", mean=1.0, cov=0.1).sample(rng, 10_000)
+        failed += int(np.sum(size * r < (q + w).max(axis=1)))
+        n += 10_000
+    p, error = failed / n, np.sqrt(failed) / n
+    worst = min(
+        float(by_hand(np.array([chi]), size, 5, 10)[0]), float(by_hand(np.array([chi]), size, 1, 50)[0])
+    )
+    series = ndtr(-worst)
+    assert series <= p + 4 * error + 0.1 * p  # FORM's own error is of that order here
+    assert p < 3 * series
+
+
+def test_derivatives_of_the_worst_alternative_are_exact(study):
+    made = study()
+    from calibrate.factors import Response
+
+    response = Response(rule_models(made, basic_variables(made, fit_variables(made))), made.factors)
+    h, gamma = 1e-6, np.array([0.6])
+    sides = [response(gamma + d).beta for d in (-h, h)]
+    np.testing.assert_allclose(response(gamma).jacobian[0], (sides[1] - sides[0]) / (2 * h), rtol=1e-5)
+    np.testing.assert_allclose(response(gamma, response(gamma * 1.1)).beta, response(gamma).beta, atol=1e-9)
+
+
+def test_an_action_that_is_rarely_present_matters_less(study):
+    always, rarely = (
+        calibrate.run(study(present=text)).situations["beta_present"].to_numpy()
+        for text in ("", ", presence = 0.2")
+    )
+    assert (rarely >= always - 1e-9).all()
+    assert (rarely[2:] > always[2:]).all()
+
+
+def test_other_periods_follow_the_repetitions(study):
+    result = calibrate.run(study(study="other_periods = [10]"))
+    chi, size = (result.situations[c].to_numpy() for c in ("chi", "size_proposed"))
+    # Ten of fifty years: one repetition of Q and ten of W.
+    exact = np.minimum(by_hand(chi, size, 1, 10), by_hand(chi, size, 1, 10))
+    np.testing.assert_allclose(result.other_periods[0].direct, exact, atol=1e-8)
+
+
+def test_presence_beyond_the_period_is_doubted(study):
+    result = calibrate.run(study(present=", duration = 20"))
+    assert "presence-beyond-period" in {d.code for d in result.doubts}
+
+
+def test_files_and_report_show_the_alternatives(study, tmp_path):
+    from calibrate.report import write_result
+
+    write_result(calibrate.run(study()), tmp_path / "out")
+    assert "led by Q" in (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
+    head = (tmp_path / "out" / "combinations.csv").read_text(encoding="utf-8").splitlines()[0]
+    assert head == "rule,situation,governing,beta_Q,beta_W,beta_series_upper,beta_series_lower"
+
+
+@pytest.mark.parametrize(
+    ("parts", "words"),
+    [
+        ({"more": "S = { repetitions = 3 }"}, "'S' is not a basic variable"),
+        ({"present": ", presence = 1.5"}, "presence"),
+        ({"present": ", repeats = 2"}, "unknown key 'repeats'"),
+        ({"Q": "period = 1"}, "takes no period"),
+    ],
+)
+def test_slips_of_combinations_are_told(study, parts, words):
+    with pytest.raises(InputError, match=words):
+        study(**parts)
