@@ -64,8 +64,13 @@ def period_doubts(study: Study, found: tuple[PeriodBeta, ...]) -> list[Doubt]:
     """Name actions that cannot follow another period because they have none."""
     if not found:
         return []
+    combined = {action.name for action in study.combination}
     fixed = [
-        n for n, v in study.variables.items() if v.role == "action" and (v.period is None or not v.converted)
+        name
+        for name, variable in study.variables.items()
+        if variable.role == "action"
+        and name not in combined
+        and (variable.period is None or not variable.converted)
     ]
     if not fixed:
         return []
