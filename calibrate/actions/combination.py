@@ -14,6 +14,7 @@ from typing import Literal
 import numpy as np
 
 from calibrate.actions.intermittent import intermittent
+from calibrate.actions.periods import in_years
 from calibrate.distributions import Distribution
 from calibrate.errors import Doubt, InputError, Problem
 
@@ -220,8 +221,8 @@ def combination_doubts(
             if present > reference_period * (1.0 + 1e-9):
                 text = (
                     f"{action.name}: {action.repetitions:g} repetitions, present with probability "
-                    f"{action.presence:g} and each lasting {lasting:g} years, fill {present:g} years, more than the "
-                    f"reference period of {reference_period:g} years. One of the numbers is for another period."
+                    f"{action.presence:g} and each lasting {in_years(lasting)}, fill {in_years(present)}, more than "
+                    f"the reference period of {in_years(reference_period)}. One of the numbers is for another period."
                 )
                 doubts.append(Doubt("presence-beyond-period", text, place))
         negative = float(np.max(action.distribution.cdf(0.0)))

@@ -20,6 +20,11 @@ from calibrate.errors import InputError, Problem
 Array = npt.NDArray[np.float64]
 
 
+def in_years(period: float) -> str:
+    """Return a period as messages write it."""
+    return "1 year" if period == 1.0 else f"{period:g} years"
+
+
 def beta_of_period(
     beta: npt.ArrayLike, periods_ratio: npt.ArrayLike, independence: npt.ArrayLike = 1.0
 ) -> Array:
@@ -149,11 +154,11 @@ class OtherPeriod:
         dependence = (
             "full independence"
             if self.independence == 1.0
-            else f"independence intervals of {_years(self.independence * min(self.period, self.other_period))}"
+            else f"independence intervals of {in_years(self.independence * min(self.period, self.other_period))}"
         )
         text = (
-            f"β = {self.beta:.2f} for {_years(self.period)} converts to {self.converted:.2f} for "
-            f"{_years(self.other_period)} under {dependence}"
+            f"β = {self.beta:.2f} for {in_years(self.period)} converts to {self.converted:.2f} for "
+            f"{in_years(self.other_period)} under {dependence}"
         )
         if self.direct is None:
             return f"{text}."
@@ -203,11 +208,7 @@ def require_same_period(
     there = other_period(beta, period, target_period, independence=independence, direct=direct)
     direct_text = "" if direct is None else f"{direct:.2f} (direct) / "
     message = (
-        f"β is for {_years(period)}, the target {target:g} is for {_years(target_period)}. Over "
-        f"{_years(target_period)} this design has about {direct_text}{there.converted:.2f} (converted)."
+        f"β is for {in_years(period)}, the target {target:g} is for {in_years(target_period)}. Over "
+        f"{in_years(target_period)} this design has about {direct_text}{there.converted:.2f} (converted)."
     )
     raise InputError(Problem(message, suggestion="Choose one period for actions, β and target."))
-
-
-def _years(period: float) -> str:
-    return "1 year" if period == 1.0 else f"{period:g} years"

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 import numpy as np
 from scipy.special import ndtr
 
+from calibrate.actions.periods import in_years
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration
 from calibrate.study.evidence_doubts import evidence_doubts
@@ -87,8 +88,8 @@ def _period_doubts(study: Study) -> list[Doubt]:
             doubts.append(
                 Doubt(
                     "period-not-converted",
-                    f"Variable '{name}' is given for {_years(variable.period)} and was not converted to the reference "
-                    f"period of {_years(study.reference_period)}: {variable.conversion_reason}",
+                    f"Variable '{name}' is given for {in_years(variable.period)} and was not converted to the "
+                    f"reference period of {in_years(study.reference_period)}: {variable.conversion_reason}",
                     f"variables.{name}",
                 )
             )
@@ -96,15 +97,11 @@ def _period_doubts(study: Study) -> list[Doubt]:
         doubts.append(
             Doubt(
                 "period-converted",
-                f"Variable '{name}' is given for {_years(variable.period)} and was converted to the reference period "
-                f"of {_years(study.reference_period)} as the maximum of independent periods, F^"
+                f"Variable '{name}' is given for {in_years(variable.period)} and was converted to the reference period "
+                f"of {in_years(study.reference_period)} as the maximum of independent periods, F^"
                 f"{study.reference_period / variable.period:g}. Scatter that is constant in time (coefficients, "
                 "model uncertainty) does not belong in it.",
                 f"variables.{name}",
             )
         )
     return doubts
-
-
-def _years(period: float) -> str:
-    return "1 year" if period == 1 else f"{period:g} years"

@@ -174,6 +174,7 @@ def test_files_and_report_show_the_alternatives(study, tmp_path):
         ({"present": ", presence = 1.5"}, "presence"),
         ({"present": ", repeats = 2"}, "unknown key 'repeats'"),
         ({"Q": "period = 1"}, "takes no period"),
+        ({"Q": 'role = "geometry"'}, "role geometry; only actions"),
     ],
 )
 def test_slips_of_combinations_are_told(study, parts, words):

@@ -26,6 +26,13 @@ def read_combination(
         variable = variables[name]
         if content is None or variable is None:
             continue
+        if variable.role not in ("", "action"):
+            reading.problem(
+                f"has the role {variable.role}; only actions repeat themselves and are combined by their maxima.",
+                place,
+                f"Remove it here, or correct the role of variables.{name}.",
+            )
+            continue
         if variable.period is not None or variable.size_ratio is not None:
             reading.problem(
                 "is combined by its repetitions; its model is that of one of them and takes no period or size_ratio.",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from calibrate.actions.periods import beta_of_period
+from calibrate.actions.periods import beta_of_period, in_years
 from calibrate.expressions import Expression
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.names import MODELS
@@ -19,15 +19,12 @@ def check_target_period(reading: Reading, head: StudySection | None, target: Tar
     reference = head.reference_period
     converted = float(beta_of_period(target.beta, reference / target.period))
     reading.problem(
-        f"is {_years(target.period)}, but every β of this study is for {_years(reference)}. Under full independence a "
-        f"target of {target.beta:g} for {_years(target.period)} is {converted:.2f} for {_years(reference)}.",
+        f"is {in_years(target.period)}, but every β of this study is for {in_years(reference)}. Under full "
+        f"independence a target of {target.beta:g} for {in_years(target.period)} is "
+        f"{converted:.2f} for {in_years(reference)}.",
         ("target", "period"),
         "Choose one period: change study.reference_period, or state the target for it.",
     )
-
-
-def _years(period: float) -> str:
-    return "1 year" if period == 1 else f"{period:g} years"
 
 
 def check_conversion(subject: Subject, content: VariableEntry) -> bool:
