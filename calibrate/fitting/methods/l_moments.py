@@ -66,10 +66,6 @@ class LMoments(Method):
     title = "method of L-moments"
     source = "J. R. M. Hosking and J. R. Wallis, Regional Frequency Analysis, Cambridge 1997 (formulas from memory)"
 
-    def check(self, seen: Observations, family: str, options: Mapping[str, float]) -> None:
-        """Refuse families without formulas as well."""
-        super().check(seen, family, options)
-
     @property
     def families(self) -> tuple[str, ...]:  # type: ignore[override]
         """Families with formulas."""
