@@ -18,6 +18,7 @@ from calibrate.units import (
     parse_unit,
     si_unit,
     split_value,
+    vocabulary,
 )
 
 # Definitions: SI Brochure, 9th edition (2019), Tables 4, 7 and 8; NIST Special Publication 811 (2008),
@@ -455,12 +456,18 @@ def test_words_of_dimensions():
     assert DIMENSIONLESS.describe() == "dimensionless"
 
 
-def test_pint_is_loaded_only_when_a_unit_is_read():
+@pytest.mark.parametrize("name", sorted(vocabulary._USUAL))
+def test_units_written_out_are_those_of_pint(name):
+    size, dimension = vocabulary._of_pint(name)
+    assert vocabulary.lookup(name) == (size, dimension)
+
+
+def test_pint_is_loaded_only_for_unusual_units():
     code = (
         "import sys, calibrate.units as u\n"
-        "assert u.parse_unit('') == u.ONE and u.split_value('1 + 2') is None\n"
+        "u.parse_unit('kN/mm^2')\n"
         "assert 'pint' not in sys.modules\n"
-        "u.parse_unit('mm')\n"
+        "u.parse_unit('mile')\n"
         "assert 'pint' in sys.modules\n"
     )
     subprocess.run([sys.executable, "-c", code], check=True)

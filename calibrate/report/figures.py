@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from functools import partial
 from typing import TYPE_CHECKING
 
 import numpy as np
 
+from calibrate.engine import run_tasks
 from calibrate.report import style, symbols
 from calibrate.report.axis_figure import beta_by_axis, panel_axes
 from calibrate.report.distribution_figure import beta_distribution
@@ -37,27 +39,33 @@ def figures(result: Result) -> dict[str, Rendered]:
     ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those
     that matter, ``return_levels_<variable>`` for block maxima.
     """
-    drawn: dict[str, Rendered] = {}
     with style.context():
-        for name, figure in _all(result):
-            drawn[name] = style.render(figure)
-    return drawn
+        makers = dict(_all(result))
+        return dict(zip(makers, run_tasks([partial(_drawn, make) for make in makers.values()]), strict=True))
 
 
-def _all(result: Result) -> Iterator[tuple[str, Figure]]:
+Maker = Callable[[], "Figure"]
+
+
+def _drawn(make: Maker) -> Rendered:
+    return style.render(make())
+
+
+def _all(result: Result) -> Iterator[tuple[str, Maker]]:
+    """Yield what makes each figure; a figure is made where it is drawn, and only there."""
     for axis in panel_axes(result):
-        yield f"beta_by_{axis}", beta_by_axis(result, axis)
-    yield "beta_distribution", beta_distribution(result)
+        yield f"beta_by_{axis}", partial(beta_by_axis, result, axis)
+    yield "beta_distribution", partial(beta_distribution, result)
     if names := drawn_factors(result):
-        yield "required_factors", required_factors(result, names)
+        yield "required_factors", partial(required_factors, result, names)
     if changes := size_changes(result):
-        yield "size_change", size_change(changes)
+        yield "size_change", partial(size_change, changes)
     if found := sensitivities(result):
-        yield "sensitivity", sensitivity(result, found)
+        yield "sensitivity", partial(sensitivity, result, found)
     yield from _probability(result)
 
 
-def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
+def _probability(result: Result) -> Iterator[tuple[str, Maker]]:
     from calibrate.report.probability_paper import probability_figure
     from calibrate.report.return_figure import return_figure
     from calibrate.report.sample_figure import sample_figure
@@ -66,21 +74,26 @@ def _probability(result: Result) -> Iterator[tuple[str, Figure]]:
     for name in drawn_samples(result):
         sample, screening = result.study.records[name], result.screenings[name]
         label = symbols.literal(name.replace("_", " "))
-        yield f"sample_{name}", sample_figure(sample, screening, label=label, unit=_unit(sample))
+        yield f"sample_{name}", partial(sample_figure, sample, screening, label=label, unit=_unit(sample))
     for name, fitted in result.fitted.items():
         record = result.study.records[result.study.variables[name].records or ""]
         label, unit = symbols.drawn(name), _unit(record)
         chosen = [fitted.fit, *(c for c in fitted.comparison.candidates if c.family in fitted.tests)]
         shown = list(dict.fromkeys(chosen))
-        yield f"probability_{name}", probability_figure(fitted.fit, label=label, unit=unit)
+        yield f"probability_{name}", partial(probability_figure, fitted.fit, label=label, unit=unit)
         if fitted.maxima is not None:
-            yield f"return_levels_{name}", return_figure(fitted.maxima, label=label, unit=unit)
+            yield f"return_levels_{name}", partial(return_figure, fitted.maxima, label=label, unit=unit)
         side = tail_of(result, name)
         if side is not None and matters(result, name):
             yield (
                 f"tail_{name}",
-                tail_figure(
-                    shown, lower=side == "lower", label=label, unit=unit, design=_design_range(result, name)
+                partial(
+                    tail_figure,
+                    shown,
+                    lower=side == "lower",
+                    label=label,
+                    unit=unit,
+                    design=_design_range(result, name),
                 ),
             )
 

@@ -41,6 +41,7 @@ _RC: dict[str, Any] = {
     "axes.titlesize": 8.0,
     "axes.titleweight": "bold",
     "axes.titlelocation": "left",
+    "axes.titley": 1.0,  # fixed, else every drawing measures all labels to find its place
     "axes.spines.top": False,
     "axes.spines.right": False,
     "axes.axisbelow": True,

@@ -18,7 +18,7 @@ import functools
 from fractions import Fraction
 from typing import Any
 
-from calibrate.units.dimension import BASE_NAMES, DIMENSIONLESS, Dimension
+from calibrate.units.dimension import BASE_NAMES, BASE_SYMBOLS, DIMENSIONLESS, Dimension
 
 
 def _words(text: str) -> list[str]:
@@ -56,7 +56,41 @@ _PREFIXES: dict[str, str] = {
     "",
 )
 
-# Usual names that pint lacks, or reads otherwise.
+# What most studies use, written out: building pint's registry costs more than half a second. Tests hold every
+# entry against pint. Size in SI, then powers of the base units.
+_USUAL: dict[str, tuple[str, str]] = {
+    "m": ("1", "m"),
+    "mm": ("1e-3", "m"),
+    "cm": ("1e-2", "m"),
+    "km": ("1e3", "m"),
+    "kg": ("1", "kg"),
+    "g": ("1e-3", "kg"),
+    "t": ("1e3", "kg"),
+    "s": ("1", "s"),
+    "min": ("60", "s"),
+    "h": ("3600", "s"),
+    "day": ("86400", "s"),
+    "year": ("31557600", "s"),
+    "K": ("1", "K"),
+    "rad": ("1", ""),
+    "percent": ("0.01", ""),
+    "N": ("1", "kg m s-2"),
+    "kN": ("1e3", "kg m s-2"),
+    "MN": ("1e6", "kg m s-2"),
+    "Pa": ("1", "kg m-1 s-2"),
+    "kPa": ("1e3", "kg m-1 s-2"),
+    "MPa": ("1e6", "kg m-1 s-2"),
+    "GPa": ("1e9", "kg m-1 s-2"),
+    "J": ("1", "kg m2 s-2"),
+    "kJ": ("1e3", "kg m2 s-2"),
+    "Hz": ("1", "s-1"),
+    "kgf": ("9.80665", "kg m s-2"),
+    "in": ("0.0254", "m"),
+    "ft": ("0.3048", "m"),
+    "lb": ("0.45359237", "kg"),
+    "lbf": ("4.4482216152605", "kg m s-2"),
+    "kip": ("4448.2216152605", "kg m s-2"),
+}
 
 # Usual names that pint lacks, or reads otherwise, as products.
 _OWN: dict[str, dict[str, int]] = {
@@ -123,8 +157,19 @@ def _registry() -> Any:
 @functools.cache
 def lookup(name: str) -> tuple[Fraction, Dimension] | None:
     """Return (exact factor to SI, dimension) of one accepted name, else None."""
+    if name in _USUAL:
+        return _usual(*_USUAL[name])
     if name in _OWN:
         return _composed(_OWN[name])
+    return _of_pint(name)
+
+
+def _usual(size: str, powers: str) -> tuple[Fraction, Dimension]:
+    found = {p.rstrip("-0123456789"): Fraction(p.lstrip("".join(BASE_SYMBOLS)) or 1) for p in powers.split()}
+    return Fraction(size), Dimension(tuple(found.get(symbol, Fraction(0)) for symbol in BASE_SYMBOLS))
+
+
+def _of_pint(name: str) -> tuple[Fraction, Dimension] | None:
     resolved = _registry().parse_unit_name(_SHORT_PLURALS.get(name, name))
     if not resolved:
         return None
