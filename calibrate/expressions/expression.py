@@ -135,17 +135,17 @@ class Expression:
         """Whether the name occurs."""
         return name in self.names
 
-    def is_linear_in(self, name: str) -> bool:
-        """Whether the expression is certainly a + b·name, with a and b free of the name.
+    def is_linear_in(self, *names: str) -> bool:
+        """Whether the expression is certainly a + sum of b·name, with a and every b free of all these names.
 
-        Symbolic and conservative: the derivative does not contain the name and
-        no condition of a ``where`` does.
+        Symbolic and conservative: no derivative contains a name and no
+        condition of a ``where`` does.
         """
         graph = Graph()
         root = from_tree(graph, self.tree)
         conditions = [i for i in graph.below([root]) if graph.ops[i] == ">="]
-        (slope,) = derive.gradient(graph, root, (name,))
-        return not any(graph.depends(i, frozenset({name})) for i in [slope, *conditions])
+        slopes = derive.gradient(graph, root, names)
+        return not any(graph.depends(i, frozenset(names)) for i in [*slopes, *conditions])
 
 
 def _full(value: Any, shape: tuple[int, ...]) -> Array:

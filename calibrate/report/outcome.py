@@ -185,6 +185,10 @@ def combination_table(result: Result) -> Table | None:
                 head, [mean(r, values) for r in rules], each(numbers.beta), "number", group="series, mean β"
             )
         )
+    exact = frame["beta_fbc"].to_numpy(float)
+    columns.append(
+        Column("mean β", [mean(r, exact) for r in rules], each(numbers.beta), "number", group="exact maximum")
+    )
     return Table(tuple(columns))
 
 

@@ -10,26 +10,32 @@ from scipy.special import log_ndtr, ndtri_exp
 from calibrate.actions.combination import Action, combination_doubts
 from calibrate.errors import Doubt
 from calibrate.factors import Calibration
+from calibrate.study.exact_combination import ExactCombination
 from calibrate.study.model import Study
 
 if TYPE_CHECKING:
     import pandas as pd
 
 
-def combination_table(study: Study, calibration: Calibration) -> pd.DataFrame | None:
+def combination_table(
+    study: Study, calibration: Calibration, exact: ExactCombination | None
+) -> pd.DataFrame | None:
     """Return beta of every alternative with the proposed factors, one row per rule and situation; None without any.
 
     Columns: rule, situation, governing (leading action of the smallest beta), ``beta_<action>`` for each leading action
     (empty where it does not act), ``beta_series_upper`` (the smallest) and ``beta_series_lower``: the simple bounds of
-    the series system of the alternatives, fully dependent and independent.
+    the series system of the alternatives, fully dependent and independent; ``beta_fbc``: by the exact distribution of
+    the maximum of the combined actions (Ferry Borges and Castanheta), empty where there is none.
     """
     import pandas as pd
 
-    if not study.combination:
+    if exact is None:
         return None
     names = [a.name for a in study.combination]
     frames = []
-    for rule, e in zip(study.rules, calibration.proposed.evaluation.per_rule, strict=True):
+    for rule, e, beta_exact in zip(
+        study.rules, calibration.proposed.evaluation.per_rule, exact.beta, strict=True
+    ):
         n = study.situations.n
         beta = np.array([e.by_alternative.get(name, np.full(n, np.nan)) for name in names])
         there = np.isfinite(beta)
@@ -50,6 +56,7 @@ def combination_table(study: Study, calibration: Calibration) -> pd.DataFrame | 
                         some, np.nanmin(np.where(there, beta, np.inf), axis=0), np.nan
                     ),
                     "beta_series_lower": series,
+                    "beta_fbc": beta_exact,
                 }
             )
         )

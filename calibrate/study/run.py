@@ -18,6 +18,7 @@ from calibrate.study.bonds import implied_biases
 from calibrate.study.combinations import combination_table, doubts_of_combination
 from calibrate.study.doubts import study_doubts
 from calibrate.study.evidence_doubts import pedigree
+from calibrate.study.exact_combination import exact_combination
 from calibrate.study.fits import fit_variables
 from calibrate.study.model import Study
 from calibrate.study.other_periods import other_periods, period_doubts
@@ -89,6 +90,7 @@ def run(
     table, units = situation_table(study, calibration)
     biases, bias_doubts = implied_biases(study, used_distributions(study, calibration))
     periods = other_periods(study, fitted, calibration, workers)
+    exact = exact_combination(study, variables, calibration, workers)
     screening_doubts = [d for name, s in screenings.items() for d in s.doubts(f"records.{name}")]
     doubts = (
         *study.doubts,
@@ -97,6 +99,7 @@ def run(
         *study_doubts(study, fitted, calibration),
         *period_doubts(study, periods),
         *doubts_of_combination(study, calibration),
+        *(() if exact is None else exact.doubts),
         *calibration.doubts,
     )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
@@ -112,7 +115,7 @@ def run(
         biases=biases,
         pedigree=pedigree(study, calibration),
         other_periods=periods,
-        combinations=combination_table(study, calibration),
+        combinations=combination_table(study, calibration, exact),
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

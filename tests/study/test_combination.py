@@ -90,6 +90,42 @@ def test_each_alternative_is_form_with_its_own_maxima(study):
     np.testing.assert_allclose(frame["beta_series_lower"], joint, atol=1e-8)
 
 
+def test_the_exact_maximum_is_form_on_its_quantile_and_never_above_the_alternatives(study):
+    """Row by row against the nearest point of R z = S(u), S the quantile of the scalar quadrature, by scipy."""
+    from scipy.optimize import minimize_scalar
+
+    from calibrate.actions import Action, fbc_maximum
+
+    result = calibrate.run(study())
+    frame = result.combinations
+    assert (frame["beta_fbc"] <= frame["beta_series_upper"] + 1e-9).all()
+    law = distribution("lognormal", mean=1.0, cov=0.1)
+    for row in (0, 2, 4):
+        chi, z = (float(result.situations[c].iloc[row]) for c in ("chi", "size_proposed"))
+        whole = fbc_maximum(
+            [
+                Action(distribution("gumbel", mean=0.6 * chi, cov=0.35), 5),
+                Action(distribution("gumbel", mean=0.5 * (1 - chi), cov=0.4), 50),
+            ]
+        )
+
+        def distance(u, whole=whole, z=z):
+            return float(np.hypot(u, whole.u(z * law.x(u))))
+
+        best = minimize_scalar(distance, bounds=(-5.0, 0.0), method="bounded", options={"xatol": 1e-7})
+        assert frame["beta_fbc"].iloc[row] == pytest.approx(best.fun, abs=1e-6)
+
+
+def test_a_limit_state_that_is_no_sum_has_no_exact_maximum(study, tmp_path):
+    made = study()
+    path = tmp_path / "product.toml"
+    path.write_text(made.text.replace("z * R >= Q + W", "z * R >= Q + W + 0.1 * Q * W"), encoding="utf-8")
+    result = calibrate.run(calibrate.read_study(path))
+    assert result.combinations["beta_fbc"].isna().all()
+    assert "combination-not-exact" in {d.code for d in result.doubts}
+    assert result.situations["beta_proposed"].notna().all()
+
+
 def test_the_combined_beta_lies_below_what_full_coincidence_would_give_and_above(study):
     result = calibrate.run(study())
     chi, size = (result.situations[c].to_numpy() for c in ("chi", "size_proposed"))
@@ -164,7 +200,7 @@ def test_files_and_report_show_the_alternatives(study, tmp_path):
     write_result(calibrate.run(study()), tmp_path / "out")
     assert "led by Q" in (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
     head = (tmp_path / "out" / "combinations.csv").read_text(encoding="utf-8").splitlines()[0]
-    assert head == "rule,situation,governing,beta_Q,beta_W,beta_series_upper,beta_series_lower"
+    assert head == "rule,situation,governing,beta_Q,beta_W,beta_series_upper,beta_series_lower,beta_fbc"
 
 
 @pytest.mark.parametrize(
