@@ -5,6 +5,7 @@ combinations of variable actions, actions over sites, and the weakest link that 
 for actions. Knows nothing of files, units or studies; times are years.
 """
 
+from calibrate.actions.accompanying import accompanying_part
 from calibrate.actions.combination import (
     Action,
     Alternative,
@@ -39,6 +40,7 @@ __all__ = [
     "OtherPeriod",
     "SiteReliability",
     "Territory",
+    "accompanying_part",
     "beta_of_one_period",
     "beta_of_period",
     "combination_doubts",

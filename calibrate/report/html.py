@@ -154,6 +154,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         },
         "periods": outcome.period_table(result),
         "combination": outcome.combination_table(result),
+        "accompanying": outcome.accompanying_table(result),
         "why_periods": WHY,
         "sized": any(r.size is not None for r in study.rules.values()),
         "sizes": outcome.size_table(result, changes) if changes else None,

@@ -192,6 +192,26 @@ def combination_table(result: Result) -> Table | None:
     return Table(tuple(columns))
 
 
+def accompanying_table(result: Result) -> Table | None:
+    """Return psi of accompanying actions by design values; None without any."""
+    frame = result.accompanying
+    if frame is None or frame.empty:
+        return None
+    several = frame["rule"].nunique() > 1
+    columns = [Column("rule", list(frame["rule"]))] if several else []
+    columns += [Column(head, list(frame[head])) for head in ("accompanying", "leading")]
+    columns.append(Column("intervals", list(frame["intervals"]), each(numbers.significant), "number"))
+    for name, head in (
+        ("psi_maximum", "of the maximum"),
+        ("psi_interval", "of one interval"),
+        ("psi_design_point", "at design points"),
+    ):
+        columns.append(
+            Column(head, list(frame[name]), each(numbers.fixed, 2), "number", group="ψ by design values")
+        )
+    return Table(tuple(columns))
+
+
 def period_table(result: Result) -> Table | None:
     """Return beta for other periods, with the proposed factors; None where the study asks for none."""
     if not result.other_periods:

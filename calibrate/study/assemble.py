@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.actions.combination import leading_repetitions
-from calibrate.factors import Alternative, RuleModel
+from calibrate.factors import Alternative, RuleEvaluation, RuleModel
 from calibrate.situations import BasicVariable
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Rule, Study, Variable
@@ -52,6 +52,19 @@ def rule_models(
         )
         for rule in study.rules.values()
     ]
+
+
+def values_at(model: RuleModel, found: RuleEvaluation, factors: Mapping[str, float]) -> dict[str, Any]:
+    """Return every value that a rule's models and limit state use, with the sizes of an evaluation.
+
+    Situations without size get a stand-in, so that the batch stays whole; what comes of them is not to be used.
+    """
+    values: dict[str, Any] = {**model.values, **factors}
+    if found.size is not None and model.size_name is not None:
+        solved = np.isfinite(found.size)
+        usual = float(np.median(found.size[solved])) if solved.any() else 1.0
+        values[model.size_name] = np.where(solved, found.size, usual)
+    return values
 
 
 def _alternatives(

@@ -16,7 +16,7 @@ from calibrate.errors import Doubt, InputError
 from calibrate.factors import Calibration, RuleEvaluation, RuleModel
 from calibrate.reliability import FormSettings, form
 from calibrate.situations import BasicVariable
-from calibrate.study.assemble import rule_models
+from calibrate.study.assemble import rule_models, values_at
 from calibrate.study.model import Study
 
 Array = NDArray[np.float64]
@@ -68,11 +68,7 @@ def _exact(
     acting = [a for a in study.combination if any(v.name == a.name for v in model.variables)]
     if not acting:
         return np.full(model.n, np.nan)
-    values = {**model.values, **factors}
-    if found.size is not None and model.size_name is not None:
-        solved = np.isfinite(found.size)
-        usual = float(np.median(found.size[solved])) if solved.any() else 1.0
-        values[model.size_name] = np.where(solved, found.size, usual)
+    values = values_at(model, found, factors)
     actions = []
     for a in acting:
         one = dataclasses.replace(variables[a.name], ratio=1.0, presence=1.0)

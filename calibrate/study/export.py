@@ -177,4 +177,6 @@ def table_files(result: Result) -> dict[str, bytes]:
     }
     if result.combinations is not None:
         texts["combinations.csv"] = result.combinations.to_csv(index=False, lineterminator="\n")
+    if result.accompanying is not None:
+        texts["accompanying.csv"] = result.accompanying.to_csv(index=False, lineterminator="\n")
     return {name: text.encode("utf-8") for name, text in texts.items()}

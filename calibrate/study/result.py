@@ -84,6 +84,8 @@ class Result:
     other_periods : tuple of PeriodBeta
     combinations : DataFrame or None
         Columns of combinations.csv: beta of each alternative of combined actions; None without any.
+    accompanying : DataFrame or None
+        Columns of accompanying.csv: psi of combined actions by design values; None without any.
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
     required : DataFrame
@@ -105,6 +107,7 @@ class Result:
     pedigree: tuple[PedigreeShare, ...]
     other_periods: tuple[PeriodBeta, ...]
     combinations: pd.DataFrame | None
+    accompanying: pd.DataFrame | None
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

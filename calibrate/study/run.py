@@ -13,6 +13,7 @@ from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration, Response, calibrate_factors, make_penalty
 from calibrate.provenance import Provenance, versions
 from calibrate.situations import BasicVariable
+from calibrate.study.accompanying import accompanying_table
 from calibrate.study.assemble import basic_variables, rule_models
 from calibrate.study.bonds import implied_biases
 from calibrate.study.combinations import combination_table, doubts_of_combination
@@ -116,6 +117,7 @@ def run(
         pedigree=pedigree(study, calibration),
         other_periods=periods,
         combinations=combination_table(study, calibration, exact),
+        accompanying=accompanying_table(study, variables, calibration),
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

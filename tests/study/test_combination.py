@@ -216,3 +216,31 @@ def test_files_and_report_show_the_alternatives(study, tmp_path):
 def test_slips_of_combinations_are_told(study, parts, words):
     with pytest.raises(InputError, match=words):
         study(**parts)
+
+
+def test_accompanying_parts_by_design_values(study):
+    """By hand: fractiles of the maxima for the rules, FORM of both alternatives for the design points."""
+    from calibrate.actions import accompanying_part
+
+    result = calibrate.run(study())
+    frame = result.accompanying.set_index(["accompanying", "leading"])
+    w = frame.loc[("W", "Q")]
+    law = maximum_of(distribution("gumbel", mean=1.0, cov=0.4), 50)
+    assert w["intervals"] == 5
+    assert w["psi_maximum"] == pytest.approx(float(law.x(0.28 * 3.8) / law.x(0.7 * 3.8)), rel=1e-9)
+    assert w["psi_interval"] == pytest.approx(float(accompanying_part(law, 3.8, 5)), rel=1e-9)
+    chi, size = (result.situations[c].to_numpy() for c in ("chi", "size_proposed"))
+
+    def point(repeats_q, repeats_w):
+        return calibrate.form(
+            "z * R - Q - W",
+            {
+                "R": distribution("lognormal", mean=1.0, cov=0.1),
+                "Q": maximum_of(distribution("gumbel", mean=0.6 * chi, cov=0.35), repeats_q),
+                "W": maximum_of(distribution("gumbel", mean=0.5 * (1 - chi), cov=0.4), repeats_w),
+            },
+            quantities={"z": size},
+        ).design_point["W"]
+
+    assert w["psi_design_point"] == pytest.approx(np.mean(point(5, 10) / point(1, 50)), rel=1e-5)
+    assert (frame[["psi_maximum", "psi_interval", "psi_design_point"]].to_numpy() < 1.0).all()
