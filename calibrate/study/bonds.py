@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from calibrate.actions.periods import in_years
 from calibrate.distributions import Distribution
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.study.model import Quantity, Study
@@ -79,7 +80,7 @@ def implied_biases(
         typed = quantity.bias
         if typed is not None and float(np.max(np.abs(bias / typed - 1.0))) > CONTRADICTS:
             problems.append(_contradiction(study, quantity, typed, bias))
-        doubts += _type_doubts(quantity, bias, below, study.variables[quantity.of].role)
+        doubts += _type_doubts(study, quantity, bias, below)
     if problems:
         raise InputError(problems)
     said = {b.variable for b in found}
@@ -134,25 +135,14 @@ def _contradiction(study: Study, quantity: Quantity, typed: float, bias: Array) 
     )
 
 
-def _type_doubts(quantity: Quantity, bias: Array, below: Array, role: str) -> list[Doubt]:
+def _type_doubts(study: Study, quantity: Quantity, bias: Array, below: Array) -> list[Doubt]:
     where = f"quantities.{quantity.name}"
     if quantity.characteristic is not None:
         return []
+    role = study.variables[quantity.of or ""].role
     share = fractile_of(quantity.value_type)
     if share is not None:
-        far = (
-            (below < 0.5 * share) | (below > 2.0 * share)
-            if share <= 0.5
-            else np.abs(below - share) > 0.5 * (1 - share)
-        )
-        if not far.any():
-            return []
-        worst = float(below[int(np.argmax(np.abs(np.log(np.maximum(below, 1e-300) / share))))])
-        text = (
-            f"'{quantity.name}' is stated as the {quantity.value_type} of '{quantity.of}', but in its model the "
-            f"probability below this value is {100.0 * worst:.2g} %."
-        )
-        return [Doubt("fractile-differs", text, where)]
+        return _fractile_doubts(study, quantity, below, share)
     if quantity.value_type == "mean" and float(np.max(np.abs(bias - 1.0))) > CONTRADICTS:
         ratio = f"{bias[0]:.3g} times"
         text = f"'{quantity.name}' is stated as the mean of '{quantity.of}', whose mean is {ratio} as large."
@@ -164,3 +154,34 @@ def _type_doubts(quantity: Quantity, bias: Array, below: Array, role: str) -> li
         )
         return [Doubt("nominal-above-mean", text, where)]
     return []
+
+
+def _fractile_doubts(study: Study, quantity: Quantity, below: Array, share: float) -> list[Doubt]:
+    """Compare a stated fractile with the model, for the period of the model: 98 % of a year are 36 % of 50 years."""
+    variable, where = study.variables[quantity.of or ""], f"quantities.{quantity.name}"
+    reference = study.reference_period
+    own = variable.period if variable.period is not None and variable.converted else reference
+    in_own = below ** (own / reference)
+    if not _far(in_own, share).any():
+        return []
+    worst = float(in_own[int(np.argmax(np.abs(np.log(np.maximum(in_own, 1e-300) / share))))])
+    text = f"'{quantity.name}' is stated as the {quantity.value_type} of '{quantity.of}', but in its model "
+    if variable.role == "action" or variable.period is not None:
+        text += f"for {in_years(own)} "
+        for years in (reference, 1.0, 50.0):
+            if years != own and not _far(below ** (years / reference), share).any():
+                text += (
+                    f"the probability below this value is {100.0 * worst:.3g} %. It is that fractile of the maximum of "
+                    f"{in_years(years)}: the value and the model are for different periods, or the period of the model "
+                    "is not stated."
+                )
+                return [Doubt("fractile-of-another-period", text, where)]
+    text += f"the probability below this value is {100.0 * worst:.3g} %."
+    return [Doubt("fractile-differs", text, where)]
+
+
+def _far(below: Array, share: float) -> NDArray[np.bool_]:
+    """Whether probabilities are not about the stated one."""
+    if share <= 0.5:
+        return np.asarray((below < 0.5 * share) | (below > 2.0 * share))
+    return np.asarray(np.abs(below - share) > 0.5 * (1.0 - share))

@@ -7,9 +7,9 @@ from collections.abc import Mapping
 import numpy as np
 from scipy.special import ndtr
 
-from calibrate.actions.periods import in_years
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration
+from calibrate.study.action_doubts import action_doubts
 from calibrate.study.evidence_doubts import evidence_doubts
 from calibrate.study.fits import FittedVariable, fit_doubts
 from calibrate.study.model import Study
@@ -37,7 +37,7 @@ def study_doubts(
         *fit_doubts(fitted),
         *evidence_doubts(study, fitted, calibration),
         *_negative_mass(study, calibration),
-        *_period_doubts(study),
+        *action_doubts(study, calibration),
     )
 
 
@@ -75,33 +75,4 @@ def _negative_mass(study: Study, calibration: Calibration) -> list[Doubt]:
             doubts.append(Doubt("negative-mass", text, f"variables.{name}"))
     if problems:
         raise InputError(problems)
-    return doubts
-
-
-def _period_doubts(study: Study) -> list[Doubt]:
-    """Name the actions that were converted to another period."""
-    doubts = []
-    for name, variable in study.variables.items():
-        if variable.period is None or variable.period == study.reference_period:
-            continue
-        if not variable.converted:
-            doubts.append(
-                Doubt(
-                    "period-not-converted",
-                    f"Variable '{name}' is given for {in_years(variable.period)} and was not converted to the "
-                    f"reference period of {in_years(study.reference_period)}: {variable.conversion_reason}",
-                    f"variables.{name}",
-                )
-            )
-            continue
-        doubts.append(
-            Doubt(
-                "period-converted",
-                f"Variable '{name}' is given for {in_years(variable.period)} and was converted to the reference period "
-                f"of {in_years(study.reference_period)} as the maximum of independent periods, F^"
-                f"{study.reference_period / variable.period:g}. Scatter that is constant in time (coefficients, "
-                "model uncertainty) does not belong in it.",
-                f"variables.{name}",
-            )
-        )
     return doubts

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from calibrate.actions.maxima import MaximaFit, fit_maxima
 from calibrate.actions.return_levels import YEARS, ReturnLevels, empirical_return_periods, return_levels
-from calibrate.errors import Doubt
+from calibrate.errors import Doubt, InputError
 from calibrate.fitting import Fit
 from calibrate.study.model import Variable
 
@@ -70,4 +70,30 @@ def block_maxima(
     doubts = [
         Doubt(d.code, d.message, where) for d in (*maxima.doubts, *levels.doubts) if d.code not in known
     ]
-    return BlockMaxima(maxima, levels, empirical_return_periods(maxima)), tuple(doubts)
+    return BlockMaxima(maxima, levels, empirical_return_periods(maxima)), (
+        *doubts,
+        *bounded_tail(maxima, variable.period, where),
+    )
+
+
+def bounded_tail(maxima: MaximaFit, block_years: float, where: str) -> tuple[Doubt, ...]:
+    """Doubt a family without upper end where the sample speaks for one.
+
+    The sample speaks for an upper end where the interval of the shape of generalised extreme values is negative.
+    """
+    if maxima.fit.family == "gev" or maxima.fit.method != "likelihood":
+        return ()
+    try:
+        free = fit_maxima(maxima.fit.observations, "gev", block_years=block_years)
+    except InputError:
+        return ()
+    if free.shape_interval is None or not free.shape_interval[1] < 0.0:
+        return ()
+    p = free.fit.parameters
+    end = p["location"] - p["scale"] / p["shape"]
+    text = (
+        f"The family {maxima.fit.family} has no upper end, but the sample speaks for one: as generalised extreme "
+        f"values its shape is {free.shape_interval[0]:.2g} to {free.shape_interval[1]:.2g} (95 %), the end about "
+        f"{end:.4g} in the unit of the records. Is the action bounded?"
+    )
+    return (Doubt("bounded-action", text, where),)

@@ -82,6 +82,8 @@ class Variable:
     conversion_reason: str = ""
     size_ratio: Expression | None = None
     """Size of the part over the size that the model is for; the strength is that of the weakest of so many."""
+    upper_limit: float | None = None
+    """Largest value that is physically possible, in SI units, where the study says so; it bounds no model."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
 

@@ -13,6 +13,7 @@ from calibrate.study.reading import schema
 from calibrate.study.reading.estimators import MethodChoice, read_method
 from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
+from calibrate.study.reading.limits import read_upper_limit
 from calibrate.study.reading.periods import check_conversion, read_size_ratio
 from calibrate.study.reading.subject import Model, Subject, Surroundings
 from calibrate.study.reading.values import Value, read_unit, read_value
@@ -67,7 +68,10 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         model = fitted_model(subject, content, families, values, unit)
     else:
         model = given_model(subject, families[0], values, unit)
-    return None if model is None else _variable(subject, content, model, values, method, ratio)
+    if model is None:
+        return None
+    limit = read_upper_limit(subject, content, model)
+    return _variable(subject, content, model, values, method, ratio, limit)
 
 
 def _values(subject: Subject, arguments: Mapping[str, Any]) -> dict[str, Value] | None:
@@ -116,6 +120,7 @@ def _variable(
     values: Mapping[str, Value],
     method: MethodChoice,
     size_ratio: Expression | None,
+    upper_limit: float | None,
 ) -> Variable:
     names = subject.around.names
     if names.kind(subject.name) == "variable":
@@ -139,6 +144,7 @@ def _variable(
         converted=content.conversion != "none",
         conversion_reason=content.conversion_reason.strip(),
         size_ratio=size_ratio,
+        upper_limit=upper_limit,
         tail=content.tail or "",
         failure_mode=content.failure_mode,
         may_be_negative=content.may_be_negative,
