@@ -132,6 +132,9 @@ class ReadOptions:
         Columns of labels.
     order : str, optional
         Column of the order of testing: numbers or ISO dates.
+    time : str, optional
+        Column of the time of each value: numbers in ``time_unit`` (default years), or ISO dates.
+    time_unit : Unit, optional
     exclude : tuple of Exclude
     units : mapping of str to Unit
         Units of the columns of a derived value and of covariates; others are dimensionless.
@@ -152,6 +155,8 @@ class ReadOptions:
     mode: str | None = None
     specimen: str | None = None
     order: str | None = None
+    time: str | None = None
+    time_unit: Unit | None = None
     exclude: tuple[Exclude, ...] = ()
     units: Mapping[str, Unit] = field(default_factory=dict)
     measured: str | None = None

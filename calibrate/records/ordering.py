@@ -1,4 +1,4 @@
-"""The order of testing: numbers or dates become ranks."""
+"""The order of testing and times of values: numbers or dates become ranks or seconds."""
 
 from __future__ import annotations
 
@@ -12,6 +12,7 @@ from calibrate.errors import Problem
 from calibrate.records.cells import Refusal, shortened, to_number
 from calibrate.records.columns import find, numbers, problem, texts
 from calibrate.records.grid import Cell, Grid, Oddity
+from calibrate.units import Unit, parse_unit
 
 _DATE = re.compile(r"\d{4}-\d{2}-\d{2}(?:[T ].*)?", re.ASCII)
 _LIKE_DATE = re.compile(r"\d{1,4}[./-]\d{1,2}[./-]\d{1,4}(?: .*)?", re.ASCII)
@@ -24,18 +25,46 @@ def order_ranks(grid: Grid, column: str, problems: list[Problem]) -> NDArray[np.
     Equal entries share the mean of their ranks. Entries that are neither, or
     a mixture of both, add problems.
     """
-    index = find(grid, column)
+    before = len(problems)
+    moments, _ = _read(grid, find(grid, column), column, problems)
+    return np.arange(1.0, len(grid.rows) + 1) if len(problems) > before else _ranks(moments)
+
+
+def read_times(grid: Grid, column: str, unit: Unit | None, problems: list[Problem]) -> NDArray[np.float64]:
+    """Return a column of numbers or of ISO dates in seconds from an arbitrary moment, shape (n,).
+
+    Parameters
+    ----------
+    unit : Unit, optional
+        Of numbers; default years of 365.25 days. Dates take none.
+
+    Notes
+    -----
+    Entries that are neither, a mixture of both, and dates beside a unit add problems.
+    """
+    moments, dates = _read(grid, find(grid, column), column, problems)
+    if not dates:
+        return moments * (parse_unit("year") if unit is None else unit).factor
+    if unit is not None:
+        message = f"Column '{shortened(column)}' holds dates, which take no unit of time; got '{unit.text}'."
+        problems.append(Problem(message, grid.file, grid.header_row, "Remove the unit of time."))
+    return moments
+
+
+def _read(grid: Grid, index: int, column: str, problems: list[Problem]) -> tuple[NDArray[np.float64], bool]:
+    """Return numbers as they are, or dates in seconds, and whether they are dates."""
     if not grid.rows:
-        return np.array([])
+        return np.array([]), False
     slips: list[Problem] = []
     first = grid.rows[0].cells[index]
-    if _is_date(first) or isinstance(to_number(first, grid.notation), Refusal):
+    dates = _is_date(first) or isinstance(to_number(first, grid.notation), Refusal)
+    if dates:
         moments = _moments(grid, index, column, slips)
     else:
         moments = numbers(grid, index, slips)
         slips = [Problem(p.message, p.file, p.line, _mixture(p)) for p in slips]
     problems += slips
-    return np.arange(1.0, len(grid.rows) + 1) if slips else _ranks(moments)
+    return moments, dates
 
 
 def _mixture(slip: Problem) -> str:
@@ -71,7 +100,7 @@ def _moments(grid: Grid, index: int, column: str, slips: list[Problem]) -> NDArr
 
 def _moment(text: str) -> datetime.datetime | Refusal:
     if not text:
-        return Refusal("the cell is empty.", "Fill it: the order of testing must be known for every row.")
+        return Refusal("the cell is empty.", "Fill it: order and time must be known for every row.")
     if _DATE.fullmatch(text):
         try:
             return datetime.datetime.fromisoformat(text)

@@ -20,7 +20,7 @@ from calibrate.records.grid import Grid, is_empty, limited
 from calibrate.records.normalise import normalise, read_ratios
 from calibrate.records.observations import Observations
 from calibrate.records.options import DEFAULTS, ReadOptions
-from calibrate.records.ordering import order_ranks
+from calibrate.records.ordering import order_ranks, read_times
 from calibrate.records.sample import Sample, Table
 from calibrate.records.text_form import TextForm
 from calibrate.records.value_columns import check_unit_labels, read_bounds, row_factors
@@ -138,6 +138,9 @@ def _read(path: Path, plan: _Plan, display: str | None, sheet: str | None, optio
         for role, column in options.roles.items()
     }
     order = None if options.order is None else _frozen(order_ranks(grid, options.order, problems))
+    times = (
+        None if options.time is None else _frozen(read_times(grid, options.time, options.time_unit, problems))
+    )
     ratios = read_ratios(grid, options.normalise, options.units, problems)
     _stop_if_any(problems, file)
     lower, upper = _bounds_of_value(grid, plan, bounds, problems)
@@ -167,6 +170,7 @@ def _read(path: Path, plan: _Plan, display: str | None, sheet: str | None, optio
         grid.note,
         "" if plan.derivation is None else plan.derivation.text,
         normalisation,
+        times,
     )
 
 

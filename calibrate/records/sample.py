@@ -54,6 +54,8 @@ class Sample:
         By role: ``lot``, ``laboratory``, ``mode``, ``specimen``, as far as asked for.
     order : ndarray, shape (n,), or None
         Ranks in the order of testing, from 1; ties share their mean.
+    times : ndarray, shape (n,), or None
+        When each value occurred, in seconds from an arbitrary moment.
     excluded : tuple of Exclusion
         What was left out, in row order.
     format_note : str
@@ -78,6 +80,7 @@ class Sample:
     format_note: str = ""
     formula: str = ""
     normalisation: Normalisation | None = None
+    times: NDArray[np.float64] | None = None
 
     @property
     def n(self) -> int:

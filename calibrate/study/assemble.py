@@ -12,22 +12,22 @@ from numpy.typing import NDArray
 from calibrate.actions.combination import leading_repetitions
 from calibrate.factors import Alternative, RuleEvaluation, RuleModel
 from calibrate.situations import BasicVariable
-from calibrate.study.fits import FittedVariable
+from calibrate.study.fits import RecordModel
 from calibrate.study.model import Rule, Study, Variable
 
 
 def basic_variables(
-    study: Study, fitted: Mapping[str, FittedVariable], period: float | None = None
+    study: Study, fitted: Mapping[str, RecordModel], period: float | None = None
 ) -> dict[str, BasicVariable]:
     """Return each variable as a model over design situations, in SI units, for the reference or another period."""
     years = study.reference_period if period is None else period
     return {name: _basic_variable(years, v, fitted.get(name)) for name, v in study.variables.items()}
 
 
-def _basic_variable(years: float, variable: Variable, fit: FittedVariable | None) -> BasicVariable:
+def _basic_variable(years: float, variable: Variable, fit: RecordModel | None) -> BasicVariable:
     ratio = years / variable.period if variable.period is not None and variable.converted else 1.0
     if fit is not None:
-        return BasicVariable(variable.name, fit.fit.family, {}, ratio, fit.distribution, variable.size_ratio)
+        return BasicVariable(variable.name, fit.family, {}, ratio, fit.distribution, variable.size_ratio)
     return BasicVariable(
         variable.name, variable.families[0], variable.arguments, ratio, None, variable.size_ratio
     )

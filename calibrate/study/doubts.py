@@ -11,7 +11,7 @@ from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration
 from calibrate.study.action_doubts import action_doubts
 from calibrate.study.evidence_doubts import evidence_doubts
-from calibrate.study.fits import FittedVariable, fit_doubts
+from calibrate.study.fits import RecordModel, fit_doubts
 from calibrate.study.model import Study
 
 STOP_SHARE = 0.05
@@ -22,7 +22,7 @@ IMPORTANT = 0.1
 
 def study_doubts(
     study: Study,
-    fitted: Mapping[str, FittedVariable],
+    fitted: Mapping[str, RecordModel],
     calibration: Calibration,
 ) -> tuple[Doubt, ...]:
     """Return the reservations of a finished calibration.

@@ -10,7 +10,8 @@ from scipy.special import log_ndtr
 
 from calibrate.errors import Doubt
 from calibrate.factors import Calibration
-from calibrate.study.fits import FittedVariable
+from calibrate.study.exceedances import ExceedanceModel
+from calibrate.study.fits import RecordModel
 from calibrate.study.model import Study
 
 MATTERS = 0.2
@@ -23,9 +24,7 @@ _OF_MAXIMA = ("gumbel", "frechet")
 UNSTATED = "not stated"
 
 
-def evidence_doubts(
-    study: Study, fitted: Mapping[str, FittedVariable], calibration: Calibration
-) -> list[Doubt]:
+def evidence_doubts(study: Study, fitted: Mapping[str, RecordModel], calibration: Calibration) -> list[Doubt]:
     """Return the doubts that need the design points."""
     doubts = []
     evaluation = calibration.proposed.evaluation
@@ -48,9 +47,12 @@ def evidence_doubts(
         if worst is None:
             continue
         fit = fitted.get(name)
-        if fit is not None:
-            doubts += _extrapolation(name, fit.fit.n, *worst)
-        family = fit.fit.family if fit is not None else variable.families[0]
+        if isinstance(fit, ExceedanceModel):
+            period = study.reference_period if variable.converted else fit.maximum.years
+            doubts += _beyond_record(name, fit.fit.years, *worst, period)
+        elif fit is not None:
+            doubts += _extrapolation(name, fit.n, *worst)
+        family = fit.family if fit is not None else variable.families[0]
         doubts += _side(name, family, variable.role, sum(roles))
     return doubts
 
@@ -64,6 +66,18 @@ def _extrapolation(name: str, n: int, distance: float, sign: float) -> list[Doub
     text = (
         f"The design point of '{name}' lies at the {probability} {tail:.1e}; the "
         f"{end} of {n} values represents about {0.5 / n:.1e}. The tail between is the family's, not the sample's."
+    )
+    return [Doubt("extrapolation", text, f"variables.{name}")]
+
+
+def _beyond_record(name: str, record: float, distance: float, sign: float, period: float) -> list[Doubt]:
+    """Compare how seldom the design value is exceeded with the length of the record, both in years."""
+    apart = period / -float(log_ndtr(distance))
+    if sign > 0.0 or record >= BEYOND * apart:
+        return []
+    text = (
+        f"The design point of '{name}' is exceeded about once in {apart:.2g} years; the record is {record:.3g} years "
+        "long. The tail between is the family's, not the record's."
     )
     return [Doubt("extrapolation", text, f"variables.{name}")]
 

@@ -18,6 +18,7 @@ from calibrate.fitting.modes import ModeFit, fit_modes
 from calibrate.fitting.predictive import predictive
 from calibrate.records import Sample
 from calibrate.records.screening import FailureMode, failure_modes
+from calibrate.study.exceedances import ExceedanceModel, exceedance_model
 from calibrate.study.family_doubts import choice_doubts, rival_doubts
 from calibrate.study.maxima import BlockMaxima, block_maxima
 from calibrate.study.model import Study, Variable
@@ -61,8 +62,22 @@ class FittedVariable:
     maxima: BlockMaxima | None = None
     """Return levels, where the variable is an action with a period."""
 
+    @property
+    def family(self) -> str:
+        """Family of the fit."""
+        return self.fit.family
 
-def fit_variables(study: Study) -> dict[str, FittedVariable]:
+    @property
+    def n(self) -> int:
+        """Number of specimens."""
+        return self.fit.n
+
+
+RecordModel = FittedVariable | ExceedanceModel
+"""What a variable with records rests on."""
+
+
+def fit_variables(study: Study) -> dict[str, RecordModel]:
     """Fit every variable that names records.
 
     Returns
@@ -78,12 +93,13 @@ def fit_variables(study: Study) -> dict[str, FittedVariable]:
         candidate fits, with the line of the variable in the study file.
     """
     problems = ProblemList(study.shown)
-    fitted: dict[str, FittedVariable] = {}
+    fitted: dict[str, RecordModel] = {}
     for name, variable in study.variables.items():
         if variable.records is None:
             continue
         try:
-            fitted[name] = _fit(study, variable)
+            model = _fit if variable.exceedances is None else exceedance_model
+            fitted[name] = model(study, variable)
         except InputError as error:
             for problem in error.problems:
                 problems.add(f"[variables.{name}] {problem.message}", variable.line, problem.suggestion)
@@ -258,10 +274,11 @@ def _fixed_in_sample_unit(variable: Variable, factor: float) -> dict[str, float]
 UNIT_BEARING = frozenset({"threshold", "lower", "upper"})
 
 
-def fit_doubts(fitted: Mapping[str, FittedVariable]) -> list[Doubt]:
+def fit_doubts(fitted: Mapping[str, RecordModel]) -> list[Doubt]:
     """Return the reservations of the chosen fits, placed at their variables."""
-    doubts = []
+    doubts: list[Doubt] = []
     for name, variable in fitted.items():
-        doubts += [Doubt(d.code, d.message, f"variables.{name}") for d in variable.fit.doubts]
+        if isinstance(variable, FittedVariable):
+            doubts += [Doubt(d.code, d.message, f"variables.{name}") for d in variable.fit.doubts]
         doubts += variable.doubts
     return doubts

@@ -39,6 +39,19 @@ class Quantity:
 
 
 @dataclass(frozen=True, slots=True)
+class Exceedances:
+    """How a variable follows from the values above a threshold.
+
+    ``threshold`` is in the unit of the records, ``years`` the length of the record without gaps, ``run_length`` in
+    years; None where every exceedance is an event of its own.
+    """
+
+    threshold: float
+    years: float
+    run_length: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Variable:
     """A basic variable as the study defines it.
 
@@ -86,6 +99,8 @@ class Variable:
     """Largest value that is physically possible, in SI units, where the study says so; it bounds no model."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
+    exceedances: Exceedances | None = None
+    """Where the variable is the maximum of its period from threshold exceedances."""
 
 
 @dataclass(frozen=True, slots=True)

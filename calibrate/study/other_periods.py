@@ -12,7 +12,7 @@ from calibrate.actions.periods import beta_of_period
 from calibrate.errors import Doubt
 from calibrate.factors import Calibration, Response
 from calibrate.study.assemble import basic_variables, rule_models
-from calibrate.study.fits import FittedVariable
+from calibrate.study.fits import RecordModel
 from calibrate.study.model import Study
 
 Array = NDArray[np.float64]
@@ -44,7 +44,7 @@ class PeriodBeta:
 
 
 def other_periods(
-    study: Study, fitted: Mapping[str, FittedVariable], calibration: Calibration, workers: int = 1
+    study: Study, fitted: Mapping[str, RecordModel], calibration: Calibration, workers: int = 1
 ) -> tuple[PeriodBeta, ...]:
     """Return beta for the periods that the study asks for, in its order."""
     found = []

@@ -16,6 +16,7 @@ from calibrate.provenance import Provenance
 from calibrate.records.screening import Screening
 from calibrate.study.bonds import ImpliedBias
 from calibrate.study.evidence_doubts import PedigreeShare
+from calibrate.study.exceedances import ExceedanceModel
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Study
 from calibrate.study.other_periods import PeriodBeta
@@ -76,6 +77,8 @@ class Result:
         sizes where rules differ in unit.
     fitted : mapping of str to FittedVariable
         By variable: candidates, tests, lots.
+    exceedances : mapping of str to ExceedanceModel
+        By variable: those from threshold exceedances, which are not among ``fitted``.
     screenings : mapping of str to Screening
         By name of the records.
     biases : tuple of ImpliedBias
@@ -102,6 +105,7 @@ class Result:
     units: Mapping[str, str | Mapping[str, str]]
     required: pd.DataFrame
     fitted: Mapping[str, FittedVariable]
+    exceedances: Mapping[str, ExceedanceModel]
     screenings: Mapping[str, Screening]
     biases: tuple[ImpliedBias, ...]
     pedigree: tuple[PedigreeShare, ...]

@@ -20,7 +20,8 @@ from calibrate.study.combinations import combination_table, doubts_of_combinatio
 from calibrate.study.doubts import study_doubts
 from calibrate.study.evidence_doubts import pedigree
 from calibrate.study.exact_combination import exact_combination
-from calibrate.study.fits import fit_variables
+from calibrate.study.exceedances import ExceedanceModel
+from calibrate.study.fits import FittedVariable, fit_variables
 from calibrate.study.model import Study
 from calibrate.study.other_periods import other_periods, period_doubts
 from calibrate.study.result import Result
@@ -111,7 +112,8 @@ def run(
         situations=table,
         units=units,
         required=required_table(study, calibration),
-        fitted=fitted,
+        fitted={name: f for name, f in fitted.items() if isinstance(f, FittedVariable)},
+        exceedances={name: f for name, f in fitted.items() if isinstance(f, ExceedanceModel)},
         screenings=screenings,
         biases=biases,
         pedigree=pedigree(study, calibration),

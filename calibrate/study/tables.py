@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from calibrate.distributions import Distribution, Extreme, Mixture
 from calibrate.factors import Calibration, Evaluation
-from calibrate.study.fits import FittedVariable
+from calibrate.study.fits import FittedVariable, RecordModel
 from calibrate.study.model import Rule, Study
 from calibrate.study.result import FACTOR_SETS, VariableResult
 from calibrate.units import Unit, si_unit
@@ -144,7 +144,7 @@ def _design_points(
 
 def variable_results(
     study: Study,
-    fitted: Mapping[str, FittedVariable],
+    fitted: Mapping[str, RecordModel],
     calibration: Calibration,
 ) -> dict[str, VariableResult]:
     """Return every basic variable that a rule uses, as it stands with the proposed factors."""
@@ -167,10 +167,10 @@ def variable_results(
             mean=_merge([d.mean for d in shown]),
             sd=_merge([d.sd for d in shown]),
             cov=_merge([d.cov for d in shown]),
-            n=None if fit is None else fit.fit.n,
+            n=None if fit is None else fit.n,
             period=variable.period,
             parameters_period=study.reference_period if period is None else period,
-            comparison=None if fit is None else fit.comparison,
+            comparison=fit.comparison if isinstance(fit, FittedVariable) else None,
             predictive=variable.predictive,
         )
     return results
@@ -181,9 +181,9 @@ def used_distributions(study: Study, calibration: Calibration) -> dict[str, list
     return {name: _distributions(study, name, calibration.proposed.evaluation) for name in study.variables}
 
 
-def _named_fit(shown: Distribution, fit: FittedVariable | None, factor: float) -> Distribution:
+def _named_fit(shown: Distribution, fit: RecordModel | None, factor: float) -> Distribution:
     base = shown.base if isinstance(shown, Extreme) else shown
-    if fit is None or not isinstance(base, Mixture):
+    if not isinstance(fit, FittedVariable) or not isinstance(base, Mixture):
         return shown
     assert fit.fit.distribution is not None
     return fit.fit.distribution.scaled(fit.fit_factor / factor)

@@ -11,7 +11,7 @@ from calibrate.actions.thresholds.diagnostics import (
     mean_residual_life,
     stability,
 )
-from calibrate.actions.thresholds.excesses import ExcessFit, fit_excesses
+from calibrate.actions.thresholds.excesses import ExcessFit, fit_excesses, fit_exponential_excesses
 from calibrate.actions.thresholds.level_intervals import level_interval
 from calibrate.actions.thresholds.periods import PeriodMaximum, annual_maximum
 
@@ -25,6 +25,7 @@ __all__ = [
     "decluster",
     "dispersion",
     "fit_excesses",
+    "fit_exponential_excesses",
     "level_interval",
     "mean_residual_life",
     "stability",

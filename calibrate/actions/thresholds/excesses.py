@@ -1,4 +1,4 @@
-"""Generalised Pareto excesses over a threshold by maximum likelihood.
+"""Generalised Pareto or exponential excesses over a threshold by maximum likelihood.
 
     P(X - u > y | X > u) = (1 + shape y/scale)**(-1/shape),  shape 0: exp(-y/scale)
 
@@ -58,6 +58,8 @@ class ExcessFit:
     years, rate : float
         Length of the record, and exceedances per year; NaN if it was not given.
     doubts : tuple of Doubt
+    exponential : bool
+        Whether the shape was held at 0; its standard error is then 0.
     """
 
     threshold: float
@@ -70,11 +72,23 @@ class ExcessFit:
     years: float
     rate: float
     doubts: tuple[Doubt, ...]
+    exponential: bool = False
 
     @property
     def n(self) -> int:
         """Number of exceedances."""
         return int(self.excesses.size)
+
+    @property
+    def upper_end(self) -> float:
+        """Largest possible value; infinite unless the shape is negative."""
+        return self.threshold - self.scale / self.shape if self.shape < 0.0 else math.inf
+
+    @property
+    def shape_interval(self) -> tuple[float, float]:
+        """Interval of the shape by its standard error, with a confidence of 95 %; NaN for a shape below -0.5."""
+        half = float(special.ndtri(0.5 + 0.5 * CONFIDENCE)) * self.standard_errors["shape"]
+        return self.shape - half, self.shape + half
 
     def exceedance(self, x: ArrayLike) -> Array:
         """Return P(X > x | X > threshold); 1 below the threshold."""
@@ -161,6 +175,47 @@ def fit_excesses(values: ArrayLike, threshold: float, years: float | None = None
     S. Coles, An Introduction to Statistical Modeling of Extreme Values, Springer 2001, chapter 4;
     S. D. Grimshaw, Technometrics 35 (1993) 185-191 (both from memory).
     """
+    y = _excesses(values, threshold, years)
+    unit = float(np.mean(y))
+    top = _top(y / unit)
+    scale, shape = unit * math.exp(top.t[0]), float(top.t[1])
+    stretch = np.array([scale, 1.0])
+    covariance: Array = np.asarray(np.linalg.inv(-top.hessian * y.size) * np.outer(stretch, stretch))
+    doubts = _doubts(
+        y.size, shape, math.sqrt(covariance[1, 1]), threshold - scale / shape if shape else math.inf
+    )
+    if shape < -0.5:
+        covariance = np.full((2, 2), np.nan)
+    log_likelihood = y.size * (top.value - math.log(unit))
+    return _fit(y, threshold, years, (scale, shape), covariance, log_likelihood, doubts, exponential=False)
+
+
+def fit_exponential_excesses(values: ArrayLike, threshold: float, years: float | None = None) -> ExcessFit:
+    """Fit exponential excesses, those of shape 0, to the values above a threshold.
+
+    Parameters
+    ----------
+    values, threshold, years
+        As in `fit_excesses`.
+
+    Raises
+    ------
+    InputError
+        As `fit_excesses`.
+
+    Notes
+    -----
+    The scale is the mean excess, its standard error scale/sqrt(n).
+    """
+    y = _excesses(values, threshold, years)
+    scale = float(np.mean(y))
+    covariance = np.array([[scale**2 / y.size, 0.0], [0.0, 0.0]])
+    log_likelihood = -y.size * (math.log(scale) + 1.0)
+    doubts = _few(y.size)
+    return _fit(y, threshold, years, (scale, 0.0), covariance, log_likelihood, doubts, exponential=True)
+
+
+def _excesses(values: ArrayLike, threshold: float, years: float | None) -> Array:
     x = checked_values(values)
     if not math.isfinite(threshold):
         raise InputError(f"A threshold must be a finite number; got {threshold!r}.")
@@ -173,26 +228,22 @@ def fit_excesses(values: ArrayLike, threshold: float, years: float | None = None
         )
     if float(np.ptp(y)) <= 1e-13 * float(np.max(y)):
         raise InputError(f"All {y.size} excesses over the threshold {threshold:g} are equal.")
-    unit = float(np.mean(y))
-    top = _top(y / unit)
-    scale, shape = unit * math.exp(top.t[0]), float(top.t[1])
-    stretch = np.array([scale, 1.0])
-    covariance: Array = np.asarray(np.linalg.inv(-top.hessian * y.size) * np.outer(stretch, stretch))
-    doubts = _doubts(
-        y.size, shape, math.sqrt(covariance[1, 1]), threshold - scale / shape if shape else math.inf
-    )
-    if shape < -0.5:
-        covariance = np.full((2, 2), np.nan)
+    return y
+
+
+def _fit(
+    y: Array, threshold: float, years: float | None, estimates: tuple[float, float], covariance: Array,
+    log_likelihood: float, doubts: list[Doubt], *, exponential: bool,
+) -> ExcessFit:  # fmt: skip
     errors = dict(zip(("scale", "shape"), np.sqrt(np.diag(covariance)).tolist(), strict=True))
     rate = math.nan
     if years is not None:
         rate = y.size / years
         errors["rate"] = math.sqrt(y.size) / years
     covariance.flags.writeable = y.flags.writeable = False
-    log_likelihood = y.size * (top.value - math.log(unit))
     return ExcessFit(
-        float(threshold), scale, shape, y, covariance, errors, log_likelihood,
-        math.nan if years is None else float(years), rate, tuple(doubts),
+        float(threshold), *estimates, y, covariance, errors, log_likelihood,
+        math.nan if years is None else float(years), rate, tuple(doubts), exponential,
     )  # fmt: skip
 
 
@@ -238,11 +289,15 @@ def _starts(z: Array, largest: float) -> list[tuple[float, float]]:
     return [(max(scale, 1e-3, -1.05 * shape * largest), shape) for scale, shape in limited]
 
 
+def _few(n: int) -> list[Doubt]:
+    if n >= FEW_EXCESSES:
+        return []
+    message = f"Only {n} exceedances, fewer than {FEW_EXCESSES}: the shape of the tail rests on little."
+    return [Doubt("few-excesses", message, WHERE)]
+
+
 def _doubts(n: int, shape: float, error: float, end: float) -> list[Doubt]:
-    doubts = []
-    if n < FEW_EXCESSES:
-        message = f"Only {n} exceedances, fewer than {FEW_EXCESSES}: the shape of the tail rests on little."
-        doubts.append(Doubt("few-excesses", message, WHERE))
+    doubts = _few(n)
     if shape < -0.5:
         message = (
             f"The shape {shape:.3g} is below -0.5, where the likelihood is not regular and standard errors from it do "

@@ -85,6 +85,8 @@ class _Profile:
 
     @classmethod
     def of(cls, fit: ExcessFit, log_m: float) -> _Profile:
+        if fit.exponential:
+            return cls(fit.excesses, np.zeros(1), log_m)
         near = fit.shape + np.linspace(-1.0, 1.0, GRID // 2)
         shapes = np.unique(np.concatenate((near, np.linspace(-1.0, HEAVIEST, GRID // 2))))
         return cls(fit.excesses, shapes[(shapes > -1.0) & (shapes < HEAVIEST)], log_m)
@@ -93,6 +95,8 @@ class _Profile:
         from scipy.optimize import minimize_scalar
 
         values = self.likelihood(level, self.shapes)
+        if values.size == 1:
+            return float(values[0])
         i = int(np.argmax(values))
         low, high = self.shapes[max(i - 1, 0)], self.shapes[min(i + 1, self.shapes.size - 1)]
         found = minimize_scalar(

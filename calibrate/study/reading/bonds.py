@@ -155,6 +155,13 @@ def _characteristic(
                 'Give the value, and say what it is: { value = "…", of = "…", is = "5 % fractile" }.',
             )
         return None
+    if "exceedances" in model:
+        reading.problem(
+            f"names the variable '{of}', which is a maximum from exceedances: fractiles of its records are none of it.",
+            (*place, "characteristic_of"),
+            'Give the value, and say what it is: { value = "…", of = "…", is = "98 % fractile" }.',
+        )
+        return None
     shown = read_unit(reading, content.unit, (*place, "unit")) if content.unit is not None else sample.unit
     if shown is None:
         return None

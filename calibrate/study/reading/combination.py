@@ -33,6 +33,14 @@ def read_combination(
                 f"Remove it here, or correct the role of variables.{name}.",
             )
             continue
+        if variable.exceedances is not None:
+            reading.problem(
+                "is the maximum of a period from exceedances, not that of one repetition; it cannot be combined in "
+                "this version.",
+                place,
+                f"Remove it here, or give variables.{name} by the parameters of one repetition.",
+            )
+            continue
         if variable.period is not None or variable.size_ratio is not None:
             reading.problem(
                 "is combined by its repetitions; its model is that of one of them and takes no period or size_ratio.",

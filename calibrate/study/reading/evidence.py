@@ -15,8 +15,8 @@ from calibrate.study.reading.context import Reading
 from calibrate.study.reading.names import check_name
 from calibrate.study.reading.schema import CovariateTable, RecordsEntry, read_entry, read_table
 from calibrate.study.reading.toml_lines import Place
-from calibrate.study.reading.values import read_unit, read_value
-from calibrate.units import ONE, Unit
+from calibrate.study.reading.values import in_unit, read_unit, read_value
+from calibrate.units import ONE, Unit, parse_unit
 
 
 def read_records(reading: Reading, raw: Any) -> dict[str, Sample | None]:
@@ -102,7 +102,7 @@ def read_declared(
         if len(texts) != 2:
             reading.problem("must be one nominal value, or the two ends of a range.", place)
             continue
-        low, high = (_in_unit(reading, text, sample.unit, place, math.nan) for text in texts)
+        low, high = (_limit(reading, text, sample.unit, place, math.nan) for text in texts)
         if low > high:
             reading.problem(f"has its ends {low:g} and {high:g} in the wrong order.", place)
         elif low <= high:
@@ -115,7 +115,7 @@ def _options(reading: Reading, content: RecordsEntry, unit: Unit, place: Place) 
     before = len(reading.problems)
     units = _units(reading, content.units, (*place, "units"))
     limits = {
-        key: _in_unit(reading, getattr(content, key), unit, (*place, key), default)
+        key: _limit(reading, getattr(content, key), unit, (*place, key), default)
         for key, default in (("above", -math.inf), ("below", math.inf))
     }
     covariates = tuple(
@@ -127,6 +127,7 @@ def _options(reading: Reading, content: RecordsEntry, unit: Unit, place: Place) 
     if content.unit_by is not None:
         by = _units(reading, content.unit_by.units, (*place, "unit_by", "units"))
         unit_by = UnitBy(content.unit_by.column, by)
+    time_unit = _time_unit(reading, content, place)
     if len(reading.problems) > before:
         return None
     try:
@@ -141,6 +142,8 @@ def _options(reading: Reading, content: RecordsEntry, unit: Unit, place: Place) 
             mode=content.mode,
             specimen=content.specimen,
             order=content.order,
+            time=content.time,
+            time_unit=time_unit,
             exclude=tuple(
                 Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
             ),
@@ -154,26 +157,32 @@ def _options(reading: Reading, content: RecordsEntry, unit: Unit, place: Place) 
         return None
 
 
+def _time_unit(reading: Reading, content: RecordsEntry, place: Place) -> Unit | None:
+    """Return the unit of a column of times; None without one, or with a problem."""
+    if content.time_unit is None:
+        return None
+    place = (*place, "time_unit")
+    if content.time is None:
+        reading.problem("says in which unit the times are, but the records name no column 'time'.", place)
+    unit = read_unit(reading, content.time_unit, place)
+    if unit is not None and unit.dimension != parse_unit("s").dimension:
+        reading.problem(
+            f"'{unit.text}' is {unit.dimension.describe()}; it must be a unit of time.",
+            place,
+            "For example 'year', 'day' or 'h'.",
+        )
+    return unit
+
+
 def _units(reading: Reading, texts: Mapping[str, str], place: Place) -> dict[str, Unit]:
     found = {name: read_unit(reading, text, (*place, name)) for name, text in texts.items()}
     return {name: unit for name, unit in found.items() if unit is not None}
 
 
-def _in_unit(reading: Reading, raw: float | str | None, unit: Unit, place: Place, default: float) -> float:
+def _limit(reading: Reading, raw: float | str | None, unit: Unit, place: Place, default: float) -> float:
     """Return a limit in the unit of the sample."""
-    if raw is None:
-        return default
-    value = read_value(reading, raw, place)
-    if value is None:
-        return default
-    if value.number is None or value.unit is None:
-        reading.problem("must be a number with a unit, such as '11 kN'.", place)
-        return default
-    stated = value.stated_dimension
-    if stated is not None and not stated.agrees(unit.dimension):
-        reading.problem(f"is {stated.describe()}, but the sample is {unit.dimension.describe()}.", place)
-        return default
-    return value.number * value.unit.factor / unit.factor
+    found = None if raw is None else in_unit(reading, raw, unit, place, "the sample is")
+    return default if found is None else found
 
 
 def _covariate(reading: Reading, column: str, raw: Any, place: Place) -> Covariate | None:

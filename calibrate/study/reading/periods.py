@@ -36,7 +36,7 @@ def check_conversion(subject: Subject, content: VariableEntry) -> bool:
             suggestion="Say why in conversion_reason.",
         )
         return False
-    if content.conversion is not None and content.period is None:
+    if content.conversion is not None and content.period is None and content.exceedances is None:
         subject.problem("says how to convert, but the variable has no period.", "conversion")
         return False
     if content.period is not None and content.size_ratio is not None:

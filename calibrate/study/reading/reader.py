@@ -18,6 +18,7 @@ from calibrate.study.reading.correlations import check_correlations
 from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
 from calibrate.study.reading.document import check_format, read_document
 from calibrate.study.reading.evidence import read_blocks, read_declared, read_records
+from calibrate.study.reading.exceedances import check_blocks
 from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
 from calibrate.study.reading.periods import check_target_period
@@ -94,6 +95,8 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         reading, names, records, quantities, {} if situations is None else situations.derived, grid, drafts
     )
     variables = read_variables(around, variables_raw)
+    blocks = read_blocks(sections["records"], records)
+    check_blocks(reading, variables, blocks)
     rules = finish_rules(reading, names, drafts, variables)
     combination = read_combination(reading, sections["combination"], variables)
     check_correlations(reading, names, sections["correlations"])
@@ -137,7 +140,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         axis_descriptions=grid.descriptions,
         doubts=tuple(reading.doubts),
         combination=combination,
-        blocks=read_blocks(sections["records"], records),
+        blocks=blocks,
         other_periods=tuple(dict.fromkeys(head.other_periods)),
         independence=head.independence,
     )

@@ -155,6 +155,8 @@ class RecordsEntry(Section):
     mode: Text | None = None
     specimen: Text | None = None
     order: Text | None = None
+    time: Text | None = None
+    time_unit: str | None = None
     exclude: list[ExcludeTable] = []
     units: dict[str, str] = {}
     measured: Text | None = None
@@ -187,6 +189,15 @@ class VariableEntry(Section):
     source: str = ""
     grade: Literal["own data", "published data", "code value", "judgement"] | None = None
     may_be_negative: bool = False
+    exceedances: Any = None
+
+
+class ExceedancesTable(Section):
+    """A maximum of a period from the values above a threshold."""
+
+    threshold: Value
+    years: Positive
+    run_length: Value | None = None
 
 
 class MethodTable(Section):

@@ -54,6 +54,21 @@ def read_value(reading: Reading, raw: float | str, place: Place) -> Value | None
     return Value(text, constant_expression(number * unit.factor), unit, number)
 
 
+def in_unit(reading: Reading, raw: float | str, unit: Unit, place: Place, whose: str) -> float | None:
+    """Return a number with a unit in another unit; None with a problem, in which ``whose`` is "the sample is"."""
+    value = read_value(reading, raw, place)
+    if value is None:
+        return None
+    if value.number is None or value.unit is None:
+        reading.problem("must be a number with a unit, such as '11 kN'.", place)
+        return None
+    stated = value.stated_dimension
+    if stated is not None and not stated.agrees(unit.dimension):
+        reading.problem(f"is {stated.describe()}, but {whose} {unit.dimension.describe()}.", place)
+        return None
+    return value.number * value.unit.factor / unit.factor
+
+
 def read_unit(reading: Reading, text: str | None, place: Place) -> Unit | None:
     """Read a unit; None if there is none, or with a problem if it is not accepted."""
     if text is None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from collections.abc import Mapping
 from typing import Any
 
@@ -11,14 +12,18 @@ from calibrate.expressions import Expression
 from calibrate.study.model import Variable
 from calibrate.study.reading import schema
 from calibrate.study.reading.estimators import MethodChoice, read_method
+from calibrate.study.reading.exceedances import exceedance_model
 from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
 from calibrate.study.reading.limits import read_upper_limit
 from calibrate.study.reading.periods import check_conversion, read_size_ratio
 from calibrate.study.reading.subject import Model, Subject, Surroundings
 from calibrate.study.reading.values import Value, read_unit, read_value
+from calibrate.units import Unit
 
 BEST = "best"
+_HARMLESS = frozenset({"description", "source", "grade"})
+"""Keys whose faults leave the model as it is."""
 
 
 def argument_names() -> tuple[str, ...]:
@@ -48,6 +53,8 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode"):
             if getattr(content, key):
                 subject.problem("says how to fit, but the variable has no records.", key)
+    if content.exceedances is not None or "exceedances" in entry.dropped:
+        return _from_exceedances(subject, content, families, values, unit, entry.dropped)
     method = read_method(subject, content)
     ratio = read_size_ratio(subject, content)
     if (
@@ -57,12 +64,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     ):
         return None
     unit_is_faulty = content.unit is not None and unit is None
-    if (
-        unit_is_faulty
-        or values is None
-        or families is None
-        or entry.dropped - {"description", "source", "grade"}
-    ):
+    if unit_is_faulty or values is None or families is None or entry.dropped - _HARMLESS:
         return None
     if content.records is not None:
         model = fitted_model(subject, content, families, values, unit)
@@ -72,6 +74,27 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         return None
     limit = read_upper_limit(subject, content, model)
     return _variable(subject, content, model, values, method, ratio, limit)
+
+
+def _from_exceedances(
+    subject: Subject,
+    content: schema.VariableEntry,
+    families: list[Family] | None,
+    values: dict[str, Value] | None,
+    unit: Unit | None,
+    dropped: frozenset[str],
+) -> Variable | None:
+    conversion_fits = check_conversion(subject, content)
+    faulty = content.unit is not None and unit is None
+    if families is None or values is None:
+        return None
+    found = exceedance_model(subject, content, families, values, None if faulty else unit)
+    if found is None or faulty or not conversion_fits or dropped - _HARMLESS:
+        return None
+    model, asked = found
+    variable = _variable(subject, content, model, values, MethodChoice(), None)
+    period = 1.0 if content.period is None else content.period
+    return dataclasses.replace(variable, exceedances=asked, period=period)
 
 
 def _values(subject: Subject, arguments: Mapping[str, Any]) -> dict[str, Value] | None:
