@@ -114,6 +114,9 @@ def _variable_row(name: str, variable: dict[str, Any]) -> list[str]:
     family = ", ".join(family) if isinstance(family, list) else family
     given = ", ".join(f"{k} = {v}" for k, v in variable["arguments"].items())
     source = f"records {variable['records']}" if variable["records"] else given
+    if (above := variable["exceedances"]) is not None:
+        threshold = f"{numbers.significant(above['threshold'])} {_unit(above['unit'])}".rstrip()
+        source += f", {numbers.count(above['events'], 'event')} above {threshold} in {numbers.years(above['years'])}"
     if variable["period"] is not None:
         source += f", for {numbers.years(variable['period'])}"
     return [name, family, source, _unit(variable["unit"]), str(variable["dimension"])]

@@ -12,13 +12,13 @@ from calibrate.report.table import Column, Table, each
 from calibrate.units import format_unit
 
 if TYPE_CHECKING:
+    from calibrate.actions.return_levels import ReturnLevels
     from calibrate.fitting import Comparison
     from calibrate.fitting.fit_tests import FitTests
     from calibrate.fitting.lots import LotScatter, Pooling
     from calibrate.fitting.modes import ModeFit
     from calibrate.records import Sample
     from calibrate.records.screening import Finding, Screening
-    from calibrate.study.maxima import BlockMaxima
     from calibrate.study.model import Quantity
     from calibrate.study.result import Result
 
@@ -227,9 +227,8 @@ def lot_sentences(scatter: LotScatter, pooled: Pooling | None, stands_for: str) 
     return texts
 
 
-def return_level_table(found: BlockMaxima) -> Table:
+def return_level_table(levels: ReturnLevels) -> Table:
     """Return the levels of several return periods with their intervals."""
-    levels = found.levels
     return Table(
         (
             Column("return period", [numbers.years(t) for t in levels.years]),

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from calibrate.engine import run_tasks
-from calibrate.report import style, symbols
+from calibrate.report import numbers, style, symbols
 from calibrate.report.axis_figure import beta_by_axis, panel_axes
 from calibrate.report.distribution_figure import beta_distribution
 from calibrate.report.outcome import sensitivities, size_changes
@@ -23,6 +23,7 @@ if TYPE_CHECKING:
 
     from calibrate.records import Sample
     from calibrate.report.style import Rendered
+    from calibrate.study.maxima import BlockMaxima
     from calibrate.study.result import Result
 
 
@@ -37,7 +38,8 @@ def figures(result: Result) -> dict[str, Rendered]:
     does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
     ``sensitivity`` where a beta was found, ``sample_<records>`` for samples that need a look,
     ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those
-    that matter, ``return_levels_<variable>`` for block maxima.
+    that matter, ``return_levels_<variable>`` for block maxima, ``threshold_<variable>`` and
+    ``return_levels_<variable>`` for exceedances.
     """
     with style.context():
         makers = dict(_all(result))
@@ -63,11 +65,11 @@ def _all(result: Result) -> Iterator[tuple[str, Maker]]:
     if found := sensitivities(result):
         yield "sensitivity", partial(sensitivity, result, found)
     yield from _probability(result)
+    yield from _exceedances(result)
 
 
 def _probability(result: Result) -> Iterator[tuple[str, Maker]]:
     from calibrate.report.probability_paper import probability_figure
-    from calibrate.report.return_figure import return_figure
     from calibrate.report.sample_figure import sample_figure
     from calibrate.report.tail_figure import tail_figure
 
@@ -82,7 +84,7 @@ def _probability(result: Result) -> Iterator[tuple[str, Maker]]:
         shown = list(dict.fromkeys(chosen))
         yield f"probability_{name}", partial(probability_figure, fitted.fit, label=label, unit=unit)
         if fitted.maxima is not None:
-            yield f"return_levels_{name}", partial(return_figure, fitted.maxima, label=label, unit=unit)
+            yield f"return_levels_{name}", partial(_return_levels, fitted.maxima, label=label, unit=unit)
         side = tail_of(result, name)
         if side is not None and matters(result, name):
             yield (
@@ -96,6 +98,29 @@ def _probability(result: Result) -> Iterator[tuple[str, Maker]]:
                     design=_design_range(result, name),
                 ),
             )
+
+
+def _return_levels(found: BlockMaxima, *, label: str, unit: str) -> Figure:
+    from calibrate.report.return_figure import return_figure
+
+    maxima = found.maxima
+    title = f"{maxima.fit.family}, {maxima.blocks} blocks"
+    return return_figure(found.levels, found.empirical, maxima.years, title=title, label=label, unit=unit)
+
+
+def _exceedances(result: Result) -> Iterator[tuple[str, Maker]]:
+    from calibrate.report.return_figure import return_figure
+    from calibrate.report.threshold_figure import threshold_figure
+
+    for name, found in result.exceedances.items():
+        record = result.study.records[result.study.variables[name].records or ""]
+        label, unit = symbols.drawn(name), _unit(record)
+        yield f"threshold_{name}", partial(threshold_figure, found, label=label, unit=unit)
+        if not found.levels.years.size:
+            continue
+        title = f"{found.family}, {numbers.count(found.n, 'event')}"
+        drawn = partial(return_figure, found.levels, found.empirical, found.fit.years)
+        yield f"return_levels_{name}", partial(drawn, title=title, label=label, unit=unit)
 
 
 def drawn_samples(result: Result) -> list[str]:

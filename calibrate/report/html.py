@@ -16,8 +16,10 @@ from calibrate.report import (
     sample_figure,
     symbols,
     tail_figure,
+    threshold_figure,
 )
 from calibrate.report.axis_figure import BY_RULE, panel_axes
+from calibrate.report.exceedance_tables import exceedance_sentence, exceedance_table
 from calibrate.report.figures import tail_of
 from calibrate.report.fit_files import candidate_table
 from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
@@ -140,9 +142,11 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             if f.lots is not None
         },
         "return_levels": {
-            name: evidence.return_level_table(f.maxima)
-            for name, f in result.fitted.items()
-            if f.maxima is not None
+            name: evidence.return_level_table(levels) for name, levels in result.return_levels.items()
+        },
+        "exceedances": {
+            name: (exceedance_table(f, inputs.unit_of_records(result, name)), exceedance_sentence(f))
+            for name, f in result.exceedances.items()
         },
         "modes": {name: evidence.mode_table(f.modes) for name, f in result.fitted.items() if f.modes},
         "bonds": evidence.bond_table(result),
@@ -151,6 +155,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             "sample": sample_figure.CAPTION,
             "tail": tail_figure.CAPTION,
             "return": return_figure.CAPTION,
+            "threshold": threshold_figure.CAPTION,
         },
         "periods": outcome.period_table(result),
         "combination": outcome.combination_table(result),
@@ -177,6 +182,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "fit_methods": _fit_methods(result),
         "paper_caption": CAPTION,
         "unit_of": inputs.unit_of,
+        "unit_of_records": inputs.unit_of_records,
         "penalty": symbols.formula(_penalty(study.objective.penalty)),
     }
 
@@ -252,7 +258,7 @@ def _weight(text: str) -> Html:
 
 def _fit_methods(result: Result) -> str:
     words = {"likelihood": "maximum likelihood", "moments": "the method of moments"}
-    used = dict.fromkeys(v.method for v in result.study.variables.values() if v.records is not None)
+    used = dict.fromkeys(result.study.variables[name].method for name in result.fitted)
     return " or ".join(words.get(method, method.replace("_", " ")) for method in used)
 
 

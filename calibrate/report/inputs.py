@@ -24,6 +24,11 @@ def unit_of(text: str) -> str:
     return format_unit(text) if text else ""
 
 
+def unit_of_records(result: Result, name: str) -> str:
+    """Return the unit of the records of a variable for display."""
+    return unit_of(result.study.records[result.study.variables[name].records or ""].unit.text)
+
+
 def record_table(result: Result) -> Table:
     """Return the records: where they come from, how many, their range."""
     samples = result.study.records
@@ -89,6 +94,8 @@ def variable_table(result: Result) -> Table:
 
 def _source(variable: Variable, n: int | None) -> str:
     known = [] if n is None else [f"own records, n = {n}"]
+    if n is not None and variable.exceedances is not None:
+        known = [f"own records, {numbers.count(n, 'event')} above the threshold"]
     grade = "" if known and variable.grade == "own data" else variable.grade
     known += [text for text in (variable.source, grade) if text]
     return "; ".join(known) or "given"
@@ -115,6 +122,8 @@ def _parameters(variable: VariableResult) -> str:
 
 def _definition(result: Result, variable: VariableResult) -> Html | str:
     given = result.study.variables[variable.name]
+    if given.exceedances is not None:
+        return f"exceedances in records {given.records}"
     if given.records is not None:
         return f"fit to records {given.records}"
     parts = []

@@ -39,7 +39,7 @@ WIDER = 8
 LEFT = 10
 """Events that are left above a threshold that is looked at beside the chosen one."""
 
-THRESHOLDS = 40
+THRESHOLDS = 25
 """Thresholds that are looked at."""
 
 

@@ -10,7 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 if TYPE_CHECKING:
+    from calibrate.actions.return_levels import ReturnLevels
     from calibrate.factors import FactorSet
+    from calibrate.study.exceedances import ExceedanceModel
     from calibrate.study.result import Result, VariableResult
 
 FORMAT = "calibrate-result/1"
@@ -31,7 +33,7 @@ def _range(values: NDArray[np.float64], varies: bool) -> Any:
     return [float(finite.min()), float(finite.max())] if varies else float(finite[0])
 
 
-def _variable(variable: VariableResult) -> dict[str, Any]:
+def _variable(variable: VariableResult, model: ExceedanceModel | None) -> dict[str, Any]:
     varies = variable.varies
     figures: dict[str, Any] = {
         "family": variable.family,
@@ -49,7 +51,42 @@ def _variable(variable: VariableResult) -> dict[str, Any]:
     if variable.period is not None:
         figures["period"] = variable.period
         figures["parameters_for_period"] = variable.parameters_period
+    if model is not None:
+        figures["exceedances"] = _exceedances(model)
     return figures
+
+
+def _exceedances(model: ExceedanceModel) -> dict[str, Any]:
+    """Return the fit of the excesses, in the unit of the records."""
+    fit, events = model.fit, model.events
+    return {
+        "threshold": fit.threshold,
+        "events": fit.n,
+        "years": fit.years,
+        "rate": fit.rate,
+        "exceedances": int(events.exceedances.size),
+        "run_length_years": model.run_length,
+        "extremal_index": events.extremal_index,
+        "scale": fit.scale,
+        "shape": fit.shape,
+        "standard_errors": {name: _number(v) for name, v in fit.standard_errors.items()},
+        "upper_end": _number(fit.upper_end),
+        "dispersion": None
+        if model.dispersion is None
+        else {"index": model.dispersion[0], "p_value": model.dispersion[1]},
+    }
+
+
+def _levels(levels: ReturnLevels, unit: str) -> dict[str, Any]:
+    return {
+        "unit": unit,
+        "years": [float(t) for t in levels.years],
+        "level": [_number(v) for v in levels.levels],
+        "lower": [_number(v) for v in levels.lower],
+        "upper": [_number(v) for v in levels.upper],
+        "confidence": levels.confidence,
+        "method": levels.method,
+    }
 
 
 def _summary(result: Result, chosen: FactorSet) -> dict[str, Any]:
@@ -118,17 +155,8 @@ def result_dict(result: Result) -> dict[str, Any]:
             for p in result.other_periods
         ],
         "return_levels": {
-            name: {
-                "unit": result.study.records[result.study.variables[name].records or ""].unit.text,
-                "years": [float(t) for t in f.maxima.levels.years],
-                "level": [_number(v) for v in f.maxima.levels.levels],
-                "lower": [_number(v) for v in f.maxima.levels.lower],
-                "upper": [_number(v) for v in f.maxima.levels.upper],
-                "confidence": f.maxima.levels.confidence,
-                "method": f.maxima.levels.method,
-            }
-            for name, f in result.fitted.items()
-            if f.maxima is not None
+            name: _levels(levels, result.study.records[result.study.variables[name].records or ""].unit.text)
+            for name, levels in result.return_levels.items()
         },
         "bonds": [
             {
@@ -144,7 +172,9 @@ def result_dict(result: Result) -> dict[str, Any]:
             {"grade": p.grade, "variables": list(p.variables), "share_of_alpha_squared": _number(p.share)}
             for p in result.pedigree
         ],
-        "variables": {name: _variable(v) for name, v in result.variables.items()},
+        "variables": {
+            name: _variable(v, result.exceedances.get(name)) for name, v in result.variables.items()
+        },
         "factors": {
             factor.name: {
                 **{kind: _number(chosen.factors[factor.name]) for kind, chosen in sets.items()},

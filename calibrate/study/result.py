@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibrate.actions.return_levels import ReturnLevels
 from calibrate.errors import Doubt
 from calibrate.factors import Calibration
 from calibrate.fitting import Comparison as FitComparison
@@ -117,6 +118,13 @@ class Result:
     constraint_failures: tuple[str, ...]
     unconverged: int
     provenance: Provenance
+
+    @property
+    def return_levels(self) -> dict[str, ReturnLevels]:
+        """Return levels by variable: of block maxima and of threshold exceedances, in the order of the study."""
+        found = {name: f.maxima.levels for name, f in self.fitted.items() if f.maxima is not None}
+        found |= {name: f.levels for name, f in self.exceedances.items() if f.levels.years.size}
+        return {name: found[name] for name in self.study.variables if name in found}
 
     def to_dict(self) -> dict[str, Any]:
         """Return the content of result.json."""

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.expressions import Comparison
+from calibrate.study.events import find_events
 from calibrate.study.model import Rule, Study, Variable
 from calibrate.units import Unit
 
@@ -57,7 +58,7 @@ def check_summary(study: Study) -> dict[str, Any]:
             }
             for name, q in study.quantities.items()
         },
-        "variables": {name: _variable(v) for name, v in study.variables.items()},
+        "variables": {name: _variable(study, v) for name, v in study.variables.items()},
         "situations": _situations(study),
         "weights": _weights(study),
         "rules": {name: _rule(study, rule) for name, rule in study.rules.items()},
@@ -80,7 +81,7 @@ def check_summary(study: Study) -> dict[str, Any]:
     }
 
 
-def _variable(variable: Variable) -> dict[str, Any]:
+def _variable(study: Study, variable: Variable) -> dict[str, Any]:
     families = list(variable.families)
     return {
         "family": "best" if not families else families[0] if len(families) == 1 else families,
@@ -93,6 +94,24 @@ def _variable(variable: Variable) -> dict[str, Any]:
         "description": variable.description,
         "source": variable.source,
         "grade": variable.grade,
+        "exceedances": _exceedances(study, variable),
+    }
+
+
+def _exceedances(study: Study, variable: Variable) -> dict[str, Any] | None:
+    """Return the threshold, in the unit of the records, and the events above it."""
+    asked = variable.exceedances
+    if asked is None or variable.records is None:
+        return None
+    sample = study.records[variable.records]
+    events = find_events(sample, asked)
+    return {
+        "threshold": asked.threshold,
+        "unit": sample.unit.text,
+        "years": asked.years,
+        "run_length_years": asked.run_length,
+        "exceedances": int(events.exceedances.size),
+        "events": events.n,
     }
 
 
