@@ -155,6 +155,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             "sample": sample_figure.CAPTION,
             "tail": tail_figure.CAPTION,
             "return": return_figure.CAPTION,
+            "return_of_events": return_figure.CAPTION_OF_EVENTS,
             "threshold": threshold_figure.CAPTION,
         },
         "periods": outcome.period_table(result),

@@ -15,9 +15,10 @@ if TYPE_CHECKING:
     from calibrate.actions.return_levels import ReturnLevels
 
 CAPTION = (
-    "Return levels: fitted (line), 95 % interval by profile likelihood (band), ordered values (marks). Right of the "
+    "Return levels: fitted (line), 95 % interval by profile likelihood (band), ordered maxima (marks). Right of the "
     "dotted line the return period is longer than the record."
 )
+CAPTION_OF_EVENTS = CAPTION.replace("ordered maxima", "ordered events")
 _WIDTH, _HEIGHT = 84.0, 60.0
 
 

@@ -132,8 +132,7 @@ def _sample_fits(subject: Subject, records: str, sample: Sample) -> bool:
     if seen.censored:
         bounds = seen.n - seen.n_exact
         subject.problem(
-            f"names '{records}', where {bounds} of {seen.n} values are known by bounds only; exceedances need exact "
-            "values.",
+            f"names '{records}', with {bounds} of {seen.n} values known by bounds only; exceedances need exact values.",
             "records",
         )
     elif np.isfinite(seen.below):
@@ -212,7 +211,7 @@ def _enough(subject: Subject, records: str, asked: Exceedances, sample: Sample) 
     events = find_events(sample, asked).n
     if events < LEAST:
         subject.problem(
-            f"takes the {over} exceedances together to {events} events; at least {LEAST} are needed.",
+            f"leaves {events} of the {over} exceedances as events; at least {LEAST} are needed.",
             "exceedances",
             "run_length",
             suggestion="Shorten the run length, or lower the threshold.",
