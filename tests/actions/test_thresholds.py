@@ -13,6 +13,7 @@ from calibrate.actions.thresholds import (
     decluster,
     dispersion,
     fit_excesses,
+    fit_exponential_excesses,
     level_interval,
     mean_residual_life,
     stability,
@@ -104,6 +105,32 @@ def test_doubts():
     bounded = fit_excesses(excesses(-0.8, n=200), THRESHOLD)
     assert codes(bounded) == ["not-regular"]
     assert np.isnan(bounded.covariance).all()
+
+
+def test_exponential_excesses():
+    x = excesses(shape=0.0)
+    found = fit_exponential_excesses(x, THRESHOLD, years=40.0)
+    scale = np.mean(x - THRESHOLD)
+    assert (found.shape, found.scale) == (0.0, pytest.approx(scale, rel=1e-14))
+    assert found.log_likelihood == pytest.approx(stats.expon(THRESHOLD, scale).logpdf(x).sum(), rel=1e-12)
+    assert found.shape_interval == (0.0, 0.0)
+    assert found.upper_end == math.inf
+    # The level is linear in the scale, whose profile is 2 n (ln s + 1/s - 1) with s over its estimate.
+    statistic = stats.chi2(1).ppf(0.95) / (2.0 * x.size)
+    ends = [
+        optimize.brentq(lambda s: math.log(s) + 1.0 / s - 1.0 - statistic, *b) for b in ((0.3, 1), (1, 3))
+    ]
+    level = float(found.level(100.0)) - THRESHOLD
+    assert level == pytest.approx(scale * math.log(5.0 * 100.0), rel=1e-12)
+    assert level_interval(found, 100.0) == pytest.approx([THRESHOLD + s * level for s in ends], rel=1e-7)
+
+
+def test_upper_end_and_interval_of_the_shape():
+    found = fit_excesses(excesses(shape=-0.3), THRESHOLD)
+    assert found.upper_end == pytest.approx(THRESHOLD + found.scale / -found.shape)
+    assert float(found.exceedance(found.upper_end)) == 0.0
+    half = stats.norm.ppf(0.975) * found.standard_errors["shape"]
+    assert found.shape_interval == pytest.approx((found.shape - half, found.shape + half), rel=1e-12)
 
 
 def test_level_and_its_intervals():

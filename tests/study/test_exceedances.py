@@ -245,6 +245,7 @@ def test_yearly_counts_and_their_dispersion(tmp_path):
 # Doubts ------------------------------
 
 ALONE = ('\nrun_length = "3 day"', "")
+GUMBEL = ('"gusts"\nfamily = "gev"', '"gusts"\nfamily = "gumbel"')
 UNTIMED = ('time = "t"\n', "")
 
 
@@ -256,7 +257,7 @@ UNTIMED = ('time = "t"\n', "")
         ([ALONE], "clustered-exceedances", "State a run_length"),
         ([ALONE], "not-poisson", "scatter more"),
         ([ALONE, UNTIMED], "times-not-known", "could not be looked at"),
-        ([('"19 m/s"', '"26 m/s"')], "few-excesses", "exceedances, fewer than 20"),
+        ([('"19 m/s"', '"26 m/s"'), GUMBEL], "few-excesses", "exceedances, fewer than 20"),
         (
             [('"19 m/s"', '"24 m/s"'), ("reference_period = 50", "reference_period = 1")],
             "seldom-exceeded",
