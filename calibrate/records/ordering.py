@@ -26,7 +26,7 @@ def order_ranks(grid: Grid, column: str, problems: list[Problem]) -> NDArray[np.
     a mixture of both, add problems.
     """
     before = len(problems)
-    moments, _ = _read(grid, find(grid, column), column, problems)
+    moments, _ = _read(grid, column, "the order of testing", problems)
     return np.arange(1.0, len(grid.rows) + 1) if len(problems) > before else _ranks(moments)
 
 
@@ -42,7 +42,7 @@ def read_times(grid: Grid, column: str, unit: Unit | None, problems: list[Proble
     -----
     Entries that are neither, a mixture of both, and dates beside a unit add problems.
     """
-    moments, dates = _read(grid, find(grid, column), column, problems)
+    moments, dates = _read(grid, column, "the time", problems)
     if not dates:
         return moments * (parse_unit("year") if unit is None else unit).factor
     if unit is not None:
@@ -51,15 +51,16 @@ def read_times(grid: Grid, column: str, unit: Unit | None, problems: list[Proble
     return moments
 
 
-def _read(grid: Grid, index: int, column: str, problems: list[Problem]) -> tuple[NDArray[np.float64], bool]:
-    """Return numbers as they are, or dates in seconds, and whether they are dates."""
+def _read(grid: Grid, column: str, what: str, problems: list[Problem]) -> tuple[NDArray[np.float64], bool]:
+    """Return numbers as they are, or dates in seconds, and whether they are dates; ``what`` is for messages."""
+    index = find(grid, column)
     if not grid.rows:
         return np.array([]), False
     slips: list[Problem] = []
     first = grid.rows[0].cells[index]
     dates = _is_date(first) or isinstance(to_number(first, grid.notation), Refusal)
     if dates:
-        moments = _moments(grid, index, column, slips)
+        moments = _moments(grid, index, what, slips)
     else:
         moments = numbers(grid, index, slips)
         slips = [Problem(p.message, p.file, p.line, _mixture(p)) for p in slips]
@@ -77,13 +78,13 @@ def _is_date(cell: Cell | Oddity) -> bool:
     return isinstance(text, str) and _DATE.fullmatch(text.strip()) is not None
 
 
-def _moments(grid: Grid, index: int, column: str, slips: list[Problem]) -> NDArray[np.float64]:
+def _moments(grid: Grid, index: int, what: str, slips: list[Problem]) -> NDArray[np.float64]:
     """Return seconds from an arbitrary moment."""
     start = datetime.datetime(1, 1, 1)
     zoned: bool | None = None
     seconds = np.zeros(len(grid.rows))
     for i, (row, text) in enumerate(zip(grid.rows, texts(grid, index), strict=True)):
-        moment = _moment(text)
+        moment = _moment(text, what)
         if not isinstance(moment, Refusal):
             has_zone = moment.tzinfo is not None
             zoned = has_zone if zoned is None else zoned
@@ -94,13 +95,13 @@ def _moments(grid: Grid, index: int, column: str, slips: list[Problem]) -> NDArr
             moment = Refusal(
                 f"'{text}' and entries above differ in stating a time zone.", "State all or none."
             )
-        slips.append(problem(grid, row.number, column, moment))
+        slips.append(problem(grid, row.number, grid.header[index], moment))
     return seconds
 
 
-def _moment(text: str) -> datetime.datetime | Refusal:
+def _moment(text: str, what: str) -> datetime.datetime | Refusal:
     if not text:
-        return Refusal("the cell is empty.", "Fill it: order and time must be known for every row.")
+        return Refusal("the cell is empty.", f"Fill it: {what} must be known for every row.")
     if _DATE.fullmatch(text):
         try:
             return datetime.datetime.fromisoformat(text)
