@@ -76,8 +76,8 @@ def _beyond_record(name: str, record: float, distance: float, sign: float, perio
     if sign > 0.0 or record >= BEYOND * apart:
         return []
     text = (
-        f"The design point of '{name}' is exceeded about once in {apart:.2g} years; the record is {record:.3g} years "
-        "long. The tail between is the family's, not the record's."
+        f"The design point of '{name}' is exceeded about once in {float(f'{apart:.2g}'):g} years; the record is "
+        f"{record:.3g} years long. The tail between is the family's, not the record's."
     )
     return [Doubt("extrapolation", text, f"variables.{name}")]
 

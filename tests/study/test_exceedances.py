@@ -261,7 +261,7 @@ UNTIMED = ('time = "t"\n', "")
         (
             [('"19 m/s"', '"24 m/s"'), ("reference_period = 50", "reference_period = 1")],
             "seldom-exceeded",
-            "of 1 years",
+            "of 1 year stays",
         ),
         (
             [('"19 m/s"', '"16 m/s"'), ('"gusts"\nfamily = "gev"', '"gusts"\nfamily = "gumbel"')],

@@ -18,6 +18,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy import special
 
+from calibrate.actions.periods import in_years
 from calibrate.distributions import Distribution, distribution
 from calibrate.errors import Doubt, InputError, Problem
 
@@ -115,7 +116,7 @@ def annual_maximum(
     doubts = []
     if mass > SELDOM:
         message = (
-            f"With {rate:.3g} exceedances a year the maximum of {years:g} years stays below the threshold "
+            f"With {rate:.3g} exceedances a year the maximum of {in_years(years)} stays below the threshold "
             f"{threshold:.6g} with probability {mass:.2g}; what the distribution says of such values is not from the "
             "record. A lower threshold would tell more."
         )
