@@ -92,7 +92,8 @@ def _from_exceedances(
     if found is None or faulty or not conversion_fits or dropped - _HARMLESS:
         return None
     model, asked = found
-    variable = _variable(subject, content, model, values, MethodChoice(), None)
+    limit = read_upper_limit(subject, content, model)
+    variable = _variable(subject, content, model, values, MethodChoice(), None, limit)
     period = 1.0 if content.period is None else content.period
     return dataclasses.replace(variable, exceedances=asked, period=period)
 
