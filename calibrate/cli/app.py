@@ -5,7 +5,7 @@ from __future__ import annotations
 import typer
 
 from calibrate import __version__
-from calibrate.cli import check, fit, run
+from calibrate.cli import check, fit, run, snippet
 
 CAUTION = (
     "Results depend on the data and models given. Target reliabilities and factors are for competent engineers and "
@@ -24,6 +24,9 @@ app = typer.Typer(
 )
 app.command("run", help=run.HELP, short_help="Calibrate a study; write tables and report.")(run.run)
 app.command("check", help=check.HELP, short_help="Print what a study says; compute nothing.")(check.check)
+app.command("snippet", help=snippet.HELP, short_help="Print pieces of study files for usual actions.")(
+    snippet.snippet
+)
 app.command("fit", help=fit.HELP, short_help="Fit and rank distributions for one column.")(fit.fit)
 
 
