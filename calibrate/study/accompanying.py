@@ -42,6 +42,8 @@ def accompanying_table(
     models = rule_models(study, variables)
     for model, found in zip(models, proposed.evaluation.per_rule, strict=True):
         values = values_at(model, found, proposed.factors)
+        if not model.alternatives:
+            continue
         acting = [a for a in study.combination if any(b.leading == a.name for b in model.alternatives)]
         points = _design_points(model, found, values)
         for action in acting:

@@ -24,9 +24,10 @@ def action_doubts(study: Study, calibration: Calibration) -> list[Doubt]:
 
 def _converted(study: Study) -> list[Doubt]:
     """Name the actions that were converted to another period."""
+    combined = {a.name for a in study.combination}
     doubts = []
     for name, variable in study.variables.items():
-        if variable.period is None or variable.period == study.reference_period:
+        if variable.period is None or variable.period == study.reference_period or name in combined:
             continue
         if not variable.converted:
             doubts.append(

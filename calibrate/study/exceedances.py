@@ -113,7 +113,9 @@ def exceedance_model(study: Study, variable: Variable) -> ExceedanceModel:
     found = _dispersion(events, asked)
     looked_at = _thresholds(sample, asked)
     # What lies below the threshold matters for the periods that the study computes with, not for a single year.
-    periods = (study.reference_period, *study.other_periods) if variable.converted else (period,)
+    combined = any(a.name == variable.name for a in study.combination)
+    whole = variable.converted and not combined
+    periods = (study.reference_period, *study.other_periods) if whole else (period,)
     doubts = (
         *fit.doubts,
         *fit.maximum(min(periods)).doubts,

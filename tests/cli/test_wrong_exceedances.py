@@ -79,8 +79,8 @@ SLIPS = {
     "unknown column of times": ('time = "t"', 'time = "when"', "gusts.csv:1", ["There is no column 'when'"]),
     "unit of times": ('time = "t"', 'time = "t"\ntime_unit = "m"', 12, ["must be a unit of time"]),
     "unit without times": ('time = "t"', 'time_unit = "day"', 11, ["no column 'time'"]),
-    "combined": ("[factors]", "[combination]\nv = { repetitions = 50 }\nq = { repetitions = 9 }\n[factors]", 31, [
-        "exceedances", "cannot be combined",
+    "combined": ("[factors]", "[combination]\nv = { repetitions = 40 }\nq = { repetitions = 9 }\n[factors]", 31, [
+        "says 40 repetitions", "holds 50",
     ]),
     "fractile of the records": ("[variables.q]", '[quantities]\nv_k = { characteristic_of = "v" }\n[variables.q]', 21, [
         "maximum from exceedances", "is =",

@@ -203,13 +203,35 @@ def test_files_and_report_show_the_alternatives(study, tmp_path):
     assert head == "rule,situation,governing,beta_Q,beta_W,beta_series_upper,beta_series_lower,beta_fbc"
 
 
+def test_a_period_says_the_repetitions(study, tmp_path):
+    stated = calibrate.run(study())
+    path = tmp_path / "periods.toml"
+    text = (
+        study()
+        .text.replace("cov = 0.35\n", "cov = 0.35\nperiod = 10\n")
+        .replace("Q = { repetitions = 5 }", "Q = {}")
+    )
+    path.write_text(text, encoding="utf-8")
+    by_period = calibrate.run(calibrate.read_study(path))
+    np.testing.assert_array_equal(by_period.combinations["beta_Q"], stated.combinations["beta_Q"])
+    assert "period-converted" not in {d.code for d in by_period.doubts}
+    path.write_text(text.replace("period = 10\n", ""), encoding="utf-8")
+    with pytest.raises(InputError, match="needs 'repetitions' in the reference period, or a period"):
+        calibrate.read_study(path)
+
+
 @pytest.mark.parametrize(
     ("parts", "words"),
     [
         ({"more": "S = { repetitions = 3 }"}, "'S' is not a basic variable"),
         ({"present": ", presence = 1.5"}, "presence"),
         ({"present": ", repeats = 2"}, "unknown key 'repeats'"),
-        ({"Q": "period = 1"}, "takes no period"),
+        (
+            {"Q": "period = 1"},
+            "says 5 repetitions, but its model is for 1 year, of which .* 50 years holds 50",
+        ),
+        ({"Q": 'period = 10\nconversion = "none"\nconversion_reason = "so"'}, 'conversion = "none"'),
+        ({"Q": "period = 100"}, "longer than the reference period of 50 years"),
         ({"Q": 'role = "geometry"'}, "role geometry; only actions"),
     ],
 )

@@ -377,3 +377,27 @@ def test_check_counts_and_fits_nothing(tmp_path, monkeypatch):
         "events": peaks.size,
     }
     assert summary["variables"]["w"]["exceedances"] is None
+
+
+def test_the_maximum_of_a_year_is_combined_with_another_action(tmp_path):
+    """Fifty years of v beside five pulses of s: the alternative led by v is FORM with its maximum of 50 years."""
+    combination = (
+        "[combination]\nv = {}\ns = { repetitions = 5 }\n"
+        '[variables.s]\nfamily = "gumbel"\nmean = "2 m/s"\ncov = 0.3\n[rules.screen]'
+    )
+    path = write(tmp_path, ("[rules.screen]", combination), ("R >= v", "R >= v + s"))
+    result = calibrate.run(calibrate.read_study(path))
+    row = result.combinations.iloc[0]
+    once = calibrate.form(
+        "R - v - s",
+        {
+            "R": calibrate.distribution("lognormal", mean=42.0, cov=0.05),
+            "v": calibrate.distribution(
+                "gev", **{k: float(v[0]) for k, v in result.variables["v"].parameters.items()}
+            ),
+            "s": calibrate.distribution("gumbel", mean=2.0, cov=0.3),
+        },
+    )
+    assert result.variables["v"].parameters_period == 50
+    assert row["beta_v"] == pytest.approx(float(once.beta), abs=1e-6)
+    assert row["beta_fbc"] <= row["beta_series_upper"] + 1e-9

@@ -4,14 +4,16 @@ from __future__ import annotations
 
 from typing import Any
 
+from calibrate.actions.periods import in_years
 from calibrate.errors import did_you_mean
 from calibrate.study.model import CombinedAction, Variable
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.schema import CombinedTable, read_entry, read_table
+from calibrate.study.reading.toml_lines import Place
 
 
 def read_combination(
-    reading: Reading, raw: Any, variables: dict[str, Variable | None]
+    reading: Reading, raw: Any, variables: dict[str, Variable | None], reference_period: float | None
 ) -> tuple[CombinedAction, ...]:
     """Return the combined actions in the order of the study."""
     found = []
@@ -33,22 +35,55 @@ def read_combination(
                 f"Remove it here, or correct the role of variables.{name}.",
             )
             continue
-        if variable.exceedances is not None:
-            reading.problem(
-                "is the maximum of a period from exceedances, not that of one repetition; it cannot be combined in "
-                "this version.",
-                place,
-                f"Remove it here, or give variables.{name} by the parameters of one repetition.",
-            )
-            continue
-        if variable.period is not None or variable.size_ratio is not None:
-            reading.problem(
-                "is combined by its repetitions; its model is that of one of them and takes no period or size_ratio.",
-                place,
-                f"Remove them from variables.{name}.",
-            )
-            continue
-        found.append(CombinedAction(name, content.repetitions, content.presence, content.duration))
+        repetitions = _repetitions(reading, content.repetitions, variable, reference_period, place)
+        if repetitions is not None:
+            found.append(CombinedAction(name, repetitions, content.presence, content.duration))
     if len(found) == 1 and len(read_table(reading, raw, ("combination",))) == 1:
         reading.problem("names one action; a combination needs at least two.", ("combination",))
     return tuple(found)
+
+
+def _repetitions(
+    reading: Reading, stated: float | None, variable: Variable, reference: float | None, place: Place
+) -> float | None:
+    """Return how often an action comes anew in the reference period: as stated, or by the period of its model."""
+    if variable.size_ratio is not None:
+        reading.problem(
+            "is combined by its repetitions; a size_ratio belongs to a strength.",
+            place,
+            f"Remove it from variables.{variable.name}.",
+        )
+        return None
+    if variable.period is None:
+        if stated is None:
+            reading.problem(
+                "needs 'repetitions' in the reference period, or a period of its variable.",
+                place,
+                f"Write {variable.name} = {{ repetitions = 50 }}, or variables.{variable.name}.period = 1.",
+            )
+        return stated
+    if not variable.converted:
+        reading.problem(
+            'is combined by its repetitions, but the variable says conversion = "none".',
+            place,
+            f"Remove the one or the other from variables.{variable.name}.",
+        )
+        return None
+    if reference is None:
+        return None
+    implied = reference / variable.period
+    if implied < 1.0:
+        reading.problem(
+            f"has a model for {in_years(variable.period)}, longer than the reference period of {in_years(reference)}.",
+            place,
+        )
+        return None
+    if stated is not None and abs(stated / implied - 1.0) > 1e-3:
+        reading.problem(
+            f"says {stated:g} repetitions, but its model is for {in_years(variable.period)}, of which the reference "
+            f"period of {in_years(reference)} holds {implied:g}.",
+            place,
+            "Leave repetitions out, or correct the period.",
+        )
+        return None
+    return implied

@@ -98,7 +98,9 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     blocks = read_blocks(sections["records"], records)
     check_blocks(reading, variables, blocks)
     rules = finish_rules(reading, names, drafts, variables)
-    combination = read_combination(reading, sections["combination"], variables)
+    combination = read_combination(
+        reading, sections["combination"], variables, None if head is None else head.reference_period
+    )
     check_correlations(reading, names, sections["correlations"])
     check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)

@@ -290,7 +290,7 @@ class ObjectiveSection(Section):
 class CombinedTable(Section):
     """One action of ``[combination]``."""
 
-    repetitions: Annotated[float, Field(ge=1)]
+    repetitions: Annotated[float | None, Field(ge=1)] = None
     presence: Annotated[float, Field(gt=0, le=1)] = 1.0
     duration: Positive | None = None
 
