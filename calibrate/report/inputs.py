@@ -124,13 +124,16 @@ def _definition(result: Result, variable: VariableResult) -> Html | str:
     given = result.study.variables[variable.name]
     if given.exceedances is not None:
         return f"exceedances in records {given.records}"
+    parts: list[str] = []
     if given.records is not None:
-        return f"fit to records {given.records}"
-    parts = []
-    for argument, expression in given.arguments.items():
+        parts.append(symbols.escaped(f"fit to records {given.records}"))
+    for argument, expression in given.arguments.items() if given.records is None else ():
         text = given.texts.get(argument, expression.text)
         shown = symbols.formula(expression) if expression.names else symbols.escaped(text)
         parts.append(f"{symbols.escaped(argument)} = {shown}")
+    for what, weakest in (("size ratio", given.size_ratio), ("stress profile", given.stress_profile)):
+        if weakest is not None:
+            parts.append(f"{what} = {symbols.formula(weakest)}")
     return Html(", ".join(parts))
 
 

@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from calibrate.actions.intermittent import intermittent
+from calibrate.actions.size_effect import stress_integral
 from calibrate.distributions import (
     Distribution,
     Extreme,
@@ -23,6 +24,9 @@ from calibrate.errors import InputError, Problem
 from calibrate.expressions import Expression
 
 Array = npt.NDArray[np.float64]
+
+POSITION = "position"
+"""Name in a stress profile of the place in the part, from 0 to 1."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -45,6 +49,9 @@ class BasicVariable:
         Probability that an intermittent action is present in one repetition; absent, it is zero.
     size_ratio : Expression, optional
         Size of a part over the size that the model is for: the strength is the smallest of so many (weakest link).
+    stress_profile : Expression, optional
+        Stress over its largest value along ``position`` from 0 to 1, where the family is ``weibull``: only the
+        equivalent share of the size counts. Free of the size and of situations.
     """
 
     name: str
@@ -54,6 +61,7 @@ class BasicVariable:
     fitted: Distribution | None = None
     size_ratio: Expression | None = None
     presence: float = 1.0
+    stress_profile: Expression | None = None
 
     def depends_on(self, name: str) -> bool:
         """Whether an argument contains the name."""
@@ -81,13 +89,28 @@ class BasicVariable:
             situation are named.
         """
         converted = self._converted(self._given(values))
-        if self.size_ratio is None:
-            return converted
+        key = "size_ratio" if self.stress_profile is None else "stress_profile"
         try:
-            return minimum_of(converted, self.size_ratio.value(values))
+            ratio = self._ratio(converted, values)
+            return converted if ratio is None else minimum_of(converted, ratio)
         except InputError as error:
-            problems = [Problem(f"Variable '{self.name}', size_ratio: {p}") for p in error.problems]
+            problems = [Problem(f"Variable '{self.name}', {key}: {p}") for p in error.problems]
             raise InputError(problems) from error
+
+    def _ratio(self, base: Distribution, values: Mapping[str, Any]) -> Array | None:
+        """Return of how many parts of the size of the model the strength is the smallest."""
+        whole = None if self.size_ratio is None else np.asarray(self.size_ratio.value(values))
+        if self.stress_profile is None:
+            return whole
+        share = self._stressed_share(base, values)
+        return share if whole is None else whole * share
+
+    def _stressed_share(self, base: Distribution, values: Mapping[str, Any]) -> Array:
+        profile = self.stress_profile
+        if profile is None:
+            return np.ones(())
+        fixed = {name: values[name] for name in profile.names if name != POSITION}
+        return stress_integral(lambda at: profile.value({**fixed, POSITION: at}), base.parameters["shape"])
 
     def _given(self, values: Mapping[str, Any]) -> Distribution:
         if self.fitted is not None:
@@ -132,7 +155,8 @@ class BasicVariable:
         if self.size_ratio is not None and self.size_ratio.depends_on(name):
             ratio, (by_ratio,) = self.size_ratio.gradient(values, (name,))
             base = self._converted(self._given(values))
-            total = total + ratio_slope(base, ratio, u, of_maxima=False) * by_ratio
+            share = self._stressed_share(base, values)
+            total = total + ratio_slope(base, ratio * share, u, of_maxima=False) * by_ratio * share
         if not any(e.depends_on(name) for e in self.arguments.values()):
             return total
         by_argument = family(self.family).argument_slopes(self._arguments(values))

@@ -26,10 +26,14 @@ def basic_variables(
 
 def _basic_variable(years: float, variable: Variable, fit: RecordModel | None) -> BasicVariable:
     ratio = years / variable.period if variable.period is not None and variable.converted else 1.0
-    if fit is not None:
-        return BasicVariable(variable.name, fit.family, {}, ratio, fit.distribution, variable.size_ratio)
     return BasicVariable(
-        variable.name, variable.families[0], variable.arguments, ratio, None, variable.size_ratio
+        variable.name,
+        variable.families[0] if fit is None else fit.family,
+        variable.arguments if fit is None else {},
+        ratio,
+        None if fit is None else fit.distribution,
+        variable.size_ratio,
+        stress_profile=variable.stress_profile,
     )
 
 

@@ -95,6 +95,8 @@ class Variable:
     conversion_reason: str = ""
     size_ratio: Expression | None = None
     """Size of the part over the size that the model is for; the strength is that of the weakest of so many."""
+    stress_profile: Expression | None = None
+    """Stress over its largest value along ``position`` from 0 to 1, of a Weibull strength."""
     upper_limit: float | None = None
     """Largest value that is physically possible, in SI units, where the study says so; it bounds no model."""
     grade: str = ""

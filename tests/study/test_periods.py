@@ -123,9 +123,29 @@ def test_the_size_of_a_strength_is_weakest_link(study):
     assert (betas(large) < betas(plain)).all()
 
 
+def test_uneven_stress_counts_by_its_equivalent_size(study):
+    """A rectangular beam in even bending: 1/(2 (m + 1)) of its volume counts (W. Weibull 1939, from memory)."""
+    profile = 'stress_profile = "2 * position - 1"\nsize_ratio = 20'
+    plain, bent = (calibrate.run(study(resistance=text)) for text in ("", profile))
+    m = float(plain.variables["R"].parameters["shape"][0])
+    (before,), (after,) = (r.variables["R"].mean for r in (plain, bent))
+    assert after / before == pytest.approx((20.0 / (2.0 * (m + 1.0))) ** (-1.0 / m), rel=1e-9)
+    alone = calibrate.run(study(resistance='stress_profile = "position ** 2"'))
+    assert alone.variables["R"].mean[0] / before == pytest.approx(
+        (1.0 / (2.0 * m + 1.0)) ** (-1.0 / m), rel=1e-9
+    )
+
+
 @pytest.mark.parametrize(
     ("parts", "words"),
     [
+        ({"resistance": 'stress_profile = "W"'}, "must be dimensionless"),
+        (
+            {"resistance": 'stress_profile = "c * position"'},
+            "uses 'c'; a stress profile is written in quantities",
+        ),
+        ({"resistance": 'stress_profile = "posit"'}, "posit"),
+        ({"action": 'stress_profile = "position"'}, 'needs family = "weibull"'),
         ({"resistance": 'size_ratio = "3 mm"'}, "must be dimensionless"),
         ({"resistance": "size_ratio = 2\nperiod = 1"}, "a variable cannot have both"),
         ({"resistance": 'conversion = "none"\nconversion_reason = "x"'}, "has no period"),
@@ -140,5 +160,7 @@ def test_slips_of_periods_are_told(study, parts, words):
 
 
 def test_a_size_ratio_that_is_not_positive_is_refused_with_its_variable(study):
+    with pytest.raises(InputError, match=r"Variable 'R', stress_profile: The stress is nowhere above zero"):
+        calibrate.run(study(resistance='stress_profile = "0 - position"'))
     with pytest.raises(InputError, match="Variable 'R', size_ratio"):
         calibrate.run(study(resistance='size_ratio = "1 - c"'))

@@ -183,6 +183,7 @@ class VariableEntry(Section):
     conversion: Literal["maximum", "none"] | None = None
     conversion_reason: str = ""
     size_ratio: Value | None = None
+    stress_profile: Text | None = None
     upper_limit: Value | None = None
     unit: str | None = None
     description: str = ""

@@ -17,6 +17,7 @@ from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
 from calibrate.study.reading.limits import read_upper_limit
 from calibrate.study.reading.periods import check_conversion, read_size_ratio
+from calibrate.study.reading.stress import read_stress_profile
 from calibrate.study.reading.subject import Model, Subject, Surroundings
 from calibrate.study.reading.values import Value, read_unit, read_value
 from calibrate.units import Unit
@@ -57,10 +58,12 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         return _from_exceedances(subject, content, families, values, unit, entry.dropped)
     method = read_method(subject, content)
     ratio = read_size_ratio(subject, content)
+    profile = read_stress_profile(subject, content)
     if (
         method is None
         or not check_conversion(subject, content)
         or (content.size_ratio is not None and ratio is None)
+        or (content.stress_profile is not None and profile is None)
     ):
         return None
     unit_is_faulty = content.unit is not None and unit is None
@@ -72,8 +75,16 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
         model = given_model(subject, families[0], values, unit)
     if model is None:
         return None
+    if profile is not None and any(set(e.names) & _sizes(subject) for e in model.arguments.values()):
+        subject.problem("needs a model that does not depend on the size.", "stress_profile")
+        return None
     limit = read_upper_limit(subject, content, model)
-    return _variable(subject, content, model, values, method, ratio, limit)
+    variable = _variable(subject, content, model, values, method, ratio, limit)
+    return variable if profile is None else dataclasses.replace(variable, stress_profile=profile)
+
+
+def _sizes(subject: Subject) -> set[str]:
+    return {size.name for size in subject.around.names.sizes.values()}
 
 
 def _from_exceedances(
