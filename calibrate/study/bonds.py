@@ -171,12 +171,12 @@ def _fractile_doubts(study: Study, quantity: Quantity, below: Array, share: floa
         for years in (reference, 1.0, 50.0):
             if years != own and not _far(below ** (years / reference), share).any():
                 text += (
-                    f"the probability below this value is {100.0 * worst:.3g} %. It is that fractile of the maximum of "
+                    f"the probability below this value is {100.0 * worst:.5g} %. It is that fractile of the maximum of "
                     f"{in_years(years)}: the value and the model are for different periods, or the period of the model "
                     "is not stated."
                 )
                 return [Doubt("fractile-of-another-period", text, where)]
-    text += f"the probability below this value is {100.0 * worst:.3g} %."
+    text += f"the probability below this value is {100.0 * worst:.5g} %."
     return [Doubt("fractile-differs", text, where)]
 
 
