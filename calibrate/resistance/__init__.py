@@ -1,0 +1,5 @@
+"""Component tests against prediction: model factor, characteristic and design resistance, factors by several routes.
+
+Owns the evaluation of resistance models from tests. Knows nothing of files, units or studies; values are plain numbers
+in one coherent set of units.
+"""
