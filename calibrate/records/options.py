@@ -135,6 +135,10 @@ class ReadOptions:
     time : str, optional
         Column of the time of each value: numbers in ``time_unit`` (default years), or ISO dates.
     time_unit : Unit, optional
+    detection_limit : float
+        Values below it, zeros among them, are known only to lie below it; in the unit of the sample.
+    coverage : str, optional
+        Column of the part of each block that was observed, above 0 and at most 1.
     exclude : tuple of Exclude
     units : mapping of str to Unit
         Units of the columns of a derived value and of covariates; others are dimensionless.
@@ -157,6 +161,8 @@ class ReadOptions:
     order: str | None = None
     time: str | None = None
     time_unit: Unit | None = None
+    detection_limit: float = -math.inf
+    coverage: str | None = None
     exclude: tuple[Exclude, ...] = ()
     units: Mapping[str, Unit] = field(default_factory=dict)
     measured: str | None = None
@@ -167,6 +173,10 @@ class ReadOptions:
         if not self.above < self.below:
             raise InputError(
                 f"The truncation limits {self.above:g} and {self.below:g} leave nothing between them."
+            )
+        if self.detection_limit >= self.below:
+            raise InputError(
+                f"The detection limit {self.detection_limit:g} is not below {self.below:g}, the limit of the sample."
             )
         if self.normalise and (math.isfinite(self.above) or math.isfinite(self.below)):
             raise InputError(

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.provenance import sha256_of
+from calibrate.records.blocks import below_detection, read_coverage
 from calibrate.records.cells import as_text, shortened
 from calibrate.records.columns import find, labels, numbers, row_numbers
 from calibrate.records.derived import Derivation, derivation, derive
@@ -141,10 +142,12 @@ def _read(path: Path, plan: _Plan, display: str | None, sheet: str | None, optio
     times = (
         None if options.time is None else _frozen(read_times(grid, options.time, options.time_unit, problems))
     )
+    coverage = None if options.coverage is None else _frozen(read_coverage(grid, options.coverage, problems))
     ratios = read_ratios(grid, options.normalise, options.units, problems)
     _stop_if_any(problems, file)
     lower, upper = _bounds_of_value(grid, plan, bounds, problems)
     _stop_if_any(problems, file)
+    lower, upper = below_detection(lower, upper, options.detection_limit)
     _check_limits(grid, plan, lower, upper, options, problems)
     _stop_if_any(problems, file)
 
@@ -171,6 +174,7 @@ def _read(path: Path, plan: _Plan, display: str | None, sheet: str | None, optio
         "" if plan.derivation is None else plan.derivation.text,
         normalisation,
         times,
+        coverage,
     )
 
 

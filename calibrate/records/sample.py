@@ -56,6 +56,8 @@ class Sample:
         Ranks in the order of testing, from 1; ties share their mean.
     times : ndarray, shape (n,), or None
         When each value occurred, in seconds from an arbitrary moment.
+    coverage : ndarray, shape (n,), or None
+        Part of each block that was observed.
     excluded : tuple of Exclusion
         What was left out, in row order.
     format_note : str
@@ -81,6 +83,7 @@ class Sample:
     formula: str = ""
     normalisation: Normalisation | None = None
     times: NDArray[np.float64] | None = None
+    coverage: NDArray[np.float64] | None = None
 
     @property
     def n(self) -> int:

@@ -116,7 +116,7 @@ def _options(reading: Reading, content: RecordsEntry, unit: Unit, place: Place) 
     units = _units(reading, content.units, (*place, "units"))
     limits = {
         key: _limit(reading, getattr(content, key), unit, (*place, key), default)
-        for key, default in (("above", -math.inf), ("below", math.inf))
+        for key, default in (("above", -math.inf), ("below", math.inf), ("detection_limit", -math.inf))
     }
     covariates = tuple(
         c
@@ -144,6 +144,8 @@ def _options(reading: Reading, content: RecordsEntry, unit: Unit, place: Place) 
             order=content.order,
             time=content.time,
             time_unit=time_unit,
+            detection_limit=limits["detection_limit"],
+            coverage=content.coverage,
             exclude=tuple(
                 Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
             ),

@@ -162,7 +162,9 @@ class RecordsEntry(Section):
     measured: Text | None = None
     unit_by: UnitByTable | None = None
     normalise: dict[str, Any] = {}
+    detection_limit: Value | None = None
     blocks: Annotated[int, Field(ge=1)] | None = None
+    coverage: Text | None = None
     declared: Annotated[list[Any] | None, BeforeValidator(_value_or_range)] = None
 
 
