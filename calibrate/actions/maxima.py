@@ -241,9 +241,6 @@ def _check_choice(names: tuple[str, ...], method: str, shape: float | None, bloc
     ]
     if shape is not None and names != ("gev",):
         problems.append(Problem("A shape is given, which only the family 'gev' alone can take."))
-    elif shape is not None and method == "l_moments":
-        message = "L-moments determine the shape; a given one would contradict them."
-        problems.append(Problem(message, suggestion="Use the method 'likelihood'."))
     if not (math.isfinite(block_years) and block_years > 0.0):
         problems.append(
             Problem(f"The length of a block must be a positive number of years; got {block_years!r}.")

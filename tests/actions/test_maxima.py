@@ -111,6 +111,17 @@ def test_maximum_of_a_longer_period():
     assert found.over(1 / 12) is found.distribution
 
 
+def test_given_shape_by_l_moments():
+    """From a sample of exact quantiles of a known distribution, location and scale come back (bound: its spacing)."""
+    law, n = stats.genextreme(-0.15, 30.0, 5.0), 200_000
+    found = fit_maxima(law.ppf((np.arange(n) + 0.5) / n), "gev", method="l_moments", shape=0.15)
+    expected = {"location": 30.0, "scale": 5.0, "shape": 0.15}
+    assert found.fit.parameters == pytest.approx(expected, rel=1e-4)
+    assert found.fit.standard_errors["shape"] == 0.0
+    assert found.fit.free == ("location", "scale")
+    assert found.shape_interval is None
+
+
 # Incomplete records ------------------------------
 
 
@@ -169,7 +180,7 @@ def test_values_below_a_detection_limit():
         ({"family": "weibull"}, "none of block maxima"),
         ({"family": ()}, "No family is named"),
         ({"family": "gumbel", "shape": 0.1}, "only the family 'gev'"),
-        ({"family": "gev", "shape": 0.1, "method": "l_moments"}, "L-moments determine the shape"),
+        ({"family": "gev", "shape": 1.0, "method": "l_moments"}, "a shape of 1 or more has no mean"),
         ({"block_years": 0.0}, "positive number of years"),
         ({"blocks_expected": 39}, "more than the 39 blocks"),
         ({"coverage": [1.0]}, "1 values of coverage for 40 maxima"),

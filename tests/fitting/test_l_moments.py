@@ -3,6 +3,7 @@
 import itertools
 import math
 
+import mpmath
 import numpy as np
 import pytest
 
@@ -68,6 +69,58 @@ def test_shapes_of_extreme_values(shape):
     assert found == pytest.approx({"location": 0.0, "scale": 1.0, "shape": shape}, abs=1e-7)
 
 
+@pytest.mark.parametrize(
+    "shape", [-20.0, -0.4, -1e-3, -1e-7, -1e-12, 0.0, 1e-12, 1e-9, 1e-7, 1e-3, 0.3, 0.5, 0.95]
+)
+def test_location_and_scale_of_a_given_shape(shape):
+    """Closed forms of Hosking and Wallis 1997, A.7 (from memory), in 40 digits, with k = -shape."""
+    x = np.random.default_rng(4).gumbel(20.0, 3.0, 25)
+    first, second = (mpmath.mpf(float(v)) for v in sample_l_moments(x, 2))
+    with mpmath.workdps(40):
+        if shape == 0.0:
+            scale = second / mpmath.log(2)
+            location = first - scale * mpmath.euler
+        else:
+            k = -mpmath.mpf(shape)
+            scale = second * k / ((1 - mpmath.mpf(2) ** -k) * mpmath.gamma(1 + k))
+            location = first - scale * (1 - mpmath.gamma(1 + k)) / k
+    found = fit_family(x, "gev", method="l_moments", fixed={"shape": shape})
+    expected = {"location": float(location), "scale": float(scale), "shape": shape}
+    assert found.parameters == pytest.approx(expected, rel=1e-13)
+
+
+def test_a_given_shape_of_zero_is_the_gumbel_family():
+    x = np.random.default_rng(4).gumbel(20.0, 3.0, 40)
+    given, gumbel = fit_family(x, "gev", method="l_moments", fixed={"shape": 0.0}), by_l_moments(x, "gumbel")
+    for name in ("location", "scale"):
+        assert given.parameters[name] == pytest.approx(gumbel.parameters[name], rel=1e-14)
+        assert given.standard_errors[name] == pytest.approx(gumbel.standard_errors[name], rel=1e-9)
+    assert given.log_likelihood == pytest.approx(gumbel.log_likelihood, rel=1e-13)
+    assert given.aicc == pytest.approx(gumbel.aicc, rel=1e-12)
+
+
+def test_the_shape_that_was_estimated_gives_the_same_fit():
+    x = np.random.default_rng(6).gumbel(20.0, 3.0, 40)
+    free = by_l_moments(x, "gev")
+    given = fit_family(x, "gev", method="l_moments", fixed={"shape": free.parameters["shape"]})
+    assert given.parameters == pytest.approx(free.parameters, rel=1e-12)
+
+
+@pytest.mark.parametrize("shape", [-0.3, 0.15])
+def test_standard_errors_of_a_given_shape_are_the_scatter(shape):
+    law = distribution("gev", location=4.0, scale=0.5, shape=shape)
+    rng, count = np.random.default_rng(9), 500
+    held = {"shape": shape}
+    fits = [fit_family(x, "gev", method="l_moments", fixed=held) for x in law.sample(rng, (count, 60))]
+    names = ("location", "scale")
+    estimates = np.array([[f.parameters[n] for n in names] for f in fits])
+    errors = np.array([[f.standard_errors[n] for n in names] for f in fits])
+    scatter = estimates.std(axis=0, ddof=1)
+    np.testing.assert_allclose(np.median(errors, axis=0), scatter, rtol=3 / math.sqrt(2 * count))
+    bias = estimates.mean(axis=0) - [4.0, 0.5]
+    assert np.all(np.abs(bias) < 4.0 * scatter / math.sqrt(count))
+
+
 def test_sample_moments_are_means_over_all_subsets():
     """l_r is the mean over all r-subsets of sum (-1)^k C(r-1, k) x_(r-k:r)/r (Hosking 1990, his definition)."""
     x = np.random.default_rng(2).gamma(2.0, size=9)
@@ -119,6 +172,10 @@ def test_a_given_threshold_is_taken_off(family, base):
             "no member of the family has the L-moments",
         ),
         ("gev", [0, 0, 0, 0, 0, 9], {}, "no member of the family has the L-moments"),
+        ("gev", [1, 2, 3, 5, 9], {"fixed": {"scale": 2.0}}, "a given threshold or shape of 'gev'"),
+        ("gev", [1, 2, 3, 5, 9], {"fixed": {"shape": 1.0}}, "a shape of 1 or more has no mean"),
+        ("gev", [1, 2, 3, 5, 9], {"fixed": {"shape": -400.0}}, "no member of the family has the L-moments"),
+        ("weibull", [1, 2, 3, 5, 9], {"fixed": {"shape": 2.0}}, "all parameters but"),
     ],
 )
 def test_what_the_method_cannot_give(family, values, more, words):
