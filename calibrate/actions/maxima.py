@@ -126,7 +126,7 @@ def fit_maxima(
         The family is none of maxima, the sample cannot be fitted, or a declaration contradicts the sample.
     """
     names = (family,) if isinstance(family, str) else tuple(family)
-    _check_choice(names, method, shape, block_years)
+    _check_choice(names, shape, block_years)
     seen = observed(values)
     kept, missing, partial = _kept(seen, coverage, least_coverage)
     expected = seen.n if blocks_expected is None else blocks_expected
@@ -228,7 +228,7 @@ def _incomplete(found: Fit, partial: Array, where: str) -> list[Doubt]:
 # Pieces ------------------------------
 
 
-def _check_choice(names: tuple[str, ...], method: str, shape: float | None, block_years: float) -> None:
+def _check_choice(names: tuple[str, ...], shape: float | None, block_years: float) -> None:
     if not names:
         raise InputError("No family is named.")
     problems = [
