@@ -113,10 +113,14 @@ def _variable_row(name: str, variable: dict[str, Any]) -> list[str]:
     family = variable["family"]
     family = ", ".join(family) if isinstance(family, list) else family
     given = ", ".join(f"{k} = {v}" for k, v in variable["arguments"].items())
-    source = f"records {variable['records']}" if variable["records"] else given
+    source = (
+        ", ".join(filter(None, [f"records {variable['records']}", given])) if variable["records"] else given
+    )
     if (above := variable["exceedances"]) is not None:
         threshold = f"{numbers.significant(above['threshold'])} {_unit(above['unit'])}".rstrip()
         source += f", {numbers.count(above['events'], 'event')} above {threshold} in {numbers.years(above['years'])}"
+    if variable["pooled_shape"]:
+        source += f", shape pooled over {', '.join(variable['pooled_shape'])}"
     if variable["period"] is not None:
         source += f", for {numbers.years(variable['period'])}"
     return [name, family, source, _unit(variable["unit"]), str(variable["dimension"])]

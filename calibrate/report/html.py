@@ -12,6 +12,7 @@ from calibrate.report import (
     inputs,
     numbers,
     outcome,
+    pooled,
     return_figure,
     sample_figure,
     symbols,
@@ -140,6 +141,12 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             )
             for name, f in result.fitted.items()
             if f.lots is not None
+        },
+        "shapes": {name: pooled.shape_sentence(f) for name, f in result.fitted.items()},
+        "stations": {
+            name: pooled.station_table(f.stations)
+            for name, f in result.fitted.items()
+            if f.stations is not None
         },
         "return_levels": {
             name: evidence.return_level_table(levels) for name, levels in result.return_levels.items()

@@ -34,8 +34,8 @@ def record_table(result: Result) -> Table:
     samples = result.study.records
     users: dict[str, list[str]] = {name: [] for name in samples}
     for variable in result.study.variables.values():
-        if variable.records is not None:
-            users[variable.records].append(variable.name)
+        for name in dict.fromkeys(filter(None, (variable.records, *variable.pooled_shape))):
+            users[name].append(variable.name)
     return Table(
         (
             Column("records", list(samples)),
@@ -127,6 +127,10 @@ def _definition(result: Result, variable: VariableResult) -> Html | str:
     parts: list[str] = []
     if given.records is not None:
         parts.append(symbols.escaped(f"fit to records {given.records}"))
+        kept = [f"{name} = {given.texts[name]} given" for name in given.arguments]
+        if given.pooled_shape:
+            kept = [f"shape pooled over {len(given.pooled_shape)} stations"]
+        parts += [symbols.escaped(text) for text in kept]
     for argument, expression in given.arguments.items() if given.records is None else ():
         text = given.texts.get(argument, expression.text)
         shown = symbols.formula(expression) if expression.names else symbols.escaped(text)

@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from calibrate.actions.return_levels import ReturnLevels
     from calibrate.factors import FactorSet
     from calibrate.study.exceedances import ExceedanceModel
+    from calibrate.study.fits import FittedVariable
     from calibrate.study.result import Result, VariableResult
 
 FORMAT = "calibrate-result/1"
@@ -87,6 +88,20 @@ def _levels(levels: ReturnLevels, unit: str) -> dict[str, Any]:
         "confidence": levels.confidence,
         "method": levels.method,
     }
+
+
+def _pooled_shape(fitted: FittedVariable | None) -> dict[str, Any]:
+    if fitted is None or fitted.stations is None:
+        return {}
+    found = fitted.stations.found
+    shape = {
+        "records": list(fitted.stations.records),
+        "shape": found.shape,
+        "standard_error": _number(found.standard_error),
+        "interval": [_number(v) for v in found.interval],
+        "p_value": _number(found.p_value),
+    }
+    return {"pooled_shape": shape}
 
 
 def _summary(result: Result, chosen: FactorSet) -> dict[str, Any]:
@@ -173,7 +188,8 @@ def result_dict(result: Result) -> dict[str, Any]:
             for p in result.pedigree
         ],
         "variables": {
-            name: _variable(v, result.exceedances.get(name)) for name, v in result.variables.items()
+            name: {**_variable(v, result.exceedances.get(name)), **_pooled_shape(result.fitted.get(name))}
+            for name, v in result.variables.items()
         },
         "factors": {
             factor.name: {

@@ -22,6 +22,7 @@ from calibrate.study.exceedances import ExceedanceModel, exceedance_model
 from calibrate.study.family_doubts import choice_doubts, rival_doubts
 from calibrate.study.maxima import BlockMaxima, block_maxima
 from calibrate.study.model import Study, Variable
+from calibrate.study.pooled import PooledStations, Pools, of_one_station, pooled_stations
 
 WORTH_TESTING = 10.0
 """Candidates farther than this from the smallest AICc are out of the question without a test."""
@@ -61,6 +62,8 @@ class FittedVariable:
     """Failure modes fitted as competing risks, where the records name several."""
     maxima: BlockMaxima | None = None
     """Return levels, where the variable is an action with a period."""
+    stations: PooledStations | None = None
+    """The records that share its shape, where it is pooled."""
 
     @property
     def family(self) -> str:
@@ -94,12 +97,15 @@ def fit_variables(study: Study) -> dict[str, RecordModel]:
     """
     problems = ProblemList(study.shown)
     fitted: dict[str, RecordModel] = {}
+    pools: Pools = {}
     for name, variable in study.variables.items():
         if variable.records is None:
             continue
         try:
-            model = _fit if variable.exceedances is None else exceedance_model
-            fitted[name] = model(study, variable)
+            if variable.exceedances is None:
+                fitted[name] = _fit(study, variable, pools)
+            else:
+                fitted[name] = exceedance_model(study, variable)
         except InputError as error:
             for problem in error.problems:
                 problems.add(f"[variables.{name}] {problem.message}", variable.line, problem.suggestion)
@@ -107,10 +113,13 @@ def fit_variables(study: Study) -> dict[str, RecordModel]:
     return fitted
 
 
-def _fit(study: Study, variable: Variable) -> FittedVariable:
+def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
     assert variable.records is not None
     sample = study.records[variable.records]
     fixed = _fixed_in_sample_unit(variable, sample.unit.factor)
+    stations = pooled_stations(study, variable, pools)
+    if stations is not None:
+        fixed["shape"] = stations.found.shape
     modes = _modes(sample)
     observations = sample.observations
     if variable.failure_mode is not None:
@@ -143,6 +152,8 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
         *normalised,
     )
     maxima, maxima_doubts = block_maxima(variable, chosen, study.blocks.get(variable.records))
+    if stations is not None:
+        maxima_doubts = (*stations.doubts, *of_one_station(maxima_doubts, chosen.n))
     doubts = (*doubts, *maxima_doubts)
     mode_fits = fit_modes(modes, chosen.family) if len(modes) > 1 else ()
     return FittedVariable(
@@ -156,6 +167,7 @@ def _fit(study: Study, variable: Variable) -> FittedVariable:
         fit_factor=sample.unit.factor,
         modes=mode_fits,
         maxima=maxima,
+        stations=stations,
     )
 
 

@@ -82,6 +82,9 @@ class Variable:
     stands_for: str = ""
     """``whole population``, ``lot mean`` or ``within a lot``; empty where lots play no part."""
     lot: str | None = None
+    pooled_shape: tuple[str, ...] = ()
+    """Records whose block maxima share one shape, the variable's own among them; empty where it has a shape of its
+    own."""
     predictive: bool = False
     """Whether the variable carries the uncertainty of its estimated parameters."""
     role: str = ""

@@ -11,7 +11,8 @@ from calibrate.study.model import Study
 
 def screen_records(study: Study) -> dict[str, Screening]:
     """Screen every sample that a variable uses, by name of the records."""
-    used = {v.records: v.role for v in study.variables.values() if v.records is not None}
+    used = {name: v.role for v in study.variables.values() for name in v.pooled_shape}
+    used |= {v.records: v.role for v in study.variables.values() if v.records is not None}
     return {
         name: screen_sample(
             sample, study.declared.get(name), resistance=used[name] == "resistance", seed=study.seed

@@ -90,6 +90,7 @@ def _variable(study: Study, variable: Variable) -> dict[str, Any]:
         "records": variable.records,
         "method": variable.method if variable.records is not None else None,
         "arguments": dict(variable.texts),
+        "pooled_shape": list(variable.pooled_shape),
         "period": variable.period,
         "description": variable.description,
         "source": variable.source,

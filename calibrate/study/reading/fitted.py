@@ -11,6 +11,7 @@ from calibrate.fitting.registry import model_of
 from calibrate.fitting.settings import settle
 from calibrate.records import Sample
 from calibrate.study.reading.names import MODELS
+from calibrate.study.reading.pooled import check_pooled
 from calibrate.study.reading.schema import VariableEntry
 from calibrate.study.reading.subject import Model, Subject, constants_only, defaults_fit, listed
 from calibrate.study.reading.values import Value, value_dimension
@@ -23,6 +24,7 @@ def fitted_model(
     families: list[Family],
     values: Mapping[str, Value],
     unit: Unit | None,
+    method: str,
 ) -> Model | None:
     """Check a variable that names records; None with problems.
 
@@ -34,6 +36,8 @@ def fitted_model(
         Arguments beside ``records``.  Only what moments leave open (thresholds,
         bounds, the shape of ``gev``, the freedom of ``student_t``) may stand
         there, and the fit keeps it as it is.
+    method : str
+        Estimator.
     """
     if not _only_kept(subject, families, values):
         return None
@@ -47,6 +51,8 @@ def fitted_model(
             f"{dimension.describe()}.",
             "unit",
         )
+        return None
+    if content.pooled_shape and not check_pooled(subject, content, values, method, sample):
         return None
     arguments: dict[str, Expression] = {}
     for key, value in values.items():

@@ -175,6 +175,7 @@ class VariableEntry(Section):
     records: Text | None = None
     method: Any = None
     estimate: Annotated[list[str], BeforeValidator(_names)] = []
+    pooled_shape: Annotated[list[str], BeforeValidator(_names)] = []
     stands_for: Literal["whole population", "lot mean", "within a lot"] | None = None
     lot: Text | None = None
     predictive: bool = False

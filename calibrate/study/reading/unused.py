@@ -44,7 +44,7 @@ def note_unused(
         if name.kind in _SECTIONS and name.name not in names.used:
             section, what = _SECTIONS[name.kind]
             _doubt(reading, name.kind, f"{section}.{name.name}", f"{what} '{name.name}'")
-    fitted = {v.records for v in variables.values() if v is not None}
+    fitted = {name for v in variables.values() if v is not None for name in (v.records, *v.pooled_shape)}
     for name_of_records in records:
         if name_of_records not in fitted:
             _doubt(reading, "records", f"records.{name_of_records}", f"The records '{name_of_records}'")

@@ -51,7 +51,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     families = _families(subject, content)
     unit = read_unit(reading, content.unit, subject.place("unit"))
     if content.records is None:
-        for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode"):
+        for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode", "pooled_shape"):
             if getattr(content, key):
                 subject.problem("says how to fit, but the variable has no records.", key)
     if content.exceedances is not None or "exceedances" in entry.dropped:
@@ -70,7 +70,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     if unit_is_faulty or values is None or families is None or entry.dropped - _HARMLESS:
         return None
     if content.records is not None:
-        model = fitted_model(subject, content, families, values, unit)
+        model = fitted_model(subject, content, families, values, unit, method.name)
     else:
         model = given_model(subject, families[0], values, unit)
     if model is None:
@@ -187,4 +187,5 @@ def _variable(
         source=content.source.strip(),
         grade=content.grade or "",
         estimate=tuple(content.estimate),
+        pooled_shape=tuple(dict.fromkeys(content.pooled_shape)),
     )
