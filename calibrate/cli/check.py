@@ -60,6 +60,12 @@ def _print(summary: dict[str, Any], shown: str) -> None:
         console.heading("Basic variables")
         rows = [_variable_row(name, v) for name, v in summary["variables"].items()]
         console.table(["name", "family", "from", "unit", "dimension"], rows, [False] * 5)
+    for name, table in summary["sites"].items():
+        source = f", from {table['file']}" if table["file"] else ""
+        console.heading(f"Classes of sites.{name} ({len(table['classes'])}{source})")
+        console.table(
+            ["class", "share"], [[c, numbers.share(w)] for c, w in table["classes"].items()], [False, True]
+        )
     _print_situations(summary)
     console.heading("Rules")
     for name, rule in summary["rules"].items():
@@ -119,6 +125,8 @@ def _variable_row(name: str, variable: dict[str, Any]) -> list[str]:
     if (above := variable["exceedances"]) is not None:
         threshold = f"{numbers.significant(above['threshold'])} {_unit(above['unit'])}".rstrip()
         source += f", {numbers.count(above['events'], 'event')} above {threshold} in {numbers.years(above['years'])}"
+    if variable["sites"]:
+        source += f", by class of sites.{variable['sites']}"
     if variable["pooled_shape"]:
         source += f", shape pooled over {', '.join(variable['pooled_shape'])}"
     if variable["period"] is not None:

@@ -56,7 +56,7 @@ def run(
 
 def _summary(result: Result, directory: Path) -> None:
     from calibrate.cli.app import CAUTION
-    from calibrate.report import numbers, outcome
+    from calibrate.report import numbers, outcome, sites
 
     study = result.study
     console.line(f"{study.title}  ({study.shown})")
@@ -82,6 +82,10 @@ def _summary(result: Result, directory: Path) -> None:
             f"Size {change.size} of {change.rule}, proposed over present: {numbers.change(change.mean)} on average, "
             f"{numbers.change(float(change.ratio.min()))} to {numbers.change(float(change.ratio.max()))}."
         )
+    by_site = sites.site_beta_table(result)
+    if by_site is not None:
+        console.heading("By class of site, with proposed factors")
+        console.report_table(by_site)
     periods = outcome.period_table(result)
     if periods is not None:
         console.heading("The same with proposed factors for other periods")

@@ -44,6 +44,7 @@ def write_result(result: Result, directory: Path, *, force: bool = False) -> Non
 def input_files(study: Study) -> list[Path]:
     """Return the files that a study was read from, which no result may replace."""
     names = [s.file for s in study.records.values()] + ([study.table] if study.table else [])
+    names += [t.file for t in study.sites.values() if t.file is not None]
     return [study.path, *(study.path.parent / name for name in names)]
 
 

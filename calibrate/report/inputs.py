@@ -138,7 +138,8 @@ def _definition(result: Result, variable: VariableResult) -> Html | str:
     for what, weakest in (("size ratio", given.size_ratio), ("stress profile", given.stress_profile)):
         if weakest is not None:
             parts.append(f"{what} = {symbols.formula(weakest)}")
-    return Html(", ".join(parts))
+    over = f", by class of sites.{symbols.escaped(given.sites)}" if given.sites is not None else ""
+    return Html(", ".join(parts) + over)
 
 
 def quantity_table(result: Result) -> Table:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from calibrate.actions.accompanying import accompanying_part
 from calibrate.factors import Calibration, RuleEvaluation, RuleModel
 from calibrate.situations import BasicVariable
-from calibrate.study.assemble import rule_models, values_at
+from calibrate.study.assemble import values_at
 from calibrate.study.model import Study
 
 if TYPE_CHECKING:
@@ -24,7 +24,10 @@ COLUMNS = ("rule", "accompanying", "leading", "intervals", "psi_maximum", "psi_i
 
 
 def accompanying_table(
-    study: Study, variables: Mapping[str, BasicVariable], calibration: Calibration
+    study: Study,
+    variables: Mapping[str, BasicVariable],
+    models: Sequence[RuleModel],
+    calibration: Calibration,
 ) -> pd.DataFrame | None:
     """Return psi of every accompanying action by three rules, one row per rule and pair of actions; None without any.
 
@@ -39,7 +42,6 @@ def accompanying_table(
         return None
     rows: list[tuple[Any, ...]] = []
     proposed = calibration.proposed
-    models = rule_models(study, variables)
     for model, found in zip(models, proposed.evaluation.per_rule, strict=True):
         values = values_at(model, found, proposed.factors)
         if not model.alternatives:

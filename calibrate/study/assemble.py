@@ -14,6 +14,7 @@ from calibrate.factors import Alternative, RuleEvaluation, RuleModel
 from calibrate.situations import BasicVariable
 from calibrate.study.fits import RecordModel
 from calibrate.study.model import Rule, Study, Variable
+from calibrate.study.sites import site_model
 
 
 def basic_variables(
@@ -21,7 +22,16 @@ def basic_variables(
 ) -> dict[str, BasicVariable]:
     """Return each variable as a model over design situations, in SI units, for the reference or another period."""
     years = study.reference_period if period is None else period
-    return {name: _basic_variable(years, v, fitted.get(name)) for name, v in study.variables.items()}
+    return {
+        name: _basic_variable(years, v, fitted.get(name)) if v.sites is None else _over_sites(study, v, years)
+        for name, v in study.variables.items()
+    }
+
+
+def _over_sites(study: Study, variable: Variable, years: float) -> BasicVariable:
+    """Return the action at a site drawn at random, converted class by class before it was mixed."""
+    mixed = site_model(study, variable, years).average
+    return BasicVariable(variable.name, variable.families[0], {}, 1.0, mixed)
 
 
 def _basic_variable(years: float, variable: Variable, fit: RecordModel | None) -> BasicVariable:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +16,7 @@ from calibrate.errors import Doubt, InputError
 from calibrate.factors import Calibration, RuleEvaluation, RuleModel
 from calibrate.reliability import FormSettings, form
 from calibrate.situations import BasicVariable
-from calibrate.study.assemble import rule_models, values_at
+from calibrate.study.assemble import values_at
 from calibrate.study.model import Study
 
 Array = NDArray[np.float64]
@@ -34,7 +34,11 @@ class ExactCombination:
 
 
 def exact_combination(
-    study: Study, variables: Mapping[str, BasicVariable], calibration: Calibration, workers: int = 1
+    study: Study,
+    variables: Mapping[str, BasicVariable],
+    models: Sequence[RuleModel],
+    calibration: Calibration,
+    workers: int = 1,
 ) -> ExactCombination | None:
     """Return beta by the exact distribution of the maximum of the combined actions; None without any.
 
@@ -43,7 +47,6 @@ def exact_combination(
     if not study.combination:
         return None
     betas, doubts = [], []
-    models = rule_models(study, variables)
     proposed = calibration.proposed
     for model, e in zip(models, proposed.evaluation.per_rule, strict=True):
         try:

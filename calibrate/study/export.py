@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from calibrate.study.exceedances import ExceedanceModel
     from calibrate.study.fits import FittedVariable
     from calibrate.study.result import Result, VariableResult
+    from calibrate.study.sites import SiteBeta
 
 FORMAT = "calibrate-result/1"
 
@@ -130,6 +131,44 @@ def _smallest(result: Result, beta: NDArray[np.float64]) -> float | None:
     return _number(float(beta[there].min())) if there.any() else None
 
 
+def _sites(result: Result) -> dict[str, Any]:
+    """Return beta by class of site with the proposed factors; empty without an action over sites."""
+    found = result.site_beta
+    if found is None:
+        return {}
+    reliability = found.reliability
+
+    def figures(beta: NDArray[np.float64]) -> dict[str, Any]:
+        return {"mean": _weighted(result, beta), "min": _smallest(result, beta)}
+
+    content = {
+        "variable": found.variable,
+        "file": found.table.file,
+        "classes": [
+            {"name": label, "weight": float(weight), "beta": figures(beta)}
+            for label, weight, beta in zip(
+                found.table.labels, found.table.weights, reliability.by_site, strict=True
+            )
+        ],
+        "average": figures(reliability.average),
+        "worst": {**figures(reliability.worst), "class": _worst_class(result, found)},
+        "mixture": figures(found.mixture),
+    }
+    if found.table.file is not None:
+        content["sha256"] = found.table.sha256
+    return {found.table.name: content}
+
+
+def _worst_class(result: Result, found: SiteBeta) -> str | None:
+    """Return the class in which the smallest beta of all occurs."""
+    there = found.uses & np.isfinite(found.reliability.worst)
+    there &= result.situations["weight"].to_numpy(float) > 0.0
+    if not there.any():
+        return None
+    row = int(np.argmin(np.where(there, found.reliability.worst, np.inf)))
+    return found.table.labels[found.reliability.worst_site[row]]
+
+
 def result_dict(result: Result) -> dict[str, Any]:
     """Return the content of result.json: plain dictionaries, lists, numbers and None."""
     study, calibration = result.study, result.calibration
@@ -169,6 +208,7 @@ def result_dict(result: Result) -> dict[str, Any]:
             }
             for p in result.other_periods
         ],
+        "sites": _sites(result),
         "return_levels": {
             name: _levels(levels, result.study.records[result.study.variables[name].records or ""].unit.text)
             for name, levels in result.return_levels.items()
@@ -221,6 +261,8 @@ def table_files(result: Result) -> dict[str, bytes]:
         "factors.csv": result.factors.to_csv(index=False, lineterminator="\n"),
         "units.json": json.dumps(dict(result.units), indent=2, ensure_ascii=False) + "\n",
     }
+    if result.sites is not None:
+        texts["sites.csv"] = result.sites.to_csv(index=False, lineterminator="\n")
     if result.combinations is not None:
         texts["combinations.csv"] = result.combinations.to_csv(index=False, lineterminator="\n")
     if result.accompanying is not None:

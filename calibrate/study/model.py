@@ -6,6 +6,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
+import numpy as np
+from numpy.typing import NDArray
+
 from calibrate.errors import Doubt
 from calibrate.expressions import Comparison, Expression
 from calibrate.factors import Factor
@@ -102,10 +105,33 @@ class Variable:
     """Stress over its largest value along ``position`` from 0 to 1, of a Weibull strength."""
     upper_limit: float | None = None
     """Largest value that is physically possible, in SI units, where the study says so; it bounds no model."""
+    sites: str | None = None
+    """The site table by whose classes the model differs; ``arguments`` then use its columns."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
     exceedances: Exceedances | None = None
     """Where the variable is the maximum of its period from threshold exceedances."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SiteTable:
+    """Classes of sites, by which an action differs.
+
+    ``labels`` name the K classes, ``weights`` are their shares (sum 1, possibly zero). ``columns`` hold numbers in SI
+    units, shape (K,); ``texts`` are the columns of text, each with a note on what is no number in it. ``file`` is the
+    table as the study names it, None where it is written out.
+    """
+
+    name: str
+    labels: tuple[str, ...]
+    weights: NDArray[np.float64]
+    columns: Mapping[str, NDArray[np.float64]]
+    units: Mapping[str, Unit]
+    texts: Mapping[str, str] = field(default_factory=dict)
+    file: str | None = None
+    sha256: str = ""
+    description: str = ""
+    line: int | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -193,6 +219,8 @@ class Study:
     """The table of situations as the study names it."""
     combination: tuple[CombinedAction, ...] = ()
     """Variable actions that are combined; their models are those of one repetition."""
+    sites: Mapping[str, SiteTable] = field(default_factory=dict)
+    """Site tables by name."""
     blocks: Mapping[str, int] = field(default_factory=dict)
     """Blocks between begin and end of records of maxima, by name of the records, where stated."""
     other_periods: tuple[float, ...] = ()

@@ -21,6 +21,7 @@ from calibrate.study.exceedances import ExceedanceModel
 from calibrate.study.fits import FittedVariable
 from calibrate.study.model import Study
 from calibrate.study.other_periods import PeriodBeta
+from calibrate.study.sites import SiteBeta
 from calibrate.units import Unit
 
 if TYPE_CHECKING:
@@ -41,6 +42,8 @@ class VariableResult:
     the reference period; ``parameters`` are for ``parameters_period`` years,
     the reference period where the family is closed under maxima, else the
     period of the given model.
+    Of an action over sites, ``parameters`` are those of the classes and the
+    moments those of a site drawn at random.
     """
 
     name: str
@@ -90,6 +93,10 @@ class Result:
         Columns of combinations.csv: beta of each alternative of combined actions; None without any.
     accompanying : DataFrame or None
         Columns of accompanying.csv: psi of combined actions by design values; None without any.
+    sites : DataFrame or None
+        Columns of sites.csv: beta by class of site, on average and of the worst; None without an action over sites.
+    site_beta : SiteBeta or None
+        The same as arrays.
     calibration : Calibration
         Factor sets, objective, evaluations, diagnostics.
     required : DataFrame
@@ -113,6 +120,8 @@ class Result:
     other_periods: tuple[PeriodBeta, ...]
     combinations: pd.DataFrame | None
     accompanying: pd.DataFrame | None
+    sites: pd.DataFrame | None
+    site_beta: SiteBeta | None
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

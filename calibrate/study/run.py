@@ -5,14 +5,13 @@ from __future__ import annotations
 import dataclasses
 import datetime
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 
 import numpy as np
 
 from calibrate.errors import Doubt, InputError, Problem
-from calibrate.factors import Calibration, Response, calibrate_factors, make_penalty
+from calibrate.factors import Calibration, Response, RuleModel, calibrate_factors, make_penalty
 from calibrate.provenance import Provenance, versions
-from calibrate.situations import BasicVariable
 from calibrate.study.accompanying import accompanying_table
 from calibrate.study.assemble import basic_variables, rule_models
 from calibrate.study.bonds import implied_biases
@@ -26,9 +25,11 @@ from calibrate.study.model import Study
 from calibrate.study.other_periods import other_periods, period_doubts
 from calibrate.study.result import Result
 from calibrate.study.screening import screen_records
+from calibrate.study.sites import site_beta, site_doubts, site_table
 from calibrate.study.tables import (
     factor_table,
     required_table,
+    row_weights,
     situation_table,
     used_distributions,
     variable_results,
@@ -85,14 +86,16 @@ def run(
     fitted = fit_variables(study)
     screenings = screen_records(study)
     variables = basic_variables(study, fitted)
-    calibration = _calibrate(study, variables, workers, report)
+    models = rule_models(study, variables)
+    calibration = _calibrate(study, models, workers, report)
 
     report("Collecting results", 0.95)
     sets = (calibration.present, calibration.optimal, calibration.proposed)
     table, units = situation_table(study, calibration)
     biases, bias_doubts = implied_biases(study, used_distributions(study, calibration))
     periods = other_periods(study, fitted, calibration, workers)
-    exact = exact_combination(study, variables, calibration, workers)
+    exact = exact_combination(study, variables, models, calibration, workers)
+    by_site = site_beta(study, variables, models, calibration, workers)
     screening_doubts = [d for name, s in screenings.items() for d in s.doubts(f"records.{name}")]
     doubts = (
         *study.doubts,
@@ -102,6 +105,7 @@ def run(
         *period_doubts(study, periods),
         *doubts_of_combination(study, calibration),
         *(() if exact is None else exact.doubts),
+        *site_doubts(study, by_site, row_weights(study)),
         *calibration.doubts,
     )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
@@ -119,7 +123,9 @@ def run(
         pedigree=pedigree(study, calibration),
         other_periods=periods,
         combinations=combination_table(study, calibration, exact),
-        accompanying=accompanying_table(study, variables, calibration),
+        accompanying=accompanying_table(study, variables, models, calibration),
+        sites=site_table(study, by_site),
+        site_beta=by_site,
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,
@@ -130,10 +136,7 @@ def run(
     )
 
 
-def _calibrate(
-    study: Study, variables: Mapping[str, BasicVariable], workers: int, report: Progress
-) -> Calibration:
-    models = rule_models(study, variables)
+def _calibrate(study: Study, models: list[RuleModel], workers: int, report: Progress) -> Calibration:
     response = Response(models, study.factors, workers=workers)
     weight = np.concatenate([m.rule_weight * m.weight for m in models])
     try:

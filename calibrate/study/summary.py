@@ -59,6 +59,14 @@ def check_summary(study: Study) -> dict[str, Any]:
             for name, q in study.quantities.items()
         },
         "variables": {name: _variable(study, v) for name, v in study.variables.items()},
+        "sites": {
+            name: {
+                "file": t.file,
+                "classes": dict(zip(t.labels, t.weights.tolist(), strict=True)),
+                "columns": {c: _range(v, t.units[c]) for c, v in t.columns.items()},
+            }
+            for name, t in study.sites.items()
+        },
         "situations": _situations(study),
         "weights": _weights(study),
         "rules": {name: _rule(study, rule) for name, rule in study.rules.items()},
@@ -90,6 +98,7 @@ def _variable(study: Study, variable: Variable) -> dict[str, Any]:
         "records": variable.records,
         "method": variable.method if variable.records is not None else None,
         "arguments": dict(variable.texts),
+        "sites": variable.sites,
         "pooled_shape": list(variable.pooled_shape),
         "period": variable.period,
         "description": variable.description,

@@ -65,7 +65,7 @@ def situation_table(
         shown = values / unit.factor if unit is not None and values.dtype.kind == "f" else values
         columns[name] = np.tile(shown, repeat)
         units[name] = "" if unit is None else unit.text
-    columns["weight"] = _row_weights(study)
+    columns["weight"] = row_weights(study)
     units["weight"] = ""
     for kind in FACTOR_SETS:
         evaluation: Evaluation = getattr(calibration, kind).evaluation
@@ -97,7 +97,8 @@ def required_table(study: Study, calibration: Calibration) -> pd.DataFrame:
     )
 
 
-def _row_weights(study: Study) -> Array:
+def row_weights(study: Study) -> Array:
+    """Return the weight of every row of the table of situations, sum 1."""
     total = sum(r.weight for r in study.rules.values())
     return np.concatenate([study.situations.weight * (r.weight / total) for r in study.rules.values()])
 
@@ -155,9 +156,10 @@ def variable_results(
             continue
         unit, fit = variable.unit, fitted.get(name)
         shown = [_named(d).scaled(1.0 / unit.factor) for d in distributions]
-        # A mixture over uncertain parameters is shown with those of the fit; its moments are its own.
-        own = [_named_fit(d, fit, unit.factor) for d in shown]
-        converted = any(isinstance(d, Extreme) for d in shown)
+        # A mixture over uncertain parameters is shown with those of the fit, one over sites with those of the classes;
+        # its moments are its own.
+        own = [_named_fit(d, fit, unit.factor) if variable.sites is None else _by_class(d) for d in shown]
+        converted = any(isinstance(d, Extreme) for d in (*shown, *own))
         period = variable.period if converted else study.reference_period
         results[name] = VariableResult(
             name=name,
@@ -187,6 +189,11 @@ def _named_fit(shown: Distribution, fit: RecordModel | None, factor: float) -> D
         return shown
     assert fit.fit.distribution is not None
     return fit.fit.distribution.scaled(fit.fit_factor / factor)
+
+
+def _by_class(shown: Distribution) -> Distribution:
+    assert isinstance(shown, Mixture)
+    return _named(shown.components)
 
 
 def _distributions(study: Study, name: str, evaluation: Evaluation) -> list[Distribution]:

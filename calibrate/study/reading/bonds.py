@@ -162,6 +162,14 @@ def _characteristic(
             'Give the value, and say what it is: { value = "…", of = "…", is = "98 % fractile" }.',
         )
         return None
+    if "pooled_shape" in model or "shape" in model:
+        reading.problem(
+            f"names the variable '{of}', whose shape is given or pooled; a characteristic value would be computed with "
+            "a shape of its own.",
+            (*place, "characteristic_of"),
+            'Give the value, and say what it is: { value = "…", of = "…", is = "98 % fractile" }.',
+        )
+        return None
     shown = read_unit(reading, content.unit, (*place, "unit")) if content.unit is not None else sample.unit
     if shown is None:
         return None

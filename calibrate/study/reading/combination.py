@@ -35,6 +35,13 @@ def read_combination(
                 f"Remove it here, or correct the role of variables.{name}.",
             )
             continue
+        if variable.sites is not None:
+            reading.problem(
+                "is an action over sites, and a site keeps its class in all repetitions; it cannot be combined.",
+                place,
+                f"Remove it here, or give variables.{name} for one class.",
+            )
+            continue
         repetitions = _repetitions(reading, content.repetitions, variable, reference_period, place)
         if repetitions is not None:
             found.append(CombinedAction(name, repetitions, content.presence, content.duration))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 import numpy as np
@@ -10,12 +10,13 @@ from numpy.typing import NDArray
 
 from calibrate.distributions import Family
 from calibrate.errors import InputError
-from calibrate.study.reading.names import MODELS
 from calibrate.study.reading.rules import limit_state_names
 from calibrate.study.reading.situations import on_grid, report_not_finite
 from calibrate.study.reading.subject import Model, Subject, constants_only, defaults_fit, listed
 from calibrate.study.reading.values import Value, value_dimension
 from calibrate.units import DIMENSIONLESS, ONE, Dimension, Unit, si_unit
+
+Check = Callable[[Subject, Family, Mapping[str, Value]], None]
 
 MOMENTS = ("mean", "cov", "sd")
 # Whose unit is shown, the most telling first.
@@ -23,9 +24,16 @@ _SHOWN_FIRST = ("mean", "median", "location", "value", "scale", "sd", "lower", "
 
 
 def given_model(
-    subject: Subject, member: Family, values: Mapping[str, Value], unit: Unit | None
+    subject: Subject,
+    member: Family,
+    values: Mapping[str, Value],
+    unit: Unit | None,
+    check: Check | None = None,
 ) -> Model | None:
-    """Check a variable that is given by numbers and expressions; None with problems."""
+    """Check a variable that is given by numbers and expressions; None with problems.
+
+    ``check`` looks at the numbers themselves; by default in every design situation.
+    """
     if not _complete(subject, member, values):
         return None
     dimension = _dimension(subject, member, values, unit)
@@ -34,7 +42,7 @@ def given_model(
     shown = unit or _shown(values, dimension)
     if not defaults_fit(subject, member, values, dimension, ONE):
         return None
-    _check_values(subject, member, values)
+    (check or _check_values)(subject, member, values)
     return Model((member.name,), {k: v.expression for k, v in values.items()}, shown, dimension)
 
 
@@ -88,7 +96,7 @@ def _argument_dimensions(subject: Subject, key: str, value: Value) -> list[Dimen
     names, drafts = subject.around.names, subject.around.drafts.values()
     sizes = _sizes_in(subject, value)
     if not sizes:
-        dimension = value_dimension(names, value, subject.place(key), MODELS)
+        dimension = value_dimension(names, value, subject.place(key), subject.around.use)
         return None if dimension is None else [dimension]
     users = [d for d in drafts if subject.name in limit_state_names(d)]
     dimensions: list[Dimension] = []
@@ -101,7 +109,7 @@ def _argument_dimensions(subject: Subject, key: str, value: Value) -> list[Dimen
                 suggestion="Define a variable for each rule.",
             )
             return None
-        dimension = value_dimension(names, value, subject.place(key), MODELS, draft.name)
+        dimension = value_dimension(names, value, subject.place(key), subject.around.use, draft.name)
         if dimension is None:
             return None
         dimensions.append(dimension)

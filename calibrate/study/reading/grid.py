@@ -63,7 +63,7 @@ def _from_table(
         shown = ", ".join(f"'{k}'" for k in given) or "none of its keys"
         reading.problem(f"does not describe an axis: {shown} given.", place, _FORMS)
         return None
-    numbers = _in_one_unit(reading, [table.from_, table.to], unit, [(*place, "from"), (*place, "to")])
+    numbers = in_one_unit(reading, [table.from_, table.to], unit, [(*place, "from"), (*place, "to")])
     if numbers is None:
         return None
     (first, last), shown_unit = numbers
@@ -117,7 +117,7 @@ def _by_step(
     reading: Reading, first: Decimal, last: Decimal, raw: float | str | None, unit: Unit, place: Place
 ) -> list[Decimal] | None:
     assert raw is not None
-    numbers = _in_one_unit(reading, [raw], unit, [(*place, "step")])
+    numbers = in_one_unit(reading, [raw], unit, [(*place, "step")])
     if numbers is None:
         return None
     step = numbers[0][0]
@@ -155,14 +155,14 @@ def _listed(reading: Reading, name: str, raw: Sequence[Any], unit: Unit | None, 
     typed = [read_plain(reading, "value", v, (*place, i)) for i, v in enumerate(raw)]
     if any(v is None for v in typed):
         return None
-    numbers = _in_one_unit(reading, typed, unit, [(*place, i) for i in range(len(typed))])
+    numbers = in_one_unit(reading, typed, unit, [(*place, i) for i in range(len(typed))])
     if numbers is None:
         return None
     values, shown_unit = numbers
     return _axis(reading, name, values, shown_unit)
 
 
-def _in_one_unit(
+def in_one_unit(
     reading: Reading, raw: Sequence[Any], unit: Unit | None, places: Sequence[Place]
 ) -> tuple[list[Decimal], Unit] | None:
     """Return numbers in the given unit, else in the first unit that was typed; None with problems."""

@@ -27,6 +27,8 @@ _KINDS = {
     "variable": ("a basic variable", "basic variables"),
     "factor": ("a factor", "factors"),
     "size": ("the size of a rule", "sizes of rules"),
+    "site column": ("a column of a site table", "columns of a site table"),
+    "site label": ("a column of text of a site table", "columns of text of a site table"),
 }
 _SITUATION = frozenset({"quantity", "derived", "axis", "column"})
 
@@ -77,6 +79,21 @@ MODELS = Use(
         "label": _LABELS,
     },
 )
+_SITES_ALONE = (
+    "The classes of sites are the same in every design situation; write the scale of the situation into the limit "
+    "state."
+)
+OVER_SITES = Use(
+    "moments and parameters of a variable over sites",
+    frozenset({"quantity", "site column"}),
+    {
+        **dict.fromkeys(("axis", "column", "derived", "size"), _SITES_ALONE),
+        "variable": "Basic variables are combined in limit states.",
+        "factor": _FACTORS_WHERE,
+        "label": _LABELS,
+        "site label": _LABELS,
+    },
+)
 CHECKS = Use(
     "design checks",
     _SITUATION | {"factor", "size"},
@@ -116,7 +133,8 @@ class NameSpace:
     every name that some expression uses, ``refused`` names that were reported
     and about which nothing more should be said.  ``incomplete``
     says that some names could not be read (a table that is missing, say), so
-    that an unknown name proves nothing.
+    that an unknown name proves nothing.  ``elsewhere`` are names that count in
+    some other place only, with that place.
     """
 
     reading: Reading
@@ -125,6 +143,7 @@ class NameSpace:
     used: set[str] = field(default_factory=set)
     refused: set[str] = field(default_factory=set)
     incomplete: bool = False
+    elsewhere: dict[str, str] = field(default_factory=dict)
 
     def declare(self, name: str, kind: str, place: Place) -> bool:
         """Enter a name; report it if it is no name or taken, and return whether it was entered."""
@@ -222,11 +241,17 @@ class NameSpace:
         if kind is not None:
             one, all_of_them = _KINDS[kind]
             owners = [f"rules.{r}" for r, s in self.sizes.items() if s.name == name]
-            of = f" ({', '.join(owners)})" if kind == "size" else ""
+            of = f" ({', '.join(owners)})" if owners and kind == "size" else ""
             self.reading.raw_problem(
                 f"{self.reading.dotted(place)}: {use.who} may not use {all_of_them}; '{name}' is {one}{of}.",
                 place,
                 " ".join(filter(None, (use.advice.get(kind), found.note if found else ""))) or None,
+            )
+        elif name in self.elsewhere:
+            self.reading.raw_problem(
+                f"{self.reading.dotted(place)}: '{name}' is a column of {self.elsewhere[name]}, which only a variable "
+                f"over these sites may use.",
+                place,
             )
         elif not self.incomplete:
             known = self.of_kind(*use.kinds)

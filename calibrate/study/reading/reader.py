@@ -23,6 +23,7 @@ from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
 from calibrate.study.reading.periods import check_target_period
 from calibrate.study.reading.rules import check_designs, finish_rules, parse_rules
+from calibrate.study.reading.sites import read_sites
 from calibrate.study.reading.situations import finish_situations, read_grid, read_weight
 from calibrate.study.reading.subject import Surroundings
 from calibrate.study.reading.unused import note_unused
@@ -87,12 +88,20 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         ),
         bonds.found,
     )
+    sites = read_sites(reading, names, sections["sites"])
     derived = read_definitions(reading, names, grid.content.derived, _DERIVED, DERIVED)
     weight = read_weight(reading, names, grid)
     situations = finish_situations(reading, grid, quantities, derived, weight)
     check_designs(reading, names, drafts)
     around = Surroundings(
-        reading, names, records, quantities, {} if situations is None else situations.derived, grid, drafts
+        reading,
+        names,
+        records,
+        quantities,
+        {} if situations is None else situations.derived,
+        grid,
+        drafts,
+        sites,
     )
     variables = read_variables(around, variables_raw)
     blocks = read_blocks(sections["records"], records)
@@ -105,7 +114,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)
     if not problems:
-        note_unused(reading, names, factors, variables, records)
+        note_unused(reading, names, factors, variables, records, sites)
     problems.stop_if_any()
 
     assert head is not None
@@ -142,6 +151,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         axis_descriptions=grid.descriptions,
         doubts=tuple(reading.doubts),
         combination=combination,
+        sites={k: v for k, v in sites.items() if v is not None},
         blocks=blocks,
         other_periods=tuple(dict.fromkeys(head.other_periods)),
         independence=head.independence,

@@ -176,6 +176,7 @@ class VariableEntry(Section):
     method: Any = None
     estimate: Annotated[list[str], BeforeValidator(_names)] = []
     pooled_shape: Annotated[list[str], BeforeValidator(_names)] = []
+    sites: Text | None = None
     stands_for: Literal["whole population", "lot mean", "within a lot"] | None = None
     lot: Text | None = None
     predictive: bool = False
@@ -202,6 +203,18 @@ class ExceedancesTable(Section):
     threshold: Value
     years: Positive
     run_length: Value | None = None
+
+
+class SitesEntry(Section):
+    """``[sites.NAME]``."""
+
+    table: Text | None = None
+    sheet: Text | None = None
+    columns: dict[str, list[Any]] | None = None
+    label: Text | None = None
+    weight: Text | None = None
+    units: dict[str, str] = {}
+    description: str = ""
 
 
 class MethodTable(Section):
@@ -307,6 +320,7 @@ class TopLevel(Section):
     target: Any = None
     records: Any = None
     quantities: Any = None
+    sites: Any = None
     variables: Any = None
     situations: Any = None
     rules: Any = None

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,9 +12,9 @@ from calibrate.distributions import Family
 from calibrate.errors import InputError
 from calibrate.expressions import Expression
 from calibrate.records import Sample
-from calibrate.study.model import Quantity
+from calibrate.study.model import Quantity, SiteTable
 from calibrate.study.reading.context import Reading
-from calibrate.study.reading.names import NameSpace
+from calibrate.study.reading.names import MODELS, NameSpace, Use
 from calibrate.study.reading.rules import Draft
 from calibrate.study.reading.situations import Grid
 from calibrate.study.reading.toml_lines import Place
@@ -33,6 +33,9 @@ class Surroundings:
     derived: Mapping[str, NDArray[np.float64]]
     grid: Grid
     drafts: Mapping[str, Draft]
+    sites: Mapping[str, SiteTable | None] = field(default_factory=dict)
+    use: Use = MODELS
+    """What moments and parameters may use."""
 
     @property
     def constants(self) -> dict[str, float]:

@@ -24,6 +24,7 @@ def note_unused(
     factors: tuple[Factor, ...],
     variables: Mapping[str, Variable | None],
     records: Mapping[str, Sample | None],
+    sites: Mapping[str, object],
 ) -> None:
     """Refuse free factors that nothing uses; record a doubt for everything else that is not used.
 
@@ -48,6 +49,10 @@ def note_unused(
     for name_of_records in records:
         if name_of_records not in fitted:
             _doubt(reading, "records", f"records.{name_of_records}", f"The records '{name_of_records}'")
+    over = {v.sites for v in variables.values() if v is not None}
+    for name_of_sites in sites:
+        if name_of_sites not in over:
+            _doubt(reading, "sites", f"sites.{name_of_sites}", f"The site table '{name_of_sites}'")
 
 
 def _doubt(reading: Reading, kind: str, where: str, what: str) -> None:

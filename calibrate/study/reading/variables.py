@@ -17,6 +17,7 @@ from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
 from calibrate.study.reading.limits import read_upper_limit
 from calibrate.study.reading.periods import check_conversion, read_size_ratio
+from calibrate.study.reading.site_variables import over_sites_allowed, report_second, site_model
 from calibrate.study.reading.stress import read_stress_profile
 from calibrate.study.reading.subject import Model, Subject, Surroundings
 from calibrate.study.reading.values import Value, read_unit, read_value
@@ -35,6 +36,7 @@ def argument_names() -> tuple[str, ...]:
 
 def read_variables(around: Surroundings, raw: Mapping[str, Any]) -> dict[str, Variable | None]:
     """Read every variable; None stands for one that exists but is faulty (reported)."""
+    report_second(around.reading, raw)
     return {name: _read(Subject(name, around), entry) for name, entry in raw.items()}
 
 
@@ -69,7 +71,12 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     unit_is_faulty = content.unit is not None and unit is None
     if unit_is_faulty or values is None or families is None or entry.dropped - _HARMLESS:
         return None
-    if content.records is not None:
+    if content.sites is not None:
+        if not over_sites_allowed(subject, content):
+            return None
+        table = subject.around.sites[content.sites]
+        model = None if table is None else site_model(subject, table, families[0], values, unit)
+    elif content.records is not None:
         model = fitted_model(subject, content, families, values, unit, method.name)
     else:
         model = given_model(subject, families[0], values, unit)
@@ -187,5 +194,6 @@ def _variable(
         source=content.source.strip(),
         grade=content.grade or "",
         estimate=tuple(content.estimate),
+        sites=content.sites,
         pooled_shape=tuple(dict.fromkeys(content.pooled_shape)),
     )
