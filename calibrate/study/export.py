@@ -166,7 +166,7 @@ def _worst_class(result: Result, found: SiteBeta) -> str | None:
     if not there.any():
         return None
     row = int(np.argmin(np.where(there, found.reliability.worst, np.inf)))
-    return found.table.labels[found.reliability.worst_site[row]]
+    return found.table.labels[int(found.reliability.worst_site[row])]
 
 
 def result_dict(result: Result) -> dict[str, Any]:

@@ -190,7 +190,7 @@ def site_doubts(study: Study, found: SiteBeta | None, weight: Array) -> list[Dou
             "FORM with the mixture of all sites, for which the factors were calibrated, and the total probability "
             f"over the sites differ by up to {apart[k]:.2f} in β ({found.mixture[k]:.2f} against "
             f"{found.reliability.average[k]:.2f}), by more than {FAR_FROM_AVERAGE:g} in {100.0 * share:.0f} % of the "
-            "situations by weight: the limit state is curved where classes change over. The second is right."
+            "situations by weight. FORM looks at one design point, and each class may have its own: trust the second."
         )
         doubts.append(Doubt("sites-mixed-approximately", message, where))
     for label, share, beta in zip(

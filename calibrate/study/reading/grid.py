@@ -163,9 +163,12 @@ def _listed(reading: Reading, name: str, raw: Sequence[Any], unit: Unit | None, 
 
 
 def in_one_unit(
-    reading: Reading, raw: Sequence[Any], unit: Unit | None, places: Sequence[Place]
+    reading: Reading, raw: Sequence[Any], unit: Unit | None, places: Sequence[Place], what: str = "axis"
 ) -> tuple[list[Decimal], Unit] | None:
-    """Return numbers in the given unit, else in the first unit that was typed; None with problems."""
+    """Return numbers in the given unit, else in the first unit that was typed; None with problems.
+
+    ``what`` they belong to is said in messages.
+    """
     found: list[Number] = []
     for text, where in zip(raw, places, strict=True):
         number = _number(reading, text, where)
@@ -179,7 +182,7 @@ def in_one_unit(
             # A bare number counts in the unit of the axis, if the axis states one; 0 is 0 in every unit.
             if unit is None and shown is not ONE and size != 0.0:
                 reading.problem(
-                    f"has no unit, but others of the axis have ('{shown.text}').",
+                    f"has no unit, but others of the {what} have ('{shown.text}').",
                     where,
                     "Give all of them a unit.",
                 )
@@ -187,7 +190,7 @@ def in_one_unit(
             values.append(Decimal(repr(size)))
         elif own.dimension != shown.dimension:
             reading.problem(
-                f"is {own.dimension.describe()}, the axis is {shown.dimension.describe()}.", where
+                f"is {own.dimension.describe()}, the {what} is {shown.dimension.describe()}.", where
             )
             return None
         elif own.factor == shown.factor:

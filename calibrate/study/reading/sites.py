@@ -162,7 +162,7 @@ def _written_out(reading: Reading, content: SitesEntry, place: Place) -> _Column
             found.texts[name] = [c if isinstance(c, str) else number_text(c) for c in cells]
             continue
         typed = [schema.read_plain(reading, "value", c, w) for c, w in zip(cells, where, strict=True)]
-        numbers = None if None in typed else in_one_unit(reading, typed, units.get(name), where)
+        numbers = None if None in typed else in_one_unit(reading, typed, units.get(name), where, "column")
         if numbers is not None:
             values, unit = numbers
             found.numbers[name] = np.array([float(v) for v in values], dtype=np.float64) * unit.factor
