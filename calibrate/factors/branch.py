@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from calibrate.distributions import Distribution
+from calibrate.factors.classes import nearest_over_classes
 from calibrate.factors.model import RuleModel
 from calibrate.reliability import ExpressionLimitState, Reliability, form
 from calibrate.situations import BasicVariable, Sizing
@@ -66,13 +67,16 @@ class Branch:
             self.variables[i].distribution(values) if d is None else d for i, d in enumerate(self.fixed)
         )
         needed = {n: values[n] for n in self.rule.limit_state.names if n not in self.names}
-        reliability = form(
-            ExpressionLimitState(self.rule.limit_state, self.names, needed),
-            distributions,
-            self.rule.n,
-            start=None if start is None else np.where(np.isfinite(start), start, 0.0),
-            workers=self.workers,
-        )
+        limit_state = ExpressionLimitState(self.rule.limit_state, self.names, needed)
+
+        def search(laws: tuple[Distribution, ...], begin: Array | None) -> Reliability:
+            begin = None if begin is None else np.where(np.isfinite(begin), begin, 0.0)
+            return form(limit_state, laws, self.rule.n, start=begin, workers=self.workers)
+
+        reliability = search(distributions, start)
+        for i, variable in enumerate(self.variables):
+            if variable.of_classes:
+                reliability = nearest_over_classes(search, distributions, i, reliability)
         jacobian = self._jacobian(values, sizing, distributions, reliability)
         return BranchResult(distributions, reliability, jacobian)
 

@@ -52,6 +52,8 @@ class BasicVariable:
     stress_profile : Expression, optional
         Stress over its largest value along ``position`` from 0 to 1, where the family is ``weibull``: only the
         equivalent share of the size counts. Free of the size and of situations.
+    of_classes : bool
+        Whether ``fitted`` is a mixture of classes of sites, each of which may have a design point of its own.
     """
 
     name: str
@@ -62,6 +64,7 @@ class BasicVariable:
     size_ratio: Expression | None = None
     presence: float = 1.0
     stress_profile: Expression | None = None
+    of_classes: bool = False
 
     def depends_on(self, name: str) -> bool:
         """Whether an argument contains the name."""

@@ -31,7 +31,7 @@ def basic_variables(
 def _over_sites(study: Study, variable: Variable, years: float) -> BasicVariable:
     """Return the action at a site drawn at random, converted class by class before it was mixed."""
     mixed = site_model(study, variable, years).average
-    return BasicVariable(variable.name, variable.families[0], {}, 1.0, mixed)
+    return BasicVariable(variable.name, variable.families[0], {}, 1.0, mixed, of_classes=True)
 
 
 def _basic_variable(years: float, variable: Variable, fit: RecordModel | None) -> BasicVariable:

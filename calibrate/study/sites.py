@@ -124,7 +124,7 @@ def site_beta(
     uses = np.repeat(np.isin(np.arange(len(models)), own), n)
     beta = np.tile(evaluation.beta, (len(area.weights), 1))
     for site in range(len(area.weights)):
-        at_site = dataclasses.replace(variables[over.name], fitted=area.site(site))
+        at_site = dataclasses.replace(variables[over.name], fitted=area.site(site), of_classes=False)
         response = Response([_with(models[k], at_site) for k in own], study.factors, workers)
         beta[site, uses] = response(gamma, start).beta
     found = reliability_over_sites(beta, area.weights)
@@ -190,7 +190,8 @@ def site_doubts(study: Study, found: SiteBeta | None, weight: Array) -> list[Dou
             "FORM with the mixture of all sites, for which the factors were calibrated, and the total probability "
             f"over the sites differ by up to {apart[k]:.2f} in β ({found.mixture[k]:.2f} against "
             f"{found.reliability.average[k]:.2f}), by more than {FAR_FROM_AVERAGE:g} in {100.0 * share:.0f} % of the "
-            "situations by weight. FORM looks at one design point, and each class may have its own: trust the second."
+            "situations by weight. FORM sees a plane at the nearest design point, while each class adds its failures: "
+            "the second is the better."
         )
         doubts.append(Doubt("sites-mixed-approximately", message, where))
     for label, share, beta in zip(
