@@ -82,14 +82,14 @@ def _summary(result: Result, directory: Path) -> None:
             f"Size {change.size} of {change.rule}, proposed over present: {numbers.change(change.mean)} on average, "
             f"{numbers.change(float(change.ratio.min()))} to {numbers.change(float(change.ratio.max()))}."
         )
-    by_site = sites.site_beta_table(result)
-    if by_site is not None:
-        console.heading("By class of site, with proposed factors")
-        console.report_table(by_site)
     periods = outcome.period_table(result)
     if periods is not None:
         console.heading("The same with proposed factors for other periods")
         console.report_table(periods)
+    by_site = sites.site_beta_table(result)
+    if by_site is not None:
+        console.heading("By class of site, with proposed factors")
+        console.report_table(by_site)
     if result.doubts:
         console.heading(f"Doubts ({len(result.doubts)})")
         console.listed([(f"{d.code}, {d.where}", d.message) for d in result.doubts])

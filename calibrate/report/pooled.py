@@ -17,25 +17,20 @@ if TYPE_CHECKING:
 def station_table(stations: PooledStations) -> Table:
     """Return size, own shape and its standard error of every station."""
     found = [stations.found.separate[name] for name in stations.records]
-    return Table(
-        (
-            Column("station", list(stations.records)),
-            Column("n", [f.n for f in found], kind="number"),
-            Column(
-                "own shape",
-                [f.parameters.get("shape") for f in found],
-                each(numbers.significant, 3),
-                "number",
-            ),
-            Column(
-                "standard error",
-                [f.standard_errors.get("shape") for f in found],
-                each(numbers.significant, 2),
-                "number",
-            ),
-            Column("", ["" if f.converged else f"no own fit: {f.reason}" for f in found]),
-        )
-    )
+    columns = [
+        Column("station", list(stations.records)),
+        Column("n", [f.n for f in found], kind="number"),
+        Column("own shape", [f.parameters.get("shape") for f in found], each(numbers.fixed, 3), "number"),
+        Column(
+            "standard error",
+            [f.standard_errors.get("shape") for f in found],
+            each(numbers.fixed, 3),
+            "number",
+        ),
+    ]
+    if not all(f.converged for f in found):
+        columns.append(Column("", ["" if f.converged else f"no own fit: {f.reason}" for f in found]))
+    return Table(tuple(columns))
 
 
 def shape_sentence(fitted: FittedVariable) -> str:
@@ -50,11 +45,11 @@ def shape_sentence(fitted: FittedVariable) -> str:
 
 def _pooled_sentence(stations: PooledStations) -> str:
     found, names = stations.found, stations.records
-    low, high = (numbers.significant(v, 3) if math.isfinite(v) else "not found" for v in found.interval)
-    error = numbers.significant(found.standard_error, 2) if math.isfinite(found.standard_error) else ""
+    low, high = (numbers.fixed(v, 3) if math.isfinite(v) else "not found" for v in found.interval)
+    error = numbers.fixed(found.standard_error, 3) if math.isfinite(found.standard_error) else ""
     text = (
         f"The shape is pooled over the block maxima of {', '.join(names[:-1])} and {names[-1]}, taken as independent "
-        f"of each other: {numbers.significant(found.shape, 4)}{f' ± {error}' if error else ''}, "
+        f"of each other: {numbers.fixed(found.shape, 3)}{f' ± {error}' if error else ''}, "
         f"{numbers.share(CONFIDENCE, 0)} interval {low} to {high} by profile likelihood. "
     )
     if math.isfinite(found.p_value):

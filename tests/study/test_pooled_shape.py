@@ -190,8 +190,10 @@ def test_the_report_shows_shape_test_and_stations(read, tmp_path):
     assert "The shape is pooled over the block maxima of north, mid and south" in page
     found = result.fitted["v"].stations.found
     assert f"p = {found.p_value:.2g}" in page
+    low, high = (f"{v:.3f}".replace("-", "−") for v in found.interval)
+    assert f"interval {low} to {high} by profile likelihood" in page
     assert "Stations whose block maxima share one shape" in page
-    own = f"{found.separate['south'].parameters['shape']:.3g}".replace("-", "−")
+    own = f"{found.separate['south'].parameters['shape']:.3f}".replace("-", "−")
     assert own in page.split("Stations whose block maxima")[1].split("</table>")[0]
     assert not [d for d in result.doubts if d.code == "unused-records"]
     assert set(result.screenings) == set(NAMES)
