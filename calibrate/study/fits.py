@@ -20,7 +20,7 @@ from calibrate.records import Sample
 from calibrate.records.screening import FailureMode, failure_modes
 from calibrate.study.exceedances import ExceedanceModel, exceedance_model
 from calibrate.study.family_doubts import choice_doubts, rival_doubts
-from calibrate.study.maxima import BlockMaxima, block_maxima
+from calibrate.study.maxima import BlockMaxima, block_maxima, observed_blocks
 from calibrate.study.model import Study, Variable
 from calibrate.study.pooled import PooledStations, Pools, of_one_station, pooled_stations
 
@@ -121,7 +121,8 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
     if stations is not None:
         fixed["shape"] = stations.found.shape
     modes = _modes(sample)
-    observations = sample.observations
+    blocks = observed_blocks(sample, study.blocks.get(variable.records))
+    observations = blocks.observations
     if variable.failure_mode is not None:
         observations = next(m.observations for m in modes if m.name == variable.failure_mode)
     comparison = compare(
@@ -151,7 +152,7 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
         *rival_doubts(variable, chosen),
         *normalised,
     )
-    maxima, maxima_doubts = block_maxima(variable, chosen, study.blocks.get(variable.records))
+    maxima, maxima_doubts = block_maxima(variable, chosen, blocks)
     if stations is not None:
         maxima_doubts = (*stations.doubts, *of_one_station(maxima_doubts, chosen.n))
     doubts = (*doubts, *maxima_doubts)

@@ -7,10 +7,12 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.actions.maxima import MaximaFit, fit_maxima
+from calibrate.actions.maxima import LEAST_COVERAGE, MaximaFit, fit_maxima
 from calibrate.actions.return_levels import YEARS, ReturnLevels, empirical_return_periods, return_levels
 from calibrate.errors import Doubt, InputError
 from calibrate.fitting import Fit
+from calibrate.records import Sample
+from calibrate.records.observations import Observations
 from calibrate.study.model import Variable
 
 FAMILIES = ("gumbel", "gev", "frechet", "lognormal")
@@ -34,8 +36,45 @@ class BlockMaxima:
     empirical: tuple[NDArray[np.float64], NDArray[np.float64]]
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class ObservedBlocks:
+    """The blocks of a record that count.
+
+    Attributes
+    ----------
+    observations : Observations
+        Of these blocks.
+    coverage : array or None
+        Part of each of them that was observed; None where nothing is said.
+    expected : int or None
+        Blocks between begin and end of the record; None where they are as many as have a maximum.
+    """
+
+    observations: Observations
+    coverage: NDArray[np.float64] | None
+    expected: int | None
+
+
+def observed_blocks(sample: Sample, declared: int | None) -> ObservedBlocks:
+    """Return the blocks of a sample that were observed long enough; those left out count as missing.
+
+    Raises
+    ------
+    InputError
+        No block was.
+    """
+    if sample.coverage is None:
+        return ObservedBlocks(sample.observations, None, declared)
+    enough = sample.coverage >= LEAST_COVERAGE
+    if not enough.any():
+        raise InputError(f"No block was observed for at least {100.0 * LEAST_COVERAGE:g} % of its length.")
+    return ObservedBlocks(
+        sample.observations.taken(enough), sample.coverage[enough], sample.n if declared is None else declared
+    )
+
+
 def block_maxima(
-    variable: Variable, fit: Fit, blocks: int | None
+    variable: Variable, fit: Fit, blocks: ObservedBlocks
 ) -> tuple[BlockMaxima | None, tuple[Doubt, ...]]:
     """Look at a fitted action with a period as maxima of blocks of that length.
 
@@ -44,8 +83,7 @@ def block_maxima(
     variable : Variable
     fit : Fit
         As chosen.
-    blocks : int or None
-        Blocks between begin and end of the record, those without a maximum included.
+    blocks : ObservedBlocks
 
     Raises
     ------
@@ -61,7 +99,8 @@ def block_maxima(
         method=fit.method,
         shape=shape,
         block_years=variable.period,
-        blocks_expected=blocks,
+        blocks_expected=blocks.expected,
+        coverage=blocks.coverage,
     )
     years = [t for t in YEARS if t > variable.period]
     levels = return_levels(maxima, years)

@@ -17,6 +17,9 @@ from calibrate.study.model import Study
 
 Array = NDArray[np.float64]
 
+OF_PERMANENT_ACTIONS = "normal"
+"""The family of permanent actions, which stay as they are for every period (common practice, no source)."""
+
 WHY = (
     "The first takes all failures of different intervals as independent; the second repeats only the actions that "
     "have a period and keeps resistance, model uncertainty and what is constant in time as they are, so that failures "
@@ -70,6 +73,7 @@ def period_doubts(study: Study, found: tuple[PeriodBeta, ...]) -> list[Doubt]:
         for name, variable in study.variables.items()
         if variable.role == "action"
         and name not in combined
+        and variable.families != (OF_PERMANENT_ACTIONS,)
         and (variable.period is None or not variable.converted)
     ]
     if not fixed:

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from calibrate.actions.maxima import FEW_BLOCKS
 from calibrate.actions.pooling import PooledShape, fit_pooled_shape
 from calibrate.errors import Doubt
+from calibrate.study.maxima import observed_blocks
 from calibrate.study.model import Study, Variable
 
 Pools = dict[tuple[str, ...], PooledShape]
@@ -49,7 +50,9 @@ def pooled_stations(study: Study, variable: Variable, pools: Pools) -> PooledSta
         return None
     names = tuple(name for name in study.records if name in variable.pooled_shape)
     if names not in pools:
-        pools[names] = fit_pooled_shape({name: study.records[name].observations for name in names})
+        pools[names] = fit_pooled_shape(
+            {name: observed_blocks(study.records[name], None).observations for name in names}
+        )
     found = pools[names]
     where = f"variables.{variable.name}"
     doubts = [Doubt(d.code, d.message, where) for d in found.doubts]

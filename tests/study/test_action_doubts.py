@@ -77,7 +77,7 @@ def test_an_annual_fractile_of_a_model_for_fifty_years_is_doubted(doubts):
     model = f'mean = "{mean:.8g} kPa"\nsd = "{0.125:.8g} kPa"\n'
     doubt = doubts(quantities=typed(level, "98 % fractile"), q=model)["fractile-of-another-period"]
     assert doubt.where == "quantities.q_k"
-    assert "in its model for 50 years the probability below this value is 36.4 %" in doubt.message
+    assert "in its model for 50 years the probability below this value is 36.417 %" in doubt.message
     assert "that fractile of the maximum of 1 year" in doubt.message
 
 

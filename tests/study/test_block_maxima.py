@@ -102,3 +102,36 @@ def test_the_report_shows_the_levels(study, tmp_path):
     page = (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
     assert "Return levels with 95 % intervals, in m" in page
     assert (tmp_path / "out" / "figures" / "return_levels_S.svg").exists()
+
+
+def covered(tmp_path, shares, records='coverage = "part"', period="period = 1"):
+    values = SEA.split()
+    rows = "".join(f"{v},{p}\n" for v, p in zip(values, shares, strict=True))
+    (tmp_path / "sea.csv").write_text("level,part\n" + rows, encoding="utf-8")
+    path = tmp_path / "study.toml"
+    text = STUDY.format(family="gumbel", records=records).replace("period = 1\nrole", f"{period}\nrole")
+    path.write_text(text, encoding="utf-8")
+    return calibrate.read_study(path)
+
+
+def test_blocks_that_were_observed_too_little_are_left_out_and_told(study, tmp_path):
+    """Five years at half of their length and ten at 0.9 of it: 60 of 65 count, as if those five were not there."""
+    shares = [0.5] * 5 + [0.9] * 10 + [1.0] * 50
+    result = calibrate.run(covered(tmp_path, shares))
+    without = calibrate.run(study("gumbel", values=" ".join(SEA.split()[5:])))
+    assert result.fitted["S"].fit.parameters == without.fitted["S"].fit.parameters
+    found = {d.code: d.message for d in result.doubts}
+    assert "5 of 65 blocks (7.69 %) have no maximum" in found["missing-blocks"]
+    assert "10 blocks were observed in part (90 % on average)" in found["incomplete-blocks"]
+
+
+def test_coverage_needs_the_length_of_a_block(tmp_path):
+    with pytest.raises(InputError, match=r"observed part of blocks, but variables\.S has no period"):
+        covered(tmp_path, [1.0] * 65, period="")
+
+
+def test_values_below_a_detection_limit_are_bounds(study):
+    plain, limited = study("gumbel"), study("gumbel", 'detection_limit = "3.7 m"')
+    below = sum(float(v) < 3.7 for v in SEA.split())
+    assert plain.records["sea"].observations.complete
+    assert limited.records["sea"].observations.n_exact == len(SEA.split()) - below

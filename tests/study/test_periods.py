@@ -123,6 +123,18 @@ def test_the_size_of_a_strength_is_weakest_link(study):
     assert (betas(large) < betas(plain)).all()
 
 
+def test_a_renewal_rate_is_the_period_between_renewals(study, tmp_path):
+    text, path = study(period=50).text, tmp_path / "renewed.toml"
+
+    def run(key):
+        path.write_text(text.replace("period = 1\nrole", f"{key}\nrole"), encoding="utf-8")
+        return betas(calibrate.run(calibrate.read_study(path)))
+
+    np.testing.assert_array_equal(run("renewal_rate = 52"), run(f"period = {1 / 52!r}"))
+    with pytest.raises(InputError, match="and so does period; state one"):
+        run("renewal_rate = 52\nperiod = 1")
+
+
 def test_uneven_stress_counts_by_its_equivalent_size(study):
     """A rectangular beam in even bending: 1/(2 (m + 1)) of its volume counts (W. Weibull 1939, from memory)."""
     profile = 'stress_profile = "2 * position - 1"\nsize_ratio = 20'

@@ -70,17 +70,28 @@ def exceedance_model(
 
 
 def check_blocks(
-    reading: Reading, variables: Mapping[str, Variable | None], blocks: Mapping[str, int]
+    reading: Reading,
+    variables: Mapping[str, Variable | None],
+    blocks: Mapping[str, int],
+    records: Mapping[str, Sample | None],
 ) -> None:
-    """Refuse records that are said to be block maxima while a variable takes their exceedances."""
+    """Refuse records that are said to be block maxima while a variable takes them for something else."""
     for name, variable in variables.items():
-        if variable is None or variable.exceedances is None or variable.records is None:
+        if variable is None or variable.records is None:
             continue
-        if variable.records in blocks:
+        place, sample = ("records", variable.records), records[variable.records]
+        covered = sample is not None and sample.coverage is not None
+        if variable.exceedances is not None and (variable.records in blocks or covered):
             reading.problem(
                 f"says that these are block maxima, but variables.{name} takes their exceedances of a threshold.",
-                ("records", variable.records, "blocks"),
+                (*place, "coverage" if covered else "blocks"),
                 "Remove one of the two.",
+            )
+        elif covered and variable.period is None:
+            reading.problem(
+                f"is the observed part of blocks, but variables.{name} has no period, which is their length.",
+                (*place, "coverage"),
+                f"Write variables.{name}.period = 1 for years.",
             )
 
 

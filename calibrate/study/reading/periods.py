@@ -45,6 +45,16 @@ def check_conversion(subject: Subject, content: VariableEntry) -> bool:
     return True
 
 
+def renewed(subject: Subject, content: VariableEntry) -> VariableEntry:
+    """Return the entry with the period between renewals, where it says how often a year the value comes anew."""
+    if content.renewal_rate is None:
+        return content
+    if content.period is not None:
+        subject.problem("says how often the value comes anew, and so does period; state one.", "renewal_rate")
+        return content
+    return content.model_copy(update={"period": 1.0 / content.renewal_rate})
+
+
 def read_size_ratio(subject: Subject, content: VariableEntry) -> Expression | None:
     """Return the ratio of sizes of a strength; None without one, or with a problem."""
     if content.size_ratio is None:

@@ -105,7 +105,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     )
     variables = read_variables(around, variables_raw)
     blocks = read_blocks(sections["records"], records)
-    check_blocks(reading, variables, blocks)
+    check_blocks(reading, variables, blocks, records)
     rules = finish_rules(reading, names, drafts, variables)
     combination = read_combination(
         reading, sections["combination"], variables, None if head is None else head.reference_period

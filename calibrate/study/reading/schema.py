@@ -184,6 +184,7 @@ class VariableEntry(Section):
     tail: Literal["lower", "upper"] | None = None
     failure_mode: Text | None = None
     period: Positive | None = None
+    renewal_rate: Positive | None = None
     conversion: Literal["maximum", "none"] | None = None
     conversion_reason: str = ""
     size_ratio: Value | None = None

@@ -16,7 +16,7 @@ from calibrate.study.reading.exceedances import exceedance_model
 from calibrate.study.reading.fitted import fitted_model
 from calibrate.study.reading.given import MOMENTS, given_model
 from calibrate.study.reading.limits import read_upper_limit
-from calibrate.study.reading.periods import check_conversion, read_size_ratio
+from calibrate.study.reading.periods import check_conversion, read_size_ratio, renewed
 from calibrate.study.reading.site_variables import over_sites_allowed, report_second, site_model
 from calibrate.study.reading.stress import read_stress_profile
 from calibrate.study.reading.subject import Model, Subject, Surroundings
@@ -50,6 +50,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     content = entry.content
     if content is None:
         return None
+    content = renewed(subject, content)
     families = _families(subject, content)
     unit = read_unit(reading, content.unit, subject.place("unit"))
     if content.records is None:
