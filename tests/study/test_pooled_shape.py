@@ -254,6 +254,15 @@ def test_without_records_there_is_nothing_to_pool(read):
     ]
 
 
+@pytest.mark.parametrize("variable", [POOLED, "shape = -0.1"])
+def test_a_characteristic_value_would_have_another_shape(read, variable):
+    more = '[quantities]\nv_k = { characteristic_of = "v", fractile = 0.98 }\n'
+    (message,) = messages(lambda: read(variable, more=more))
+    assert (
+        "quantities.v_k.characteristic_of names the variable 'v', whose shape is given or pooled" in message
+    )
+
+
 def test_a_station_that_is_too_short_is_named_with_the_line(read, winds, tmp_path):
     study = read(POOLED)
     (tmp_path / "short.csv").write_text("south\n20.1\n21.4\n19.9\n", encoding="utf-8")
