@@ -282,15 +282,16 @@ def bond_table(result: Result) -> Table:
             ),
             Column("mean / value", [numbers.span(b.bias, 4) for b in found], kind="number"),
             Column("P(variable < value)", [_percent_span(b.fractile) for b in found], kind="number"),
-            Column("how", [_how(q) for q in quantities]),
+            Column("how", [_how(q, b.period) for q, b in zip(quantities, found, strict=True)]),
         )
     )
 
 
-def _how(quantity: Quantity | None) -> str:
+def _how(quantity: Quantity | None, period: float | None) -> str:
     if quantity is None:
         return "differs between situations"
-    return quantity.characteristic.statement if quantity.characteristic is not None else "as typed"
+    how = quantity.characteristic.statement if quantity.characteristic is not None else "as typed"
+    return how if period is None else f"{how}; P for {numbers.years(period)}"
 
 
 def _percent_span(values: tuple[float, float]) -> str:

@@ -33,7 +33,9 @@ class ImpliedBias:
     bias : (float, float)
         Mean of the variable over the value, smallest and largest over the design situations.
     fractile : (float, float)
-        Probability that the variable lies below the value.
+        Probability that the variable lies below the value, in the period of its model.
+    period : float or None
+        That period, where the variable is an action of another period than the reference period.
     """
 
     quantity: str
@@ -41,6 +43,7 @@ class ImpliedBias:
     value_type: str
     bias: tuple[float, float]
     fractile: tuple[float, float]
+    period: float | None = None
 
 
 def implied_biases(
@@ -68,13 +71,16 @@ def implied_biases(
         if quantity.of is None or not distributions.get(quantity.of):
             continue
         bias, below = _against(quantity, distributions[quantity.of])
+        period = _own_period(study, quantity.of)
+        own = below ** (period / study.reference_period)
         found.append(
             ImpliedBias(
                 quantity.name,
                 quantity.of,
                 quantity.value_type,
                 (bias.min(), bias.max()),
-                (below.min(), below.max()),
+                (own.min(), own.max()),
+                None if period == study.reference_period else period,
             )
         )
         typed = quantity.bias
@@ -159,8 +165,7 @@ def _type_doubts(study: Study, quantity: Quantity, bias: Array, below: Array) ->
 def _fractile_doubts(study: Study, quantity: Quantity, below: Array, share: float) -> list[Doubt]:
     """Compare a stated fractile with the model, for the period of the model: 98 % of a year are 36 % of 50 years."""
     variable, where = study.variables[quantity.of or ""], f"quantities.{quantity.name}"
-    reference = study.reference_period
-    own = variable.period if variable.period is not None and variable.converted else reference
+    reference, own = study.reference_period, _own_period(study, quantity.of or "")
     in_own = below ** (own / reference)
     if not _far(in_own, share).any():
         return []
@@ -178,6 +183,12 @@ def _fractile_doubts(study: Study, quantity: Quantity, below: Array, share: floa
                 return [Doubt("fractile-of-another-period", text, where)]
     text += f"the probability below this value is {100.0 * worst:.5g} %."
     return [Doubt("fractile-differs", text, where)]
+
+
+def _own_period(study: Study, name: str) -> float:
+    """Return the period of a variable's model, the reference period where it is not converted."""
+    variable = study.variables[name]
+    return variable.period if variable.period is not None and variable.converted else study.reference_period
 
 
 def _far(below: Array, share: float) -> NDArray[np.bool_]:

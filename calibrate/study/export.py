@@ -220,6 +220,7 @@ def result_dict(result: Result) -> dict[str, Any]:
                 "value_type": b.value_type,
                 "bias": [_number(v) for v in b.bias],
                 "probability_below": [_number(v) for v in b.fractile],
+                "period": b.period if b.period is not None else result.study.reference_period,
             }
             for b in result.biases
         ],

@@ -43,7 +43,7 @@ ANNUAL = 'mean = "0.5 kPa"\ncov = 0.25\nperiod = 1\n'
 
 
 @pytest.fixture
-def doubts(tmp_path):
+def run_study(tmp_path):
     def run(values=None, **parts):
         texts = {"records": "", "quantities": "", "R": "", "q": ANNUAL, "S": "period = 50", **parts}
         if values is not None:
@@ -51,22 +51,31 @@ def doubts(tmp_path):
             (tmp_path / "q.csv").write_text(f"q\n{rows}\n", encoding="utf-8")
         path = tmp_path / "study.toml"
         path.write_text(STUDY.format(**texts), encoding="utf-8")
-        return {d.code: d for d in calibrate.run(calibrate.read_study(path)).doubts}
+        return calibrate.run(calibrate.read_study(path))
 
     return run
+
+
+@pytest.fixture
+def doubts(run_study):
+    return lambda *values, **parts: {d.code: d for d in run_study(*values, **parts).doubts}
 
 
 def typed(value, kind):
     return f'q_k = {{ value = "{value:.6g} kPa", of = "q", is = "{kind}" }}'
 
 
-def test_an_annual_fractile_of_an_annual_model_is_right(doubts):
+def test_an_annual_fractile_of_an_annual_model_is_right(doubts, run_study):
     """0.5 kPa with V = 0.25: the 98 % value of a year is 0.5 (1 + 0.25 · 2.592) kPa, by the formula of Gumbel."""
     level = float(distribution("gumbel", mean=0.5, cov=0.25).ppf(0.98))
     assert level == pytest.approx(0.5 * (1.0 + 0.25 * 2.5923), rel=1e-4)
-    assert not {"fractile-differs", "fractile-of-another-period"} & set(
-        doubts(quantities=typed(level, "98 % fractile"))
-    )
+    quantities = typed(level, "98 % fractile")
+    assert not {"fractile-differs", "fractile-of-another-period"} & set(doubts(quantities=quantities))
+    (bond,) = run_study(quantities=quantities).biases
+    assert bond.fractile == pytest.approx((0.98, 0.98), abs=1e-6)
+    assert bond.period == 1.0
+    # The mean is that of the reference period: 0.98 of a year is 0.364 of fifty.
+    assert bond.bias[0] > 1.0
 
 
 def test_an_annual_fractile_of_a_model_for_fifty_years_is_doubted(doubts):

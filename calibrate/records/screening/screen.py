@@ -166,7 +166,9 @@ def screen(
         found.extend(tell.declared_findings(float(x.mean()), outside, expected, unit, name))
 
     tied = () if repeated is None else tuple(i for tie in repeated.ties for i in tie.specimens)
-    esd, influences = _outliers(observations.values, np.setdiff1d(sure, tied), lots)
+    # A sample that begins at a threshold or a proof load is no normal or lognormal one, which the tests ask about.
+    tested = np.setdiff1d(sure, tied) if not observations.truncated else sure[:0]
+    esd, influences = _outliers(observations.values, tested, lots)
     found.extend(tell.outlier_findings(esd, influences, name))
     drift = trend(x, np.asarray(order)[sure]) if order is not None else None
     if drift is not None:
