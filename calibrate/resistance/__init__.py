@@ -5,6 +5,28 @@ in one coherent set of units.
 """
 
 # Trends, options, clusters, resistance factors of North American and mean-value practice, ledger.
+from calibrate.resistance.closed_form import (
+    ClosedForm,
+    FractileFactor,
+    closed_form,
+    combined_cov,
+    partial_factor_lognormal,
+    partial_factor_normal,
+)
+from calibrate.resistance.options import Option, TrendOptions, trend_options
 from calibrate.resistance.trend import Trends, holm, trends
 
-__all__ = ["Trends", "holm", "trends"]
+__all__ = [
+    "ClosedForm",
+    "FractileFactor",
+    "Option",
+    "TrendOptions",
+    "Trends",
+    "closed_form",
+    "combined_cov",
+    "holm",
+    "partial_factor_lognormal",
+    "partial_factor_normal",
+    "trend_options",
+    "trends",
+]
