@@ -13,20 +13,56 @@ from calibrate.resistance.closed_form import (
     partial_factor_lognormal,
     partial_factor_normal,
 )
+from calibrate.resistance.loads import LoadStatistics
+from calibrate.resistance.mean_value import (
+    BiasStatistics,
+    FormFactor,
+    MeanValueFactors,
+    form_factor,
+    linearised_factor,
+    lognormal_factor,
+    mean_value_factors,
+)
+from calibrate.resistance.north_american import (
+    FORMATS,
+    Format,
+    NorthAmericanFactor,
+    Part,
+    correction_for_tests,
+    format_named,
+    north_american_factor,
+    professional_part,
+)
 from calibrate.resistance.options import Option, TrendOptions, trend_options
 from calibrate.resistance.trend import Trends, holm, trends
 
 __all__ = [
+    "FORMATS",
+    "BiasStatistics",
     "ClosedForm",
+    "FormFactor",
+    "Format",
     "FractileFactor",
+    "LoadStatistics",
+    "MeanValueFactors",
+    "NorthAmericanFactor",
     "Option",
+    "Part",
     "TrendOptions",
     "Trends",
     "closed_form",
     "combined_cov",
+    "correction_for_tests",
+    "form_factor",
+    "format_named",
     "holm",
+    "linearised_factor",
+    "lognormal_factor",
+    "mean_value_factors",
+    "north_american_factor",
     "partial_factor_lognormal",
     "partial_factor_normal",
+    "professional_part",
     "trend_options",
     "trends",
 ]

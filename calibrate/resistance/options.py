@@ -336,11 +336,13 @@ def _doubts(
     if split.worst_beta < target:
         text = (
             f"Splitting takes the trend with '{name}' out of the scatter but leaves it within the subsets: at {name} = "
-            f"{split.worst_at:.4g} the reliability index of the resistance is {split.worst_beta:.2f} against a target of "
-            f"{target:g} ({leave.worst_beta:.2f} without splitting)."
+            f"{split.worst_at:.4g} the reliability index of the resistance is {split.worst_beta:.2f} against a target "
+            f"of {target:g} ({leave.worst_beta:.2f} without splitting)."
         )
         found.append(Doubt("trend-within-subsets", text, where))
     if min(below, above) < FEW_IN_PART:
-        text = f"Splitting at {name} = {at:.4g} leaves {below} and {above} tests: a mean from so few is uncertain itself."
+        text = (
+            f"Splitting at {name} = {at:.4g} leaves {below} and {above} tests: a mean of so few is uncertain."
+        )
         found.append(Doubt("few-tests-in-part", text, where))
     return tuple(found)
