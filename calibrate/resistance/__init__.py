@@ -13,6 +13,8 @@ from calibrate.resistance.closed_form import (
     partial_factor_lognormal,
     partial_factor_normal,
 )
+from calibrate.resistance.clusters import ClusterEffects, cluster_effects
+from calibrate.resistance.ledger import Ledger, LedgerEntry, ledger
 from calibrate.resistance.loads import LoadStatistics
 from calibrate.resistance.mean_value import (
     BiasStatistics,
@@ -35,14 +37,19 @@ from calibrate.resistance.north_american import (
 )
 from calibrate.resistance.options import Option, TrendOptions, trend_options
 from calibrate.resistance.trend import Trends, holm, trends
+from calibrate.resistance.two_layers import Layer, TwoLayers, layer, two_layers
 
 __all__ = [
     "FORMATS",
     "BiasStatistics",
     "ClosedForm",
+    "ClusterEffects",
     "FormFactor",
     "Format",
     "FractileFactor",
+    "Layer",
+    "Ledger",
+    "LedgerEntry",
     "LoadStatistics",
     "MeanValueFactors",
     "NorthAmericanFactor",
@@ -50,12 +57,16 @@ __all__ = [
     "Part",
     "TrendOptions",
     "Trends",
+    "TwoLayers",
     "closed_form",
+    "cluster_effects",
     "combined_cov",
     "correction_for_tests",
     "form_factor",
     "format_named",
     "holm",
+    "layer",
+    "ledger",
     "linearised_factor",
     "lognormal_factor",
     "mean_value_factors",
@@ -65,4 +76,5 @@ __all__ = [
     "professional_part",
     "trend_options",
     "trends",
+    "two_layers",
 ]
