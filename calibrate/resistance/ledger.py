@@ -136,7 +136,8 @@ def _never(path: str, on: list[LedgerEntry]) -> list[Doubt]:
         return []
     text = (
         f"On the path {path} nothing allows for the number of tests, although there are only {least.n}: mean and "
-        f"scatter of '{least.subject}' are taken as known. Use a factor k_n, a predictive distribution or a factor with C_P."
+        f"scatter of '{least.subject}' are taken as known. Use a factor k_n, a predictive distribution "
+        "or a factor with C_P."
     )
     return [Doubt("few-tests-not-allowed-for", text, least.subject)]
 

@@ -162,8 +162,8 @@ def two_layers(
     text = (
         f"The formula was compared with {numerical.n} numerical results and the numerical model with {physical.n} "
         f"physical tests. Together they are worth about {least:.0f} independent tests; {share:.0%} of the variance "
-        "comes from the physical layer. The two layers are taken as independent, and the physical tests as typical of the "
-        "numerical ones."
+        "comes from the physical layer. The two layers are taken as independent, and the physical tests as typical of "
+        "the numerical ones."
     )
     return TwoLayers(
         numerical=numerical, physical=physical, log_mean=mean, log_sd=sd, b=math.exp(mean + 0.5 * variance),

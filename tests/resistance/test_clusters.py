@@ -4,6 +4,7 @@ import math
 
 import numpy as np
 import pytest
+from scipy import stats
 
 from calibrate.errors import InputError
 from calibrate.fitting.lots import lot_scatter
@@ -90,14 +91,29 @@ def test_two_clusters_leave_one_whose_total_scatter_is_unknown():
 
 
 def test_planted_scatter_between_clusters_is_recovered():
-    # Many clusters: the mean over 60 samples of the restricted estimates of the variances is within four of its own
+    # Many clusters: the mean over 40 samples of the restricted estimates of the variances is within four of its own
     # standard errors (restricted estimates of balanced data are unbiased where none is cut off at zero).
-    found = [cluster_effects(*sample(12, 6, seed=s)).scatter for s in range(60)]
+    found = [cluster_effects(*sample(9, 6, seed=s)).scatter for s in range(40)]
     for values, truth in (
         ([f.between_sd**2 for f in found], 0.15**2),
         ([f.within_sd**2 for f in found], 0.24**2),
     ):
-        assert abs(np.mean(values) - truth) < 4.0 * np.std(values, ddof=1) / math.sqrt(60)
+        assert abs(np.mean(values) - truth) < 4.0 * np.std(values, ddof=1) / math.sqrt(40)
+
+
+def test_predicted_share_below_the_characteristic_value():
+    # True scatter 0.25 between and 0.10 within 6 clusters of 5: over 120 samples a test of a new cluster falls below
+    # r_k with 5 % within four standard errors; taken as 30 independent tests it does so far too often.
+    k, q, below, pooled = FractileFactor.predictive(0.05), math.hypot(0.25, 0.10), [], []
+    for seed in range(120):
+        delta, clusters = sample(6, 5, between=0.25, within=0.10, seed=seed)
+        found = cluster_effects(delta, clusters, characteristic=k)
+        y = np.log(delta)
+        below.append(stats.norm.cdf((math.log(found.characteristic) - 0.07) / q))
+        pooled.append(stats.norm.cdf((y.mean() - k.estimated(30) * y.std(ddof=1) - 0.07) / q))
+    error = np.std(below, ddof=1) / math.sqrt(120)
+    assert abs(np.mean(below) - 0.05) < 4.0 * error
+    assert np.mean(pooled) > 0.05 + 4.0 * np.std(pooled, ddof=1) / math.sqrt(120)
 
 
 def test_a_deviant_cluster_is_named():
