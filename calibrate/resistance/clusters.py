@@ -190,7 +190,13 @@ def _without_each(d: Array, clusters: ArrayLike, scatter: LotScatter, level: flo
 
 def _doubts(scatter: LotScatter, design: float, left_out: Array, where: str) -> tuple[Doubt, ...]:
     # The scatter speaks of lots and specimens; here they are clusters and tests.
-    words = (("specimens", "tests"), ("specimen", "test"), ("lots", "clusters"), ("lot", "cluster"))
+    words = (
+        ("Specimens", "Tests"),
+        ("specimens", "tests"),
+        ("specimen", "test"),
+        ("lots", "clusters"),
+        ("lot", "cluster"),
+    )
     found = []
     for doubt in scatter.doubts:
         message = doubt.message

@@ -158,6 +158,9 @@ def trends(
     Spearman's p-value comes from all permutations for up to eight tests (Student's t approximation gives zero for a
     perfect order of four), from Student's t beyond.
 
+    All three tests take the tests as independent. Where clusters differ in their means and a covariate is much the same
+    within each cluster, they alarm more often than the level says.
+
     References
     ----------
     .. [1] S. Holm, A simple sequentially rejective multiple test procedure, Scand. J. Statist. 6 (1979) 65-70.

@@ -122,6 +122,8 @@ def test_a_deviant_cluster_is_named():
     (doubt,) = [d for d in cluster_effects(delta, clusters).doubts if d.code == "one-cluster-sways"]
     assert "Without cluster 'site 4'" in doubt.message
     assert "higher" in doubt.message
+    (doubt,) = [d for d in cluster_effects(delta, clusters).doubts if d.code == "clusters-matter"]
+    assert "Tests of one cluster are not independent" in doubt.message
 
 
 def test_wrong_input_is_refused():
