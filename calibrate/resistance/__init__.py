@@ -5,9 +5,34 @@ in one coherent set of units.
 """
 
 # The evaluation of component tests: model factor, Annex D.8, separation of scatter, direct design values.
+from calibrate.resistance.annex_d import AnnexD8, annex_d8
+from calibrate.resistance.annex_d_parts import SubsetsD8, TailD8, annex_d8_subsets, annex_d8_tail
 from calibrate.resistance.component_tests import LEAST_TESTS, ComponentTests
+from calibrate.resistance.fractile_factors import FractileFactors, Fractiles, fractile_factors
+from calibrate.resistance.model_factor import (
+    CensoredModelFactor,
+    ModelFactor,
+    censored_model_factor,
+    model_factor,
+)
+from calibrate.resistance.predicted_scatter import PredictedScatter, predicted_scatter
 
 __all__ = [
     "LEAST_TESTS",
+    "AnnexD8",
+    "CensoredModelFactor",
     "ComponentTests",
+    "FractileFactors",
+    "Fractiles",
+    "ModelFactor",
+    "PredictedScatter",
+    "SubsetsD8",
+    "TailD8",
+    "annex_d8",
+    "annex_d8_subsets",
+    "annex_d8_tail",
+    "censored_model_factor",
+    "fractile_factors",
+    "model_factor",
+    "predicted_scatter",
 ]
