@@ -8,6 +8,12 @@ in one coherent set of units.
 from calibrate.resistance.annex_d import AnnexD8, annex_d8
 from calibrate.resistance.annex_d_parts import SubsetsD8, TailD8, annex_d8_subsets, annex_d8_tail
 from calibrate.resistance.component_tests import LEAST_TESTS, ComponentTests
+from calibrate.resistance.direct import (
+    DirectDesignValue,
+    Prior,
+    plain_design_value,
+    predictive_design_value,
+)
 from calibrate.resistance.fractile_factors import FractileFactors, Fractiles, fractile_factors
 from calibrate.resistance.model_factor import (
     CensoredModelFactor,
@@ -16,16 +22,20 @@ from calibrate.resistance.model_factor import (
     model_factor,
 )
 from calibrate.resistance.predicted_scatter import PredictedScatter, predicted_scatter
+from calibrate.resistance.separation import ScatterSeparation, separate_scatter
 
 __all__ = [
     "LEAST_TESTS",
     "AnnexD8",
     "CensoredModelFactor",
     "ComponentTests",
+    "DirectDesignValue",
     "FractileFactors",
     "Fractiles",
     "ModelFactor",
     "PredictedScatter",
+    "Prior",
+    "ScatterSeparation",
     "SubsetsD8",
     "TailD8",
     "annex_d8",
@@ -34,5 +44,8 @@ __all__ = [
     "censored_model_factor",
     "fractile_factors",
     "model_factor",
+    "plain_design_value",
     "predicted_scatter",
+    "predictive_design_value",
+    "separate_scatter",
 ]

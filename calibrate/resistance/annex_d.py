@@ -261,7 +261,7 @@ def evaluated(
 
 
 def _resistances(r_k: float, r_d: float, nominal: Array) -> Resistances:
-    return Resistances(r_k, r_d, r_k / r_d, nominal / r_d)
+    return Resistances(r_k, r_d, r_k / r_d, np.asarray(nominal / r_d))
 
 
 def _doubts(error: ErrorScatter, v_rt: float, where: str) -> list[Doubt]:

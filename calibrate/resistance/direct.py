@@ -8,7 +8,7 @@ value with the computed factor.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -199,7 +199,7 @@ def predictive_design_value(
     nu'' s''² = nu' s'² + (n - 1) s² + (n' n/n'') (m - m')²; the fractile is m'' + t(nu'') s'' sqrt(1 + 1/n'') (JCSS
     Probabilistic Model Code, part 3, and ISO 12491, from memory). For a known sd it is normal.
     """
-    asked = fractiles or Fractiles()
+    asked = replace(fractiles or Fractiles(), source="formula")
     x = _sample(values, family, known_cov, conversion)
     tails = (asked.fractile, asked.design_fractile)
     n = int(x.size)
@@ -301,8 +301,8 @@ def _answer(
     doubts = []
     if not x_d > 0.0:
         message = (
-            f"The design value is {x_d:.4g}: the normal family reaches below zero for this scatter. Use the lognormal one, "
-            "or a cov known from elsewhere."
+            f"The design value is {x_d:.4g}: the normal family reaches below zero for this scatter. Use the lognormal "
+            "one, or a cov known from elsewhere."
         )
         doubts.append(Doubt("design-value-not-positive", message, where))
     return DirectDesignValue(

@@ -218,7 +218,7 @@ def errors_of(experimental: Array, predicted: Array, where: str = WHERE) -> Mode
     variance = float(np.var(log_delta, ddof=1)) if n > 1 else math.nan
     correlation = math.nan
     if np.ptp(experimental) > 0.0 and np.ptp(predicted) > 0.0:
-        correlation = float(np.corrcoef(experimental, predicted)[0, 1])
+        correlation = float(np.corrcoef(experimental / scale, r)[0, 1])
     normality = normality_of(log_delta)
     return ModelFactor(
         n=n,

@@ -109,9 +109,9 @@ def separate_scatter(
     -----
     The true log-variance behind s² is simulated as freedom s²/chi²(freedom), the distribution that s² as a sampling
     statistic leaves for it (flat prior of its logarithm), and likewise for known parts with degrees of freedom.
-    The interval has the stated confidence exactly where the observed variance alone is uncertain, and nearly so
-    otherwise (M. J. Buckley et al. and others on differences of variances; from memory). A model has no negative
-    scatter: a large ``probability_negative`` says that a known part is stated too large, or is not in the tests at all.
+    The interval has the stated confidence exactly, but for the draw, where the observed variance alone is uncertain. A
+    model has no negative scatter: a large ``probability_negative`` says that a known part is stated too large, or is
+    not in the tests at all.
     """
     degrees = dict(known_freedom or {})
     _check(observed_cov, freedom, known, degrees, level, replicates)
@@ -171,9 +171,7 @@ def _check(
         if name not in known:
             problems.append(Problem(f"Degrees of freedom are given for '{name}', which is no known part."))
         elif not (math.isfinite(v) and v >= 1.0):
-            problems.append(
-                Problem(f"The degrees of freedom of '{name}' are {v:g}; at least 1 is needed.")
-            )
+            problems.append(Problem(f"The degrees of freedom of '{name}' are {v:g}; at least 1 is needed."))
     if not 0.0 < level < 1.0:
         problems.append(Problem(f"The confidence of the interval is {level:g}; it must lie between 0 and 1."))
     if replicates < 100:
@@ -194,16 +192,16 @@ def _doubts(
 ) -> list[Doubt]:
     if squared < 0.0:
         message = (
-            f"The known parts (V = {known:.3g}) exceed the observed scatter (V = {observed:.3g}), so that V_theta² would "
-            f"be {squared:.3g}; the true one is below zero with a probability of {negative:.2g}. No model has negative "
-            "scatter: a known part is stated too large or is not in these tests, or chance made the tests agree too well. "
-            f"{_upper(interval)}"
+            f"The known parts (V = {known:.3g}) exceed the observed scatter (V = {observed:.3g}), so that V_theta² "
+            f"would be {squared:.3g}; the true one is below zero with a probability of {negative:.2g}. No model has "
+            "negative scatter: a known part is stated too large or is not in these tests, or chance made the tests "
+            f"agree too well. {_upper(interval)}"
         )
         return [Doubt("negative-model-scatter", message, where)]
     if interval[0] < 0.0:
         message = (
-            f"The tests do not show that the model scatters at all: V_theta = {math.sqrt(squared):.3g}, but the interval "
-            f"of its square reaches below zero ({negative:.2g} of it). {_upper(interval)}"
+            f"The tests do not show that the model scatters at all: V_theta = {math.sqrt(squared):.3g}, but the "
+            f"interval of its square reaches below zero ({negative:.2g} of it). {_upper(interval)}"
         )
         return [Doubt("model-scatter-not-shown", message, where)]
     return []
