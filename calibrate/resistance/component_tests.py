@@ -67,7 +67,7 @@ class ComponentTests:
         own: dict[str, Any] = {
             "experimental": check.numbers("The measured resistance", self.experimental, positive=True),
             "predicted": check.numbers("The predicted resistance", self.predicted, positive=True),
-            "survived": check.column("The marks of survivors", survived, np.bool_),
+            "survived": check.flags("The mark of a survivor", survived),
             "rows": check.column("The row numbers", rows, np.int64),
             "inputs": MappingProxyType(
                 {name: check.numbers(f"The input '{name}'", x) for name, x in self.inputs.items()}
@@ -158,6 +158,17 @@ class _Check:
         if positive:
             self._each(what, x, np.isfinite(x) & (x <= 0.0), "must be above zero")
         return x
+
+    def flags(self, what: str, given: Any) -> Flags:
+        # Converted as truth values, every text and every number but zero would mark a survivor in silence.
+        x = np.asarray(given)
+        wrong = ~np.isin(x, [False, True]) if x.dtype.kind in "biuf" else np.ones(x.shape, dtype=bool)
+        if x.shape == (self.size,) and wrong.any():
+            shown = x[wrong].tolist()[0]
+            message = f"{what} in {self._named(wrong)} is {shown!r}; it must be true or false."
+            self.problems.append(Problem(message))
+        marks: Flags = self.column(what, given, np.bool_)
+        return marks
 
     def column(self, what: str, given: Any, kind: type) -> Any:
         try:

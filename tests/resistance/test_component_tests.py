@@ -100,6 +100,16 @@ def test_text_is_not_a_number():
     ]
 
 
+def test_marks_of_survivors_are_true_or_false():
+    assert messages(survived=["no", "no", "yes", "no", "no"])[0].startswith(
+        "The mark of a survivor in rows 1, 2, 3, 4 and 5 is 'no'; it must be true or false."
+    )
+    assert messages(survived=[0, 1, 2, 0, 0]) == [
+        "The mark of a survivor in row 3 is 2; it must be true or false."
+    ]
+    assert ComponentTests(EXPERIMENTAL, PREDICTED, survived=[0, 1, 0, 0, 0]).n_failed == 4
+
+
 @pytest.mark.parametrize("blank", [None, "", "  ", float("nan")])
 def test_labels_must_not_be_blank(blank):
     (found,) = messages(subgroup=["a", "b", blank, "a", "b"])
