@@ -45,14 +45,10 @@ def beta_distribution(result: Result) -> Figure:
             weights=100.0 * weight / max(weight.sum(), 1e-300),
         )
         new = kind == "proposed"
-        axes.bar(
-            edges[:-1],
-            share,
-            np.diff(edges),
-            align="edge",
-            color=style.BLUE if new else style.PALE,
-            edgecolor="white" if new else style.GREY,
-            linewidth=0.6,
+        colour, edge = (style.BLUE, "white") if new else (style.PALE, style.GREY)
+        seen = share > 0.0
+        style.bars(
+            axes, edges[:-1][seen], 0.0 * share[seen], np.diff(edges)[seen], share[seen], colour, edge, 0.6
         )
         axes.set_xlim(edges[0], edges[-1])
         axes.grid(visible=True, axis="y")

@@ -31,8 +31,11 @@ MATTERS = 0.05
 """Weighted mean of alpha squared below which the tail of a variable is not drawn."""
 
 
-def figures(result: Result) -> dict[str, Rendered]:
+def figures(result: Result, meanwhile: Callable[[], None] | None = None) -> dict[str, Rendered]:
     """Return the figures of a result by name, in the order of the report.
+
+    ``meanwhile`` is done in this process while another one draws its share.
+
 
     ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
     does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
@@ -43,10 +46,17 @@ def figures(result: Result) -> dict[str, Rendered]:
     """
     with style.context():
         makers = dict(_all(result))
-        return dict(zip(makers, run_tasks([partial(_drawn, make) for make in makers.values()]), strict=True))
+        tasks: list[Callable[[], Rendered | None]] = [partial(_drawn, make) for make in makers.values()]
+        # The first task stays in this process.
+        _, *drawn = run_tasks([meanwhile or _nothing, *tasks])
+        return {name: figure for name, figure in zip(makers, drawn, strict=True) if figure is not None}
 
 
 Maker = Callable[[], "Figure"]
+
+
+def _nothing() -> None:
+    pass
 
 
 def _drawn(make: Maker) -> Rendered:

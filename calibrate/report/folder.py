@@ -23,10 +23,10 @@ RESULT_FORMAT = "calibrate-result/1"
 def result_files(result: Result) -> dict[str, bytes]:
     """Return every file of a result by its path within the folder."""
     from calibrate.report.figures import figures
-    from calibrate.report.html import report_html
+    from calibrate.report.html import prepare, report_html
     from calibrate.study.export import table_files
 
-    drawn = figures(result)
+    drawn = figures(result, meanwhile=prepare)
     files = table_files(result)
     files["report.html"] = report_html(result, drawn)
     for name, figure in drawn.items():

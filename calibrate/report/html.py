@@ -71,6 +71,12 @@ def report_html(result: Result, figures: Mapping[str, Rendered]) -> bytes:
     return environment().get_template("report.html.j2").render(_content(result, figures)).encode("utf-8")
 
 
+def prepare() -> None:
+    """Compile the templates, which a page needs later."""
+    for name in environment().list_templates(extensions=["j2"]):
+        environment().get_template(name)
+
+
 @cache
 def environment() -> Environment:
     """Return the templates, which escape everything."""

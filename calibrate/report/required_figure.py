@@ -61,7 +61,7 @@ def required_factors(result: Result, names: list[str]) -> Figure:
         sets = result.calibration
         present, proposed = sets.present.factors[name], sets.proposed.factors[name]
         if present == proposed:
-            _line(axes, proposed, f"unchanged {shown(proposed)}", "-", "center")
+            _line(axes, proposed, f"kept {shown(proposed)}", "-", "center")
         else:
             above, below_it = ("bottom", "top") if proposed > present else ("top", "bottom")
             _line(axes, present, f"present {shown(present)}", (0, (4, 2)), below_it)

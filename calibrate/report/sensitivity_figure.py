@@ -100,7 +100,7 @@ def _bars(axes: Axes, rule: Sensitivity, shares: Array, palette: _Palette) -> No
     edges = []
     for i in _order(rule, palette):
         height, colour = 100.0 * shares[i], palette.colour[rule.variables[i]]
-        axes.bar(at, height, 0.86, bottom=bottom, color=colour, edgecolor="white", linewidth=0.5)
+        style.bars(axes, at - 0.43, bottom, 0.86, height, colour, "white", 0.5)
         if shares[i].max() >= _LEAST_LABEL:
             edges.append((bottom[-1] + 0.5 * height[-1], rule.variables[i], colour))
         bottom = bottom + height

@@ -42,15 +42,17 @@ def size_change(changes: list[SizeChange]) -> Figure:
         bottom = height - 2.0 - (k // _COLUMNS) * _HEIGHT - _PANEL - 7.0
         axes = style.panel(figure, left, bottom, width, _PANEL)
         share, _ = np.histogram(values, edges, weights=100.0 * change.weight)
-        grows = edges[:-1] >= -1e-12
-        axes.bar(
-            edges[:-1],
-            share,
-            np.diff(edges),
-            align="edge",
-            color=[style.OCHRE if g else style.BLUE for g in grows],
-            edgecolor="white",
-            linewidth=0.6,
+        seen = share > 0.0
+        colours = [style.OCHRE if e >= -1e-12 else style.BLUE for e in edges[:-1][seen]]
+        style.bars(
+            axes,
+            edges[:-1][seen],
+            0.0 * share[seen],
+            np.diff(edges)[seen],
+            share[seen],
+            colours,
+            "white",
+            0.6,
         )
         axes.axvline(0.0, color=style.INK, linewidth=0.9)
         mean = 100.0 * (change.mean - 1.0)

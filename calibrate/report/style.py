@@ -11,9 +11,14 @@ from contextlib import AbstractContextManager
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
+
+Array = NDArray[np.float64]
 
 INK = "#1d2733"
 GREY = "#6b7683"
@@ -28,6 +33,8 @@ MARKS = ("o", "^", "s", "D", "v", "P")
 
 MILLIMETRE = 1 / 25.4
 RESOLUTION = 160
+_MOST_TICKS, _TICK_ROOM = 6, 9.0
+"""Most intervals between the ticks of an axis, and the least length of one in millimetres."""
 
 _RC: dict[str, Any] = {
     "font.family": "DejaVu Sans",
@@ -101,8 +108,36 @@ def figure(width_mm: float, height_mm: float) -> Figure:
 
 def panel(figure: Figure, left: float, bottom: float, width: float, height: float, **settings: Any) -> Axes:
     """Return axes at a place given in millimetres from the lower left corner of the figure."""
+    from matplotlib.ticker import MaxNLocator
+
     w, h = figure.get_size_inches() / MILLIMETRE
-    return figure.add_axes((left / w, bottom / h, width / w, height / h), **settings)
+    axes = figure.add_axes((left / w, bottom / h, width / w, height / h), **settings)
+    # Half of the time of a drawing goes into ticks and their labels, and few of them read better.
+    for axis, length in ((axes.xaxis, width), (axes.yaxis, height)):
+        if axis.get_scale() == "linear":
+            steps = max(3, min(_MOST_TICKS, int(length / _TICK_ROOM)))
+            axis.set_major_locator(MaxNLocator(steps, steps=[1, 2, 2.5, 5, 10]))
+    return axes
+
+
+def bars(
+    axes: Axes,
+    left: Array,
+    bottom: Array,
+    width: Array | float,
+    height: Array,
+    colours: Any,
+    edge: str,
+    line: float,
+) -> None:
+    """Draw bars as one collection, many times faster than one patch each."""
+    from matplotlib.collections import PolyCollection
+
+    right, top = left + width, bottom + height
+    corners = np.stack([[left, left, right, right], [bottom, top, top, bottom]], axis=-1).transpose(1, 0, 2)
+    axes.add_collection(PolyCollection(list(corners), facecolors=colours, edgecolors=edge, linewidths=line))
+    axes.update_datalim(corners.reshape(-1, 2))
+    axes.autoscale_view()
 
 
 def render(figure: Figure) -> Rendered:
@@ -110,7 +145,7 @@ def render(figure: Figure) -> Rendered:
     svg, png = io.BytesIO(), io.BytesIO()
     figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": None})
     figure.savefig(
-        png, format="png", dpi=RESOLUTION, metadata={"Software": None}, pil_kwargs={"compress_level": 3}
+        png, format="png", dpi=RESOLUTION, metadata={"Software": None}, pil_kwargs={"compress_level": 2}
     )
     return Rendered(svg.getvalue(), png.getvalue())
 
