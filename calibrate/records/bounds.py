@@ -23,7 +23,7 @@ FORMS = "'>512' (had not failed at 512), '<512' (failed below) or '480..495' (fa
 _SURVIVOR = re.compile(r"([0-9.,]+)\s*\+")
 _RANGE = re.compile(r"([0-9]+(?:[.,][0-9]+)?)\s*(?:-|–|—|…|\.{2,}|to)\s*([0-9]+(?:[.,][0-9]+)?)")
 
-_RIGHT = ("yes", "true", "1", "right", "survived")
+_RIGHT = ("yes", "true", "1", "right", "survived", "stopped")
 _LEFT = ("left",)
 _FAILED = ("no", "false", "0", "failed")
 _ENTRIES = ", ".join(f"'{e}'" for e in (*_RIGHT, *_LEFT, *_FAILED)) + " or an empty cell"

@@ -18,6 +18,7 @@ from calibrate.fitting.modes import ModeFit, fit_modes
 from calibrate.fitting.predictive import predictive
 from calibrate.records import Sample
 from calibrate.records.screening import FailureMode, failure_modes
+from calibrate.study.component_tests import evaluate, own_scatter
 from calibrate.study.exceedances import ExceedanceModel, exceedance_model
 from calibrate.study.family_doubts import choice_doubts, rival_doubts
 from calibrate.study.maxima import BlockMaxima, block_maxima, observed_blocks
@@ -145,6 +146,8 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
         if c.converged and c.aicc - chosen.aicc < WORTH_TESTING
         if (found := run_fit_tests(c, stream(study.seed, "fit tests", variable.name, c.family))) is not None
     }
+    if variable.resistance is not None:
+        used = _own_scatter(study, variable, used)
     used, normalised = _with_normalisation(used, sample, f"variables.{variable.name}")
     doubts = (
         *doubts,
@@ -170,6 +173,17 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
         maxima=maxima,
         stations=stations,
     )
+
+
+def _own_scatter(study: Study, variable: Variable, used: Distribution) -> Distribution:
+    """Return a model factor without the scatter that its tests are known to contain beside it."""
+    name = variable.resistance or ""
+    records = study.resistances[name]
+    if not records.known_scatter:
+        return used
+    found = evaluate(records, study.target_beta, study.seed)
+    assert found.separation is not None
+    return own_scatter(used, found.separation, name)
 
 
 def _used(variable: Variable, chosen: Fit, scatter: LotScatter | None) -> Distribution:

@@ -14,6 +14,7 @@ from calibrate.expressions import Comparison, Expression
 from calibrate.factors import Factor
 from calibrate.fitting.characteristic import CharacteristicValue
 from calibrate.records import Sample
+from calibrate.resistance import ComponentTests, Format, LoadStatistics, Part
 from calibrate.situations import Axis, Situations
 from calibrate.units import Dimension, Unit
 
@@ -52,6 +53,53 @@ class Exceedances:
     threshold: float
     years: float
     run_length: float | None = None
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class NorthAmericanQuestion:
+    """What the resistance factor from tests needs beside the tests."""
+
+    format: Format
+    coefficients: str
+    material: Part
+    fabrication: Part
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class MeanValueQuestion:
+    """Target and loads of a resistance factor from bias statistics."""
+
+    target: float
+    loads: LoadStatistics
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class ComponentRecords:
+    """Component tests with the prediction of each, and what the study asks of them.
+
+    ``ratio`` is measured over predicted as a sample, ``unit`` that of the measured capacity. ``covs`` are those of
+    the basic variables of the prediction, ``known_scatter`` what the ratio contains beside the model's own scatter.
+    """
+
+    name: str
+    file: str
+    measured: str
+    prediction: str
+    unit: Unit
+    tests: ComponentTests
+    ratio: Sample
+    survivors: str
+    subsets: str
+    covs: Mapping[str, float]
+    nominal_ratio: float | None
+    known_scatter: Mapping[str, float]
+    table_factors: bool
+    trend_level: float
+    split_at: float | None
+    north_american: NorthAmericanQuestion | None
+    mean_value: MeanValueQuestion | None
+    description: str = ""
+    line: int | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -107,6 +155,8 @@ class Variable:
     """Largest value that is physically possible, in SI units, where the study says so; it bounds no model."""
     sites: str | None = None
     """The site table by whose classes the model differs; ``arguments`` then use its columns."""
+    resistance: str | None = None
+    """The component tests whose model factor it is; its sample is that of measured over predicted."""
     grade: str = ""
     """``own data``, ``published data``, ``code value`` or ``judgement``; empty where nothing is said."""
     exceedances: Exceedances | None = None
@@ -220,6 +270,8 @@ class Study:
     combination: tuple[CombinedAction, ...] = ()
     """Variable actions that are combined; their models are those of one repetition."""
     sites: Mapping[str, SiteTable] = field(default_factory=dict)
+    resistances: Mapping[str, ComponentRecords] = field(default_factory=dict)
+    """Component tests by name; their model factors stand in ``records`` under the same names."""
     """Site tables by name."""
     blocks: Mapping[str, int] = field(default_factory=dict)
     """Blocks between begin and end of records of maxima, by name of the records, where stated."""

@@ -16,6 +16,7 @@ from calibrate.fitting import Comparison as FitComparison
 from calibrate.provenance import Provenance
 from calibrate.records.screening import Screening
 from calibrate.study.bonds import ImpliedBias
+from calibrate.study.component_tests import ResistanceResult
 from calibrate.study.evidence_doubts import PedigreeShare
 from calibrate.study.exceedances import ExceedanceModel
 from calibrate.study.fits import FittedVariable
@@ -88,6 +89,8 @@ class Result:
     biases : tuple of ImpliedBias
         Of quantities that stand for a variable.
     pedigree : tuple of PedigreeShare
+    resistances : mapping of str to ResistanceResult
+        Component tests against prediction, by name.
     other_periods : tuple of PeriodBeta
     combinations : DataFrame or None
         Columns of combinations.csv: beta of each alternative of combined actions; None without any.
@@ -117,6 +120,7 @@ class Result:
     screenings: Mapping[str, Screening]
     biases: tuple[ImpliedBias, ...]
     pedigree: tuple[PedigreeShare, ...]
+    resistances: Mapping[str, ResistanceResult]
     other_periods: tuple[PeriodBeta, ...]
     combinations: pd.DataFrame | None
     accompanying: pd.DataFrame | None

@@ -16,6 +16,7 @@ from calibrate.study.accompanying import accompanying_table
 from calibrate.study.assemble import basic_variables, rule_models
 from calibrate.study.bonds import implied_biases
 from calibrate.study.combinations import combination_table, doubts_of_combination
+from calibrate.study.component_tests import evaluate_resistances
 from calibrate.study.doubts import study_doubts
 from calibrate.study.evidence_doubts import pedigree
 from calibrate.study.exact_combination import exact_combination
@@ -84,6 +85,7 @@ def run(
 
     report("Fitting distributions", 0.0)
     fitted = fit_variables(study)
+    resistances = evaluate_resistances(study)
     screenings = screen_records(study)
     variables = basic_variables(study, fitted)
     models = rule_models(study, variables)
@@ -104,6 +106,7 @@ def run(
         *study_doubts(study, fitted, calibration),
         *period_doubts(study, periods),
         *doubts_of_combination(study, calibration),
+        *(d for r in resistances.values() for d in r.doubts),
         *(() if exact is None else exact.doubts),
         *site_doubts(study, by_site, row_weights(study)),
         *calibration.doubts,
@@ -121,6 +124,7 @@ def run(
         screenings=screenings,
         biases=biases,
         pedigree=pedigree(study, calibration),
+        resistances=resistances,
         other_periods=periods,
         combinations=combination_table(study, calibration, exact),
         accompanying=accompanying_table(study, variables, models, calibration),

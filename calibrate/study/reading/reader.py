@@ -22,6 +22,7 @@ from calibrate.study.reading.exceedances import check_blocks
 from calibrate.study.reading.factors import read_factors
 from calibrate.study.reading.names import DERIVED, QUANTITIES, NameSpace, declare_all
 from calibrate.study.reading.periods import check_target_period
+from calibrate.study.reading.resistance import read_resistances
 from calibrate.study.reading.rules import check_designs, finish_rules, parse_rules
 from calibrate.study.reading.sites import read_sites
 from calibrate.study.reading.situations import finish_situations, read_grid, read_weight
@@ -77,8 +78,10 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     factors, factor_texts = read_factors(reading, names, sections["factors"])
     drafts = parse_rules(reading, names, sections["rules"])
 
-    records = read_records(reading, sections["records"])
-    declared = read_declared(reading, sections["records"], records)
+    own_records = read_records(reading, sections["records"])
+    declared = read_declared(reading, sections["records"], own_records)
+    resistances = read_resistances(reading, sections["resistance"], own_records)
+    records = {**own_records, **{k: None if r is None else r.ratio for k, r in resistances.items()}}
     bonds = read_bonds(reading, quantities_raw, variables_raw, records, 0 if head is None else head.seed)
     typed = {k: v for k, v in quantities_raw.items() if k not in bonds.faulty}
     known = {k: bond.value for k, bond in bonds.found.items()}
@@ -102,9 +105,10 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         grid,
         drafts,
         sites,
+        resistances,
     )
     variables = read_variables(around, variables_raw)
-    blocks = read_blocks(sections["records"], records)
+    blocks = read_blocks(sections["records"], own_records)
     check_blocks(reading, variables, blocks, records)
     rules = finish_rules(reading, names, drafts, variables)
     combination = read_combination(
@@ -152,6 +156,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         doubts=tuple(reading.doubts),
         combination=combination,
         sites={k: v for k, v in sites.items() if v is not None},
+        resistances={k: v for k, v in resistances.items() if v is not None},
         blocks=blocks,
         other_periods=tuple(dict.fromkeys(head.other_periods)),
         independence=head.independence,

@@ -80,6 +80,10 @@ def _value_or_range(raw: Any) -> list[float | str]:
     return [_value(v) for v in raw] if isinstance(raw, list) else [_value(raw)]
 
 
+def _list(raw: Any) -> Any:
+    return raw if isinstance(raw, list) else [raw]
+
+
 Number = float
 Positive = Annotated[float, Field(gt=0)]
 Text = Annotated[str, AfterValidator(_text)]
@@ -168,11 +172,79 @@ class RecordsEntry(Section):
     declared: Annotated[list[Any] | None, BeforeValidator(_value_or_range)] = None
 
 
+class PartTable(Section):
+    """Mean and coefficient of variation of a part of a product of factors."""
+
+    mean: Positive
+    cov: Annotated[float, Field(ge=0)]
+
+
+class NorthAmericanTable(Section):
+    """What the resistance factor from tests in the North American form needs beside the tests."""
+
+    format: Text
+    coefficients: Literal["printed", "derived"] = "printed"
+    material: PartTable
+    fabrication: PartTable
+
+
+class LoadsTable(Section):
+    """Dead and live load of a resistance factor from bias statistics."""
+
+    dead_factor: Positive
+    live_factor: Positive
+    dead_to_live: Annotated[list[float], BeforeValidator(_list)]
+    dead_bias: Positive
+    live_bias: Positive
+    dead_cov: Annotated[float, Field(ge=0)]
+    live_cov: Annotated[float, Field(ge=0)]
+
+
+class MeanValueTable(Section):
+    """A resistance factor from bias statistics."""
+
+    target: Positive
+    loads: LoadsTable
+
+
+class ResistanceEntry(Section):
+    """``[resistance.NAME]``: component tests against prediction."""
+
+    file: Text
+    sheet: Text | None = None
+    separator: str | None = None
+    decimal: str | None = None
+    encoding: str | None = None
+    exclude: list[ExcludeTable] = []
+    measured: Text
+    unit: str | None = None
+    prediction: Text
+    units: dict[str, str] = {}
+    inputs: list[Text] = []
+    nominal: list[Text] = []
+    survived: Text | None = None
+    survivors: Literal["censored", "as_failed", "leave_out"] = "censored"
+    specimen: Text | None = None
+    subgroup: Text | None = None
+    cluster: Text | None = None
+    subsets: Literal["pooled", "own", "series"] = "pooled"
+    covs: dict[str, Annotated[float, Field(ge=0)]] = {}
+    nominal_ratio: Positive | None = None
+    known_scatter: dict[str, Annotated[float, Field(ge=0)]] = {}
+    factors: Literal["formula", "table"] = "formula"
+    trend_level: Annotated[float, Field(gt=0, lt=1)] = 0.05
+    split_at: Positive | None = None
+    north_american: NorthAmericanTable | None = None
+    mean_value: MeanValueTable | None = None
+    description: str = ""
+
+
 class VariableEntry(Section):
     """``[variables.NAME]`` without its moments and parameters, whose names the families give."""
 
     family: Annotated[list[str], BeforeValidator(_families)]
     records: Text | None = None
+    resistance: Text | None = None
     method: Any = None
     estimate: Annotated[list[str], BeforeValidator(_names)] = []
     pooled_shape: Annotated[list[str], BeforeValidator(_names)] = []
@@ -320,6 +392,7 @@ class TopLevel(Section):
     study: Any = None
     target: Any = None
     records: Any = None
+    resistance: Any = None
     quantities: Any = None
     sites: Any = None
     variables: Any = None

@@ -12,7 +12,7 @@ from calibrate.distributions import Family
 from calibrate.errors import InputError
 from calibrate.expressions import Expression
 from calibrate.records import Sample
-from calibrate.study.model import Quantity, SiteTable
+from calibrate.study.model import ComponentRecords, Quantity, SiteTable
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.names import MODELS, NameSpace, Use
 from calibrate.study.reading.rules import Draft
@@ -34,6 +34,7 @@ class Surroundings:
     grid: Grid
     drafts: Mapping[str, Draft]
     sites: Mapping[str, SiteTable | None] = field(default_factory=dict)
+    resistances: Mapping[str, ComponentRecords | None] = field(default_factory=dict)
     use: Use = MODELS
     """What moments and parameters may use."""
 

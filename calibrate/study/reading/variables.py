@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from calibrate.distributions import Family, family, family_names
-from calibrate.errors import InputError
+from calibrate.errors import InputError, did_you_mean
 from calibrate.expressions import Expression
 from calibrate.study.model import Variable
 from calibrate.study.reading import schema
@@ -47,16 +47,11 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     rest = {k: v for k, v in raw.items() if k not in known} if isinstance(raw, dict) else raw
     entry = schema.read_entry(reading, schema.VariableEntry, rest, subject.place(), more_keys=known)
     values = _values(subject, arguments)
-    content = entry.content
+    content = None if entry.content is None else _completed(subject, entry.content)
     if content is None:
         return None
-    content = renewed(subject, content)
     families = _families(subject, content)
     unit = read_unit(reading, content.unit, subject.place("unit"))
-    if content.records is None:
-        for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode", "pooled_shape"):
-            if getattr(content, key):
-                subject.problem("says how to fit, but the variable has no records.", key)
     if content.exceedances is not None or "exceedances" in entry.dropped:
         return _from_exceedances(subject, content, families, values, unit, entry.dropped)
     method = read_method(subject, content)
@@ -72,15 +67,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     unit_is_faulty = content.unit is not None and unit is None
     if unit_is_faulty or values is None or families is None or entry.dropped - _HARMLESS:
         return None
-    if content.sites is not None:
-        if not over_sites_allowed(subject, content):
-            return None
-        table = subject.around.sites[content.sites]
-        model = None if table is None else site_model(subject, table, families[0], values, unit)
-    elif content.records is not None:
-        model = fitted_model(subject, content, families, values, unit, method.name)
-    else:
-        model = given_model(subject, families[0], values, unit)
+    model = _model(subject, content, families, values, unit, method)
     if model is None:
         return None
     if profile is not None and any(set(e.names) & _sizes(subject) for e in model.arguments.values()):
@@ -89,6 +76,54 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     limit = read_upper_limit(subject, content, model)
     variable = _variable(subject, content, model, values, method, ratio, limit)
     return variable if profile is None else dataclasses.replace(variable, stress_profile=profile)
+
+
+def _completed(subject: Subject, content: schema.VariableEntry) -> schema.VariableEntry | None:
+    """Return the entry with what other keys imply, and check the keys of a fit; None with problems."""
+    content = renewed(subject, content)
+    if content.resistance is not None:
+        if not _model_factor_fits(subject, content):
+            return None
+        content = content.model_copy(update={"records": content.resistance})
+    if content.records is None:
+        for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode", "pooled_shape"):
+            if getattr(content, key):
+                subject.problem("says how to fit, but the variable has no records.", key)
+    return content
+
+
+def _model(
+    subject: Subject,
+    content: schema.VariableEntry,
+    families: list[Family],
+    values: dict[str, Value],
+    unit: Unit | None,
+    method: MethodChoice,
+) -> Model | None:
+    if content.sites is not None:
+        if not over_sites_allowed(subject, content):
+            return None
+        table = subject.around.sites[content.sites]
+        return None if table is None else site_model(subject, table, families[0], values, unit)
+    if content.records is not None:
+        return fitted_model(subject, content, families, values, unit, method.name)
+    return given_model(subject, families[0], values, unit)
+
+
+def _model_factor_fits(subject: Subject, content: schema.VariableEntry) -> bool:
+    """Check a variable that is the model factor of component tests."""
+    name, known = content.resistance or "", subject.around.resistances
+    if content.records is not None:
+        subject.problem("and records both say where the variable comes from; name one.", "resistance")
+    elif name not in known:
+        subject.problem(
+            f"names '{name}', which is no table of component tests.",
+            "resistance",
+            suggestion=did_you_mean(name, known) or "Add a section [resistance.NAME].",
+        )
+    else:
+        return known[name] is not None
+    return False
 
 
 def _sizes(subject: Subject) -> set[str]:
@@ -196,5 +231,6 @@ def _variable(
         grade=content.grade or "",
         estimate=tuple(content.estimate),
         sites=content.sites,
+        resistance=content.resistance,
         pooled_shape=tuple(dict.fromkeys(content.pooled_shape)),
     )

@@ -1,0 +1,320 @@
+"""What component tests against prediction say: model factor, characteristic and design resistance by every route."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+
+from calibrate.distributions import Distribution, distribution
+from calibrate.engine import stream
+from calibrate.errors import Doubt, InputError
+from calibrate.resistance import (
+    AnnexD8,
+    ClusterEffects,
+    DirectDesignValue,
+    FractileFactor,
+    Fractiles,
+    MeanValueFactors,
+    NorthAmericanFactor,
+    ScatterSeparation,
+    SubsetsD8,
+    TrendOptions,
+    Trends,
+    annex_d8,
+    annex_d8_subsets,
+    cluster_effects,
+    mean_value_factors,
+    north_american_factor,
+    predictive_design_value,
+    professional_part,
+    separate_scatter,
+    trend_options,
+    trends,
+)
+from calibrate.study.model import ComponentRecords, Study
+
+FRACTILE = 0.05
+ALPHA_R = 0.8
+
+
+@dataclass(frozen=True, slots=True)
+class Route:
+    """One way from the same tests to a factor.
+
+    ``r_k`` and ``r_d`` are over the prediction from mean properties, NaN where the route has none; ``factor`` is
+    gamma_M (r_k over r_d) of European routes and phi of North American ones, told apart by ``kind``.
+    """
+
+    name: str
+    kind: str
+    r_k: float
+    r_d: float
+    factor: float
+    statement: str
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class ResistanceResult:
+    """The evaluation of one table of component tests.
+
+    Attributes
+    ----------
+    records : ComponentRecords
+    annex : AnnexD8
+        All tests together.
+    subsets : SubsetsD8 or None
+        Where the tests name subgroups.
+    trends : Trends
+    options : tuple of TrendOptions
+        One for each covariate with a trend.
+    clusters : ClusterEffects or None
+    direct : DirectDesignValue
+        Of measured over predicted, as a sample (D.7).
+    north_american : NorthAmericanFactor or None
+    mean_value : MeanValueFactors or None
+    separation : ScatterSeparation or None
+        Of the model's own scatter from what is known to be in the tests.
+    routes : tuple of Route
+    doubts : tuple of Doubt
+    """
+
+    records: ComponentRecords
+    annex: AnnexD8
+    subsets: SubsetsD8 | None
+    trends: Trends
+    options: tuple[TrendOptions, ...]
+    clusters: ClusterEffects | None
+    direct: DirectDesignValue
+    north_american: NorthAmericanFactor | None
+    mean_value: MeanValueFactors | None
+    separation: ScatterSeparation | None
+    routes: tuple[Route, ...]
+    doubts: tuple[Doubt, ...]
+
+
+def evaluate_resistances(study: Study) -> dict[str, ResistanceResult]:
+    """Evaluate every table of component tests.
+
+    Raises
+    ------
+    InputError
+        The tests cannot be evaluated as the study asks, with the line of their section.
+    """
+    found = {}
+    for name, records in study.resistances.items():
+        try:
+            found[name] = evaluate(records, study.target_beta, study.seed)
+        except InputError as error:
+            raise InputError(
+                [
+                    type(p)(f"[resistance.{name}] {p.message}", study.shown, records.line, p.suggestion)
+                    for p in error.problems
+                ]
+            ) from error
+    return found
+
+
+def evaluate(records: ComponentRecords, target_beta: float, seed: int) -> ResistanceResult:
+    """Evaluate one table of component tests for a target of the same period as the study's."""
+    where = f"resistance.{records.name}"
+    tests, failed = records.tests, ~records.tests.survived
+    survivors = records.survivors if tests.survived.any() else "refuse"
+    source = "table" if records.table_factors else "formula"
+    fractiles = Fractiles(target_beta=target_beta, alpha_r=ALPHA_R, fractile=FRACTILE, source=source)
+    annex = annex_d8(
+        tests,
+        records.covs,
+        nominal=records.nominal_ratio,
+        fractiles=fractiles,
+        survivors=survivors,
+        where=where,
+    )
+    subsets = None
+    if len(tests.subgroups) > 1:
+        subsets = annex_d8_subsets(
+            tests,
+            records.covs,
+            scatter=records.subsets,
+            nominal=records.nominal_ratio,
+            fractiles=fractiles,
+            survivors="leave_out" if survivors == "censored" else survivors,
+            where=where,
+        )
+    tendency = trends(
+        tests.ratio,
+        tests.predicted,
+        {k: v for k, v in tests.inputs.items() if np.ptp(v) > 0.0},
+        stopped=tests.survived if tests.survived.any() else None,
+        stopped_are="regression" if survivors == "censored" else "left out",
+        level=records.trend_level,
+        where=where,
+    )
+    characteristic = FractileFactor.predictive(FRACTILE)
+    design = FractileFactor.predictive(_tail(ALPHA_R * target_beta))
+    delta = tests.ratio[failed]
+    options = tuple(
+        trend_options(
+            delta,
+            tests.inputs.get(covariate, tests.predicted)[failed],
+            covariate,
+            split_at=records.split_at,
+            characteristic=characteristic,
+            design=design,
+            other_log_sd=annex.q_rt,
+            alpha_r=ALPHA_R,
+            target=target_beta,
+            where=where,
+        )
+        for covariate, flagged in zip(tendency.names, tendency.flagged, strict=True)
+        if flagged
+    )
+    clusters = None
+    if tests.cluster is not None and len(set(tests.cluster[failed].tolist())) > 1:
+        clusters = cluster_effects(
+            delta,
+            tests.cluster[failed],
+            characteristic=characteristic,
+            design=design,
+            other_log_sd=annex.q_rt,
+            where=where,
+        )
+    direct = predictive_design_value(delta, fractiles=fractiles, where=where)
+    american = bias = None
+    if (asked := records.north_american) is not None:
+        american = north_american_factor(
+            professional_part(delta),
+            int(delta.size),
+            material=asked.material,
+            fabrication=asked.fabrication,
+            design_format=asked.format,
+            coefficients=asked.coefficients,  # type: ignore[arg-type]
+            where=where,
+        )
+    if records.mean_value is not None:
+        bias = mean_value_factors(
+            annex.model.b if survivors == "censored" else float(np.mean(delta)),
+            annex.v_r,
+            records.mean_value.target,
+            records.mean_value.loads,
+            where=where,
+        )
+    separation = None
+    if records.known_scatter:
+        separation = separate_scatter(
+            annex.v_delta,
+            max(int(failed.sum()) - 1, 1),
+            records.known_scatter,
+            stream(seed, "resistance", records.name),
+            where=where,
+        )
+    parts = (annex, subsets, tendency, *options, clusters, direct, american, bias, separation)
+    doubts = dict.fromkeys(d for part in parts if part is not None for d in part.doubts)
+    return ResistanceResult(
+        records,
+        annex,
+        subsets,
+        tendency,
+        options,
+        clusters,
+        direct,
+        american,
+        bias,
+        separation,
+        _routes(annex, clusters, direct, american, bias),
+        tuple(doubts),
+    )
+
+
+def own_scatter(used: Distribution, separation: ScatterSeparation, name: str) -> Distribution:
+    """Return a model factor with its own scatter only; as it was where that would be none.
+
+    Raises
+    ------
+    InputError
+        The family is not lognormal.
+    """
+    if used.family.name != "lognormal":
+        raise InputError(
+            f"resistance.{name} states known_scatter, which can be taken out of a lognormal model factor only; the "
+            f"variable is {used.family.name}."
+        )
+    if not separation.log_variance > 0.0:
+        return used
+    median = float(used.parameters["median"])
+    return distribution("lognormal", median=median, log_sd=math.sqrt(separation.log_variance))
+
+
+def _tail(index: float) -> float:
+    from scipy.special import ndtr
+
+    return float(ndtr(-index))
+
+
+def _routes(
+    annex: AnnexD8,
+    clusters: ClusterEffects | None,
+    direct: DirectDesignValue,
+    american: NorthAmericanFactor | None,
+    bias: MeanValueFactors | None,
+) -> tuple[Route, ...]:
+    """Return all routes side by side, each with what it takes into account."""
+    used = annex.large if annex.many else annex.small
+    found = [
+        Route(
+            "EN 1990 D.8",
+            "gamma_M",
+            used.r_k,
+            used.r_d,
+            used.gamma_m,
+            "Slope b, scatter of the errors with k_n and k_d,n, scatter of the basic variables as known.",
+        ),
+        Route(
+            "sample of ratios, D.7 predictive",
+            "gamma_M",
+            direct.x_k,
+            direct.x_d,
+            direct.gamma_m,
+            "Measured over predicted as a sample of its own, without scatter of the basic variables.",
+        ),
+    ]
+    if clusters is not None:
+        found.append(
+            Route(
+                "with scatter between clusters",
+                "gamma_M",
+                clusters.characteristic,
+                clusters.design,
+                clusters.partial_factor,
+                "A new cluster each time; k_n of the effective number of tests.",
+            )
+        )
+    if american is not None:
+        found.append(
+            Route(
+                f"North American form, {american.format.name}",
+                "phi",
+                math.nan,
+                math.nan,
+                american.phi,
+                "First-order, with C_P for the number of tests and a lower limit on V_P.",
+            )
+        )
+    if bias is not None:
+        for name, value in (
+            ("lognormal closed form from bias statistics", bias.lognormal),
+            ("FORM with the same statistics", bias.form.phi),
+        ):
+            low = float(np.min(value))
+            found.append(
+                Route(
+                    name,
+                    "phi",
+                    math.nan,
+                    math.nan,
+                    low,
+                    "Smallest over the dead-to-live ratios; plain estimates.",
+                )
+            )
+    return tuple(found)
