@@ -20,11 +20,15 @@ from calibrate.resistance import (
     NorthAmericanFactor,
     ScatterSeparation,
     SubsetsD8,
+    TailD8,
     TrendOptions,
     Trends,
+    TwoLayers,
     annex_d8,
     annex_d8_subsets,
+    annex_d8_tail,
     cluster_effects,
+    layer,
     mean_value_factors,
     north_american_factor,
     predictive_design_value,
@@ -32,6 +36,7 @@ from calibrate.resistance import (
     separate_scatter,
     trend_options,
     trends,
+    two_layers,
 )
 from calibrate.study.model import ComponentRecords, Study
 
@@ -76,6 +81,10 @@ class ResistanceResult:
     mean_value : MeanValueFactors or None
     separation : ScatterSeparation or None
         Of the model's own scatter from what is known to be in the tests.
+    tail : TailD8 or None
+        Of the lower tail alone, where the study asks for it.
+    layers : TwoLayers or None
+        The product with the model factor of the numerical results, where these are numerical.
     routes : tuple of Route
     doubts : tuple of Doubt
     """
@@ -92,6 +101,8 @@ class ResistanceResult:
     separation: ScatterSeparation | None
     routes: tuple[Route, ...]
     doubts: tuple[Doubt, ...]
+    tail: TailD8 | None = None
+    layers: TwoLayers | None = None
 
 
 def evaluate_resistances(study: Study) -> dict[str, ResistanceResult]:
@@ -105,7 +116,12 @@ def evaluate_resistances(study: Study) -> dict[str, ResistanceResult]:
     found = {}
     for name, records in study.resistances.items():
         try:
-            found[name] = evaluate(records, study.target_beta, study.seed)
+            found[name] = evaluate(
+                records,
+                study.target_beta,
+                study.seed,
+                None if records.second_layer is None else study.resistances[records.second_layer],
+            )
         except InputError as error:
             raise InputError(
                 [
@@ -116,30 +132,39 @@ def evaluate_resistances(study: Study) -> dict[str, ResistanceResult]:
     return found
 
 
-def evaluate(records: ComponentRecords, target_beta: float, seed: int) -> ResistanceResult:
-    """Evaluate one table of component tests for a target of the same period as the study's."""
+def evaluate(
+    records: ComponentRecords, target_beta: float, seed: int, second: ComponentRecords | None = None
+) -> ResistanceResult:
+    """Evaluate one table of component tests for a target of the same period as the study's.
+
+    ``second`` are the tests of physical over numerical results, where the tests themselves are numerical.
+    """
     where = f"resistance.{records.name}"
     tests, failed = records.tests, ~records.tests.survived
     survivors = records.survivors if tests.survived.any() else "refuse"
     source = "table" if records.table_factors else "formula"
     fractiles = Fractiles(target_beta=target_beta, alpha_r=ALPHA_R, fractile=FRACTILE, source=source)
+    gradient = dict(records.gradient) or None
     annex = annex_d8(
         tests,
         records.covs,
+        gradient=gradient,
         nominal=records.nominal_ratio,
         fractiles=fractiles,
         survivors=survivors,
         where=where,
     )
+    others = "leave_out" if survivors == "censored" else survivors
     subsets = None
     if len(tests.subgroups) > 1:
         subsets = annex_d8_subsets(
             tests,
             records.covs,
             scatter=records.subsets,
+            gradient=gradient,
             nominal=records.nominal_ratio,
             fractiles=fractiles,
-            survivors="leave_out" if survivors == "censored" else survivors,
+            survivors=others,
             where=where,
         )
     tendency = trends(
@@ -180,6 +205,28 @@ def evaluate(records: ComponentRecords, target_beta: float, seed: int) -> Resist
             other_log_sd=annex.q_rt,
             where=where,
         )
+    tail = None
+    if records.tail_share is not None:
+        tail = annex_d8_tail(
+            tests,
+            records.covs,
+            records.tail_share,
+            gradient=gradient,
+            nominal=records.nominal_ratio,
+            fractiles=fractiles,
+            survivors=others,
+            where=where,
+        )
+    layers = None
+    if second is not None:
+        layers = two_layers(
+            layer(delta, f"resistance.{records.name}"),
+            layer(second.tests.ratio[~second.tests.survived], f"resistance.{second.name}"),
+            characteristic=characteristic,
+            design=design,
+            other_log_sd=annex.q_rt,
+            where=where,
+        )
     direct = predictive_design_value(delta, fractiles=fractiles, where=where)
     american = bias = None
     if (asked := records.north_american) is not None:
@@ -209,8 +256,10 @@ def evaluate(records: ComponentRecords, target_beta: float, seed: int) -> Resist
             stream(seed, "resistance", records.name),
             where=where,
         )
-    parts = (annex, subsets, tendency, *options, clusters, direct, american, bias, separation)
+    parts = (annex, subsets, tendency, *options, clusters, direct, american, bias, separation, layers)
     doubts = dict.fromkeys(d for part in parts if part is not None for d in part.doubts)
+    if tail is not None:
+        doubts |= dict.fromkeys(tail.tail.doubts)
     return ResistanceResult(
         records,
         annex,
@@ -222,9 +271,33 @@ def evaluate(records: ComponentRecords, target_beta: float, seed: int) -> Resist
         american,
         bias,
         separation,
-        _routes(annex, clusters, direct, american, bias),
+        (*_routes(annex, clusters, direct, american, bias), *_further(tail, layers)),
         tuple(doubts),
+        tail,
+        layers,
     )
+
+
+def _further(tail: TailD8 | None, layers: TwoLayers | None) -> list[Route]:
+    found = []
+    if tail is not None:
+        used = tail.tail.small
+        text = f"The lowest {100.0 * tail.share:.3g} % of the tests on lognormal paper, k_n of all of them."
+        found.append(Route("lower tail alone", "gamma_M", used.r_k, used.r_d, used.gamma_m, text))
+    if layers is not None:
+        form = layers.closed_form
+        text = "Numerical results with the model factor of physical tests against them; k_n of the effective number."
+        found.append(
+            Route(
+                "two layers",
+                "gamma_M",
+                float(np.min(form.characteristic)),
+                float(np.min(form.design)),
+                form.partial_factor,
+                text,
+            )
+        )
+    return found
 
 
 def own_scatter(used: Distribution, separation: ScatterSeparation, name: str) -> Distribution:

@@ -100,6 +100,12 @@ class ComponentRecords:
     mean_value: MeanValueQuestion | None
     description: str = ""
     line: int | None = None
+    gradient: Mapping[str, float] = field(default_factory=dict)
+    """(dr/dx_i) sd_i/r of each basic variable with a cov, at the means of the tests; empty where there is none."""
+    tail_share: float | None = None
+    """Share of the tests that an evaluation of the lower tail alone uses."""
+    second_layer: str | None = None
+    """The tests of physical over numerical results, where these are numerical over formula."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -7,10 +7,11 @@ from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.expressions import parse
-from calibrate.records import Exclude, ReadOptions, Sample, TextForm, read_column
+from calibrate.records import Exclude, ReadOptions, Sample, TextForm, UnitBy, read_column
 from calibrate.records import read_value as read_derived
 from calibrate.resistance import FORMATS, ComponentTests, Format, LoadStatistics, Part, format_named
 from calibrate.study.model import ComponentRecords, MeanValueQuestion, NorthAmericanQuestion
@@ -46,6 +47,13 @@ def read_resistances(
             found[name] = None
             continue
         found[name] = _tests(reading, name, entry, place)
+    for name, tests in found.items():
+        if tests is not None and tests.second_layer is not None and tests.second_layer not in found:
+            reading.problem(
+                f"names '{tests.second_layer}', which is no other table of component tests.",
+                (SECTION, name, "second_layer"),
+                did_you_mean(tests.second_layer, [n for n in found if n != name]),
+            )
     return found
 
 
@@ -90,6 +98,9 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
             mean_value=bias,
             description=content.description.strip(),
             line=reading.line(place),
+            gradient=_elasticities(path, content, known),
+            tail_share=content.tail_share,
+            second_layer=content.second_layer,
         )
     except InputError as error:
         first, *others = error.problems
@@ -121,6 +132,11 @@ def _read(
     path: Any, content: ResistanceEntry, name: str, unit: Unit, units: Mapping[str, Unit]
 ) -> tuple[Sample, ComponentTests]:
     """Return measured over predicted as a sample, and the tests."""
+    unit_by = None
+    if content.unit_by is not None:
+        unit_by = UnitBy(
+            content.unit_by.column, {k: parse_unit(text) for k, text in content.unit_by.units.items()}
+        )
     options = ReadOptions(
         form=TextForm(content.separator, content.decimal, content.encoding),
         censoring=True,
@@ -128,6 +144,8 @@ def _read(
         lot=content.cluster,
         mode=content.subgroup,
         specimen=content.specimen,
+        unit_by=unit_by,
+        measured=content.measured,
         exclude=tuple(
             Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
         ),
@@ -145,11 +163,8 @@ def _read(
         sheet=content.sheet,
         options=derived,
     )
-    plain = ReadOptions(form=options.form, exclude=options.exclude)
     inputs = {
-        column: read_column(
-            path, column, unit=ONE, display=content.file, sheet=content.sheet, options=plain
-        ).values
+        column: _numbers(path, content, column)
         for column in content.inputs or parse(content.prediction).names
     }
     reached = measured.observations.lower
@@ -165,6 +180,37 @@ def _read(
         measured.rows,
     )
     return ratio, tests
+
+
+def _elasticities(path: Any, content: ResistanceEntry, units: Mapping[str, Unit]) -> dict[str, float]:
+    """Return (dr/dx_i) sd_i/r of each basic variable with a cov, at the means of its column.
+
+    A basic variable that is no column of the prediction counts as a factor of it.
+    """
+    expression = parse(content.prediction)
+    moving = tuple(name for name in content.covs if name in expression.names)
+    if not moving:
+        return {}
+    values = {
+        name: float(np.mean(_numbers(path, content, name))) * units.get(name, ONE).factor
+        for name in expression.names
+    }
+    whole, slopes = expression.gradient(values, moving)
+    share = {n: float(s) * values[n] / float(whole) for n, s in zip(moving, slopes, strict=True)}
+    return {name: share.get(name, 1.0) * cov for name, cov in content.covs.items()}
+
+
+def _numbers(path: Any, content: ResistanceEntry, column: str) -> NDArray[np.float64]:
+    """Return a column of plain numbers for the tests that count."""
+    options = ReadOptions(
+        form=TextForm(content.separator, content.decimal, content.encoding),
+        exclude=tuple(
+            Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
+        ),
+    )
+    return read_column(
+        path, column, unit=ONE, display=content.file, sheet=content.sheet, options=options
+    ).values
 
 
 def _north_american(

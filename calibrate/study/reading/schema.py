@@ -216,6 +216,7 @@ class ResistanceEntry(Section):
     decimal: str | None = None
     encoding: str | None = None
     exclude: list[ExcludeTable] = []
+    unit_by: UnitByTable | None = None
     measured: Text
     unit: str | None = None
     prediction: Text
@@ -230,6 +231,8 @@ class ResistanceEntry(Section):
     subsets: Literal["pooled", "own", "series"] = "pooled"
     covs: dict[str, Annotated[float, Field(ge=0)]] = {}
     nominal_ratio: Positive | None = None
+    tail_share: Annotated[float | None, Field(gt=0, le=1)] = None
+    second_layer: Text | None = None
     known_scatter: dict[str, Annotated[float, Field(ge=0)]] = {}
     factors: Literal["formula", "table"] = "formula"
     trend_level: Annotated[float, Field(gt=0, lt=1)] = 0.05
