@@ -139,6 +139,8 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
         reasons = "; ".join(f"{c.family}: {c.reason}" for c in comparison.candidates)
         raise InputError(f"No distribution can be fitted to records '{variable.records}' ({reasons}).")
     scatter, pooled, doubts = _lots(study, variable, sample, chosen)
+    if variable.resistance is not None and not variable.stands_for:
+        doubts = ()  # the evaluation of the tests says the same of their clusters
     used = _used(variable, chosen, scatter)
     tests = {
         c.family: found

@@ -62,7 +62,7 @@ def test_scatter_between_lots_is_found():
     assert sample.observations.n == 45
     assert int(sample.observations.right.sum()) == 10
     assert [e.reason for e in sample.excluded] == ["cracked at the sheared edge before the test"]
-    from calibrate.study.fits import fit_variables
+    from calibrate.study.component_tests import evaluate_resistances
 
-    doubts = {d.code for d in fit_variables(study)["theta_R"].doubts}
-    assert {"lots-matter", "lots-of-exact-values"} <= doubts
+    doubts = {d.code for d in evaluate_resistances(study)["pull_through"].doubts}
+    assert {"clusters-matter", "survivors-censored", "one-cluster-sways"} <= doubts
