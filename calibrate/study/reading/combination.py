@@ -19,7 +19,8 @@ def read_combination(
     found = []
     for name, entry in read_table(reading, raw, ("combination",)).items():
         place = ("combination", name)
-        content = read_entry(reading, CombinedTable, entry, place).content
+        read = read_entry(reading, CombinedTable, entry, place)
+        content = None if read.dropped else read.content
         if name not in variables:
             reading.raw_problem(
                 f"combination: '{name}' is not a basic variable.", place, did_you_mean(name, variables)
