@@ -77,7 +77,8 @@ class MeanValueQuestion:
 class ComponentRecords:
     """Component tests with the prediction of each, and what the study asks of them.
 
-    ``ratio`` is measured over predicted as a sample, ``unit`` that of the measured capacity. ``covs`` are those of
+    ``ratio`` is measured over predicted as a sample, ``unit`` that of the measured capacity, ``input_units`` those of
+    the inputs of the tests. ``covs`` are those of
     the basic variables of the prediction, ``known_scatter`` what the ratio contains beside the model's own scatter.
     """
 
@@ -100,6 +101,7 @@ class ComponentRecords:
     mean_value: MeanValueQuestion | None
     description: str = ""
     line: int | None = None
+    input_units: Mapping[str, Unit] = field(default_factory=dict)
     gradient: Mapping[str, float] = field(default_factory=dict)
     """(dr/dx_i) sd_i/r of each basic variable with a cov, at the means of the tests; empty where there is none."""
     tail_share: float | None = None
@@ -276,9 +278,9 @@ class Study:
     combination: tuple[CombinedAction, ...] = ()
     """Variable actions that are combined; their models are those of one repetition."""
     sites: Mapping[str, SiteTable] = field(default_factory=dict)
+    """Site tables by name."""
     resistances: Mapping[str, ComponentRecords] = field(default_factory=dict)
     """Component tests by name; their model factors stand in ``records`` under the same names."""
-    """Site tables by name."""
     blocks: Mapping[str, int] = field(default_factory=dict)
     """Blocks between begin and end of records of maxima, by name of the records, where stated."""
     other_periods: tuple[float, ...] = ()

@@ -7,13 +7,11 @@ from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from calibrate.errors import InputError, Problem, did_you_mean
-from calibrate.expressions import parse
-from calibrate.records import Exclude, ReadOptions, Sample, TextForm, UnitBy, read_column
-from calibrate.records import read_value as read_derived
-from calibrate.resistance import FORMATS, ComponentTests, Format, LoadStatistics, Part, format_named
+from calibrate.records import Exclude, Sample, TextForm, UnitBy
+from calibrate.resistance import FORMATS, Format, LoadStatistics, Part, format_named
+from calibrate.study.component_records import TestTable, read_tests, slips
 from calibrate.study.model import ComponentRecords, MeanValueQuestion, NorthAmericanQuestion
 from calibrate.study.paths import resolve_inside
 from calibrate.study.reading.context import Reading
@@ -27,7 +25,7 @@ from calibrate.study.reading.schema import (
 )
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import read_unit
-from calibrate.units import ONE, Unit, parse_unit
+from calibrate.units import ONE
 
 SECTION = "resistance"
 
@@ -62,155 +60,99 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
     content = entry.content
     if content is None or entry.dropped:
         return None
-    unit = read_unit(reading, content.unit, (*place, "unit"))
-    units = {
-        column: read_unit(reading, text, (*place, "units", column)) for column, text in content.units.items()
-    }
-    if (content.unit is not None and unit is None) or None in units.values():
-        return None
-    if not _measured_only(reading, content, place):
-        return None
     american = _north_american(reading, content.north_american, (*place, "north_american"))
     bias = _mean_value(reading, content.mean_value, (*place, "mean_value"))
+    asked = _asked(reading, name, content, place)
+    if asked is None:
+        return None
+    wrong = slips(asked)
+    for key, problem in wrong:
+        reading.problem(problem.message, (*place, key), problem.suggestion)
+    if wrong:
+        return None
     try:
         path = resolve_inside(
             content.file, reading.document.path, reading.project, allow_outside=reading.allow_outside
         )
-        known = {c: u for c, u in units.items() if u is not None}
-        ratio, tests = _read(path, content, name, unit or ONE, known)
-        return ComponentRecords(
+        found = read_tests(path, asked)
+    except InputError as error:
+        first, *others = error.problems
+        # The slip may be in the file or in what the study asks of it: the first problem names both.
+        line = f"(Asked for by {SECTION}.{name} in line {reading.line(place)} of {reading.document.shown}.)"
+        hint = f"{first.suggestion} {line}" if first.suggestion else line
+        reading.collect(InputError([dataclasses.replace(first, suggestion=hint), *others]), (*place, "file"))
+        return None
+    return ComponentRecords(
+        name=name,
+        file=content.file,
+        measured=content.measured,
+        prediction=content.prediction,
+        unit=asked.unit,
+        tests=found.tests,
+        ratio=found.ratio,
+        input_units=found.input_units,
+        survivors=content.survivors,
+        subsets=content.subsets,
+        covs=dict(content.covs),
+        nominal_ratio=content.nominal_ratio,
+        known_scatter=dict(content.known_scatter),
+        table_factors=content.factors == "table",
+        trend_level=content.trend_level,
+        split_at=content.split_at,
+        north_american=american,
+        mean_value=bias,
+        description=content.description.strip(),
+        line=reading.line(place),
+        gradient=found.gradient,
+        tail_share=content.tail_share,
+        second_layer=content.second_layer,
+    )
+
+
+def _asked(reading: Reading, name: str, content: ResistanceEntry, place: Place) -> TestTable | None:
+    """Return which columns are read and how; None with problems."""
+    unit = read_unit(reading, content.unit, (*place, "unit"))
+    units = {
+        column: read_unit(reading, text, (*place, "units", column)) for column, text in content.units.items()
+    }
+    known = {column: u for column, u in units.items() if u is not None}
+    unit_by = None
+    if content.unit_by is not None:
+        by_label = {
+            label: read_unit(reading, text, (*place, "unit_by", "units", label))
+            for label, text in content.unit_by.units.items()
+        }
+        if None in by_label.values():
+            return None
+        unit_by = UnitBy(content.unit_by.column, {k: u for k, u in by_label.items() if u is not None})
+    if (content.unit is not None and unit is None) or len(known) < len(units):
+        return None
+    try:
+        return TestTable(
             name=name,
             file=content.file,
             measured=content.measured,
             prediction=content.prediction,
             unit=unit or ONE,
-            tests=tests,
-            ratio=ratio,
-            survivors=content.survivors,
-            subsets=content.subsets,
-            covs=dict(content.covs),
-            nominal_ratio=content.nominal_ratio,
-            known_scatter=dict(content.known_scatter),
-            table_factors=content.factors == "table",
-            trend_level=content.trend_level,
-            split_at=content.split_at,
-            north_american=american,
-            mean_value=bias,
-            description=content.description.strip(),
-            line=reading.line(place),
-            gradient=_elasticities(path, content, known),
-            tail_share=content.tail_share,
-            second_layer=content.second_layer,
+            units=known,
+            inputs=tuple(content.inputs),
+            nominal=tuple(content.nominal),
+            survived=content.survived,
+            subgroup=content.subgroup,
+            cluster=content.cluster,
+            specimen=content.specimen,
+            sheet=content.sheet,
+            form=TextForm(content.separator, content.decimal, content.encoding),
+            exclude=tuple(
+                Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
+            ),
+            covs=content.covs,
+            known_scatter=content.known_scatter,
+            unit_by=unit_by,
         )
     except InputError as error:
-        first, *others = error.problems
-        asked = f"(Asked for by {SECTION}.{name} in line {reading.line(place)} of {reading.document.shown}.)"
-        hint = f"{first.suggestion} {asked}" if first.suggestion else asked
-        reading.collect(InputError([dataclasses.replace(first, suggestion=hint), *others]), (*place, "file"))
+        reading.collect(error, place)
         return None
-
-
-def _measured_only(reading: Reading, content: ResistanceEntry, place: Place) -> bool:
-    """Stop where the prediction uses a column of nominal values: its scatter would be counted twice."""
-    try:
-        names = parse(content.prediction).names
-    except InputError as error:
-        reading.collect(error, (*place, "prediction"))
-        return False
-    used = [n for n in names if n in content.nominal]
-    if used:
-        reading.problem(
-            f"uses '{used[0]}', a column of nominal values: the model factor would contain the scatter of that "
-            "property, and the limit state adds it again.",
-            (*place, "prediction"),
-            "Predict every test from its measured properties.",
-        )
-    return not used
-
-
-def _read(
-    path: Any, content: ResistanceEntry, name: str, unit: Unit, units: Mapping[str, Unit]
-) -> tuple[Sample, ComponentTests]:
-    """Return measured over predicted as a sample, and the tests."""
-    unit_by = None
-    if content.unit_by is not None:
-        unit_by = UnitBy(
-            content.unit_by.column, {k: parse_unit(text) for k, text in content.unit_by.units.items()}
-        )
-    options = ReadOptions(
-        form=TextForm(content.separator, content.decimal, content.encoding),
-        censoring=True,
-        censored=content.survived,
-        lot=content.cluster,
-        mode=content.subgroup,
-        specimen=content.specimen,
-        unit_by=unit_by,
-        measured=content.measured,
-        exclude=tuple(
-            Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
-        ),
-    )
-    measured = read_column(
-        path, content.measured, unit=unit, display=content.file, sheet=content.sheet, options=options
-    )
-    derived = dataclasses.replace(options, units={**units, content.measured: unit}, measured=content.measured)
-    ratio = read_derived(
-        path,
-        f"{content.measured} / ({content.prediction})",
-        name=name,
-        unit=parse_unit(""),
-        display=content.file,
-        sheet=content.sheet,
-        options=derived,
-    )
-    inputs = {
-        column: _numbers(path, content, column)
-        for column in content.inputs or parse(content.prediction).names
-    }
-    reached = measured.observations.lower
-    with np.errstate(all="ignore"):
-        predicted = reached / ratio.observations.lower
-    tests = ComponentTests(
-        reached,
-        predicted,
-        measured.observations.right,
-        inputs,
-        measured.labels.get("mode"),
-        measured.labels.get("lot"),
-        measured.rows,
-    )
-    return ratio, tests
-
-
-def _elasticities(path: Any, content: ResistanceEntry, units: Mapping[str, Unit]) -> dict[str, float]:
-    """Return (dr/dx_i) sd_i/r of each basic variable with a cov, at the means of its column.
-
-    A basic variable that is no column of the prediction counts as a factor of it.
-    """
-    expression = parse(content.prediction)
-    moving = tuple(name for name in content.covs if name in expression.names)
-    if not moving:
-        return {}
-    values = {
-        name: float(np.mean(_numbers(path, content, name))) * units.get(name, ONE).factor
-        for name in expression.names
-    }
-    whole, slopes = expression.gradient(values, moving)
-    share = {n: float(s) * values[n] / float(whole) for n, s in zip(moving, slopes, strict=True)}
-    return {name: share.get(name, 1.0) * cov for name, cov in content.covs.items()}
-
-
-def _numbers(path: Any, content: ResistanceEntry, column: str) -> NDArray[np.float64]:
-    """Return a column of plain numbers for the tests that count."""
-    options = ReadOptions(
-        form=TextForm(content.separator, content.decimal, content.encoding),
-        exclude=tuple(
-            Exclude(reason=e.reason, row=e.row, where=e.where, equals=e.equals) for e in content.exclude
-        ),
-    )
-    return read_column(
-        path, column, unit=ONE, display=content.file, sheet=content.sheet, options=options
-    ).values
 
 
 def _north_american(

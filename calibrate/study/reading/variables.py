@@ -9,7 +9,7 @@ from typing import Any
 from calibrate.distributions import Family, family, family_names
 from calibrate.errors import InputError, did_you_mean
 from calibrate.expressions import Expression
-from calibrate.study.model import Variable
+from calibrate.study.model import ComponentRecords, Variable
 from calibrate.study.reading import schema
 from calibrate.study.reading.estimators import MethodChoice, read_method
 from calibrate.study.reading.exceedances import exceedance_model
@@ -122,7 +122,33 @@ def _model_factor_fits(subject: Subject, content: schema.VariableEntry) -> bool:
             suggestion=did_you_mean(name, known) or "Add a section [resistance.NAME].",
         )
     else:
-        return known[name] is not None
+        tests = known[name]
+        return tests is not None and _own_scatter_can_be_known(subject, content, tests)
+    return False
+
+
+def _own_scatter_can_be_known(
+    subject: Subject, content: schema.VariableEntry, tests: ComponentRecords
+) -> bool:
+    """Check that known scatter can be taken out of the model factor, which needs a plain lognormal one."""
+    if not tests.known_scatter:
+        return True
+    parts = ", ".join(tests.known_scatter)
+    states = f"but resistance.{tests.name} states known_scatter ({parts}), which can be taken out of"
+    if content.predictive:
+        subject.problem(
+            f"makes the variable wider than a lognormal one, {states} a lognormal model factor only.",
+            "predictive",
+            suggestion="Leave out the one or the other.",
+        )
+    elif not {"lognormal", BEST} & set(content.family):
+        subject.problem(
+            f"is '{', '.join(content.family)}', {states} a lognormal model factor only.",
+            "family",
+            suggestion='Say family = "lognormal", or leave known_scatter out.',
+        )
+    else:
+        return True
     return False
 
 
