@@ -5,7 +5,7 @@ from __future__ import annotations
 import typer
 
 from calibrate import __version__
-from calibrate.cli import check, fit, run, snippet
+from calibrate.cli import check, fit, resistance, run, snippet
 
 CAUTION = (
     "Results depend on the data and models given. Target reliabilities and factors are for competent engineers and "
@@ -28,6 +28,9 @@ app.command("snippet", help=snippet.HELP, short_help="Print pieces of study file
     snippet.snippet
 )
 app.command("fit", help=fit.HELP, short_help="Fit and rank distributions for one column.")(fit.fit)
+app.command("resistance", help=resistance.HELP, short_help="Evaluate component tests against prediction.")(
+    resistance.resistance
+)
 
 
 def _show_version(wanted: bool) -> None:

@@ -24,6 +24,7 @@ from calibrate.records import (
     read_value,
 )
 from calibrate.resistance import ComponentTests
+from calibrate.study.model import ComponentRecords, MeanValueQuestion, NorthAmericanQuestion
 from calibrate.units import ONE, Dimension, Unit
 
 Array = NDArray[np.float64]
@@ -94,8 +95,8 @@ class Slip(NamedTuple):
 class ReadTests(NamedTuple):
     """Measured over predicted as a sample, the tests, and the unit of each input.
 
-    ``gradient`` is (dr/dx_i) sd_i/r of each basic variable with a cov, at the means of its column; one that is no column
-    of the prediction counts as a factor of it. Empty where the prediction has none of them.
+    ``gradient`` is (dr/dx_i) sd_i/r of each basic variable with a cov, at the means of its column; one that is no
+    column of the prediction counts as a factor of it. Empty where the prediction has none of them.
     """
 
     ratio: Sample
@@ -249,6 +250,58 @@ def _gradient(path: Path, asked: TestTable, options: ReadOptions) -> dict[str, f
     whole, slopes = expression.gradient(means, moving)
     share = {n: float(s) * means[n] / float(whole) for n, s in zip(moving, slopes, strict=True)}
     return {name: share.get(name, 1.0) * cov for name, cov in asked.covs.items()}
+
+
+def component_records(
+    path: Path,
+    asked: TestTable,
+    *,
+    survivors: str = "censored",
+    subsets: str = "pooled",
+    nominal_ratio: float | None = None,
+    table_factors: bool = False,
+    trend_level: float = 0.05,
+    split_at: float | None = None,
+    north_american: NorthAmericanQuestion | None = None,
+    mean_value: MeanValueQuestion | None = None,
+    description: str = "",
+    line: int | None = None,
+    tail_share: float | None = None,
+    second_layer: str | None = None,
+) -> ComponentRecords:
+    """Read the tests, and say how they are to be evaluated (as in ``ComponentRecords``).
+
+    Raises
+    ------
+    InputError
+        As `read_tests`.
+    """
+    found = read_tests(path, asked)
+    return ComponentRecords(
+        name=asked.name,
+        file=asked.file,
+        measured=asked.measured,
+        prediction=asked.prediction,
+        unit=asked.unit,
+        tests=found.tests,
+        ratio=found.ratio,
+        input_units=found.input_units,
+        survivors=survivors,
+        subsets=subsets,
+        covs=dict(asked.covs),
+        nominal_ratio=nominal_ratio,
+        known_scatter=dict(asked.known_scatter),
+        table_factors=table_factors,
+        trend_level=trend_level,
+        split_at=split_at,
+        north_american=north_american,
+        mean_value=mean_value,
+        description=description,
+        line=line,
+        gradient=found.gradient,
+        tail_share=tail_share,
+        second_layer=second_layer,
+    )
 
 
 def _check_capacities(asked: TestTable, measured: Sample, predicted: Sample) -> None:

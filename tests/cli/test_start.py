@@ -24,6 +24,7 @@ finally:
         (["--version"], set()),
         (["run", "--help"], {"pydantic"}),  # typer reads the options of a command with it
         (["fit", "-h"], {"pydantic"}),
+        (["resistance", "-h"], {"pydantic"}),
     ],
 )
 def test_help_loads_no_heavy_library(arguments, allowed):
@@ -37,7 +38,13 @@ def test_help_loads_no_heavy_library(arguments, allowed):
 
 def test_help_lists_the_commands_and_the_caution(calibrate):
     shown = " ".join(calibrate("--help").out.split())
-    for text in ("run Calibrate", "check Print", "fit Fit", "local codes and licensed practice prevail"):
+    for text in (
+        "run Calibrate",
+        "check Print",
+        "fit Fit",
+        "resistance Evaluate",
+        "local codes and licensed practice prevail",
+    ):
         assert text in shown
 
 
@@ -49,6 +56,7 @@ def test_help_lists_the_commands_and_the_caution(calibrate):
         (["run", "x.toml", "--sed", "1"], "No such option: --sed"),
         (["run", "x.toml", "--seed", "-1"], "--seed"),
         (["fit", "x.csv"], "--column"),
+        (["resistance", "x.csv", "--measured", "R"], "--prediction"),
     ],
 )
 def test_wrong_usage_ends_with_2_on_standard_error(calibrate, arguments, message):

@@ -11,7 +11,7 @@ import numpy as np
 from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.records import Exclude, Sample, TextForm, UnitBy
 from calibrate.resistance import FORMATS, Format, LoadStatistics, Part, format_named
-from calibrate.study.component_records import TestTable, read_tests, slips
+from calibrate.study.component_records import TestTable, component_records, slips
 from calibrate.study.model import ComponentRecords, MeanValueQuestion, NorthAmericanQuestion
 from calibrate.study.paths import resolve_inside
 from calibrate.study.reading.context import Reading
@@ -74,7 +74,22 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
         path = resolve_inside(
             content.file, reading.document.path, reading.project, allow_outside=reading.allow_outside
         )
-        found = read_tests(path, asked)
+        return component_records(
+            path,
+            asked,
+            survivors=content.survivors,
+            subsets=content.subsets,
+            nominal_ratio=content.nominal_ratio,
+            table_factors=content.factors == "table",
+            trend_level=content.trend_level,
+            split_at=content.split_at,
+            north_american=american,
+            mean_value=bias,
+            description=content.description.strip(),
+            line=reading.line(place),
+            tail_share=content.tail_share,
+            second_layer=content.second_layer,
+        )
     except InputError as error:
         first, *others = error.problems
         # The slip may be in the file or in what the study asks of it: the first problem names both.
@@ -82,31 +97,6 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
         hint = f"{first.suggestion} {line}" if first.suggestion else line
         reading.collect(InputError([dataclasses.replace(first, suggestion=hint), *others]), (*place, "file"))
         return None
-    return ComponentRecords(
-        name=name,
-        file=content.file,
-        measured=content.measured,
-        prediction=content.prediction,
-        unit=asked.unit,
-        tests=found.tests,
-        ratio=found.ratio,
-        input_units=found.input_units,
-        survivors=content.survivors,
-        subsets=content.subsets,
-        covs=dict(content.covs),
-        nominal_ratio=content.nominal_ratio,
-        known_scatter=dict(content.known_scatter),
-        table_factors=content.factors == "table",
-        trend_level=content.trend_level,
-        split_at=content.split_at,
-        north_american=american,
-        mean_value=bias,
-        description=content.description.strip(),
-        line=reading.line(place),
-        gradient=found.gradient,
-        tail_share=content.tail_share,
-        second_layer=content.second_layer,
-    )
 
 
 def _asked(reading: Reading, name: str, content: ResistanceEntry, place: Place) -> TestTable | None:
