@@ -10,6 +10,8 @@ from calibrate.cli.options import Json, Outside, Quiet, Seed, StudyFile
 
 HELP = "Read a study, check names, units and dimensions, build the grid, and print what was understood."
 
+_TEST_COUNTS = ("n", "survived", "subgroups", "clusters")
+
 
 def check(
     study: StudyFile,
@@ -49,6 +51,13 @@ def _print(summary: dict[str, Any], shown: str) -> None:
         ]
         heads = ["name", "file", "column or value", "unit", "n", "of these"]
         console.table(heads, rows, [False, False, False, False, True, False])
+    if summary["resistances"]:
+        console.heading("Component tests")
+        rows = [
+            [name, _short(r["file"]), *(str(r[key]) if r[key] else "–" for key in _TEST_COUNTS)]
+            for name, r in summary["resistances"].items()
+        ]
+        console.table(["name", "file", *_TEST_COUNTS], rows, [False, False, *[True] * len(_TEST_COUNTS)])
     if summary["quantities"]:
         console.heading("Quantities")
         rows = [

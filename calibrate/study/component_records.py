@@ -299,6 +299,7 @@ def component_records(
         description=description,
         line=line,
         gradient=found.gradient,
+        units=dict(asked.units),
         tail_share=tail_share,
         second_layer=second_layer,
     )

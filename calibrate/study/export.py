@@ -9,6 +9,8 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibrate.study.resistance_export import resistance_content, tests_csv
+
 if TYPE_CHECKING:
     from calibrate.actions.return_levels import ReturnLevels
     from calibrate.factors import FactorSet
@@ -209,6 +211,7 @@ def result_dict(result: Result) -> dict[str, Any]:
             for p in result.other_periods
         ],
         "sites": _sites(result),
+        "resistance": {name: resistance_content(study, found) for name, found in result.resistances.items()},
         "return_levels": {
             name: _levels(levels, result.study.records[result.study.variables[name].records or ""].unit.text)
             for name, levels in result.return_levels.items()
@@ -254,7 +257,7 @@ def result_json(result: Result) -> str:
 
 
 def table_files(result: Result) -> dict[str, bytes]:
-    """Return result.json, situations.csv, factors.csv, required_factors.csv and units.json as bytes by file name."""
+    """Return result.json and the tables of a result (situations.csv, factors.csv and so on) as bytes by file name."""
     texts = {
         "result.json": result_json(result),
         "situations.csv": result.situations.to_csv(index=False, lineterminator="\n"),
@@ -268,4 +271,6 @@ def table_files(result: Result) -> dict[str, bytes]:
         texts["combinations.csv"] = result.combinations.to_csv(index=False, lineterminator="\n")
     if result.accompanying is not None:
         texts["accompanying.csv"] = result.accompanying.to_csv(index=False, lineterminator="\n")
+    for name, found in result.resistances.items():
+        texts[f"tests_{name}.csv"] = tests_csv(found)
     return {name: text.encode("utf-8") for name, text in texts.items()}

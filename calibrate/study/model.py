@@ -77,9 +77,9 @@ class MeanValueQuestion:
 class ComponentRecords:
     """Component tests with the prediction of each, and what the study asks of them.
 
-    ``ratio`` is measured over predicted as a sample, ``unit`` that of the measured capacity, ``input_units`` those of
-    the inputs of the tests. ``covs`` are those of
-    the basic variables of the prediction, ``known_scatter`` what the ratio contains beside the model's own scatter.
+    ``ratio`` is measured over predicted as a sample, ``unit`` that of the measured capacity, ``units`` those of the
+    columns in the prediction as far as stated, ``input_units`` those of the inputs. ``covs`` are those of the basic
+    variables of the prediction, ``known_scatter`` what the ratio contains beside the model's own scatter.
     """
 
     name: str
@@ -108,6 +108,7 @@ class ComponentRecords:
     """Share of the tests that an evaluation of the lower tail alone uses."""
     second_layer: str | None = None
     """The tests of physical over numerical results, where these are numerical over formula."""
+    units: Mapping[str, Unit] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)

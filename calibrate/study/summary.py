@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from calibrate.expressions import Comparison
 from calibrate.study.events import find_events
-from calibrate.study.model import Rule, Study, Variable
+from calibrate.study.model import ComponentRecords, Rule, Study, Variable
 from calibrate.units import Unit
 
 FORMAT = "calibrate-check/1"
@@ -58,6 +58,7 @@ def check_summary(study: Study) -> dict[str, Any]:
             }
             for name, q in study.quantities.items()
         },
+        "resistances": {name: _resistance(r) for name, r in study.resistances.items()},
         "variables": {name: _variable(study, v) for name, v in study.variables.items()},
         "sites": {
             name: {
@@ -86,6 +87,20 @@ def check_summary(study: Study) -> dict[str, Any]:
             "d": study.objective.scale if study.objective.penalty == "asymmetric" else None,
         },
         "doubts": [{"code": d.code, "message": d.message, "where": d.where} for d in study.doubts],
+    }
+
+
+def _resistance(records: ComponentRecords) -> dict[str, Any]:
+    tests = records.tests
+    return {
+        "file": records.file,
+        "measured": records.measured,
+        "prediction": records.prediction,
+        "unit": records.unit.text,
+        "n": tests.n,
+        "survived": tests.n - tests.n_failed,
+        "subgroups": len(tests.subgroups),
+        "clusters": 0 if tests.cluster is None else len(set(tests.cluster.tolist())),
     }
 
 
