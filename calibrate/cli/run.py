@@ -57,6 +57,7 @@ def run(
 def _summary(result: Result, directory: Path) -> None:
     from calibrate.cli.app import CAUTION
     from calibrate.report import numbers, outcome, sites
+    from calibrate.report.resistance_routes import routes_table
 
     study = result.study
     console.line(f"{study.title}  ({study.shown})")
@@ -82,6 +83,9 @@ def _summary(result: Result, directory: Path) -> None:
             f"Size {change.size} of {change.rule}, proposed over present: {numbers.change(change.mean)} on average, "
             f"{numbers.change(float(change.ratio.min()))} to {numbers.change(float(change.ratio.max()))}."
         )
+    for name, tests in result.resistances.items():
+        console.heading(f"Resistance from tests: {name}")
+        console.report_table(routes_table(tests).without("what it allows for"))
     periods = outcome.period_table(result)
     if periods is not None:
         console.heading("The same with proposed factors for other periods")

@@ -14,6 +14,7 @@ from calibrate.report.axis_figure import beta_by_axis, panel_axes
 from calibrate.report.distribution_figure import beta_distribution
 from calibrate.report.outcome import sensitivities, size_changes
 from calibrate.report.required_figure import drawn_factors, required_factors
+from calibrate.report.resistance_figures import resistance_figures
 from calibrate.report.sensitivity_figure import sensitivity
 from calibrate.report.size_figure import size_change
 from calibrate.units import format_unit
@@ -42,7 +43,8 @@ def figures(result: Result, meanwhile: Callable[[], None] | None = None) -> dict
     ``sensitivity`` where a beta was found, ``sample_<records>`` for samples that need a look,
     ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those
     that matter, ``return_levels_<variable>`` for block maxima, ``threshold_<variable>`` and
-    ``return_levels_<variable>`` for exceedances.
+    ``return_levels_<variable>`` for exceedances; of component tests ``tests_<resistance>``,
+    ``errors_<resistance>``, ``error_<resistance>_<covariate>`` and ``clusters_<resistance>``.
     """
     with style.context():
         makers = dict(_all(result))
@@ -76,6 +78,7 @@ def _all(result: Result) -> Iterator[tuple[str, Maker]]:
         yield "sensitivity", partial(sensitivity, result, found)
     yield from _probability(result)
     yield from _exceedances(result)
+    yield from resistance_figures(result.resistances)
 
 
 def _probability(result: Result) -> Iterator[tuple[str, Maker]]:

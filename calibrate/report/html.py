@@ -26,6 +26,7 @@ from calibrate.report.figures import tail_of
 from calibrate.report.fit_files import candidate_table
 from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
 from calibrate.report.probability_paper import CAPTION
+from calibrate.report.resistance_section import resistance_sections
 from calibrate.report.symbols import Html
 from calibrate.study.other_periods import WHY
 
@@ -162,6 +163,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
             name: (exceedance_table(f, inputs.unit_of_records(result, name)), exceedance_sentence(f))
             for name, f in result.exceedances.items()
         },
+        "resistances": resistance_sections(result),
         "modes": {name: evidence.mode_table(f.modes) for name, f in result.fitted.items() if f.modes},
         "bonds": evidence.bond_table(result),
         "pedigree": evidence.pedigree_table(result),

@@ -119,8 +119,45 @@ def probability_figure(
         Probability at which a thin line is drawn, such as 0.05.
     """
     assert fit.distribution is not None, "a failed fit has no line"
-    distribution, paper = fit.distribution, _paper(fit.distribution)
     seen = fit.observations
+    title = f"{fit.family}, n = {seen.n}"
+    return paper_figure(
+        fit.distribution,
+        seen,
+        label=label,
+        unit=unit,
+        title=title + (f", {seen.n - seen.n_exact} known by bounds" if seen.censored else ""),
+        width_mm=width_mm,
+        height_mm=height_mm,
+        fractile=fractile,
+    )
+
+
+def paper_figure(
+    distribution: Distribution,
+    seen: Observations,
+    *,
+    label: str,
+    unit: str,
+    title: str,
+    width_mm: float = 84.0,
+    height_mm: float = 66.0,
+    fractile: float | None = None,
+) -> Figure:
+    """Return a sample on the paper of a distribution, fitted or not; use it inside ``style.context()``.
+
+    Parameters
+    ----------
+    distribution : Distribution
+        The line.
+    seen : Observations
+        The sample, in the unit of the distribution.
+    label, unit, width_mm, height_mm, fractile
+        As in `probability_figure`.
+    title : str
+        Above the figure.
+    """
+    paper = _paper(distribution)
     values, at = positions(seen)
     n = seen.n
     shown = _shown(values.size)
@@ -144,9 +181,7 @@ def probability_figure(
         axes.axhline(at, color=style.PLUM, linewidth=0.7, linestyle=(0, (4, 2)))
     axes.set_xlabel(f"{label} ({unit})" if unit else label, parse_math=True)
     axes.set_ylabel("probability of not being exceeded")
-    axes.set_title(
-        f"{fit.family}, n = {n}" + (f", {n - seen.n_exact} known by bounds" if seen.censored else "")
-    )
+    axes.set_title(title)
     return drawn
 
 

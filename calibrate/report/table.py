@@ -28,6 +28,11 @@ def as_text(values: Values) -> list[str]:
     return [numbers.NONE if v is None or v == "" else v if isinstance(v, str) else str(v) for v in values]
 
 
+def as_given(values: Values) -> list[str]:
+    """Write texts as they are, empty ones as empty cells."""
+    return [str(v) for v in values]
+
+
 def each(function: Callable[..., str], *arguments: Any) -> Show:
     """Return the way to write a column whose values are written one by one."""
 
