@@ -93,6 +93,7 @@ def environment() -> Environment:
     )
     environment.filters["name"] = symbols.html
     environment.filters["path"] = symbols.path
+    environment.filters["running"] = symbols.running
     return environment
 
 

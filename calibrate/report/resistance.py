@@ -45,12 +45,14 @@ _PROPAGATED = {
 def tests_sentence(found: ResistanceResult) -> str:
     """Return how many tests there are, how they ended and what they belong to."""
     records, tests = found.records, found.records.tests
-    parts = [
-        f"{numbers.count(tests.n, 'test')} from {records.file}: {numbers.whole(tests.n_failed)} ended in failure"
-    ]
     if stopped := tests.n - tests.n_failed:
-        parts.append(f"{numbers.whole(stopped)} were stopped before and {_SURVIVORS[records.survivors]}")
-    text = ", ".join(parts)
+        ends = (
+            f"{numbers.whole(tests.n_failed)} ended in failure, {numbers.whole(stopped)} were stopped before and "
+            f"{_SURVIVORS[records.survivors]}"
+        )
+    else:
+        ends = "all ended in failure"
+    text = f"{numbers.count(tests.n, 'test')} from {records.file}: {ends}"
     if gone := len(records.ratio.excluded):
         text += f"; {numbers.whole(gone)} more were left out (see Screening of records)"
     groups = len(tests.subgroups)
@@ -88,10 +90,10 @@ def steps_table(annex: AnnexD8) -> Table:
     strong = {i for i, row in enumerate(rows) if row[1] in ("r_d", "gamma_M")}
     return Table(
         (
-            Column("step", steps, as_given),
+            Column("step", [symbols.running(s) for s in steps], as_given),
             Column("", [row[1] for row in rows], kind="name"),
             Column("value", [row[2] for row in rows], aligned(_DIGITS), "number"),
-            Column("how", [row[3] for row in rows]),
+            Column("how", [symbols.running(row[3]) for row in rows]),
         ),
         frozenset(strong),
     )

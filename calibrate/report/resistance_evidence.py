@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from calibrate.report import numbers
+from calibrate.report import numbers, symbols
+from calibrate.report.symbols import Html
 from calibrate.report.table import Column, Table, each
 
 if TYPE_CHECKING:
@@ -18,6 +19,7 @@ if TYPE_CHECKING:
         TrendOptions,
         Trends,
     )
+    from calibrate.study.component_tests import ResistanceResult
 
 MOST_CLUSTERS = 40
 """A longer table of clusters shows only those whose tests matter most."""
@@ -85,7 +87,8 @@ def _option_name(options: TrendOptions, option: Option) -> str:
     at = numbers.significant(options.split_at, 3)
     if option.kind == "correct":
         reference = numbers.significant(option.reference, 3)
-        return f"correct: times ({options.covariate}/{reference})^{numbers.fixed(option.slope, 2)}"
+        power = numbers.fixed(option.slope, 2)
+        return Html(f"correct: times ({symbols.html(options.covariate)}/{reference})<sup>{power}</sup>")
     return {
         "leave": "leave it",
         "split": f"split at {at}",
@@ -98,14 +101,19 @@ def _joined(values: object) -> str:
     return " / ".join(numbers.fixed(float(v), 3) for v in np.ravel(np.asarray(values)))
 
 
-def options_sentence(options: TrendOptions) -> str:
-    """Return how to read the table of options."""
-    return (
-        f"Worst β is that of the resistance alone, over the {options.covariate} of the option’s tests, if the fitted "
-        f"trend is true; target {numbers.significant(options.target)}. A lower BIC and a higher cross-validated score "
-        "(mean log density of each test as predicted from the others) are better; they compare options on the same "
-        "tests only. Options rest on the tests that failed."
+def options_sentence(found: ResistanceResult) -> str:
+    """Return how to read the tables of options; empty without one."""
+    if not found.options:
+        return ""
+    target = numbers.significant(found.options[0].target)
+    text = (
+        "Worst β is that of the resistance alone, over the covariate in the option’s tests, if the fitted trend is true; "
+        f"target {target}. A lower BIC and a higher cross-validated score (mean log density of each test as predicted "
+        "from the others) are better; both compare options on the same tests only."
     )
+    if found.trends.stopped:
+        text += " Options rest on the tests that failed, so that the power may differ from the slope above."
+    return text
 
 
 def cluster_table(clusters: ClusterEffects, n: int) -> Table:
@@ -172,29 +180,38 @@ def separation_table(found: ScatterSeparation) -> Table:
     """Return the observed scatter, what is known of it, and what is left for the model."""
     show = numbers.significant
     freedom = numbers.significant(found.freedom)
+    squared = Html(symbols.html("V_theta") + "²")
     rows = [
-        ("V_obs", show(found.observed_cov), f"of the tests, {freedom} degrees of freedom"),
-        *((f"V_{name}", show(v), "known, given") for name, v in found.known.items()),
-        ("V_known", show(found.known_cov), "known parts together, √(Π(1 + V²) − 1)"),
-        ("V_theta²", show(found.cov_squared), "(1 + V_obs²)/(1 + V_known²) − 1"),
-        ("V_theta²", show(found.cov_squared_first_order), "V_obs² − ΣV², first order"),
-        ("V_theta", show(found.cov), "the model’s own" if math.isfinite(found.cov) else "does not exist"),
+        (symbols.html("V_obs"), show(found.observed_cov), f"of the tests, {freedom} degrees of freedom"),
+        *((symbols.html(f"V_{name}"), show(v), "known, given") for name, v in found.known.items()),
+        (symbols.html("V_known"), show(found.known_cov), "known parts together, √(Π(1 + V²) − 1)"),
+        (squared, show(found.cov_squared), "(1 + V_obs²)/(1 + V_known²) − 1"),
+        (squared, show(found.cov_squared_first_order), "V_obs² − ΣV², first order"),
+        (
+            symbols.html("V_theta"),
+            show(found.cov),
+            "the model’s own" if math.isfinite(found.cov) else "does not exist",
+        ),
     ]
-    columns = zip(*rows, strict=True)
-    heads, kinds = ("", "value", "how"), ("name", "number", "text")
-    table = tuple(
-        Column(head, list(column), kind=kind)  # type: ignore[arg-type]
-        for head, column, kind in zip(heads, columns, kinds, strict=True)
+    names, values, how = zip(*rows, strict=True)
+    columns = (
+        Column("", list(names)),
+        Column("value", list(values), kind="number"),
+        Column("how", [symbols.running(text) for text in how]),
     )
-    return Table(table, frozenset({len(rows) - 1}))
+    return Table(columns, frozenset({len(rows) - 1}))
 
 
 def separation_sentence(found: ScatterSeparation) -> str:
     """Return how certain the model's own scatter is."""
     low, high = (numbers.significant(v, 3) for v in found.interval)
+    if found.probability_negative > 0.0:
+        exceed = f"with probability {numbers.probability(found.probability_negative)}"
+    else:
+        exceed = f"in none of {numbers.whole(found.replicates)} simulated values"
     return (
-        f"{numbers.share(found.level, 0)} interval of V_θ²: {low} to {high}; the known parts exceed the whole with "
-        f"probability {numbers.probability(found.probability_negative)}. Nothing is clipped."
+        f"{numbers.share(found.level, 0)} interval of V_θ²: {low} to {high}; the known parts exceed the whole "
+        f"{exceed}. Nothing is clipped."
     )
 
 

@@ -271,10 +271,10 @@ def _log_errors(axes: Axes, delta: Array) -> None:
     room = (high / low) ** 0.08
     axes.set_ylim(min(low, 1.0) / room, max(high, 1.0) * room)
     axes.set_ylabel(r"error $\delta$", parse_math=True)
-    _few_ticks(axes.yaxis, low, high)
+    _few_ticks(axes.yaxis, low, high, fine=True)
 
 
-def _few_ticks(axis: Any, low: float, high: float) -> None:
+def _few_ticks(axis: Any, low: float, high: float, *, fine: bool = False) -> None:
     """Rule a logarithmic axis at a few round numbers, written in full."""
     from matplotlib.ticker import FixedLocator, FuncFormatter, Locator, LogLocator, MaxNLocator, NullLocator
 
@@ -285,7 +285,8 @@ def _few_ticks(axis: Any, low: float, high: float) -> None:
     else:
         first = math.floor(math.log10(low)) - 1
         decades = [10.0 ** (first + k) for k in range(6)]
-        steps = (1.0, 1.25, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0) if high / low < 6.0 else (1.0, 2.0, 5.0)
+        steps = (1.0, 2.0, 5.0) if high / low > 6.0 else (1.0, 1.5, 2.0, 3.0, 4.0, 6.0, 8.0)
+        steps = (*steps, 1.25, 2.5) if fine and high / low < 6.0 else steps
         locator = FixedLocator([d * s for d in decades for s in steps])
     axis.set_major_locator(locator)
     axis.set_minor_locator(NullLocator())

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from calibrate.report import numbers
+from calibrate.report import numbers, symbols
 from calibrate.report.table import Column, Table, as_given, each
 
 if TYPE_CHECKING:
@@ -24,15 +24,15 @@ def american_table(found: NorthAmericanFactor) -> Table:
     limit = "lower limit governs" if found.floor_governs else "as tested"
     rows = [
         ("M_m", found.material.mean, "material, mean over nominal"),
-        ("V_M", found.material.cov, ""),
+        ("V_M", found.material.cov, "its coefficient of variation"),
         ("F_m", found.fabrication.mean, "fabrication, mean over nominal"),
-        ("V_F", found.fabrication.cov, ""),
+        ("V_F", found.fabrication.cov, "its coefficient of variation"),
         ("P_m", found.professional.mean, f"tested over predicted, mean of {tests}"),
-        ("V_P", found.professional.cov, "of the tests"),
+        ("V_P", found.professional.cov, "coefficient of variation of the tests"),
         ("V_P", found.v_p, f"in use: {limit}"),
         ("C_P", found.c_p, "(1 + 1/n)(n − 1)/(n − 3)" if found.n > 3 else "for three tests"),
-        ("C_phi", found.c_phi, f"{found.coefficients}"),
-        ("V_Q", found.v_q, f"{found.coefficients}"),
+        ("C_phi", found.c_phi, f"factored over mean load, {found.coefficients}"),
+        ("V_Q", found.v_q, f"scatter of the loads, {found.coefficients}"),
         ("beta_0", found.format.target, f"target of {found.format.name}"),
         ("V", found.v_total, "√(V_M² + V_F² + C_P V_P² + V_Q²)"),
         ("phi", found.phi, "C_φ M_m F_m P_m exp(−β_0 V)"),
@@ -43,7 +43,7 @@ def american_table(found: NorthAmericanFactor) -> Table:
         (
             Column("", list(names), kind="name"),
             Column("value", list(values), each(numbers.fixed, 3), "number"),
-            Column("how", list(how)),
+            Column("how", [symbols.running(text) for text in how]),
         ),
         frozenset({len(rows) - 2}),
     )
@@ -102,8 +102,8 @@ def mean_value_sentence(found: ResistanceResult) -> str:
         f"Target β = {numbers.significant(asked.target)}; load factors {of(loads.dead_factor)} (dead) and "
         f"{of(loads.live_factor)} (live), mean over nominal {of(loads.dead_bias)} and {of(loads.live_bias)}, "
         f"coefficients of variation {of(loads.dead_cov)} and {of(loads.live_cov)}. The closed form takes V_Q without "
-        "weights, √(V_D² + V_L²); FORM has the two loads as separate lognormal variables. Bias and scatter of the resistance "
-        "are plain estimates from the tests."
+        "weights, √(V_D² + V_L²); FORM has the two loads as separate lognormal variables. Bias and scatter of "
+        "the resistance are plain estimates from the tests."
     )
 
 
@@ -123,7 +123,7 @@ def routes_table(found: ResistanceResult) -> Table:
     ]
     if any(r.kind == "phi" for r in routes):
         columns.append(Column("phi", of("phi"), show, "number", symbol=True))
-    return Table((*columns, Column("what it allows for", [r.statement for r in routes])))
+    return Table((*columns, Column("what it allows for", [symbols.running(r.statement) for r in routes])))
 
 
 def why_routes_differ(found: ResistanceResult) -> str:
@@ -166,9 +166,9 @@ def why_routes_differ(found: ResistanceResult) -> str:
         )
     if any(r.kind == "phi" for r in found.routes):
         texts.append(
-            "A resistance factor φ multiplies the prediction and holds for its own load factors, loads and target; a "
-            "partial factor γ_M divides a characteristic value. φ and γ_M mean different things and are not to be "
-            "compared as numbers."
+            "A resistance factor φ multiplies the nominal resistance and holds for its own load factors, loads and "
+            "target; a partial factor γ_M divides a characteristic value. φ and γ_M mean different things and are not "
+            "to be compared as numbers."
         )
     return " ".join(texts)
 
@@ -177,13 +177,14 @@ def ledger_table(ledger: Ledger) -> Table:
     """Return where the number of tests enters, one line for each path."""
     lines = [(path, ledger.on(path)) for path in ledger.paths]
     columns = [
-        Column("from the tests to", [path.split(" to ", 1)[-1] for path, _ in lines]),
+        Column("from the tests to", [symbols.running(path.split(" to ", 1)[-1]) for path, _ in lines]),
         Column("n", [min(e.n for e in on) for _, on in lines], kind="number"),
         *(
             Column(
                 mechanism,
                 ["✓" if mechanism in {e.mechanism for e in on} else "" for _, on in lines],
                 as_given,
+                symbol=mechanism in ("k_n", "C_P"),
             )
             for mechanism in _MECHANISMS
         ),

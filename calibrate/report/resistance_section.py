@@ -31,6 +31,7 @@ def _section(result: Result, found: ResistanceResult) -> dict[str, Any]:
     return {
         "description": found.records.description,
         "sentence": resistance.tests_sentence(found),
+        "stopped": found.records.tests.n - found.records.tests.n_failed,
         "measured": found.records.measured,
         "unit": found.records.unit.text,
         "formula": resistance.prediction_formula(found.records),
@@ -41,9 +42,8 @@ def _section(result: Result, found: ResistanceResult) -> dict[str, Any]:
         "subsets_sentence": resistance.subsets_sentence(found),
         "trends": evidence.trend_table(found.trends),
         "trend_sentence": evidence.trend_sentence(found.trends),
-        "options": [
-            (o.covariate, evidence.options_table(o), evidence.options_sentence(o)) for o in found.options
-        ],
+        "options": [(o.covariate, evidence.options_table(o)) for o in found.options],
+        "options_sentence": evidence.options_sentence(found),
         "clusters": None
         if clusters is None
         else (

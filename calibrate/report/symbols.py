@@ -53,6 +53,20 @@ def plain(name: str) -> str:
     return name_plain(name)
 
 
+_INDEXED = re.compile(r"(?<!\w)([A-Za-zα-ωΑ-Ω])_([A-Za-z0-9α-ωΑ-Ω∞]+(?:,[A-Za-z0-9α-ωΑ-Ω∞]+)*)")
+
+
+def running(text: str) -> Html:
+    """Return running text with its one-letter symbols typeset, such as ``k_d,n``; escaped.
+
+    Examples
+    --------
+    >>> running("k_n < 2")
+    '<i>k</i><sub>n</sub> &lt; 2'
+    """
+    return Html(kept(Html(_INDEXED.sub(r"<i>\1</i><sub>\2</sub>", escape(text)))))
+
+
 def drawn(name: str) -> str:
     """Return a name for figures, as a formula of matplotlib: slanted letter, upright index."""
     shown = symbol(name)

@@ -30,7 +30,7 @@ def as_text(values: Values) -> list[str]:
 
 def as_given(values: Values) -> list[str]:
     """Write texts as they are, empty ones as empty cells."""
-    return [str(v) for v in values]
+    return list(values)
 
 
 def each(function: Callable[..., str], *arguments: Any) -> Show:

@@ -34,25 +34,25 @@ def uncertainty_ledger(study: Study, found: ResistanceResult) -> Ledger:
         LedgerEntry(
             subject,
             "none" if annex.many else "k_n",
-            to("gamma_M of EN 1990 D.8"),
+            to("γ_M of EN 1990 D.8"),
             annex.error.size,
             "EN 1990 D.8",
         ),
-        LedgerEntry(subject, "k_n", to("gamma_M from the sample of ratios"), found.direct.n, "EN 1990 D.7"),
+        LedgerEntry(subject, "k_n", to("γ_M from the sample of ratios"), found.direct.n, "EN 1990 D.7"),
     ]
     if found.clusters is not None:
         entries.append(
             LedgerEntry(
-                subject, "k_n", to("gamma_M with scatter between clusters"), found.direct.n, "EN 1990 D.7"
+                subject, "k_n", to("γ_M with scatter between clusters"), found.direct.n, "EN 1990 D.7"
             )
         )
     if (american := found.north_american) is not None:
-        path = to(f"phi of {american.format.name}")
+        path = to(f"φ of {american.format.name}")
         entries.append(LedgerEntry(subject, "C_P", path, american.n, "AISI S100"))
         if american.floor_governs:
             entries.append(LedgerEntry(subject, "floor on V", path, american.n, "AISI S100"))
     if found.mean_value is not None:
-        entries.append(LedgerEntry(subject, "none", to("phi from bias statistics"), annex.error.size))
+        entries.append(LedgerEntry(subject, "none", to("φ from bias statistics"), annex.error.size))
     entries += [
         LedgerEntry(
             f"variables.{variable.name}",
