@@ -192,8 +192,9 @@ def evaluate(
             target=target_beta,
             where=where,
         )
-        for covariate, flagged in zip(tendency.names, tendency.flagged, strict=True)
-        if flagged
+        for covariate in tendency.with_trend
+        # The options correct by a power of the covariate; one that is not positive has none.
+        if (tests.inputs.get(covariate, tests.predicted)[failed] > 0.0).all()
     )
     clusters = None
     if tests.cluster is not None and len(set(tests.cluster[failed].tolist())) > 1:

@@ -12,6 +12,7 @@ from calibrate.factors import Calibration
 from calibrate.study.action_doubts import action_doubts
 from calibrate.study.evidence_doubts import evidence_doubts
 from calibrate.study.fits import RecordModel, fit_doubts
+from calibrate.study.mean_limits import mean_limit_doubts
 from calibrate.study.model import Study
 
 STOP_SHARE = 0.05
@@ -35,6 +36,7 @@ def study_doubts(
     """
     return (
         *fit_doubts(fitted),
+        *mean_limit_doubts(study, fitted),
         *evidence_doubts(study, fitted, calibration),
         *_negative_mass(study, calibration),
         *action_doubts(study, calibration),

@@ -35,6 +35,7 @@ from calibrate.study.tables import (
     used_distributions,
     variable_results,
 )
+from calibrate.study.tested_range import beyond_tests
 from calibrate.study.uncertainty_ledger import uncertainty_ledger
 
 Progress = Callable[[str, float], None]
@@ -108,6 +109,7 @@ def run(
         *period_doubts(study, periods),
         *doubts_of_combination(study, calibration),
         *(d for r in resistances.values() for d in (*r.doubts, *uncertainty_ledger(study, r).doubts)),
+        *beyond_tests(study),
         *(() if exact is None else exact.doubts),
         *site_doubts(study, by_site, row_weights(study)),
         *calibration.doubts,

@@ -2,11 +2,28 @@
 
 from __future__ import annotations
 
+import dataclasses
+
 import numpy as np
 import pytest
+from scipy import stats
 
 import calibrate
+from calibrate.engine import stream
 from calibrate.errors import InputError
+from calibrate.resistance import (
+    FractileFactor,
+    Fractiles,
+    annex_d8,
+    cluster_effects,
+    mean_value_factors,
+    north_american_factor,
+    predictive_design_value,
+    professional_part,
+    separate_scatter,
+)
+from calibrate.study.component_tests import evaluate, evaluate_resistances
+from calibrate.study.fits import fit_variables
 
 STUDY = """
 format = 1
@@ -228,3 +245,184 @@ def test_subgroups_are_no_failure_modes(study):
     made = study(tests='subgroup = "kind"')
     assert set(made.resistances["anchors"].tests.subgroups) == {"a", "b"}
     assert set(made.records["anchors"].labels) == {"lot"}
+
+
+# What the evaluation says
+
+
+def test_the_model_factor_is_the_lognormal_fit_of_the_ratios_with_survivors(study):
+    rows = invented_rows(survivors=9)
+    made = study(rows)
+    ratio, stopped = ratios(rows)
+    found = fit_variables(made)["theta"].distribution
+    witness = stats.CensoredData(uncensored=ratio[~stopped], right=ratio[stopped])
+    shape, _, scale = stats.lognorm.fit(witness, floc=0.0)
+    assert float(found.parameters["median"]) == pytest.approx(scale, rel=1e-4)
+    assert float(found.parameters["log_sd"]) == pytest.approx(shape, rel=1e-3)
+    logs = np.log(ratio)
+
+    def log_likelihood(median, log_sd):
+        z = (logs - np.log(median)) / log_sd
+        return np.sum(stats.norm.logpdf(z[~stopped]) - np.log(log_sd)) + np.sum(stats.norm.logsf(z[stopped]))
+
+    ours = log_likelihood(float(found.parameters["median"]), float(found.parameters["log_sd"]))
+    assert ours >= log_likelihood(scale, shape) - 1e-8
+
+
+def test_known_scatter_is_taken_out_in_closed_form(study):
+    rows = invented_rows()
+    made = study(rows, tests="known_scatter = { measurement = 0.05, coupons = 0.04 }")
+    found = evaluate_resistances(made)["anchors"]
+    predicted, measured = (getattr(found.records.tests, k) for k in ("predicted", "experimental"))
+    b = (measured @ predicted) / (predicted @ predicted)
+    observed = np.log(measured / (b * predicted)).var(ddof=1)
+    own = observed - np.log1p(0.05**2) - np.log1p(0.04**2)
+    assert found.separation.log_variance == pytest.approx(own, rel=1e-10)
+    theta = fit_variables(made)["theta"].distribution
+    assert float(theta.parameters["log_sd"]) == pytest.approx(np.sqrt(own), rel=1e-10)
+
+
+def test_known_scatter_larger_than_the_whole_is_doubted_in_the_result(study):
+    made = study(tests="known_scatter = { material = 0.30 }")
+    result = calibrate.run(made)
+    (doubt,) = [d for d in result.doubts if d.code == "negative-model-scatter"]
+    assert doubt.where == "resistance.anchors"
+    plain = fit_variables(study())["theta"].distribution
+    # No model factor without scatter is made up: it stays as the tests gave it.
+    assert result.variables["theta"].parameters["log_sd"][0] == float(plain.parameters["log_sd"])
+
+
+PART = "{ mean = 1.05, cov = 0.06 }"
+MORE_ROUTES = (
+    f'north_american = {{ format = "LRFD members", material = {PART}, fabrication = {PART} }}\n'
+    "mean_value = { target = 2.5, loads = { dead_factor = 1.25, live_factor = 1.75, dead_to_live = [0.5, 2.0], "
+    "dead_bias = 1.05, live_bias = 1.15, dead_cov = 0.1, live_cov = 0.2 } }\n"
+    "covs = { D = 0.02, f = 0.06 }\nnominal_ratio = 0.9\nfactors = 'table'"
+)
+
+
+def test_the_routes_are_those_of_direct_calls(study):
+    made = study(tests=MORE_ROUTES, change=[("beta = 3.0", "beta = 3.8")])
+    found = evaluate_resistances(made)["anchors"]
+    tests = found.records.tests
+    fractiles = Fractiles(target_beta=3.8, alpha_r=0.8, fractile=0.05, source="table")
+    annex = annex_d8(tests, {"D": 0.02, "f": 0.06}, nominal=0.9, fractiles=fractiles)
+    direct = predictive_design_value(tests.ratio, fractiles=fractiles)
+    k, d = FractileFactor.predictive(0.05), FractileFactor.predictive(stats.norm.sf(0.8 * 3.8))
+    clusters = cluster_effects(
+        tests.ratio, tests.cluster, characteristic=k, design=d, other_log_sd=annex.q_rt
+    )
+    question = found.records.north_american
+    american = north_american_factor(
+        professional_part(tests.ratio),
+        tests.n,
+        material=question.material,
+        fabrication=question.fabrication,
+        design_format=question.format,
+        coefficients="printed",
+    )
+    bias = mean_value_factors(tests.ratio.mean(), annex.v_r, 2.5, found.records.mean_value.loads)
+    expected = [
+        annex.gamma_m,
+        direct.gamma_m,
+        clusters.partial_factor,
+        american.phi,
+        bias.lognormal.min(),
+        bias.form.phi.min(),
+    ]
+    assert [r.factor for r in found.routes] == pytest.approx(expected, rel=1e-12)
+    assert found.annex.gamma_m_star == pytest.approx(0.9 / annex.r_d, rel=1e-12)
+
+
+def test_null_data_raise_no_trend_and_no_cluster(study):
+    found = evaluate_resistances(study(invented_rows(n=64)))["anchors"]
+    assert found.options == ()
+    assert {"trend", "clusters-matter", "beyond-tests"}.isdisjoint(d.code for d in found.doubts)
+
+
+def test_planted_trend_and_sites_are_found(study):
+    found = evaluate_resistances(study(invented_rows(n=64, slope=-0.4)))["anchors"]
+    assert "D" in found.trends.with_trend
+    j = found.trends.names.index("D")
+    ratio, _ = ratios(invented_rows(n=64, slope=-0.4))
+    line = stats.linregress(np.log(found.records.tests.inputs["D"]), np.log(ratio))
+    assert found.trends.slope[j] == pytest.approx(line.slope, rel=1e-9)
+    assert line.slope == pytest.approx(-0.4, abs=4 * line.stderr)
+    assert "trend" in {d.code for d in found.doubts}
+    found = evaluate_resistances(study(invented_rows(n=64, site_sd=0.25)))["anchors"]
+    assert "clusters-matter" in {d.code for d in found.doubts}
+
+
+def test_an_input_that_is_not_positive_may_have_a_trend(study):
+    rows = invented_rows(n=64, slope=-0.8)
+    rows = [{**r, "offset": f"{float(r['D']) - 14.0:.3f}"} for r in rows]
+    found = evaluate_resistances(study(rows, tests='inputs = ["offset", "D"]'))["anchors"]
+    assert set(found.trends.with_trend) == {"offset", "prediction", "D"}
+    assert {o.covariate for o in found.options} == {"prediction", "D"}
+
+
+def test_what_cannot_be_evaluated_is_told_with_the_section(study):
+    rows = [{**r, "end": "stopped" if i > 2 else "failed"} for i, r in enumerate(invented_rows(8))]
+    found = problem_of(lambda: evaluate_resistances(study(rows)), "[resistance.anchors]")
+    assert found.line == 9
+
+
+def test_the_target_of_the_evaluation_is_that_asked_for(study):
+    records = study().resistances["anchors"]
+    low, high = (evaluate(records, beta, 1).annex for beta in (2.0, 4.0))
+    assert high.r_d < low.r_d
+    assert high.r_k == low.r_k
+
+
+def test_the_separation_depends_on_the_seed_alone(study):
+    made = study(tests="known_scatter = { measurement = 0.05 }")
+    found = evaluate_resistances(made)["anchors"].separation
+    again = separate_scatter(
+        evaluate_resistances(made)["anchors"].annex.v_delta,
+        39,
+        {"measurement": 0.05},
+        stream(7, "resistance", "anchors"),
+    )
+    assert found.interval == again.interval
+    other = evaluate_resistances(dataclasses.replace(made, seed=8))["anchors"].separation
+    assert other.interval != found.interval
+
+
+# Where the situations lie against the tests
+
+
+def codes(result, code):
+    return [d for d in result.doubts if d.code == code]
+
+
+def test_situations_beyond_the_tests_are_doubted_with_their_share(study):
+    # Tests from 8 to 24 mm; the grid in another unit of length, each level with a quarter of the weight.
+    assert not codes(calibrate.run(study()), "beyond-tests")
+    wide = study(change=[('values = [10, 20], unit = "mm"', 'values = [1, 2, 3, 4], unit = "cm"')])
+    (doubt,) = codes(calibrate.run(wide), "beyond-tests")
+    assert doubt.where == "resistance.anchors"
+    assert "50 % of the weight of the design situations lies beyond the tested range of 'D'" in doubt.message
+    assert "used from 10 to 40 mm" in doubt.message
+
+
+def test_weights_count_and_quantities_too(study):
+    wide = [('values = [10, 20], unit = "mm"', 'values = [10, 20, 30], unit = "mm"')]
+    weighted = study(
+        change=[*wide, ("[situations.axes]", "[situations]\nweight = 'D / u'\n[situations.axes]")],
+        quantities='u = "1 mm"',
+    )
+    (doubt,) = codes(calibrate.run(weighted), "beyond-tests")
+    assert doubt.message.startswith("50 % of the weight")
+    (doubt,) = codes(calibrate.run(study(quantities='f = "900 MPa"')), "beyond-tests")
+    assert "100 % of the weight of the design situations lies beyond the tested range of 'f'" in doubt.message
+
+
+def test_an_axis_of_another_dimension_is_not_compared_in_silence(study):
+    change = [('values = [10, 20], unit = "mm"', "values = [10, 20]")]
+    (doubt,) = codes(calibrate.run(study(change=change)), "beyond-tests-not-checked")
+    assert "'D' is an input of the tests (a length (m))" in doubt.message
+
+
+def test_a_model_factor_in_no_rule_claims_nothing(study):
+    change = [("values = [10, 20]", "values = [100, 200]"), ("theta * R_n >= E", "R_n >= E")]
+    assert not codes(calibrate.run(study(change=change)), "beyond-tests")

@@ -148,7 +148,14 @@ def _characteristic(
     model = variables[of] if isinstance(variables[of], dict) else {}
     sample = records.get(str(model.get("records")))
     if sample is None:
-        if "records" not in model:
+        if "resistance" in model:
+            reading.problem(
+                f"names the variable '{of}', a model factor from component tests; their characteristic and design "
+                "values are evaluated with the tests.",
+                (*place, "characteristic_of"),
+                'Take them from the results, and say what they are: { value = "…", of = "…", is = "5 % fractile" }.',
+            )
+        elif "records" not in model:
             reading.problem(
                 f"names the variable '{of}', which has no records; a characteristic value comes from tests.",
                 (*place, "characteristic_of"),

@@ -11,6 +11,7 @@ from calibrate.factors import PENALTIES
 from calibrate.study.model import Objective, Study
 from calibrate.study.paths import project_folder
 from calibrate.study.reading import schema
+from calibrate.study.reading.allowances import check_allowances
 from calibrate.study.reading.bonds import bound, read_bonds
 from calibrate.study.reading.combination import read_combination
 from calibrate.study.reading.context import Reading
@@ -85,12 +86,8 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     bonds = read_bonds(reading, quantities_raw, variables_raw, records, 0 if head is None else head.seed)
     typed = {k: v for k, v in quantities_raw.items() if k not in bonds.faulty}
     known = {k: bond.value for k, bond in bonds.found.items()}
-    quantities = bound(
-        evaluate_quantities(
-            reading, read_definitions(reading, names, typed, ("quantities",), QUANTITIES, known)
-        ),
-        bonds.found,
-    )
+    defined = read_definitions(reading, names, typed, ("quantities",), QUANTITIES, known)
+    quantities = bound(evaluate_quantities(reading, defined), bonds.found)
     sites = read_sites(reading, names, sections["sites"])
     derived = read_definitions(reading, names, grid.content.derived, _DERIVED, DERIVED)
     weight = read_weight(reading, names, grid)
@@ -111,6 +108,8 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     blocks = read_blocks(sections["records"], own_records)
     check_blocks(reading, variables, blocks, records)
     rules = finish_rules(reading, names, drafts, variables)
+    expressions = {k: d.value.expression for k, d in {**defined, **derived}.items()}
+    check_allowances(reading, rules, quantities, expressions, variables, records)
     combination = read_combination(
         reading, sections["combination"], variables, None if head is None else head.reference_period
     )
@@ -118,7 +117,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)
     if not problems:
-        note_unused(reading, names, factors, variables, records, sites)
+        note_unused(reading, names, factors, variables, own_records, sites)
     problems.stop_if_any()
 
     assert head is not None

@@ -85,6 +85,13 @@ def _completed(subject: Subject, content: schema.VariableEntry) -> schema.Variab
         if not _model_factor_fits(subject, content):
             return None
         content = content.model_copy(update={"records": content.resistance})
+    elif content.records in subject.around.resistances:
+        subject.problem(
+            f"names the component tests '{content.records}'.",
+            "records",
+            suggestion=f'Say resistance = "{content.records}" for their model factor.',
+        )
+        return None
     if content.records is None:
         for key in ("method", "estimate", "stands_for", "lot", "predictive", "failure_mode", "pooled_shape"):
             if getattr(content, key):
