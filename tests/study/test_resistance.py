@@ -306,7 +306,10 @@ def test_the_routes_are_those_of_direct_calls(study):
     found = evaluate_resistances(made)["anchors"]
     tests = found.records.tests
     fractiles = Fractiles(target_beta=3.8, alpha_r=0.8, fractile=0.05, source="table")
-    annex = annex_d8(tests, {"D": 0.02, "f": 0.06}, nominal=0.9, fractiles=fractiles)
+    # D enters the prediction squared, f as a factor.
+    gradient = {"D": 2 * 0.02, "f": 0.06}
+    assert dict(found.records.gradient) == pytest.approx(gradient, rel=1e-12)
+    annex = annex_d8(tests, {"D": 0.02, "f": 0.06}, gradient=gradient, nominal=0.9, fractiles=fractiles)
     direct = predictive_design_value(tests.ratio, fractiles=fractiles)
     k, d = FractileFactor.predictive(0.05), FractileFactor.predictive(stats.norm.sf(0.8 * 3.8))
     clusters = cluster_effects(
