@@ -107,9 +107,9 @@ def options_sentence(found: ResistanceResult) -> str:
         return ""
     target = numbers.significant(found.options[0].target)
     text = (
-        "Worst β is that of the resistance alone, over the covariate in the option’s tests, if the fitted trend is true; "
-        f"target {target}. A lower BIC and a higher cross-validated score (mean log density of each test as predicted "
-        "from the others) are better; both compare options on the same tests only."
+        "Worst β is that of the resistance alone, over the covariate in the option’s tests, if the fitted trend is "
+        f"true; target {target}. A lower BIC and a higher cross-validated score (mean log density of each test as "
+        "predicted from the others) are better; both compare options on the same tests only."
     )
     if found.trends.stopped:
         text += " Options rest on the tests that failed, so that the power may differ from the slope above."

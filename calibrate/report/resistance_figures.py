@@ -285,8 +285,11 @@ def _few_ticks(axis: Any, low: float, high: float, *, fine: bool = False) -> Non
     else:
         first = math.floor(math.log10(low)) - 1
         decades = [10.0 ** (first + k) for k in range(6)]
-        steps = (1.0, 2.0, 5.0) if high / low > 6.0 else (1.0, 1.5, 2.0, 3.0, 4.0, 6.0, 8.0)
-        steps = (*steps, 1.25, 2.5) if fine and high / low < 6.0 else steps
+        steps: tuple[float, ...] = (1.0, 1.5, 2.0, 3.0, 5.0, 7.0)
+        if high / low > 6.0:
+            steps = (1.0, 2.0, 5.0)
+        elif fine:
+            steps = (1.0, 1.25, 1.5, 2.0, 2.5, 3.0, 4.0, 6.0, 8.0)
         locator = FixedLocator([d * s for d in decades for s in steps])
     axis.set_major_locator(locator)
     axis.set_minor_locator(NullLocator())

@@ -248,6 +248,41 @@ def test_plain_estimates_from_few_tests_are_doubted_and_ticked(complete, section
     assert section[section.index("Where the number of tests") :].count("✓") == len(entries)
 
 
+def test_a_bare_table_of_many_tests_has_no_more_than_its_own_parts(tmp_path):
+    path = project(tmp_path)
+    table = tmp_path / "tests.csv"
+    head, *lines = table.read_text().splitlines()
+    table.write_text("\n".join([head, *lines * 6]) + "\n")
+    text = re.sub(
+        r"\[resistance.brackets.north.*?(?=\[variables.theta)", "", path.read_text(), flags=re.DOTALL
+    )
+    text = re.sub(r"(?m)^(subgroup|cluster|covs|nominal_ratio|known_scatter) = .*\n", "", text)
+    path.write_text(text.replace('inputs = ["A_mm2", "odd/../name"]', 'inputs = ["odd/../name"]'))
+    result = run(read_study(path))
+    files = result_files(result)
+    section = re.search(r'<section id="resistance">.*?</section>', files["report.html"].decode(), re.DOTALL)[
+        0
+    ]
+    shown = plain(section)
+    assert "144 tests from tests.csv: all ended in failure. No subgroups or clusters are named." in shown
+    assert "more than 100 tests" in shown
+    assert "no basic variable with scatter was given" in shown
+    for absent in ("Clusters", "North American", "bias statistics", "Subgroups with", "Scatter of the model"):
+        assert absent not in shown
+    assert "figures/clusters_brackets.png" not in files
+    assert result.resistances["brackets"].annex.many
+
+
+def test_known_scatter_above_the_observed_is_said_and_not_clipped(tmp_path):
+    path = project(tmp_path)
+    path.write_text(path.read_text().replace("load_cell = 0.02", "load_cell = 0.3"))
+    result = run(read_study(path))
+    shown = plain(result_files(result)["report.html"].decode())
+    assert "does not exist" in shown
+    assert result.to_dict()["resistance"]["brackets"]["separation"]["cov"] is None
+    assert result.to_dict()["resistance"]["brackets"]["separation"]["cov_squared"] < 0.0
+
+
 def test_check_names_tests_survivors_and_clusters(stopped):
     found = check_summary(stopped.study)["resistances"]["brackets"]
     kept = {key: found[key] for key in ("file", "n", "survived", "subgroups", "clusters")}
