@@ -137,10 +137,15 @@ def _exceedances(result: Result) -> Iterator[tuple[str, Maker]]:
 
 
 def drawn_samples(result: Result) -> list[str]:
-    """Return the records worth a look at single specimens: with lots, bounds, something left out, or findings."""
+    """Return the records worth a look at single specimens: with lots, bounds, something left out, or findings.
+
+    Component tests by cluster have a figure of their own.
+    """
+    clustered = {n for n, r in result.resistances.items() if r.records.tests.cluster is not None}
     return [
         name
         for name, screening in result.screenings.items()
+        if name not in clustered
         if screening.findings
         or result.study.records[name].excluded
         or "lot" in result.study.records[name].labels

@@ -13,7 +13,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from scipy import special, stats
+from scipy import special
 
 from calibrate.errors import Doubt, InputError, Problem, did_you_mean
 from calibrate.resistance.annex_d import AnnexD8, BasicVariables, evaluated
@@ -155,7 +155,11 @@ def annex_d8_subsets(
         for label, model in models.items()
     }
     comparable = [m.log_delta for m in models.values() if has_scatter(m)]
-    p_value = float(stats.bartlett(*comparable).pvalue) if len(comparable) > 1 else math.nan
+    p_value = math.nan
+    if len(comparable) > 1:
+        from scipy import stats
+
+        p_value = float(stats.bartlett(*comparable).pvalue)
     doubts = _division_doubts(scatter, p_value, models, where)
     return SubsetsD8(subsets, scatter, together, pooled, freedom, p_value, tuple(doubts))
 

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import special, stats
+from scipy import special
 
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.fitting import Fit, fit_family
@@ -257,6 +257,8 @@ def normality_of(x: Array) -> Normality:
     modified = distance * (1.0 + 0.75 / n + 2.25 / n**2)
     w, w_p = math.nan, math.nan
     if n <= MOST_FOR_SHAPIRO:
+        from scipy import stats
+
         shapiro = stats.shapiro(z)
         w, w_p = float(shapiro.statistic), float(shapiro.pvalue)
     return Normality(modified, _anderson_darling_p(modified), w, w_p)

@@ -15,6 +15,7 @@ from numpy.typing import ArrayLike, NDArray
 from calibrate.errors import Doubt, InputError, Problem, did_you_mean
 from calibrate.records.censored_regression import regress
 from calibrate.resistance.positive_values import Array, inside_unit, positive_values, same_length
+from calibrate.resistance.ranks import average_ranks, kendall, spearman
 
 DecideBy = Literal["spearman", "kendall", "slope"]
 Stopped = Literal["left out", "regression"]
@@ -213,7 +214,7 @@ def trends(
         intercept=table[:, 0], slope=table[:, 1], slope_error=table[:, 2], slope_p=table[:, 3],
         slope_interval=table[:, 4:6], r_squared=table[:, 6], residual_sd=table[:, 7],
         adjusted_p=adjusted, decided_by=decided_by, level=level, flagged=flagged, reasons=tuple(reasons),
-        doubts=_doubts(names, ranks[0], table[:, 1], adjusted, flagged, d.size - n, taken, where),
+        doubts=_doubts(names, ranks[0], table[:, 1], adjusted, flagged, d.size - n, taken, decided_by, where),
     )  # fmt: skip
 
 
@@ -272,14 +273,11 @@ def _check_options(stopped_are: str, decided_by: str) -> None:
 
 def _ranks(d: Array, x: Array) -> tuple[float, float, float, float]:
     """Return Spearman's and Kendall's coefficients, each with its p-value."""
-    from scipy import stats
-
-    spearman = stats.spearmanr(x, d)
-    kendall = stats.kendalltau(x, d)
-    p = float(spearman.pvalue)
+    rho, p = spearman(x, d)
     if d.size <= EXACT_UP_TO:
-        p = _permutation_p(stats.rankdata(x), stats.rankdata(d))
-    return float(spearman.statistic), p, float(kendall.statistic), float(kendall.pvalue)
+        p = _permutation_p(average_ranks(x), average_ranks(d))
+    tau, tau_p = kendall(x, d)
+    return rho, p, tau, tau_p
 
 
 def _permutation_p(a: Array, b: Array) -> float:
@@ -297,12 +295,13 @@ def _orders(n: int) -> NDArray[np.int8]:
 def _line(y: Array, x: Array, open_ended: NDArray[np.bool_], level: float) -> _Line | None:
     """Return the regression of y on x; None where a censored likelihood has no maximum."""
     from scipy.special import stdtr, stdtrit
-    from statsmodels.regression.linear_model import OLS
 
     # About the middle of x the two coefficients are all but uncorrelated, whatever the unit of the covariate.
     middle = float(np.mean(x))
     design = np.column_stack([np.ones_like(x), x - middle])
     if not open_ended.any():
+        from statsmodels.regression.linear_model import OLS
+
         fit = OLS(y, design).fit()
         low, high = fit.conf_int(level)[1]
         mean, slope = (float(v) for v in fit.params)
@@ -327,16 +326,20 @@ def _doubts(
     flagged: NDArray[np.bool_],
     stopped: int,
     taken: bool,
+    decided_by: DecideBy,
     where: str,
 ) -> tuple[Doubt, ...]:
     found = []
+    decided = {"spearman": "by its ranks", "kendall": "by Kendall's ranks", "slope": "by the slope"}[
+        decided_by
+    ]
     for j in np.flatnonzero(flagged):
         direction = "falls" if (slope[j] if np.isfinite(slope[j]) else spearman[j]) < 0.0 else "rises"
         power = f", about as its power {slope[j]:.2g}" if np.isfinite(slope[j]) else ""
         text = (
             f"The model factor is not independent of '{names[j]}': it {direction} with it{power} (Spearman "
-            f"{spearman[j]:.2f}, p = {adjusted[j]:.2g} after control over all covariates). A single factor is "
-            "unsafe at one end of the tests. Correct the formula, split the tests or restrict the range."
+            f"{spearman[j]:.2f}; {decided}: p = {adjusted[j]:.2g} after control over all covariates). A single "
+            "factor is unsafe at one end of the tests. Correct the formula, split the tests or restrict the range."
         )
         found.append(Doubt("trend", text, where))
     if stopped and not taken:
