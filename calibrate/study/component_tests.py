@@ -31,6 +31,7 @@ from calibrate.resistance import (
     layer,
     mean_value_factors,
     north_american_factor,
+    plain_design_value,
     predictive_design_value,
     professional_part,
     separate_scatter,
@@ -145,10 +146,14 @@ def evaluate(
     source = "table" if records.table_factors else "formula"
     fractiles = Fractiles(target_beta=target_beta, alpha_r=ALPHA_R, fractile=FRACTILE, source=source)
     gradient = dict(records.gradient) or None
+    # A plain product is what D.8 has formulas for; its gradient is shown beside them.
+    product = gradient is None or all(math.isclose(gradient[n], cov) for n, cov in records.covs.items())
+    propagation = "sum" if product else "gradient"
     annex = annex_d8(
         tests,
         records.covs,
         gradient=gradient,
+        propagation=propagation,
         nominal=records.nominal_ratio,
         fractiles=fractiles,
         survivors=survivors,
@@ -162,6 +167,7 @@ def evaluate(
             records.covs,
             scatter=records.subsets,
             gradient=gradient,
+            propagation=propagation,
             nominal=records.nominal_ratio,
             fractiles=fractiles,
             survivors=others,
@@ -213,6 +219,7 @@ def evaluate(
             records.covs,
             records.tail_share,
             gradient=gradient,
+            propagation=propagation,
             nominal=records.nominal_ratio,
             fractiles=fractiles,
             survivors=others,
@@ -229,6 +236,7 @@ def evaluate(
             where=where,
         )
     direct = predictive_design_value(delta, fractiles=fractiles, where=where)
+    plain = plain_design_value(delta, fractiles=fractiles, where=where)
     american = bias = None
     if (asked := records.north_american) is not None:
         american = north_american_factor(
@@ -272,7 +280,7 @@ def evaluate(
         american,
         bias,
         separation,
-        (*_routes(annex, clusters, direct, american, bias), *_further(tail, layers)),
+        (*_routes(annex, clusters, (plain, direct), american, bias), *_further(tail, layers)),
         tuple(doubts),
         tail,
         layers,
@@ -329,7 +337,7 @@ def _tail(index: float) -> float:
 def _routes(
     annex: AnnexD8,
     clusters: ClusterEffects | None,
-    direct: DirectDesignValue,
+    direct: tuple[DirectDesignValue, DirectDesignValue],
     american: NorthAmericanFactor | None,
     bias: MeanValueFactors | None,
 ) -> tuple[Route, ...]:
@@ -344,13 +352,21 @@ def _routes(
             used.gamma_m,
             "Slope b, scatter of the errors with k_n and k_d,n, scatter of the basic variables as known.",
         ),
-        Route(
-            "sample of ratios, D.7 predictive",
-            "gamma_M",
-            direct.x_k,
-            direct.x_d,
-            direct.gamma_m,
-            "Measured over predicted as a sample of its own, without scatter of the basic variables.",
+        *(
+            Route(
+                f"sample of ratios, D.7 {name}",
+                "gamma_M",
+                found.x_k,
+                found.x_d,
+                found.gamma_m,
+                f"Measured over predicted as a sample of its own, without scatter of the basic variables; {how}.",
+            )
+            for name, found, how in zip(
+                ("plain", "predictive"),
+                direct,
+                ("k_n and k_d,n by formula or table", "Student's t, the same by formula"),
+                strict=True,
+            )
         ),
     ]
     if clusters is not None:

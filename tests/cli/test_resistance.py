@@ -100,11 +100,12 @@ def test_it_says_what_a_study_says_of_the_same_tests(calibrate, tmp_path):
         "--prediction", study.resistances["screws"].prediction,
         "--units", "c_u_kPa=kPa,D_mm=mm,L_m=m,A_h_m2=m^2", "--survived", "end", "--cluster", "site",
         "--input", "slenderness", "--input", "c_u_kPa", "--known", "measurement=0.03",
+        "--cov", "c_u_kPa=0.12", "--cov", "L_m=0.01",
         "--target", study.target_beta, "--seed", study.seed, "--json",
     )  # fmt: skip
     found = json.loads(ended.out)
     assert (found["n"], len(of_study["excluded"])) == (68, 6)
     same = set(of_study) - {"file", "sha256", "excluded", "routes", "doubts"}
     assert {k: found[k] for k in same} == json.loads(json.dumps({k: of_study[k] for k in same}))
-    # The study asks for two routes more.
-    assert found["routes"] == of_study["routes"][:3]
+    # The study asks for further routes.
+    assert found["routes"] == of_study["routes"][:4]

@@ -202,7 +202,7 @@ def test_result_json_has_the_numbers_of_steps_and_routes(complete, files):
         assert annex[key] == getattr(found.annex, key)
     assert annex["gamma_m_star"] == [float(found.annex.gamma_m_star)]
     assert [r["factor"] for r in content["routes"]] == [r.factor for r in found.routes]
-    assert content["routes"][3]["r_d"] is None
+    assert content["routes"][4]["r_d"] is None
     assert content["trends"]["covariates"]["A_mm2"]["flagged"] is True
     assert list(content["subsets"]["subsets"]) == ["angle", "plate"]
     assert content["clusters"]["effective_n"] == found.clusters.effective_n

@@ -18,6 +18,7 @@ from calibrate.resistance import (
     cluster_effects,
     mean_value_factors,
     north_american_factor,
+    plain_design_value,
     predictive_design_value,
     professional_part,
     separate_scatter,
@@ -311,6 +312,7 @@ def test_the_routes_are_those_of_direct_calls(study):
     assert dict(found.records.gradient) == pytest.approx(gradient, rel=1e-12)
     annex = annex_d8(tests, {"D": 0.02, "f": 0.06}, gradient=gradient, nominal=0.9, fractiles=fractiles)
     direct = predictive_design_value(tests.ratio, fractiles=fractiles)
+    plain = plain_design_value(tests.ratio, fractiles=fractiles)
     k, d = FractileFactor.predictive(0.05), FractileFactor.predictive(stats.norm.sf(0.8 * 3.8))
     clusters = cluster_effects(
         tests.ratio, tests.cluster, characteristic=k, design=d, other_log_sd=annex.q_rt
@@ -327,6 +329,7 @@ def test_the_routes_are_those_of_direct_calls(study):
     bias = mean_value_factors(tests.ratio.mean(), annex.v_r, 2.5, found.records.mean_value.loads)
     expected = [
         annex.gamma_m,
+        plain.gamma_m,
         direct.gamma_m,
         clusters.partial_factor,
         american.phi,
@@ -429,3 +432,18 @@ def test_an_axis_of_another_dimension_is_not_compared_in_silence(study):
 def test_a_model_factor_in_no_rule_claims_nothing(study):
     change = [("values = [10, 20]", "values = [100, 200]"), ("theta * R_n >= E", "R_n >= E")]
     assert not codes(calibrate.run(study(change=change)), "beyond-tests")
+
+
+def test_own_loads_of_the_north_american_form(study):
+    """C_phi and V_Q by hand: dead-to-live 1/3, factors 1.25 and 1.5, as LSD derives them: 1.419753 and 0.186991."""
+    loads = (
+        "{ dead_factor = 1.25, live_factor = 1.5, dead_to_live = 0.3333333333333333, dead_bias = 1.05, "
+        "live_bias = 1.0, dead_cov = 0.1, live_cov = 0.25 }"
+    )
+    form = f'format = "LRFD members", material = {PART}, fabrication = {PART}, loads = {loads}, target = 3.0'
+    found = evaluate_resistances(study(tests=f"north_american = {{ {form} }}"))["anchors"].north_american
+    assert found.c_phi == pytest.approx(1.419753, abs=1e-6)
+    assert found.v_q == pytest.approx(0.186991, abs=1e-6)
+    assert found.format.target == 3.0
+    with pytest.raises(InputError, match="with loads of your own they are derived"):
+        study(tests=f'north_american = {{ {form}, coefficients = "printed" }}')

@@ -17,6 +17,7 @@ from calibrate.study.paths import resolve_inside
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.names import check_name
 from calibrate.study.reading.schema import (
+    LoadsTable,
     MeanValueTable,
     NorthAmericanTable,
     ResistanceEntry,
@@ -159,29 +160,51 @@ def _north_american(
         )
         return None
     chosen: Format = format_named(content.format)
+    if content.loads is not None and content.coefficients == "printed":
+        reading.problem(
+            "are 'printed', which go with the loads of the standard; with loads of your own they are derived.",
+            (*place, "coefficients"),
+            "Leave coefficients out, or write 'derived'.",
+        )
+        return None
+    if content.loads is not None:
+        loads = _loads(reading, content.loads, (*place, "loads"))
+        if loads is None:
+            return None
+        if loads.dead_to_live.size != 1:
+            reading.problem("takes one ratio here.", (*place, "loads", "dead_to_live"))
+            return None
+        chosen = dataclasses.replace(chosen, name=f"{chosen.name}, own loads", loads=loads)
+    if content.target is not None:
+        chosen = dataclasses.replace(chosen, target=content.target)
+    derived = "printed" if content.loads is None else "derived"
     return NorthAmericanQuestion(
         chosen,
-        content.coefficients,
+        content.coefficients or derived,
         Part(content.material.mean, content.material.cov),
         Part(content.fabrication.mean, content.fabrication.cov),
     )
 
 
-def _mean_value(reading: Reading, content: MeanValueTable | None, place: Place) -> MeanValueQuestion | None:
-    if content is None:
-        return None
-    loads = content.loads
+def _loads(reading: Reading, loads: LoadsTable, place: Place) -> LoadStatistics | None:
+    ratios = np.array(loads.dead_to_live, dtype=np.float64)
     try:
-        statistics = LoadStatistics(
+        return LoadStatistics(
             dead_factor=loads.dead_factor,
             live_factor=loads.live_factor,
-            dead_to_live=np.array(loads.dead_to_live, dtype=np.float64),
+            dead_to_live=ratios[0] if ratios.size == 1 else ratios,
             dead_bias=loads.dead_bias,
             live_bias=loads.live_bias,
             dead_cov=loads.dead_cov,
             live_cov=loads.live_cov,
         )
     except InputError as error:
-        reading.collect(InputError([Problem(p.message) for p in error.problems]), (*place, "loads"))
+        reading.collect(InputError([Problem(p.message) for p in error.problems]), place)
         return None
-    return MeanValueQuestion(content.target, statistics)
+
+
+def _mean_value(reading: Reading, content: MeanValueTable | None, place: Place) -> MeanValueQuestion | None:
+    if content is None:
+        return None
+    statistics = _loads(reading, content.loads, (*place, "loads"))
+    return None if statistics is None else MeanValueQuestion(content.target, statistics)

@@ -179,15 +179,6 @@ class PartTable(Section):
     cov: Annotated[float, Field(ge=0)]
 
 
-class NorthAmericanTable(Section):
-    """What the resistance factor from tests in the North American form needs beside the tests."""
-
-    format: Text
-    coefficients: Literal["printed", "derived"] = "printed"
-    material: PartTable
-    fabrication: PartTable
-
-
 class LoadsTable(Section):
     """Dead and live load of a resistance factor from bias statistics."""
 
@@ -198,6 +189,17 @@ class LoadsTable(Section):
     live_bias: Positive
     dead_cov: Annotated[float, Field(ge=0)]
     live_cov: Annotated[float, Field(ge=0)]
+
+
+class NorthAmericanTable(Section):
+    """What the resistance factor from tests in the North American form needs beside the tests."""
+
+    format: Text
+    coefficients: Literal["printed", "derived"] | None = None
+    target: Positive | None = None
+    loads: LoadsTable | None = None
+    material: PartTable
+    fabrication: PartTable
 
 
 class MeanValueTable(Section):
