@@ -124,7 +124,7 @@ def resistance(
         from calibrate.records import TextForm
         from calibrate.study.component_records import TestTable, component_records
         from calibrate.study.component_tests import evaluate
-        from calibrate.study.resistance_content import FORMAT, resistance_dict
+        from calibrate.study.resistance_export import FORMAT, resistance_content
 
         asked = TestTable(
             name=file.stem,
@@ -150,7 +150,12 @@ def resistance(
         except InputError as error:
             raise InputError(_at(str(file), error)) from error
         if json:
-            content = {"format": FORMAT, "target_beta": target, "seed": seed or 0, **resistance_dict(found)}
+            content = {
+                "format": FORMAT,
+                "target_beta": target,
+                "seed": seed or 0,
+                **resistance_content(found),
+            }
             console.data(json_module.dumps(content, indent=2, ensure_ascii=False, allow_nan=False))
         elif not quiet:
             from calibrate.cli.resistance_page import print_evaluation

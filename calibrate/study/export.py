@@ -211,7 +211,7 @@ def result_dict(result: Result) -> dict[str, Any]:
             for p in result.other_periods
         ],
         "sites": _sites(result),
-        "resistance": {name: resistance_content(study, found) for name, found in result.resistances.items()},
+        "resistance": {name: resistance_content(found, study) for name, found in result.resistances.items()},
         "return_levels": {
             name: _levels(levels, result.study.records[result.study.variables[name].records or ""].unit.text)
             for name, levels in result.return_levels.items()

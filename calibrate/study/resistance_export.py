@@ -28,11 +28,20 @@ if TYPE_CHECKING:
 _OWN_COLUMNS = ("row", "measured", "predicted", "ratio", "delta", "survived", "subgroup", "cluster")
 
 
-def resistance_content(study: Study, found: ResistanceResult) -> dict[str, Any]:
-    """Return the numbers of every step and route; None for a number that does not exist."""
+FORMAT = "calibrate-resistance/1"
+
+
+def resistance_content(found: ResistanceResult, study: Study | None = None) -> dict[str, Any]:
+    """Return the numbers of every step and route; None for a number that does not exist.
+
+    The ledger of statistical uncertainty is that of a study; without one it is left out.
+    """
     records, tests = found.records, found.records.tests
     return {
+        "name": records.name,
         "file": records.file,
+        "sha256": records.ratio.sha256,
+        "excluded": [{"row": e.row, "reason": e.reason} for e in records.ratio.excluded],
         "measured": records.measured,
         "unit": records.unit.text,
         "prediction": records.prediction,
@@ -67,18 +76,22 @@ def resistance_content(study: Study, found: ResistanceResult) -> dict[str, Any]:
         "mean_value": None if found.mean_value is None else _mean_value(found, found.mean_value),
         "separation": None if found.separation is None else _separation(found.separation),
         "routes": [_route(route) for route in found.routes],
-        "ledger": [
-            {
-                "path": e.path,
-                "subject": e.subject,
-                "mechanism": e.mechanism,
-                "n": e.n,
-                "procedure": e.procedure,
-            }
-            for e in uncertainty_ledger(study, found).entries
-        ],
         "doubts": [{"code": d.code, "message": d.message, "where": d.where} for d in found.doubts],
+        **({} if study is None else {"ledger": _ledger(study, found)}),
     }
+
+
+def _ledger(study: Study, found: ResistanceResult) -> list[dict[str, Any]]:
+    return [
+        {
+            "path": e.path,
+            "subject": e.subject,
+            "mechanism": e.mechanism,
+            "n": e.n,
+            "procedure": e.procedure,
+        }
+        for e in uncertainty_ledger(study, found).entries
+    ]
 
 
 def tests_csv(found: ResistanceResult) -> str:

@@ -8,7 +8,7 @@ import pytest
 
 import calibrate as package
 from calibrate.study.component_tests import evaluate_resistances
-from calibrate.study.resistance_content import resistance_dict
+from calibrate.study.resistance_export import resistance_content
 
 ROOT = Path(__file__).resolve().parents[2]
 # Self-made: eight invented tests of anchors, predicted as area times strength; R in kN, A in mm^2, f in MPa.
@@ -37,20 +37,20 @@ def test_json_is_one_object_with_the_numbers_of_d8(asked, calibrate):
     content = json.loads(ended.out)
     assert (ended.code, ended.err) == (0, "")
     assert (content["format"], content["target_beta"], content["seed"]) == ("calibrate-resistance/1", 3.3, 0)
-    assert (content["n"], content["n_failed"], content["unit"]) == (8, 8, "kN")
+    assert (content["n"], content["failed"], content["unit"]) == (8, 8, "kN")
     # D.8 by hand: b by least squares through the origin, V_delta from the log errors about it.
     measured, predicted = np.array(R), np.array(A) * np.array(F) / 1e3
     b = (measured @ predicted) / (predicted @ predicted)
     log = np.log(measured / (b * predicted))
     v_delta = np.sqrt(np.expm1(log.var(ddof=1)))
     v_rt = np.hypot(0.05, 0.03)
-    assert content["b"] == pytest.approx(b, rel=1e-12)
-    assert content["v_delta"] == pytest.approx(v_delta, rel=1e-10)
+    assert content["annex_d8"]["b"] == pytest.approx(b, rel=1e-12)
+    assert content["annex_d8"]["v_delta"] == pytest.approx(v_delta, rel=1e-10)
     assert content["annex_d8"]["v_rt"] == pytest.approx(v_rt, rel=1e-12)
     v_r = np.sqrt((1 + v_delta**2) * (1 + 0.05**2) * (1 + 0.03**2) - 1)
     assert content["annex_d8"]["v_r"] == pytest.approx(v_r, rel=1e-10)
     routes = {r["name"]: r for r in content["routes"]}
-    assert routes["EN 1990 D.8"]["value"] == content["annex_d8"]["gamma_m"]
+    assert routes["EN 1990 D.8"]["factor"] == content["annex_d8"]["gamma_m"]
     assert content["annex_d8"]["gamma_m_star"] is None
     assert all(set(d) == {"code", "message", "where"} for d in content["doubts"])
 
@@ -59,7 +59,7 @@ def test_printed_factors_are_those_of_the_tables(asked, calibrate):
     ended = calibrate("resistance", *asked, "--table-factors", "--json")
     annex = json.loads(ended.out)["annex_d8"]
     # EN 1990:2002, Tables D1 and D2, V unknown, n = 8: 2.00 and 5.07 (from memory).
-    assert (annex["factors"], annex["k_n"], annex["k_d_n"]) == ("table", 2.00, 5.07)
+    assert (annex["factors_from"], annex["k_n"], annex["k_d_n"]) == ("table", 2.00, 5.07)
 
 
 def test_units_may_be_given_one_by_one(asked, calibrate):
@@ -91,7 +91,7 @@ def test_it_prints_steps_trends_clusters_routes_doubts_and_the_caution(asked, ca
 
 def test_it_says_what_a_study_says_of_the_same_tests(calibrate, tmp_path):
     study = package.read_study(ROOT / "studies" / "ground_screws" / "study.toml")
-    of_study = resistance_dict(evaluate_resistances(study)["screws"])
+    of_study = resistance_content(evaluate_resistances(study)["screws"])
     whole = (ROOT / "datasets" / "ground_screws" / "load-tests.csv").read_text(encoding="utf-8")
     table = tmp_path / "screws.csv"  # without the tests that the study leaves out
     table.write_text("".join(x for x in whole.splitlines(True) if ",cap," not in x), encoding="utf-8")
@@ -105,7 +105,7 @@ def test_it_says_what_a_study_says_of_the_same_tests(calibrate, tmp_path):
     )  # fmt: skip
     found = json.loads(ended.out)
     assert (found["n"], len(of_study["excluded"])) == (68, 6)
-    same = set(of_study) - {"file", "sha256", "excluded", "routes", "doubts"}
+    same = set(of_study) - {"file", "sha256", "excluded", "routes", "doubts", "north_american", "mean_value"}
     assert {k: found[k] for k in same} == json.loads(json.dumps({k: of_study[k] for k in same}))
     # The study asks for further routes.
     assert found["routes"] == of_study["routes"][:4]
