@@ -190,7 +190,7 @@ def evaluate(
             delta,
             tests.inputs.get(covariate, tests.predicted)[failed],
             covariate,
-            split_at=records.split_at,
+            split_at=records.split_at.get(covariate),
             characteristic=characteristic,
             design=design,
             other_log_sd=annex.q_rt,

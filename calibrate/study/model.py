@@ -96,7 +96,7 @@ class ComponentRecords:
     known_scatter: Mapping[str, float]
     table_factors: bool
     trend_level: float
-    split_at: float | None
+    split_at: Mapping[str, float]
     north_american: NorthAmericanQuestion | None
     mean_value: MeanValueQuestion | None
     description: str = ""

@@ -434,6 +434,14 @@ def test_a_model_factor_in_no_rule_claims_nothing(study):
     assert not codes(calibrate.run(study(change=change)), "beyond-tests")
 
 
+def test_a_split_is_named_by_its_covariate(study):
+    made = study(invented_rows(n=60, slope=-1.2), tests="split_at = { D = 12 }")
+    (options,) = [o for o in evaluate_resistances(made)["anchors"].options if o.covariate == "D"]
+    assert options.split_at == 12.0
+    with pytest.raises(InputError, match="divides 'DD', which is no input of the tests"):
+        study(tests="split_at = { DD = 12 }")
+
+
 def test_own_loads_of_the_north_american_form(study):
     """C_phi and V_Q by hand: dead-to-live 1/3, factors 1.25 and 1.5, as LSD derives them: 1.419753 and 0.186991."""
     loads = (

@@ -9,9 +9,10 @@ from typing import Any
 import numpy as np
 
 from calibrate.errors import InputError, Problem, did_you_mean
+from calibrate.expressions import parse
 from calibrate.records import Exclude, Sample, TextForm, UnitBy
 from calibrate.resistance import FORMATS, Format, LoadStatistics, Part, format_named
-from calibrate.study.component_records import TestTable, component_records, slips
+from calibrate.study.component_records import Slip, TestTable, component_records, slips
 from calibrate.study.model import ComponentRecords, MeanValueQuestion, NorthAmericanQuestion
 from calibrate.study.paths import resolve_inside
 from calibrate.study.reading.context import Reading
@@ -66,7 +67,7 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
     asked = _asked(reading, name, content, place)
     if asked is None:
         return None
-    wrong = slips(asked)
+    wrong = slips(asked) or _unknown_splits(asked, content)
     for key, problem in wrong:
         reading.problem(problem.message, (*place, key), problem.suggestion)
     if wrong:
@@ -83,7 +84,7 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
             nominal_ratio=content.nominal_ratio,
             table_factors=content.factors == "table",
             trend_level=content.trend_level,
-            split_at=content.split_at,
+            split_at=dict(content.split_at),
             north_american=american,
             mean_value=bias,
             description=content.description.strip(),
@@ -98,6 +99,20 @@ def _tests(reading: Reading, name: str, raw: Any, place: Place) -> ComponentReco
         hint = f"{first.suggestion} {line}" if first.suggestion else line
         reading.collect(InputError([dataclasses.replace(first, suggestion=hint), *others]), (*place, "file"))
         return None
+
+
+def _unknown_splits(asked: TestTable, content: ResistanceEntry) -> list[Slip]:
+    known = ["prediction", *(asked.inputs or parse(content.prediction).names)]
+    return [
+        Slip(
+            "split_at",
+            Problem(
+                f"divides '{name}', which is no input of the tests.", suggestion=did_you_mean(name, known)
+            ),
+        )
+        for name in content.split_at
+        if name not in known
+    ]
 
 
 def _asked(reading: Reading, name: str, content: ResistanceEntry, place: Place) -> TestTable | None:

@@ -238,7 +238,7 @@ class ResistanceEntry(Section):
     known_scatter: dict[str, Annotated[float, Field(ge=0)]] = {}
     factors: Literal["formula", "table"] = "formula"
     trend_level: Annotated[float, Field(gt=0, lt=1)] = 0.05
-    split_at: Positive | None = None
+    split_at: dict[str, Positive] = {}
     north_american: NorthAmericanTable | None = None
     mean_value: MeanValueTable | None = None
     description: str = ""
