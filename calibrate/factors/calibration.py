@@ -19,7 +19,7 @@ from calibrate.factors.identify import (
 from calibrate.factors.lattice import Candidate, LatticeSearch, search_lattice
 from calibrate.factors.model import Factor
 from calibrate.factors.objective import FactorSet, Goal, factor_set
-from calibrate.factors.optimise import FLOOR_TOLERANCE, Optimum, bounds, optimise
+from calibrate.factors.optimise import FLOOR_TOLERANCE, SAME_OPTIMUM, Optimum, bounds, optimise
 from calibrate.factors.penalties import Penalty
 from calibrate.factors.required import required_factor
 from calibrate.factors.response import Evaluation, Response
@@ -214,24 +214,25 @@ def _nothing(evaluation: Evaluation) -> Problem:
 
 def _other_starts(response: Response, goal: Goal, optimum: Optimum) -> Optimum:
     """Try further starts on some of the situations; take up what leads to a better optimum on all of them."""
-    small = response.thinned(START_SITUATIONS)
+    whole = int(np.count_nonzero(goal.weight > 0.0)) <= START_SITUATIONS
+    small = response if whole else response.thinned(START_SITUATIONS)
     small_goal = Goal(small.weight / small.weight.sum(), goal.target, goal.penalty, goal.floor)
     lower, upper = bounds(response)
     width = upper - lower
-    reference = optimise(small, small_goal, small(optimum.evaluation.gamma))
+    reference = optimum if whole else optimise(small, small_goal, small(optimum.evaluation.gamma))
     best = optimum
     for place in START_PLACES:
         first = small(lower + place * width, reference.evaluation)
         if not small_goal.rows(first).any():
             continue
-        found = optimise(small, small_goal, first)
+        found = optimise(small, small_goal, first, known=reference.evaluation.gamma)
         apart = np.max(np.abs(found.evaluation.gamma - reference.evaluation.gamma) / width)
         better = (found.shortfall, found.value) < (reference.shortfall - 1e-6, reference.value)
         better = better or (
             found.shortfall <= reference.shortfall + 1e-9
             and found.value < reference.value - 1e-7 * max(1.0, reference.value)
         )
-        if apart < 1e-4 or not better:
+        if apart < SAME_OPTIMUM or not better:
             continue
         full = optimise(response, goal, response(found.evaluation.gamma, best.evaluation))
         if (max(full.shortfall, FLOOR_TOLERANCE), full.value) < (

@@ -30,6 +30,10 @@ NEAR_FLOOR = 3.0
 """Inequalities farther from the floor than so many times the largest step's effect are left out."""
 
 
+SAME_OPTIMUM = 1e-3
+"""Distance in parts of the bounds within which two optima are one."""
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Optimum:
     """Where the optimiser ended.
@@ -66,9 +70,11 @@ def optimise(
     goal: Goal,
     first: Evaluation,
     progress: Callable[[int], None] | None = None,
+    known: Array | None = None,
 ) -> Optimum:
     """Return the local optimum that descends from ``first``, whose factors lie within the bounds.
 
+    A descent that comes close to ``known``, the factors of an optimum, ends there: it leads to that one.
     The rows that take part are those of the current point; a step that loses one of them is not taken.
     """
     lower, upper = bounds(response)
@@ -81,7 +87,8 @@ def optimise(
         now, miss = goal.value(here.beta, rows), goal.shortfall(here.beta, rows)
         step, promised = _step(here, goal, rows, lower, upper, radius)
         size = float(np.max(np.abs(step) / width))
-        if size <= STEP_TOLERANCE:
+        at_known = known is not None and float(np.max(np.abs(here.gamma - known) / width)) < SAME_OPTIMUM
+        if size <= STEP_TOLERANCE or at_known:
             converged = True
             break
         there = response(np.clip(here.gamma + step, lower, upper), here)

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from calibrate.actions.maxima import LEAST_COVERAGE, MaximaFit, fit_maxima
 from calibrate.actions.return_levels import YEARS, ReturnLevels, empirical_return_periods, return_levels
 from calibrate.errors import Doubt, InputError
-from calibrate.fitting import Fit
+from calibrate.fitting import Fit, fit_family
 from calibrate.records import Sample
 from calibrate.records.observations import Observations
 from calibrate.study.model import Variable
@@ -122,6 +122,9 @@ def bounded_tail(maxima: MaximaFit, block_years: float, where: str) -> tuple[Dou
     """
     if maxima.fit.family == "gev" or maxima.fit.method != "likelihood":
         return ()
+    rough = fit_family(maxima.fit.observations, "gev")
+    if not rough.converged or not rough.parameters["shape"] + rough.standard_errors["shape"] < 0.0:
+        return ()  # far from it, whatever the interval by likelihood
     try:
         free = fit_maxima(maxima.fit.observations, "gev", block_years=block_years)
     except InputError:
