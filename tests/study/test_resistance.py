@@ -15,13 +15,16 @@ from calibrate.resistance import (
     FractileFactor,
     Fractiles,
     annex_d8,
+    annex_d8_tail,
     cluster_effects,
+    layer,
     mean_value_factors,
     north_american_factor,
     plain_design_value,
     predictive_design_value,
     professional_part,
     separate_scatter,
+    two_layers,
 )
 from calibrate.study.component_tests import evaluate, evaluate_resistances
 from calibrate.study.fits import fit_variables
@@ -455,3 +458,41 @@ def test_own_loads_of_the_north_american_form(study):
     assert found.format.target == 3.0
     with pytest.raises(InputError, match="with loads of your own they are derived"):
         study(tests=f'north_american = {{ {form}, coefficients = "printed" }}')
+
+
+SECOND = """
+[resistance.physical]
+file = "tests.csv"
+measured = "R"
+unit = "kN"
+prediction = "0.25 * pi * D**2 * f"
+units = { D = "mm", f = "MPa" }
+"""
+
+
+def test_tail_and_second_layer_are_those_of_direct_calls(study):
+    made = study(
+        tests='tail_share = 0.4\nsecond_layer = "physical"',
+        change=[("[variables.theta]", SECOND + "[variables.theta]")],
+    )
+    found = evaluate_resistances(made)["anchors"]
+    tests = found.records.tests
+    fractiles = Fractiles(target_beta=3.0, alpha_r=0.8, fractile=0.05, source="formula")
+    tail = annex_d8_tail(tests, {}, 0.4, fractiles=fractiles)
+    k, d = FractileFactor.predictive(0.05), FractileFactor.predictive(stats.norm.sf(0.8 * 3.0))
+    both = two_layers(layer(tests.ratio, "a"), layer(tests.ratio, "b"), characteristic=k, design=d)
+    factors = {r.name: r.factor for r in found.routes}
+    assert factors["lower tail alone"] == pytest.approx(tail.tail.small.gamma_m, rel=1e-12)
+    assert factors["two layers"] == pytest.approx(both.closed_form.partial_factor, rel=1e-12)
+    assert found.layers.cov == pytest.approx(np.sqrt((1 + layer_cov(tests) ** 2) ** 2 - 1), rel=1e-12)
+
+
+def layer_cov(tests):
+    """V of one lognormal layer; of two alike the variances of the logarithms add."""
+    return np.sqrt(np.expm1(np.log(tests.ratio).var(ddof=1)))
+
+
+def test_an_unknown_second_layer_is_told(study):
+    found = problem_of(lambda: study(tests='second_layer = "physical"'), "no other table of component tests")
+    assert found.line == 17
+    assert "Add a section" in found.suggestion

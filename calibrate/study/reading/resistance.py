@@ -52,7 +52,9 @@ def read_resistances(
             reading.problem(
                 f"names '{tests.second_layer}', which is no other table of component tests.",
                 (SECTION, name, "second_layer"),
-                did_you_mean(tests.second_layer, [n for n in found if n != name]),
+                did_you_mean(tests.second_layer, others)
+                if (others := [n for n in found if n != name])
+                else f"Add a section [{SECTION}.{tests.second_layer}].",
             )
     return found
 
