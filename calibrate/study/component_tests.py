@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -148,31 +149,18 @@ def evaluate(
     gradient = dict(records.gradient) or None
     # A plain product is what D.8 has formulas for; its gradient is shown beside them.
     product = gradient is None or all(math.isclose(gradient[n], cov) for n, cov in records.covs.items())
-    propagation = "sum" if product else "gradient"
-    annex = annex_d8(
-        tests,
-        records.covs,
-        gradient=gradient,
-        propagation=propagation,
-        nominal=records.nominal_ratio,
-        fractiles=fractiles,
-        survivors=survivors,
-        where=where,
-    )
+    question: dict[str, Any] = {
+        "gradient": gradient,
+        "propagation": "sum" if product else "gradient",
+        "nominal": records.nominal_ratio,
+        "fractiles": fractiles,
+        "where": where,
+    }
+    annex = annex_d8(tests, records.covs, survivors=survivors, **question)
     others = "leave_out" if survivors == "censored" else survivors
     subsets = None
     if len(tests.subgroups) > 1:
-        subsets = annex_d8_subsets(
-            tests,
-            records.covs,
-            scatter=records.subsets,
-            gradient=gradient,
-            propagation=propagation,
-            nominal=records.nominal_ratio,
-            fractiles=fractiles,
-            survivors=others,
-            where=where,
-        )
+        subsets = annex_d8_subsets(tests, records.covs, scatter=records.subsets, survivors=others, **question)
     tendency = trends(
         tests.ratio,
         tests.predicted,
@@ -182,8 +170,12 @@ def evaluate(
         level=records.trend_level,
         where=where,
     )
-    characteristic = FractileFactor.predictive(FRACTILE)
-    design = FractileFactor.predictive(_tail(ALPHA_R * target_beta))
+    asked_of: dict[str, Any] = {
+        "characteristic": FractileFactor.predictive(FRACTILE),
+        "design": FractileFactor.predictive(_tail(ALPHA_R * target_beta)),
+        "other_log_sd": annex.q_rt,
+        "where": where,
+    }
     delta = tests.ratio[failed]
     options = tuple(
         trend_options(
@@ -191,12 +183,9 @@ def evaluate(
             tests.inputs.get(covariate, tests.predicted)[failed],
             covariate,
             split_at=records.split_at.get(covariate),
-            characteristic=characteristic,
-            design=design,
-            other_log_sd=annex.q_rt,
             alpha_r=ALPHA_R,
             target=target_beta,
-            where=where,
+            **asked_of,
         )
         for covariate in tendency.with_trend
         # The options correct by a power of the covariate; one that is not positive has none.
@@ -204,36 +193,16 @@ def evaluate(
     )
     clusters = None
     if tests.cluster is not None and len(set(tests.cluster[failed].tolist())) > 1:
-        clusters = cluster_effects(
-            delta,
-            tests.cluster[failed],
-            characteristic=characteristic,
-            design=design,
-            other_log_sd=annex.q_rt,
-            where=where,
-        )
+        clusters = cluster_effects(delta, tests.cluster[failed], **asked_of)
     tail = None
     if records.tail_share is not None:
-        tail = annex_d8_tail(
-            tests,
-            records.covs,
-            records.tail_share,
-            gradient=gradient,
-            propagation=propagation,
-            nominal=records.nominal_ratio,
-            fractiles=fractiles,
-            survivors=others,
-            where=where,
-        )
+        tail = annex_d8_tail(tests, records.covs, records.tail_share, survivors=others, **question)
     layers = None
     if second is not None:
         layers = two_layers(
             layer(delta, f"resistance.{records.name}"),
             layer(second.tests.ratio[~second.tests.survived], f"resistance.{second.name}"),
-            characteristic=characteristic,
-            design=design,
-            other_log_sd=annex.q_rt,
-            where=where,
+            **asked_of,
         )
     direct = predictive_design_value(delta, fractiles=fractiles, where=where)
     plain = plain_design_value(delta, fractiles=fractiles, where=where)
