@@ -102,6 +102,9 @@ class CombinedLimitState:
         ]
         return u - x[-1], [*rows, np.full(k, -1.0)]
 
+    def hessian(self, x: Rows) -> None:
+        """Return None: second derivatives of the distribution of the maximum are not known."""
+
     def weights(self, x: Rows) -> Array:
         """Return the coefficients of the actions, shape (m, k); a negative one makes its action favourable."""
         return self._affine_parts(x, np.shape(x[0]))[2]

@@ -17,6 +17,8 @@ import numpy.typing as npt
 
 from calibrate.distributions import Distribution
 from calibrate.engine import run_chunks
+from calibrate.reliability.conditional import Conditional
+from calibrate.reliability.correlation import Correlation
 from calibrate.reliability.hlrf import iterate
 from calibrate.reliability.limit_state import LimitState
 from calibrate.reliability.problem import Problem
@@ -32,9 +34,10 @@ Array = npt.NDArray[np.float64]
 
 def form(
     limit_state: LimitState,
-    distributions: Sequence[Distribution],
+    distributions: Sequence[Distribution | Conditional],
     n: int,
     *,
+    correlation: Correlation | None = None,
     start: Array | None = None,
     settings: FormSettings | None = None,
     workers: int = 1,
@@ -46,10 +49,12 @@ def form(
     ----------
     limit_state : LimitState
         g > 0 is safe; its values are numbers or arrays of shape (n,).
-    distributions : sequence of Distribution
-        One for each of ``limit_state.variables``, parameters of shape () or (n,). The variables are independent.
+    distributions : sequence of Distribution or Conditional
+        One for each of ``limit_state.variables``, parameters of shape () or (n,).
     n : int
         Number of situations.
+    correlation : Correlation, optional
+        Of the standard normal variables behind the basic ones; without it, they are independent.
     start : array (m, n), optional
         Points in standard normal space to begin at, usually the last design points; where one is not finite the
         medians serve.
@@ -87,10 +92,27 @@ def form(
             raise ValueError(f"{name}: parameters have shape {distribution.shape}, expected () or ({n},).")
     if start is not None and start.shape != (len(distributions), n):
         raise ValueError(f"start has shape {start.shape}, expected {(len(distributions), n)}.")
+    if correlation is not None and correlation.factor.shape[0] != len(distributions):
+        text = f"{correlation.factor.shape[0]} rows, {len(distributions)} distributions"
+        raise ValueError(f"The correlation and the distributions do not fit together: {text}.")
+    problem = Problem(limit_state, distributions, n, correlation)
+    return design_points(problem, start=start, settings=settings, workers=workers, progress=progress)
+
+
+def design_points(
+    problem: Problem,
+    *,
+    start: Array | None = None,
+    settings: FormSettings | None = None,
+    workers: int = 1,
+    progress: Callable[[int, int], None] | None = None,
+) -> Reliability:
+    """Find the design point of each situation of a problem; see :func:`form`."""
     settings = settings or FormSettings()
-    task = _Task(Problem(limit_state, distributions, n), start, settings)
-    parts = run_chunks(task, n, chunk=settings.chunk, workers=workers, progress=progress)
-    return _joined(limit_state.variables, parts) if parts else _nothing(limit_state.variables)
+    task = _Task(problem, start, settings)
+    parts = run_chunks(task, problem.n, chunk=settings.chunk, workers=workers, progress=progress)
+    variables = problem.limit_state.variables
+    return _joined(variables, parts) if parts else _nothing(variables)
 
 
 @dataclass(frozen=True, slots=True)

@@ -81,9 +81,7 @@ def meet(problem: Problem, start: Array, side: Array, settings: FormSettings) ->
         going &= ~(size <= settings.tolerance)
         if not going.any():
             break
-    x = np.stack(
-        [np.broadcast_to(d.x(row), row.shape) for d, row in zip(problem.distributions, u, strict=True)]
-    )
+    x = np.stack([np.broadcast_to(row, side.shape) for row in problem.x(u)])
     g = problem.value(u)
     radius = np.sqrt(dot(u, u))
     total = -side * (first_share + second_share)

@@ -70,6 +70,12 @@ class LimitState(Protocol):
         ``slopes`` are dx/du, the scale on which each variable matters; only differences need them.
         """
 
+    def hessian(self, x: Rows) -> tuple[Sequence[Any], Sequence[Sequence[Any]]] | None:
+        """Return the m first and (m, m) second derivatives of g, each of a shape that broadcasts to (k,).
+
+        None where they are not known exactly; differences of the gradient then take their place.
+        """
+
 
 @lru_cache(maxsize=256)
 def _affine(margin: Expression, variables: tuple[str, ...]) -> bool:
@@ -116,7 +122,7 @@ class ExpressionLimitState:
         fixed = stages.fixed(whole)
         # What came of numbers only is a number again.
         parts = tuple(v[0] if np.ndim(v) and (alone or v.size == 1) else v for v in fixed)
-        return _BoundExpression(stages, self.variables, self.kinks, self.affine, parts)
+        return _BoundExpression(stages, self.variables, self.kinks, self.affine, parts, self)
 
     def take(self, columns: Any) -> LimitState:
         """Return the limit state of some situations, its fixed part evaluated."""
@@ -132,6 +138,12 @@ class ExpressionLimitState:
         """Return g and its exact derivatives."""
         return self._bound().gradient(x, columns, slopes)
 
+    def hessian(self, x: Rows) -> tuple[Sequence[Any], Sequence[Sequence[Any]]]:
+        """Return the exact first and second derivatives."""
+        point = {**self.values, **dict(zip(self.variables, x, strict=True))}
+        _, by_x, by_two = self.margin.program(self.variables, 2)(point)
+        return by_x, by_two
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class _BoundExpression:
@@ -142,10 +154,16 @@ class _BoundExpression:
     kinks: int
     affine: bool
     fixed: tuple[Any, ...]
+    source: ExpressionLimitState
+    # What was taken of the source, one selection after the other; only second derivatives go back to it.
+    selections: tuple[Any, ...] = ()
 
     def take(self, columns: Any) -> _BoundExpression:
         fixed = tuple(v[columns] if np.ndim(v) else v for v in self.fixed)
-        return _BoundExpression(self.stages, self.variables, self.kinks, self.affine, fixed)
+        selections = (*self.selections, columns)
+        return _BoundExpression(
+            self.stages, self.variables, self.kinks, self.affine, fixed, self.source, selections
+        )
 
     def value(self, x: Rows, columns: Any = None) -> Array:
         return self.gradient(x, columns)[0]
@@ -159,6 +177,12 @@ class _BoundExpression:
         bound = self if columns is None else self.take(columns)
         g, by_x = self.stages(list(x), bound.fixed)
         return np.broadcast_to(g, np.shape(x[0])), by_x
+
+    def hessian(self, x: Rows) -> tuple[Sequence[Any], Sequence[Sequence[Any]]]:
+        values: Mapping[str, Any] = self.source.values
+        for columns in self.selections:
+            values = _taken(values, columns)
+        return ExpressionLimitState(self.source.margin, self.variables, values).hessian(x)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -226,6 +250,9 @@ class CallableLimitState:
         if self.derivatives is not None:
             return g, self._given(inputs)
         return g, [self._difference(inputs, i, x, slopes) for i in range(len(self.variables))]
+
+    def hessian(self, x: Rows) -> None:
+        """Return None: second derivatives of a function are not known."""
 
     def _given(self, inputs: Mapping[str, Array]) -> list[Array]:
         assert self.derivatives is not None

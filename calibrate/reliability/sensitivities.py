@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-
 import numpy as np
 import numpy.typing as npt
 
-from calibrate.distributions import Distribution
-from calibrate.reliability.limit_state import LimitState
+from calibrate.reliability.conditional import Conditional
+from calibrate.reliability.problem import Problem
 from calibrate.reliability.result import Reliability
 
 Array = npt.NDArray[np.float64]
@@ -33,34 +31,39 @@ def beta_slope(reliability: Reliability, g_slope: npt.ArrayLike) -> Array:
     return np.asarray(g_slope, dtype=np.float64) / reliability.gradient_norm
 
 
-def parameter_slopes(
-    reliability: Reliability, limit_state: LimitState, distributions: Sequence[Distribution]
-) -> dict[str, dict[str, Array]]:
+def parameter_slopes(reliability: Reliability, problem: Problem) -> dict[str, dict[str, Array]]:
     """Return d beta/d p for every own parameter p of every basic variable.
 
     Parameters
     ----------
     reliability : Reliability
         Of n situations.
-    limit_state : LimitState
+    problem : Problem
         The one it belongs to.
-    distributions : sequence of Distribution
-        In the order of ``reliability.variables``.
 
     Returns
     -------
     dict
         ``{variable: {parameter: array (n,)}}``; NaN where there is no design point. Parameters of an
-        extreme of a distribution are those of its base.
+        extreme of a distribution are those of its base; a conditional variable has no entry. The correlation of
+        the standard normal variables is held.
     """
-    u, x = reliability.u, reliability.x
-    slopes = [d.x_slope(row)[1] for d, row in zip(distributions, u, strict=True)]
+    z = problem.z(reliability.u)
+    names = reliability.variables
     with np.errstate(all="ignore"):
-        _, by_x = limit_state.gradient(x, None, slopes)
+        by_x = physical_slopes(reliability, problem)
         return {
             name: {
                 parameter: np.broadcast_to(beta_slope(reliability, by * dx), (reliability.n,))
-                for parameter, dx in distribution.parameter_slopes(row).items()
+                for parameter, dx in law.parameter_slopes(row).items()
             }
-            for name, distribution, row, by in zip(reliability.variables, distributions, u, by_x, strict=True)
+            for name, law, row, by in zip(names, problem.distributions, z, by_x, strict=True)
+            if not isinstance(law, Conditional)
         }
+
+
+def physical_slopes(reliability: Reliability, problem: Problem) -> list[Array]:
+    """Return dg/dx at the design points, m rows, with what each variable does through those that depend on it."""
+    x, linear = problem.transform(reliability.u)
+    _, by_x = problem.limit_state.gradient(x, None, linear.slopes)
+    return problem.total_slopes(by_x, linear)

@@ -68,7 +68,7 @@ def settle(problem: Problem, u: Array) -> Points:
     rest is of the order of the square of the error.
     """
     a = np.empty_like(u)
-    g, x, slopes = problem.evaluate(u, a)
+    g, x, linear = problem.evaluate(u, a)
     norm = np.sqrt(dot(a, a))
     beta = (g - dot(a, u)) / norm
     np.divide(a, norm, out=a)
@@ -76,9 +76,8 @@ def settle(problem: Problem, u: Array) -> Points:
     move = point - u
     good = dot(move, move) <= CORRECTION**2
     moved = np.empty_like(u)
-    for row, value, slope, by in zip(moved, x, slopes, move, strict=True):
-        np.multiply(slope, by, out=row)
-        np.add(row, value, out=row)
+    for row, value, change in zip(moved, x, problem.push(linear, move), strict=True):
+        np.add(change, value, out=row)
     # Where the square of the gradient overflows, beta would be a finite zero.
     good &= np.isfinite(beta) & np.isfinite(norm)
     return Points(beta, point, moved, a, norm, good)

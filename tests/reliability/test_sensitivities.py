@@ -6,7 +6,14 @@ import pytest
 import calibrate
 from calibrate.distributions import distribution, maximum_of
 from calibrate.expressions import parse
-from calibrate.reliability import CallableLimitState, ExpressionLimitState, beta_slope, form, parameter_slopes
+from calibrate.reliability import (
+    CallableLimitState,
+    ExpressionLimitState,
+    Problem,
+    beta_slope,
+    form,
+    parameter_slopes,
+)
 
 TEXT = "z * R * T - E * (D + L**1.2)"
 VARIABLES = ("R", "T", "E", "D", "L")
@@ -66,7 +73,7 @@ def test_slopes_by_own_parameters(family):
     given, where = FAMILIES[family]
     own = {name: np.broadcast_to(np.asarray(v, dtype=float), (N,)) for name, v in given.items()}
     chosen = distributions(**{where: distribution(family, **own)})
-    slopes = parameter_slopes(form(limit_state(), chosen, N), limit_state(), chosen)[where]
+    slopes = parameter_slopes(form(limit_state(), chosen, N), Problem(limit_state(), chosen, N))[where]
     assert set(slopes) == set(own)
     for parameter, value in own.items():
 
@@ -84,7 +91,7 @@ def test_slopes_by_parameters_of_the_base_of_an_extreme():
         return maximum_of(distribution("normal", location=location, scale=scale), 50.0)
 
     chosen = distributions(L=action(location, scale))
-    slopes = parameter_slopes(form(limit_state(), chosen, N), limit_state(), chosen)["L"]
+    slopes = parameter_slopes(form(limit_state(), chosen, N), Problem(limit_state(), chosen, N))["L"]
     by_location = difference(lambda v: beta_of({"L": action(v, scale)}), location, 1e-3)
     by_scale = difference(lambda v: beta_of({"L": action(location, v)}), scale, 1e-3)
     np.testing.assert_allclose(slopes["location"], by_location, rtol=2e-7)
@@ -97,8 +104,8 @@ def test_every_variable_has_its_slopes_whatever_the_kind_of_limit_state():
 
     chosen = distributions()
     result = form(limit_state(), chosen, N)
-    exact = parameter_slopes(result, limit_state(), chosen)
-    by_differences = parameter_slopes(result, CallableLimitState(g, VARIABLES, QUANTITIES), chosen)
+    exact = parameter_slopes(result, Problem(limit_state(), chosen, N))
+    by_differences = parameter_slopes(result, Problem(CallableLimitState(g, VARIABLES, QUANTITIES), chosen, N))
     assert list(exact) == list(VARIABLES)
     for name, d in zip(VARIABLES, chosen, strict=True):
         assert set(exact[name]) == set(d.family.parameter_names)
@@ -128,7 +135,7 @@ def test_no_design_point_no_slope():
     state = ExpressionLimitState(parse("z + R**2"), ("R",), {"z": np.array([-0.5, 1.0])})
     chosen = (distribution("normal", mean=0.0, sd=1.0),)
     result = form(state, chosen, 2)
-    slopes = parameter_slopes(result, state, chosen)["R"]
+    slopes = parameter_slopes(result, Problem(state, chosen, result.n))["R"]
     assert np.isfinite(slopes["scale"]).tolist() == [True, False]
     assert np.isnan(beta_slope(result, 1.0)).tolist() == [False, True]
 
@@ -181,7 +188,8 @@ def test_factors_and_slopes_are_defined_at_beta_zero(text):
     assert result.sensitivity["S"] == pytest.approx(-0.8, abs=1e-12)
     assert result.failure_probability == pytest.approx(0.5, abs=1e-15)
     state = ExpressionLimitState(parse(text), ("R", "S"), {})
-    slopes = parameter_slopes(form(state, tuple(variables.values()), 1), state, tuple(variables.values()))
+    chosen = tuple(variables.values())
+    slopes = parameter_slopes(form(state, chosen, 1), Problem(state, chosen, 1))
     assert slopes["R"]["median"] == pytest.approx(1.0 / (2.0 * 0.5), rel=1e-12)
     assert slopes["S"]["median"] == pytest.approx(-1.0 / (2.0 * 0.5), rel=1e-12)
     assert slopes["R"]["log_sd"] == pytest.approx(0.0, abs=1e-12)
