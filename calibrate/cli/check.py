@@ -69,6 +69,13 @@ def _print(summary: dict[str, Any], shown: str) -> None:
         console.heading("Basic variables")
         rows = [_variable_row(name, v) for name, v in summary["variables"].items()]
         console.table(["name", "family", "from", "unit", "dimension"], rows, [False] * 5)
+    if summary["correlations"]:
+        console.heading("Correlations")
+        rows = [
+            [", ".join(c["variables"]), f"{c['coefficient']:.3g}", c["kind"], _estimated(c["n"])]
+            for c in summary["correlations"]
+        ]
+        console.table(["pair", "coefficient", "kind", "from"], rows, [False, True, False, False])
     for name, table in summary["sites"].items():
         source = f", from {table['file']}" if table["file"] else ""
         console.heading(f"Classes of sites.{name} ({len(table['classes'])}{source})")
@@ -94,6 +101,10 @@ def _print(summary: dict[str, Any], shown: str) -> None:
         console.heading(f"Doubts ({len(summary['doubts'])})")
         console.listed([(f"{d['code']}, {d['where']}", d["message"]) for d in summary["doubts"]])
     console.line("\nThe study is consistent. Nothing was fitted, sized or computed.")
+
+
+def _estimated(n: int | None) -> str:
+    return "given" if n is None else f"{n} paired values"
 
 
 def _unit(text: str) -> str:

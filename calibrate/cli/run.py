@@ -56,7 +56,7 @@ def run(
 
 def _summary(result: Result, directory: Path) -> None:
     from calibrate.cli.app import CAUTION
-    from calibrate.report import numbers, outcome, sites
+    from calibrate.report import numbers, outcome, sites, verification
     from calibrate.report.resistance_routes import routes_table
 
     study = result.study
@@ -78,6 +78,8 @@ def _summary(result: Result, directory: Path) -> None:
             f"\nWorst situation with the proposed factors: {row['rule']}, {int(row['situation'])}"
             f"{f' ({where})' if where else ''}, β = {numbers.beta(row['beta_proposed'])}."
         )
+    if sentence := verification.brief_sentence(result):
+        console.line(sentence)
     for change in outcome.size_changes(result):
         console.line(
             f"Size {change.size} of {change.rule}, proposed over present: {numbers.change(change.mean)} on average, "

@@ -13,9 +13,18 @@ from calibrate.factors.optimise import Optimum, optimise
 from calibrate.factors.penalties import PENALTIES, Penalty, make_penalty
 from calibrate.factors.required import required_factor
 from calibrate.factors.response import Evaluation, Response, RuleEvaluation
+from calibrate.factors.verification import (
+    NONE,
+    SECOND_ORDER_ONLY,
+    Verification,
+    VerificationSettings,
+    verify,
+)
 
 __all__ = [
+    "NONE",
     "PENALTIES",
+    "SECOND_ORDER_ONLY",
     "Alternative",
     "Calibration",
     "Candidate",
@@ -30,6 +39,8 @@ __all__ = [
     "Response",
     "RuleEvaluation",
     "RuleModel",
+    "Verification",
+    "VerificationSettings",
     "calibrate_factors",
     "factor_set",
     "levels",
@@ -37,4 +48,5 @@ __all__ = [
     "optimise",
     "required_factor",
     "search_lattice",
+    "verify",
 ]

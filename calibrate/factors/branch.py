@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -12,17 +12,26 @@ import numpy.typing as npt
 from calibrate.distributions import Distribution
 from calibrate.factors.classes import nearest_over_classes
 from calibrate.factors.model import RuleModel
-from calibrate.reliability import ExpressionLimitState, Reliability, form
-from calibrate.situations import BasicVariable, Sizing
+from calibrate.reliability import (
+    Correlation,
+    ExpressionLimitState,
+    Problem,
+    Reliability,
+    design_points,
+    nataf_correlation,
+    physical_slopes,
+)
+from calibrate.situations import BasicVariable, ConditionalVariable, Sizing, law_of
 
 Array = npt.NDArray[np.float64]
+Law = Distribution | ConditionalVariable
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class BranchResult:
-    """Distributions, reliability and d beta/d gamma, shape (f, n), of one branch."""
+    """The limit state on standard normal space, reliability and d beta/d gamma, shape (f, n), of one branch."""
 
-    distributions: tuple[Distribution, ...]
+    problem: Problem
     reliability: Reliability
     jacobian: Array
 
@@ -56,35 +65,49 @@ class Branch:
         self.direct = tuple(f for f in free if rule.limit_state.depends_on(f))
         size = rule.size_name
         self.sized = tuple(i for i, v in enumerate(variables) if size is not None and v.depends_on(size))
+        self.conditional = any(v.parents(self.names) for v in variables)
         self.fixed = tuple(
-            None if i in self.sized else v.distribution(rule.values) for i, v in enumerate(variables)
+            None if i in self.sized else law_of(v, self.names, rule.values) for i, v in enumerate(variables)
         )
         self.by = (*self.direct, *([size] if size is not None else []), *(self.names[i] for i in self.sized))
+        laws = tuple(law for law in self.fixed if law is not None)
+        self.correlation = self._correlation(laws) if len(laws) == len(variables) else None
+
+    def _correlation(self, laws: tuple[Distribution | ConditionalVariable, ...]) -> Correlation | None:
+        return nataf_correlation(self.rule.correlations, self.names, laws, self.rule.n)
 
     def __call__(self, values: Mapping[str, Any], sizing: Sizing, start: Array | None) -> BranchResult:
         """Return FORM and its derivatives for these values, among them the size."""
         distributions = tuple(
-            self.variables[i].distribution(values) if d is None else d for i, d in enumerate(self.fixed)
+            law_of(self.variables[i], self.names, values) if d is None else d
+            for i, d in enumerate(self.fixed)
         )
         needed = {n: values[n] for n in self.rule.limit_state.names if n not in self.names}
         limit_state = ExpressionLimitState(self.rule.limit_state, self.names, needed)
 
-        def search(laws: tuple[Distribution, ...], begin: Array | None) -> Reliability:
+        problem = Problem(
+            limit_state,
+            distributions,
+            self.rule.n,
+            self._correlation(distributions) if self.sized else self.correlation,
+        )
+
+        def search(laws: tuple[Law, ...], begin: Array | None) -> Reliability:
             begin = None if begin is None else np.where(np.isfinite(begin), begin, 0.0)
-            return form(limit_state, laws, self.rule.n, start=begin, workers=self.workers)
+            return design_points(replace(problem, distributions=laws), start=begin, workers=self.workers)
 
         reliability = search(distributions, start)
         for i, variable in enumerate(self.variables):
             if variable.of_classes:
                 reliability = nearest_over_classes(search, distributions, i, reliability)
-        jacobian = self._jacobian(values, sizing, distributions, reliability)
-        return BranchResult(distributions, reliability, jacobian)
+        jacobian = self._jacobian(values, sizing, problem, reliability)
+        return BranchResult(problem, reliability, jacobian)
 
     def _jacobian(
         self,
         values: Mapping[str, Any],
         sizing: Sizing,
-        distributions: Sequence[Distribution],
+        problem: Problem,
         reliability: Reliability,
     ) -> Array:
         """Return d beta/d gamma = (dg/d gamma at fixed u*) / |grad_u g|, the size carried along."""
@@ -100,20 +123,36 @@ class Branch:
                 jacobian[self.free.index(name)] += by[name]
             if rule.size_name is not None:
                 by_size = np.array(np.broadcast_to(by[rule.size_name], (rule.n,)))
-                for i in self.sized:
-                    moved = self.variables[i].slope(
-                        distributions[i], reliability.u[i], values, rule.size_name
-                    )
-                    if moved is not None:
-                        by_size += by[self.names[i]] * moved
+                if self.sized:
+                    by_size += self._through_variables(values, problem, reliability, by)
                 for name, slope in zip(self.check_free, sizing.slopes, strict=True):
                     jacobian[self.free.index(name)] += by_size * slope
             jacobian /= reliability.gradient_norm
         return jacobian
 
+    def _through_variables(
+        self, values: Mapping[str, Any], problem: Problem, reliability: Reliability, by: Mapping[str, Any]
+    ) -> Array:
+        """Return dg/d(size) at fixed u through the variables whose models depend on the size."""
+        size = self.rule.size_name
+        assert size is not None
+        total = np.zeros(self.rule.n)
+        z = problem.z(reliability.u)
+        slopes = physical_slopes(reliability, problem) if self.conditional else None
+        for i in self.sized:
+            law = problem.distributions[i]
+            if isinstance(law, ConditionalVariable):
+                moved = law.slope(z[i], [reliability.x[j] for j in law.parents], size)
+            else:
+                assert isinstance(law, Distribution)
+                moved = self.variables[i].slope(law, z[i], values, size)
+            if moved is not None:
+                total += (by[self.names[i]] if slopes is None else slopes[i]) * moved
+        return total
 
-def worst_of(parts: Sequence[BranchResult]) -> tuple[Reliability, Array]:
-    """Return, in every situation, the result of the alternative with the smallest beta.
+
+def worst_of(parts: Sequence[BranchResult]) -> tuple[Reliability, Array, npt.NDArray[np.intp]]:
+    """Return, in every situation, the result of the alternative with the smallest beta, and which one that is.
 
     A situation in which an alternative has no beta has none itself, unless that alternative has no failure region
     within reach: then the others decide.
@@ -140,7 +179,7 @@ def worst_of(parts: Sequence[BranchResult]) -> tuple[Reliability, Array]:
         picked([r.iterations for r in found]),
         sum(r.evaluations for r in found),
     )
-    return merged, picked([p.jacobian for p in parts])
+    return merged, picked([p.jacobian for p in parts]), chosen
 
 
 OUT_OF_REACH = "no failure region within reach"

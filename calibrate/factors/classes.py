@@ -14,9 +14,11 @@ import numpy.typing as npt
 
 from calibrate.distributions import Distribution, Mixture
 from calibrate.reliability import Reliability
+from calibrate.situations import ConditionalVariable
 
 Array = npt.NDArray[np.float64]
-Search = Callable[[tuple[Distribution, ...], Array | None], Reliability]
+Law = Distribution | ConditionalVariable
+Search = Callable[[tuple[Law, ...], Array | None], Reliability]
 
 MOST = 6
 """Classes that are looked at; of more, those evenly spread in the order of their rare values."""
@@ -30,7 +32,7 @@ PER_RULE = ("beta", "u", "x", "alpha", "gradient_norm", "code", "iterations")
 
 
 def nearest_over_classes(
-    search: Search, distributions: tuple[Distribution, ...], row: int, found: Reliability
+    search: Search, distributions: tuple[Law, ...], row: int, found: Reliability
 ) -> Reliability:
     """Return the nearest of the design point found and those that the classes lead to.
 

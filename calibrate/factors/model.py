@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from calibrate.expressions import Expression
+from calibrate.reliability import CorrelatedPair
 from calibrate.situations import BasicVariable
 
 Array = npt.NDArray[np.float64]
@@ -82,6 +83,8 @@ class RuleModel:
     alternatives : tuple of Alternative
         Where actions are combined: each situation has the smallest beta of these. Empty where ``variables`` alone
         count.
+    correlations : tuple of CorrelatedPair
+        Of the variables, and possibly of others.
     """
 
     name: str
@@ -93,6 +96,7 @@ class RuleModel:
     weight: Array
     rule_weight: float
     alternatives: tuple[Alternative, ...] = ()
+    correlations: tuple[CorrelatedPair, ...] = ()
 
     @property
     def n(self) -> int:
@@ -114,4 +118,5 @@ class RuleModel:
             weight / total if total > 0 else weight,
             self.rule_weight,
             self.alternatives,
+            self.correlations,
         )

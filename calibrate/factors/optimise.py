@@ -161,7 +161,9 @@ def _smooth_step(
     # The ridge picks the shortest of equally good steps where factors cannot be told apart.
     scale = np.linalg.norm(a, ord="fro")
     f = low.size
-    a = np.vstack([a, np.sqrt(RIDGE) * max(scale, 1e-300) * np.eye(f)])
+    if scale == 0.0:
+        return np.zeros(f)  # no factor moves any beta
+    a = np.vstack([a, np.sqrt(RIDGE) * scale * np.eye(f)])
     b = np.concatenate([b, np.zeros(f)])
     g, h = [np.eye(f), -np.eye(f)], [low, -high]
     if goal.floor is not None:

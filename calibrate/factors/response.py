@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
@@ -12,7 +13,7 @@ import numpy.typing as npt
 from calibrate.distributions import Distribution
 from calibrate.factors.branch import Branch, BranchResult, worst_of
 from calibrate.factors.model import Factor, RuleModel
-from calibrate.reliability import Reliability
+from calibrate.reliability import Problem, Reliability
 from calibrate.situations import SOLVED, SizeSolver, Sizing, sizing_reason
 
 Array = npt.NDArray[np.float64]
@@ -38,6 +39,10 @@ class RuleEvaluation:
         Design points of each alternative in standard normal space, to continue from.
     by_alternative : mapping of str to array (n,)
         Beta of each alternative by its leading action; empty without combination.
+    problems : tuple of Problem
+        The limit state on standard normal space, of each alternative.
+    governing : int array (n,)
+        Which of them has the smallest beta.
     """
 
     name: str
@@ -47,6 +52,8 @@ class RuleEvaluation:
     reliability: Reliability
     branches: tuple[Array, ...] = ()
     by_alternative: Mapping[str, Array] = field(default_factory=dict)
+    problems: tuple[Problem, ...] = ()
+    governing: npt.NDArray[np.intp] = field(default_factory=lambda: np.zeros(0, dtype=np.intp))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -94,6 +101,7 @@ class Response:
         self.free = tuple(f for f in factors if not f.held)
         self.weight = np.concatenate([r.rule_weight * r.weight for r in rules])
         self.workers = workers
+        self.correction: Array | None = None
         self._rules = tuple(_Rule(r, [f.name for f in self.free], workers) for r in self.rules)
 
     def values(self, gamma: Array) -> dict[str, float]:
@@ -125,6 +133,8 @@ class Response:
             factors = {**held, **dict(zip(names, own, strict=True))}
             parts.append(rule(factors, None if start is None else start.per_rule[k]))
         beta = np.concatenate([p[1] for p in parts])
+        if self.correction is not None:
+            beta = beta + self.correction
         return Evaluation(
             np.array(gamma, dtype=np.float64),
             beta,
@@ -134,16 +144,25 @@ class Response:
             tuple(p[0] for p in parts),
         )
 
+    def corrected(self, correction: Array) -> Response:
+        """Return the same response with a correction added to beta in every row, shape (N,); NaN counts as 0."""
+        other = copy.copy(self)
+        other.correction = np.where(np.isfinite(correction), correction, 0.0)
+        return other
+
     def thinned(self, most: int) -> Response:
         """Return the response for at most about ``most`` situations with weight, evenly spread."""
-        rules = []
+        rules, kept, row = [], [], 0
         for rule in self.rules:
             columns = np.flatnonzero(rule.weight > 0)
             share = max(most // len(self.rules), 1)
             if columns.size > share:
                 columns = columns[np.unique(np.linspace(0, columns.size - 1, share).round().astype(np.intp))]
             rules.append(rule.take(columns))
-        return Response(rules, self.factors, self.workers)
+            kept.append(row + columns)
+            row += rule.n
+        thin = Response(rules, self.factors, self.workers)
+        return thin if self.correction is None else thin.corrected(self.correction[np.concatenate(kept)])
 
 
 class _Rule:
@@ -177,8 +196,9 @@ class _Rule:
         parts = [branch(values, sizing, u) for branch, u in zip(self.branches, starts, strict=True)]
         reliability, jacobian = parts[0].reliability, parts[0].jacobian
         by_alternative: dict[str, Array] = {}
+        governing = np.zeros(rule.n, dtype=np.intp)
         if rule.alternatives:
-            reliability, jacobian = worst_of(parts)
+            reliability, jacobian, governing = worst_of(parts)
             names = [a.leading for a in rule.alternatives]
             by_alternative = {
                 n: np.where(solved, p.reliability.beta, np.nan) for n, p in zip(names, parts, strict=True)
@@ -196,6 +216,8 @@ class _Rule:
             reliability,
             tuple(p.reliability.u for p in parts),
             by_alternative,
+            tuple(p.problem for p in parts),
+            governing,
         )
         return evaluation, beta, jacobian, status
 
@@ -207,9 +229,20 @@ class _Rule:
         return self.solver(values, n, self.check_free, near)
 
     def _shown(self, parts: Sequence[BranchResult]) -> tuple[Distribution, ...]:
-        """Return the distributions for tables: of an action, the one with which it leads."""
+        """Return the distributions for tables: of an action, the one with which it leads.
+
+        Of a variable that depends on others, the one with these at their medians.
+        """
         leading = [a.leading for a in self.rule.alternatives]
         return tuple(
-            parts[leading.index(v.name) if v.name in leading else 0].distributions[i]
+            _at_medians(parts[leading.index(v.name) if v.name in leading else 0].problem, i)
             for i, v in enumerate(self.rule.variables)
         )
+
+
+def _at_medians(problem: Problem, i: int) -> Distribution:
+    law = problem.distributions[i]
+    if isinstance(law, Distribution):
+        return law
+    medians = problem.x(np.zeros((problem.m, problem.n)))
+    return law.given([medians[j] for j in law.parents])

@@ -16,6 +16,7 @@ import numpy.typing as npt
 from calibrate.distributions import Distribution, Extreme, maximum_of, minimum_of
 from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.expressions import Expression, ExpressionError, parse, parse_comparison
+from calibrate.reliability.correlated_pairs import CorrelatedPair, nataf_correlation
 from calibrate.reliability.form import form
 from calibrate.reliability.limit_state import CallableLimitState, ExpressionLimitState, LimitState
 from calibrate.reliability.result import Reliability
@@ -39,8 +40,10 @@ class FormResult:
     design_point : mapping of str to array
         The design point in physical units, by variable.
     sensitivity : mapping of str to array
-        Sensitivity factors alpha, positive for resistances; the design value of a variable is
-        F^-1(Phi(-alpha beta)).
+        Sensitivity factors alpha, positive for resistances; the design value of an independent variable is
+        F^-1(Phi(-alpha beta)). Of correlated variables they belong to independent standard normal ones behind them,
+        in the order in which the variables are given (u* = -alpha beta, z* = L u* with the factor L of the
+        correlation matrix).
     converged : bool array
         Whether there is a beta.
     status : array of str
@@ -83,7 +86,8 @@ def public_form(
     variables : mapping of str to Distribution
         The basic variables; their parameters may be arrays, one element for each situation.
     correlation : mapping, optional
-        Coefficients by pair of names. This version takes zeros only.
+        Product-moment coefficients by pair of names; other pairs are independent. They are those of the physical
+        values (Nataf model).
     quantities : mapping, optional
         Deterministic names, numbers or arrays that broadcast with the parameters.
     workers : int
@@ -122,7 +126,7 @@ def public_form(
             raise InputError(f"{what}: must be a mapping; got {given!r}.")
     fixed = _quantities(quantities or {})
     _check_variables(variables, fixed)
-    _check_correlation(correlation or {}, variables)
+    pairs = _pairs(correlation or {}, variables)
     threads = _threads(workers)
     shape = _shape(variables, fixed)
     n = math.prod(shape)
@@ -131,7 +135,9 @@ def public_form(
     names = tuple(variables)
     state = _limit_state(limit_state, names, flat, gradient)
     begin = None if start is None else _start(start, names, shape)
-    return _result(form(state, distributions, n, start=begin, workers=threads), shape)
+    dependence = nataf_correlation(pairs, names, distributions, n)
+    found = form(state, distributions, n, correlation=dependence, start=begin, workers=threads)
+    return _result(found, shape)
 
 
 def _threads(workers: Any) -> int:
@@ -174,9 +180,11 @@ def _check_variables(variables: Mapping[str, Any], quantities: Mapping[str, Arra
         raise InputError(f"'{twice[0]}' is given both as variable and as quantity.")
 
 
-def _check_correlation(
+def _pairs(
     correlation: Mapping[tuple[str, str], float], variables: Mapping[str, Distribution]
-) -> None:
+) -> list[CorrelatedPair]:
+    pairs: list[CorrelatedPair] = []
+    seen: set[frozenset[str]] = set()
     for pair, value in correlation.items():
         if not isinstance(pair, tuple) or len(pair) != 2:
             raise InputError(f"correlation: keys must be pairs of names; got {pair!r}.")
@@ -186,12 +194,16 @@ def _check_correlation(
                 raise InputError(Problem(f"correlation: unknown variable '{name}'.", suggestion=hint))
         if pair[0] == pair[1]:
             raise InputError(f"correlation: '{pair[0]}' is paired with itself.")
+        if frozenset(pair) in seen:
+            raise InputError(f"correlation: {pair[0]} and {pair[1]} are given twice.")
+        seen.add(frozenset(pair))
         array = np.asarray(value)
-        if array.dtype.kind not in "iuf" or not np.all(array == 0.0):
-            text = "correlated basic variables are not supported by this version"
+        if array.dtype.kind not in "iuf" or array.ndim or not -1.0 <= array <= 1.0:
             raise InputError(
-                f"correlation of {pair[0]} and {pair[1]} is {value}: {text}; only 0 is accepted."
+                f"correlation of {pair[0]} and {pair[1]} must be a number from -1 to 1; got {value!r}."
             )
+        pairs.append(CorrelatedPair(pair[0], pair[1], float(array)))
+    return pairs
 
 
 def _shape(variables: Mapping[str, Distribution], quantities: Mapping[str, Array]) -> Shape:

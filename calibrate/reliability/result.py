@@ -55,6 +55,14 @@ class Reliability:
         """Number of situations."""
         return self.beta.size
 
+    def take(self, columns: Any) -> Reliability:
+        """Return some of the situations."""
+        picked = {
+            name: getattr(self, name)[..., columns]
+            for name in ("beta", "u", "x", "alpha", "gradient_norm", "code", "iterations")
+        }
+        return Reliability(self.variables, **picked, evaluations=int(np.sum(picked["iterations"])))
+
     @property
     def converged(self) -> npt.NDArray[np.bool_]:
         """Whether there is a beta: status ``converged`` or ``several design points``."""

@@ -17,6 +17,7 @@ from calibrate.report.required_figure import drawn_factors, required_factors
 from calibrate.report.resistance_figures import resistance_figures
 from calibrate.report.sensitivity_figure import sensitivity
 from calibrate.report.size_figure import size_change
+from calibrate.report.verification_figure import verification_figure
 from calibrate.units import format_unit
 
 if TYPE_CHECKING:
@@ -38,13 +39,13 @@ def figures(result: Result, meanwhile: Callable[[], None] | None = None) -> dict
     ``meanwhile`` is done in this process while another one draws its share.
 
 
-    ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none
-    does), ``beta_distribution``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a size,
-    ``sensitivity`` where a beta was found, ``sample_<records>`` for samples that need a look,
-    ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those
-    that matter, ``return_levels_<variable>`` for block maxima, ``threshold_<variable>`` and
-    ``return_levels_<variable>`` for exceedances; of component tests ``tests_<resistance>``,
-    ``errors_<resistance>``, ``error_<resistance>_<covariate>`` and ``clusters_<resistance>``.
+    ``beta_by_<axis>`` for every axis that varies (``beta_by_rule`` where none does), ``beta_distribution``,
+    ``verification_<set of factors>``, ``required_factors`` where a factor is free, ``size_change`` where a rule has a
+    size, ``sensitivity`` where a beta was found, ``sample_<records>`` for samples that need a look,
+    ``probability_<variable>`` for every fitted variable, ``tail_<variable>`` for those that matter,
+    ``return_levels_<variable>`` for block maxima, ``threshold_<variable>`` and ``return_levels_<variable>`` for
+    exceedances; of component tests ``tests_<resistance>``, ``errors_<resistance>``, ``error_<resistance>_<covariate>``
+    and ``clusters_<resistance>``.
     """
     with style.context():
         makers = dict(_all(result))
@@ -70,6 +71,8 @@ def _all(result: Result) -> Iterator[tuple[str, Maker]]:
     for axis in panel_axes(result):
         yield f"beta_by_{axis}", partial(beta_by_axis, result, axis)
     yield "beta_distribution", partial(beta_distribution, result)
+    for kind in result.verifications:
+        yield f"verification_{kind}", partial(verification_figure, result, kind)
     if names := drawn_factors(result):
         yield "required_factors", partial(required_factors, result, names)
     if changes := size_changes(result):

@@ -8,6 +8,7 @@ from functools import cache
 from typing import TYPE_CHECKING, Any
 
 from calibrate.report import (
+    dependence,
     evidence,
     inputs,
     numbers,
@@ -19,6 +20,8 @@ from calibrate.report import (
     symbols,
     tail_figure,
     threshold_figure,
+    verification,
+    verification_figure,
 )
 from calibrate.report.axis_figure import BY_RULE, panel_axes
 from calibrate.report.exceedance_tables import exceedance_sentence, exceedance_table
@@ -122,6 +125,8 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "records": inputs.record_table(result),
         "variables": inputs.variable_table(result),
         "one_period": all(v.parameters_period == study.reference_period for v in result.variables.values()),
+        "correlations": dependence.correlation_table(result),
+        "conditional": dependence.conditional_variables(study),
         "parameters": inputs.parameter_table(result),
         "quantities": inputs.quantity_table(result),
         "axes": inputs.axis_table(result),
@@ -181,6 +186,10 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "sites": sites.site_beta_table(result),
         "site_classes": sites.class_table(result),
         "why_periods": WHY,
+        "verification": verification.verification_table(result),
+        "verification_brief": verification.brief_sentence(result),
+        "verification_rows": {k: verification.simulated_table(result, k) for k in result.verifications},
+        "verification_caption": verification_figure.CAPTION,
         "sized": any(r.size is not None for r in study.rules.values()),
         "sizes": outcome.size_table(result, changes) if changes else None,
         "smaller": _rows(result, losers[0]),

@@ -4,6 +4,7 @@ Owns what turns a design rule into one designed member per situation. Knows noth
 files.
 """
 
+from calibrate.situations.conditional import ConditionalVariable, law_of
 from calibrate.situations.grid import Axis, Situations, full_factorial, normalised_weights
 from calibrate.situations.sizing import (
     ALREADY_MET,
@@ -24,11 +25,13 @@ __all__ = [
     "SOLVED",
     "Axis",
     "BasicVariable",
+    "ConditionalVariable",
     "Situations",
     "SizeSolver",
     "Sizing",
     "full_factorial",
     "is_converted",
+    "law_of",
     "normalised_weights",
     "sizing_reason",
     "solve_size",

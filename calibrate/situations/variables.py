@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -71,6 +71,19 @@ class BasicVariable:
         return any(e.depends_on(name) for e in self.arguments.values()) or (
             self.size_ratio is not None and self.size_ratio.depends_on(name)
         )
+
+    def argument_names(self) -> frozenset[str]:
+        """Return every name that the model uses."""
+        expressions = (*self.arguments.values(), *([] if self.size_ratio is None else [self.size_ratio]))
+        profile = (
+            () if self.stress_profile is None else (n for n in self.stress_profile.names if n != POSITION)
+        )
+        return frozenset(name for e in expressions for name in e.names) | frozenset(profile)
+
+    def parents(self, variables: Sequence[str]) -> tuple[str, ...]:
+        """Return those of these basic variables on which the model depends, in their order."""
+        used = self.argument_names()
+        return tuple(name for name in variables if name in used)
 
     def distribution(self, values: Mapping[str, Any]) -> Distribution:
         """Return the distribution over the reference period.

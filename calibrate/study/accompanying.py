@@ -47,7 +47,7 @@ def accompanying_table(
         if not model.alternatives:
             continue
         acting = [a for a in study.combination if any(b.leading == a.name for b in model.alternatives)]
-        points = _design_points(model, found, values)
+        points = _design_points(model, found)
         for action in acting:
             law = dataclasses.replace(
                 variables[action.name], ratio=action.repetitions, presence=action.presence
@@ -63,16 +63,14 @@ def accompanying_table(
     return pd.DataFrame(rows, columns=list(COLUMNS))
 
 
-def _design_points(
-    model: RuleModel, found: RuleEvaluation, values: Mapping[str, Any]
-) -> dict[str, dict[str, Array]]:
+def _design_points(model: RuleModel, found: RuleEvaluation) -> dict[str, dict[str, Array]]:
     """Return the values of all variables at the design point of each alternative, NaN where it has none."""
     points: dict[str, dict[str, Array]] = {}
-    for alternative, u in zip(model.alternatives, found.branches, strict=True):
+    for alternative, problem, u in zip(model.alternatives, found.problems, found.branches, strict=True):
         there = np.isfinite(found.by_alternative[alternative.leading])
         points[alternative.leading] = {
-            v.name: np.where(there, v.distribution(values).x(np.nan_to_num(row)), np.nan)
-            for v, row in zip(alternative.variables, u, strict=True)
+            v.name: np.where(there, row, np.nan)
+            for v, row in zip(alternative.variables, problem.x(np.nan_to_num(u)), strict=True)
         }
     return points
 

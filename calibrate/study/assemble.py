@@ -61,8 +61,16 @@ def rule_models(
     total = sum(rule.weight for rule in study.rules.values())
     share = 1.0 if years is None else years / study.reference_period
     return [
-        _rule_model(
-            rule, variables, values, situations.weight, total, _alternatives(study, rule, variables, share)
+        dataclasses.replace(
+            _rule_model(
+                rule,
+                variables,
+                values,
+                situations.weight,
+                total,
+                _alternatives(study, rule, variables, share),
+            ),
+            correlations=tuple(c.pair for c in study.correlations),
         )
         for rule in study.rules.values()
     ]

@@ -10,12 +10,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.actions.combination import Action
-from calibrate.actions.combined_limit_state import CombinedLimitState, combined_limit_state
+from calibrate.actions.combined_limit_state import MAXIMUM, CombinedLimitState, combined_limit_state
 from calibrate.distributions import distribution
 from calibrate.errors import Doubt, InputError
 from calibrate.factors import Calibration, RuleEvaluation, RuleModel
-from calibrate.reliability import FormSettings, form
-from calibrate.situations import BasicVariable
+from calibrate.reliability import FormSettings, Problem, form, nataf_correlation
+from calibrate.situations import BasicVariable, law_of
 from calibrate.study.assemble import values_at
 from calibrate.study.model import Study
 
@@ -82,15 +82,23 @@ def _exact(
     fixed = {n: values[n] for n in model.limit_state.names if n in values}
     state = combined_limit_state(model.limit_state, [v.name for v in others], actions, fixed)
     standard = distribution("normal", location=0.0, scale=1.0)
-    laws = [*(v.distribution(values) for v in others), standard]
+    names_of_rows = [*(v.name for v in others), MAXIMUM]
+    laws = [*(law_of(v, names_of_rows, values) for v in others), standard]
+    correlation = nataf_correlation(model.correlations, names_of_rows, laws, model.n)
     start = np.nan_to_num(np.array([found.reliability.u[i] for i in rows]).reshape(len(rows), model.n))
-    at = [law.x(u) for law, u in zip(laws, start, strict=False)]
-    # The maximum with which the other variables at the design point are just safe.
-    last = state.value([*at, np.zeros(model.n)])
+    # The maximum with which the other variables at the design point are just safe: the limit state at zero of it.
+    still = np.concatenate((start, np.zeros((1, model.n))))
+    last = Problem(state, tuple(laws), model.n, correlation).value(still)
     # The nearest point was made sure of for the alternatives; the exact surface lies beside theirs.
     settings = FormSettings(verify=False)
     result = form(
-        state, laws, model.n, start=np.concatenate((start, last[None])), settings=settings, workers=workers
+        state,
+        laws,
+        model.n,
+        correlation=correlation,
+        start=np.concatenate((start, last[None])),
+        settings=settings,
+        workers=workers,
     )
     return np.where(np.isfinite(found.reliability.beta) & _acts(state, result.x), result.beta, np.nan)
 

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calibrate.study.reliability_export import correlation_content, verification_content
 from calibrate.study.resistance_export import resistance_content, tests_csv
 
 if TYPE_CHECKING:
@@ -244,6 +245,9 @@ def result_dict(result: Result) -> dict[str, Any]:
         },
         "beta": {kind: _summary(result, chosen) for kind, chosen in sets.items()},
         "objective": {kind: _number(chosen.objective) for kind, chosen in sets.items()},
+        "index": study.objective.index,
+        "verification": {kind: verification_content(result, kind) for kind in result.verifications},
+        "correlations": [correlation_content(c) for c in study.correlations],
         "situations": len(result.situations),
         "unconverged": result.unconverged,
         "constraint_failures": list(result.constraint_failures),
@@ -265,6 +269,8 @@ def table_files(result: Result) -> dict[str, bytes]:
         "factors.csv": result.factors.to_csv(index=False, lineterminator="\n"),
         "units.json": json.dumps(dict(result.units), indent=2, ensure_ascii=False) + "\n",
     }
+    if result.verification is not None:
+        texts["verification.csv"] = result.verification.to_csv(index=False, lineterminator="\n")
     if result.sites is not None:
         texts["sites.csv"] = result.sites.to_csv(index=False, lineterminator="\n")
     if result.combinations is not None:

@@ -11,9 +11,11 @@ from numpy.typing import NDArray
 
 from calibrate.errors import Doubt
 from calibrate.expressions import Comparison, Expression
-from calibrate.factors import Factor
+from calibrate.factors import Factor, VerificationSettings
 from calibrate.fitting.characteristic import CharacteristicValue
+from calibrate.fitting.correlation import CorrelationEstimate
 from calibrate.records import Sample
+from calibrate.reliability import CorrelatedPair
 from calibrate.resistance import ComponentTests, Format, LoadStatistics, Part
 from calibrate.situations import Axis, Situations
 from calibrate.units import Dimension, Unit
@@ -206,6 +208,15 @@ class CombinedAction:
     duration: float | None = None
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Correlated:
+    """A correlated pair of basic variables; ``estimate`` is None where the coefficient is stated."""
+
+    pair: CorrelatedPair
+    estimate: CorrelationEstimate | None = None
+    source: str = ""
+
+
 @dataclass(frozen=True, slots=True)
 class Rule:
     """A design check, the size that it determines, and the limit state of what it designs.
@@ -233,6 +244,16 @@ class Objective:
     floor: float | None = None
     scale: float = 0.23
     """The ``d`` of the asymmetric penalty."""
+    index: str = "form"
+    """``form``, or ``verified``: FORM corrected by the difference to the verified index."""
+
+
+@dataclass(frozen=True, slots=True)
+class VerificationQuestion:
+    """How the index is verified, and with which sets of factors: ``present``, ``optimal``, ``proposed``."""
+
+    settings: VerificationSettings = field(default_factory=VerificationSettings)
+    on: tuple[str, ...] = ("proposed",)
 
 
 @dataclass(frozen=True, slots=True)
@@ -278,6 +299,10 @@ class Study:
     """The table of situations as the study names it."""
     combination: tuple[CombinedAction, ...] = ()
     """Variable actions that are combined; their models are those of one repetition."""
+    verification: VerificationQuestion = field(default_factory=VerificationQuestion)
+    """How the index is verified."""
+    correlations: tuple[Correlated, ...] = ()
+    """Correlated pairs of basic variables."""
     sites: Mapping[str, SiteTable] = field(default_factory=dict)
     """Site tables by name."""
     resistances: Mapping[str, ComponentRecords] = field(default_factory=dict)

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from calibrate.actions.return_levels import ReturnLevels
 from calibrate.errors import Doubt
-from calibrate.factors import Calibration
+from calibrate.factors import Calibration, Verification
 from calibrate.fitting import Comparison as FitComparison
 from calibrate.provenance import Provenance
 from calibrate.records.screening import Screening
@@ -105,6 +105,12 @@ class Result:
     required : DataFrame
         For each row of ``situations``, the value of each free factor with which its beta would be the target,
         the other factors as proposed: the columns of required_factors.csv.
+    verifications : mapping of str to Verification
+        By set of factors.
+    verification : DataFrame or None
+        Columns of verification.csv; None where nothing was verified.
+    correction : array (N,) or None
+        What was added to the index of FORM in every row, where the factors rest on the verified index.
     constraint_failures : tuple of str
         Constraints that cannot be met, each a full sentence.
     """
@@ -126,6 +132,9 @@ class Result:
     accompanying: pd.DataFrame | None
     sites: pd.DataFrame | None
     site_beta: SiteBeta | None
+    verifications: Mapping[str, Verification]
+    verification: pd.DataFrame | None
+    correction: NDArray[np.float64] | None
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

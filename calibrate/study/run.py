@@ -8,6 +8,7 @@ import time
 from collections.abc import Callable
 
 import numpy as np
+from numpy.typing import NDArray
 
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration, Response, RuleModel, calibrate_factors, make_penalty
@@ -37,6 +38,12 @@ from calibrate.study.tables import (
 )
 from calibrate.study.tested_range import beyond_tests
 from calibrate.study.uncertainty_ledger import uncertainty_ledger
+from calibrate.study.verification import (
+    calibrate_verified,
+    verification_doubts,
+    verification_table,
+    verifications,
+)
 
 Progress = Callable[[str, float], None]
 
@@ -91,7 +98,16 @@ def run(
     screenings = screen_records(study)
     variables = basic_variables(study, fitted)
     models = rule_models(study, variables)
-    calibration = _calibrate(study, models, workers, report)
+    calibration, correction, unsettled = _calibrate(study, models, workers, report)
+    report("Verifying the reliability index", 0.8)
+    weight = row_weights(study)
+    verified = verifications(
+        study,
+        calibration,
+        weight,
+        workers,
+        lambda f: report("Verifying the reliability index", 0.8 + 0.1 * f),
+    )
 
     report("Collecting results", 0.95)
     sets = (calibration.present, calibration.optimal, calibration.proposed)
@@ -111,7 +127,9 @@ def run(
         *(d for r in resistances.values() for d in (*r.doubts, *uncertainty_ledger(study, r).doubts)),
         *beyond_tests(study),
         *(() if exact is None else exact.doubts),
-        *site_doubts(study, by_site, row_weights(study)),
+        *site_doubts(study, by_site, weight),
+        *verification_doubts(study, verified, weight),
+        *unsettled,
         *calibration.doubts,
     )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
@@ -133,6 +151,9 @@ def run(
         accompanying=accompanying_table(study, variables, models, calibration),
         sites=site_table(study, by_site),
         site_beta=by_site,
+        verifications=verified,
+        verification=verification_table(study, verified),
+        correction=correction,
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,
@@ -143,10 +164,14 @@ def run(
     )
 
 
-def _calibrate(study: Study, models: list[RuleModel], workers: int, report: Progress) -> Calibration:
+def _calibrate(
+    study: Study, models: list[RuleModel], workers: int, report: Progress
+) -> tuple[Calibration, NDArray[np.float64] | None, tuple[Doubt, ...]]:
+    """Return the calibration, what was added to the index of FORM, and doubts about that."""
     response = Response(models, study.factors, workers=workers)
     weight = np.concatenate([m.rule_weight * m.weight for m in models])
-    try:
+
+    def solve(response: Response) -> Calibration:
         return calibrate_factors(
             response,
             study.factors,
@@ -154,8 +179,13 @@ def _calibrate(study: Study, models: list[RuleModel], workers: int, report: Prog
             study.target_beta,
             make_penalty(study.objective.penalty, study.objective.scale),
             study.objective.floor,
-            progress=lambda text, fraction: report(text, 0.05 + 0.9 * fraction),
+            progress=lambda text, fraction: report(text, 0.05 + 0.75 * fraction),
         )
+
+    try:
+        if study.objective.index == "verified":
+            return calibrate_verified(study, response, weight, solve, workers)
+        return solve(response), None, ()
     except InputError as error:
         raise InputError(
             [p if p.file else Problem(p.message, study.shown, p.line, p.suggestion) for p in error.problems]

@@ -60,6 +60,21 @@ def check_summary(study: Study) -> dict[str, Any]:
         },
         "resistances": {name: _resistance(r) for name, r in study.resistances.items()},
         "variables": {name: _variable(study, v) for name, v in study.variables.items()},
+        "correlations": [
+            {
+                "variables": [c.pair.first, c.pair.second],
+                "coefficient": c.pair.coefficient,
+                "kind": c.pair.kind,
+                "n": None if c.estimate is None else c.estimate.n,
+            }
+            for c in study.correlations
+        ],
+        "verification": {
+            "method": study.verification.settings.method,
+            "on": list(study.verification.on),
+            "situations": "all" if study.verification.settings.everywhere else "chosen",
+            "cov": study.verification.settings.cov,
+        },
         "sites": {
             name: {
                 "file": t.file,
@@ -85,6 +100,7 @@ def check_summary(study: Study) -> dict[str, Any]:
             "penalty": study.objective.penalty,
             "floor": study.objective.floor,
             "d": study.objective.scale if study.objective.penalty == "asymmetric" else None,
+            "index": study.objective.index,
         },
         "doubts": [{"code": d.code, "message": d.message, "where": d.where} for d in study.doubts],
     }

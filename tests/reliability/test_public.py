@@ -183,7 +183,7 @@ def test_workers(workers):
 
 
 @pytest.mark.parametrize(
-    "correlation", [None, {}, {("R", "S"): 0.0}, {("S", "R"): 0}, {("R", "S"): [0.0, 0.0]}]
+    "correlation", [None, {}, {("R", "S"): 0.0}, {("S", "R"): 0}, {("R", "S"): np.float64(0.0)}]
 )
 def test_correlation_of_zero_is_accepted(correlation):
     np.testing.assert_allclose(calibrate.form("R - S", TWO, correlation=correlation).beta, BETA, rtol=1e-14)
@@ -192,9 +192,11 @@ def test_correlation_of_zero_is_accepted(correlation):
 # Refusals ------------------------------
 
 REFUSED = {
-    "correlation": (("R - S",), {"correlation": {("R", "S"): 0.3}}, "R and S is 0.3.*not supported.*only 0"),
-    "correlation that is not a number": (("R - S",), {"correlation": {("R", "S"): np.nan}}, "R and S is nan"),
-    "correlation as text": (("R - S",), {"correlation": {("R", "S"): "0"}}, "only 0 is accepted"),
+    "correlation out of range": (("R - S",), {"correlation": {("R", "S"): 1.3}}, "number from -1 to 1; got 1.3"),
+    "correlation that is not a number": (("R - S",), {"correlation": {("R", "S"): np.nan}}, "-1 to 1; got nan"),
+    "correlation as text": (("R - S",), {"correlation": {("R", "S"): "0"}}, "number from -1 to 1; got '0'"),
+    "correlation twice": (("R - S",), {"correlation": {("R", "S"): 0.1, ("S", "R"): 0.1}}, "given twice"),
+    "full correlation": (("R - S",), {"correlation": {("R", "S"): 1.0}}, "not positive definite"),
     "correlation of an unknown name": (("R - S",), {"correlation": {("R", "SS"): 0.0}}, "'SS'.*Did you mean 'S'"),
     "correlation with itself": (("R - S",), {"correlation": {("R", "R"): 1.0}}, "paired with itself"),
     "correlation by one name": (("R - S",), {"correlation": {"RS": 0.0}}, "pairs of names; got 'RS'"),

@@ -7,6 +7,7 @@ from typing import Any
 from calibrate.actions.periods import in_years
 from calibrate.errors import did_you_mean
 from calibrate.study.model import CombinedAction, Variable
+from calibrate.study.reading.conditional import conditional_on
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.schema import CombinedTable, read_entry, read_table
 from calibrate.study.reading.toml_lines import Place
@@ -41,6 +42,13 @@ def read_combination(
                 "is an action over sites, and a site keeps its class in all repetitions; it cannot be combined.",
                 place,
                 f"Remove it here, or give variables.{name} for one class.",
+            )
+            continue
+        if conditional_on(variable, variables):
+            reading.problem(
+                "has a model that depends on other basic variables; it cannot be combined by its repetitions.",
+                place,
+                f"Remove it here, or give variables.{variable.name} moments of its own.",
             )
             continue
         repetitions = _repetitions(reading, content.repetitions, variable, reference_period, place)

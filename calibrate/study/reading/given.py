@@ -122,9 +122,10 @@ def _sizes_in(subject: Subject, value: Value) -> set[str]:
 
 
 def _check_values(subject: Subject, member: Family, values: Mapping[str, Value]) -> None:
-    """Check the numbers in every situation, unless they depend on the size, which is not known yet."""
+    """Check the numbers in every situation, unless they depend on the size or on variables, which are not known."""
     around = subject.around
-    if around.grid.n is None or any(_sizes_in(subject, v) for v in values.values()):
+    moving = {*(s.name for s in around.names.sizes.values()), *around.names.of_kind("variable")}
+    if around.grid.n is None or any(moving.intersection(v.expression.names) for v in values.values()):
         return
     known: dict[str, Any] = {**around.constants, **around.grid.numbers, **around.derived}
     arrays: dict[str, NDArray[np.float64]] = {}

@@ -79,6 +79,11 @@ MODELS = Use(
         "label": _LABELS,
     },
 )
+GIVEN_MODELS = Use(
+    "moments and parameters of basic variables",
+    _SITUATION | {"size", "variable"},
+    {"factor": _FACTORS_WHERE, "size": _SIZES_WHERE, "label": _LABELS},
+)
 _SITES_ALONE = (
     "The classes of sites are the same in every design situation; write the scale of the situation into the limit "
     "state."
@@ -235,7 +240,7 @@ class NameSpace:
     def _refuse(self, name: str, found: Name | None, place: Place, use: Use, rule: str | None) -> None:
         kind = None if found is None else found.kind
         if kind is None and any(s.name == name for s in self.sizes.values()):
-            if use is MODELS and rule is None:
+            if use in (MODELS, GIVEN_MODELS) and rule is None:
                 return  # which rules use the variable, and whether they have this size, is checked with them
             kind = "size"
         if kind is not None:

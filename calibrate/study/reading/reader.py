@@ -15,7 +15,7 @@ from calibrate.study.reading.allowances import check_allowances
 from calibrate.study.reading.bonds import bound, read_bonds
 from calibrate.study.reading.combination import read_combination
 from calibrate.study.reading.context import Reading
-from calibrate.study.reading.correlations import check_correlations
+from calibrate.study.reading.correlations import read_correlations
 from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
 from calibrate.study.reading.document import check_format, read_document
 from calibrate.study.reading.evidence import read_blocks, read_declared, read_records
@@ -30,6 +30,7 @@ from calibrate.study.reading.situations import finish_situations, read_grid, rea
 from calibrate.study.reading.subject import Surroundings
 from calibrate.study.reading.unused import note_unused
 from calibrate.study.reading.variables import read_variables
+from calibrate.study.reading.verification import read_verification
 
 _DERIVED = ("situations", "derived")
 
@@ -113,9 +114,12 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     combination = read_combination(
         reading, sections["combination"], variables, None if head is None else head.reference_period
     )
-    check_correlations(reading, names, sections["correlations"])
+    correlations = read_correlations(
+        reading, names, sections["correlations"], variables, records, combination
+    )
     check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)
+    verification = read_verification(reading, sections["verification"], objective)
     if not problems:
         note_unused(reading, names, factors, variables, own_records, sites)
     problems.stop_if_any()
@@ -123,6 +127,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     assert head is not None
     assert target is not None
     assert objective is not None
+    assert verification is not None
     assert situations is not None
     return Study(
         path=document.path,
@@ -145,6 +150,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         rules=rules,
         factors=factors,
         objective=objective,
+        verification=verification,
         weight_text="1" if weight is None else weight.text,
         lines=document.lines.dotted(),
         axes=grid.axes,
@@ -154,6 +160,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         axis_descriptions=grid.descriptions,
         doubts=tuple(reading.doubts),
         combination=combination,
+        correlations=correlations,
         sites={k: v for k, v in sites.items() if v is not None},
         resistances={k: v for k, v in resistances.items() if v is not None},
         blocks=blocks,
@@ -199,5 +206,5 @@ def _objective(reading: Reading, raw: Any, target: schema.TargetSection | None) 
             "objective.floor",
         )
     if content.d is None:
-        return Objective(content.penalty, content.floor)
-    return Objective(content.penalty, content.floor, content.d)
+        return Objective(content.penalty, content.floor, index=content.index)
+    return Objective(content.penalty, content.floor, content.d, content.index)

@@ -171,8 +171,13 @@ def _shown_unit(names: NameSpace, draft: Draft) -> Unit | None:
 
 
 def _variables_of(draft: Draft, variables: Mapping[str, Variable | None]) -> tuple[str, ...]:
-    used = limit_state_names(draft)
-    return tuple(name for name in variables if name in used)
+    used = set(limit_state_names(draft))
+    while True:
+        models = [v for name, v in variables.items() if name in used and v is not None]
+        more = {n for v in models for e in v.arguments.values() for n in e.names} & set(variables) - used
+        if not more:
+            return tuple(name for name in variables if name in used)
+        used |= more
 
 
 def limit_state_names(draft: Draft) -> frozenset[str]:

@@ -80,7 +80,8 @@ def _value_or_range(raw: Any) -> list[float | str]:
     return [_value(v) for v in raw] if isinstance(raw, list) else [_value(raw)]
 
 
-def _list(raw: Any) -> Any:
+def as_list(raw: Any) -> Any:
+    """Return a list as it is, anything else as a list of one."""
     return raw if isinstance(raw, list) else [raw]
 
 
@@ -184,7 +185,7 @@ class LoadsTable(Section):
 
     dead_factor: Positive
     live_factor: Positive
-    dead_to_live: Annotated[list[float], BeforeValidator(_list)]
+    dead_to_live: Annotated[list[float], BeforeValidator(as_list)]
     dead_bias: Positive
     live_bias: Positive
     dead_cov: Annotated[float, Field(ge=0)]
@@ -380,6 +381,7 @@ class ObjectiveSection(Section):
     penalty: Text = "squared"
     floor: Number | None = None
     d: Positive | None = None
+    index: Literal["form", "verified"] = "form"
 
 
 class CombinedTable(Section):
@@ -407,6 +409,8 @@ class TopLevel(Section):
     correlations: Any = None
     factors: Any = None
     objective: Any = None
+    verification: Any = None
+    systems: Any = None
 
 
 M = TypeVar("M", bound=Section)

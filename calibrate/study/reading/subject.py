@@ -14,7 +14,7 @@ from calibrate.expressions import Expression
 from calibrate.records import Sample
 from calibrate.study.model import ComponentRecords, Quantity, SiteTable
 from calibrate.study.reading.context import Reading
-from calibrate.study.reading.names import MODELS, NameSpace, Use
+from calibrate.study.reading.names import GIVEN_MODELS, NameSpace, Use
 from calibrate.study.reading.rules import Draft
 from calibrate.study.reading.situations import Grid
 from calibrate.study.reading.toml_lines import Place
@@ -35,7 +35,7 @@ class Surroundings:
     drafts: Mapping[str, Draft]
     sites: Mapping[str, SiteTable | None] = field(default_factory=dict)
     resistances: Mapping[str, ComponentRecords | None] = field(default_factory=dict)
-    use: Use = MODELS
+    use: Use = GIVEN_MODELS
     """What moments and parameters may use."""
 
     @property

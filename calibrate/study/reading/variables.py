@@ -11,6 +11,12 @@ from calibrate.errors import InputError, did_you_mean
 from calibrate.expressions import Expression
 from calibrate.study.model import ComponentRecords, Variable
 from calibrate.study.reading import schema
+from calibrate.study.reading.conditional import (
+    conditional_on,
+    in_order_of_dependence,
+    may_be_conditional,
+    report_circles,
+)
 from calibrate.study.reading.estimators import MethodChoice, read_method
 from calibrate.study.reading.exceedances import exceedance_model
 from calibrate.study.reading.fitted import fitted_model
@@ -37,7 +43,20 @@ def argument_names() -> tuple[str, ...]:
 def read_variables(around: Surroundings, raw: Mapping[str, Any]) -> dict[str, Variable | None]:
     """Read every variable; None stands for one that exists but is faulty (reported)."""
     report_second(around.reading, raw)
-    return {name: _read(Subject(name, around), entry) for name, entry in raw.items()}
+    order, circles = in_order_of_dependence(raw, argument_names())
+    report_circles(around, circles)
+    read = {
+        name: None if name in circles else _dependence_allowed(Subject(name, around), raw[name], around)
+        for name in order
+    }
+    return {name: read[name] for name in raw}
+
+
+def _dependence_allowed(subject: Subject, entry: Any, around: Surroundings) -> Variable | None:
+    variable = _read(subject, entry)
+    if variable is None or not conditional_on(variable, around.names.of_kind("variable")):
+        return variable
+    return variable if may_be_conditional(subject, variable) else None
 
 
 def _read(subject: Subject, raw: Any) -> Variable | None:

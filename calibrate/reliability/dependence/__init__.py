@@ -1,0 +1,15 @@
+"""Dependence between variables: correlation of physical values carried over to standard normal space.
+
+Knows distributions and matrices, and nothing of limit states, studies or records.
+"""
+
+from calibrate.reliability.dependence.matrix import CorrelationFactor, correlation_factor
+from calibrate.reliability.dependence.nataf import Equivalent, equivalent_correlation
+
+__all__ = [
+    "CorrelationFactor",
+    "Equivalent",
+    "correlation_factor",
+    "equivalent_correlation",
+    "smallest_indefinite_block",
+]
