@@ -70,27 +70,27 @@ class Mixture(Distribution):
         Newton steps on U(x), which is near linear for like components, kept inside the shrinking bracket.
         """
         u = np.asarray(u, dtype=np.float64)
-        each = self.components.x(self._column(u))
+        each = self.components.x(self._column(u.reshape(-1)))
         low, high = each.min(axis=-1), each.max(axis=-1)
         x = np.asarray(np.sum(each * self.weights, axis=-1))
         x = np.where((x > low) & (x < high), x, 0.5 * (low + high))
-        done = np.zeros(u.shape, dtype=np.bool_)
+        found, left, wanted = x.copy(), np.arange(x.size), u.reshape(-1)
         with np.errstate(all="ignore"):
             for _ in range(MAX_STEPS):
                 log_cdf, log_sf = self._log_tails(x)
                 here = u_from_log_tails(log_cdf, log_sf)
                 slope = np.exp(self.logpdf(x) + 0.5 * here * here + 0.9189385332046727)
-                above = here > u
+                above = here > wanted
                 high, low = np.where(above, x, high), np.where(above, low, x)
-                moved = x - (here - u) / slope
+                moved = x - (here - wanted) / slope
                 moved = np.where((moved >= low) & (moved <= high), moved, 0.5 * (low + high))
-                # What has arrived stays, so that no element depends on how far its neighbours are.
-                moved = np.where(done, x, moved)
-                done |= np.abs(moved - x) <= 1e-14 * np.maximum(np.abs(x), np.abs(high - low))
-                x = moved
-                if done.all():
+                found[left] = moved
+                # What has arrived is left alone: in a gap between components an element takes many more steps.
+                going = ~(np.abs(moved - x) <= 1e-14 * np.maximum(np.abs(x), np.abs(high - low)))
+                if not going.any():
                     break
-        return np.asarray(x)
+                left, x, wanted, low, high = (v[going] for v in (left, moved, wanted, low, high))
+        return found.reshape(u.shape)
 
     def x_slope(self, u: npt.ArrayLike) -> tuple[Array, Array]:
         """Return x and dx/du."""

@@ -7,12 +7,13 @@ apart. Knows nothing of study files or reports.
 from calibrate.factors.calibration import Calibration, calibrate_factors
 from calibrate.factors.identify import Diagnostics
 from calibrate.factors.lattice import Candidate, LatticeSearch, levels, search_lattice
-from calibrate.factors.model import Alternative, Factor, RuleModel
+from calibrate.factors.model import Alternative, Factor, RuleModel, SystemModel
 from calibrate.factors.objective import FactorSet, Goal, factor_set
 from calibrate.factors.optimise import Optimum, optimise
 from calibrate.factors.penalties import PENALTIES, Penalty, make_penalty
 from calibrate.factors.required import required_factor
 from calibrate.factors.response import Evaluation, Response, RuleEvaluation
+from calibrate.factors.systems import SystemEvaluation
 from calibrate.factors.verification import (
     NONE,
     SECOND_ORDER_ONLY,
@@ -39,6 +40,8 @@ __all__ = [
     "Response",
     "RuleEvaluation",
     "RuleModel",
+    "SystemEvaluation",
+    "SystemModel",
     "Verification",
     "VerificationSettings",
     "calibrate_factors",

@@ -12,6 +12,7 @@ import numpy.typing as npt
 from calibrate.distributions import Distribution
 from calibrate.factors.classes import nearest_over_classes
 from calibrate.factors.model import RuleModel
+from calibrate.factors.turning import alpha_slopes
 from calibrate.reliability import (
     Correlation,
     ExpressionLimitState,
@@ -34,6 +35,8 @@ class BranchResult:
     problem: Problem
     reliability: Reliability
     jacobian: Array
+    alpha_slopes: Array | None = None
+    """d alpha/d gamma, shape (f, m, n), where a system asks for it."""
 
 
 class Branch:
@@ -49,6 +52,8 @@ class Branch:
     check_free : tuple of str
         Those that the design check contains.
     workers : int
+    turning : bool
+        Whether the derivatives of the sensitivity factors are wanted.
     """
 
     def __init__(
@@ -58,8 +63,9 @@ class Branch:
         free: Sequence[str],
         check_free: tuple[str, ...],
         workers: int,
+        turning: bool = False,
     ) -> None:
-        self.rule, self.variables, self.workers = rule, variables, workers
+        self.rule, self.variables, self.workers, self.turning = rule, variables, workers, turning
         self.free, self.check_free = list(free), check_free
         self.names = tuple(v.name for v in variables)
         self.direct = tuple(f for f in free if rule.limit_state.depends_on(f))
@@ -101,7 +107,12 @@ class Branch:
             if variable.of_classes:
                 reliability = nearest_over_classes(search, distributions, i, reliability)
         jacobian = self._jacobian(values, sizing, problem, reliability)
-        return BranchResult(problem, reliability, jacobian)
+        turned = None
+        if self.turning:
+            turned = alpha_slopes(
+                self.rule, problem, reliability, values, sizing, self.free, self.check_free, jacobian
+            )
+        return BranchResult(problem, reliability, jacobian, turned)
 
     def _jacobian(
         self,

@@ -11,6 +11,7 @@ import numpy.typing as npt
 
 from calibrate.expressions import Expression
 from calibrate.reliability import CorrelatedPair
+from calibrate.reliability.systems import FailureLogic
 from calibrate.situations import BasicVariable
 
 Array = npt.NDArray[np.float64]
@@ -56,6 +57,31 @@ class Alternative:
 
     leading: str
     variables: tuple[BasicVariable, ...]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class SystemModel:
+    """A system of rules.
+
+    Parameters
+    ----------
+    name : str
+        Of the system.
+    logic : FailureLogic
+        Its components are rules by name.
+    order : tuple of str
+        All basic variables in the order of the study.
+    weight : array, shape (n,)
+        Weights of the situations, sum 1.
+    share : float
+        Share of the system in the objective, beside those of the rules; 0 where it is only reported.
+    """
+
+    name: str
+    logic: FailureLogic
+    order: tuple[str, ...]
+    weight: Array
+    share: float
 
 
 @dataclass(frozen=True, slots=True, eq=False)

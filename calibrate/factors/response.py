@@ -12,7 +12,8 @@ import numpy.typing as npt
 
 from calibrate.distributions import Distribution
 from calibrate.factors.branch import Branch, BranchResult, worst_of
-from calibrate.factors.model import Factor, RuleModel
+from calibrate.factors.model import Factor, RuleModel, SystemModel
+from calibrate.factors.systems import Component, SystemEvaluation, evaluate_system
 from calibrate.reliability import Problem, Reliability
 from calibrate.situations import SOLVED, SizeSolver, Sizing, sizing_reason
 
@@ -54,6 +55,8 @@ class RuleEvaluation:
     by_alternative: Mapping[str, Array] = field(default_factory=dict)
     problems: tuple[Problem, ...] = ()
     governing: npt.NDArray[np.intp] = field(default_factory=lambda: np.zeros(0, dtype=np.intp))
+    alpha_slopes: Array | None = None
+    """d alpha/d gamma, shape (f, m, n), of a rule that is a component of a system."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -73,6 +76,8 @@ class Evaluation:
     status : array of str (N,)
         In the words of the result files.
     per_rule : tuple of RuleEvaluation
+    systems : tuple of SystemEvaluation
+        Their rows follow those of the rules.
     """
 
     gamma: Array
@@ -81,6 +86,7 @@ class Evaluation:
     valid: npt.NDArray[np.bool_]
     status: npt.NDArray[Any]
     per_rule: tuple[RuleEvaluation, ...]
+    systems: tuple[SystemEvaluation, ...] = ()
 
 
 class Response:
@@ -93,16 +99,30 @@ class Response:
         Free and held.
     workers : int
         Threads of FORM; results do not depend on it.
+    systems : sequence of SystemModel
+        Systems of these rules; each has a row per situation, after those of the rules.
     """
 
-    def __init__(self, rules: Sequence[RuleModel], factors: Sequence[Factor], workers: int = 1) -> None:
+    def __init__(
+        self,
+        rules: Sequence[RuleModel],
+        factors: Sequence[Factor],
+        workers: int = 1,
+        systems: Sequence[SystemModel] = (),
+    ) -> None:
         self.rules = tuple(rules)
+        self.systems = tuple(systems)
         self.factors = tuple(factors)
         self.free = tuple(f for f in factors if not f.held)
-        self.weight = np.concatenate([r.rule_weight * r.weight for r in rules])
+        self.weight = np.concatenate(
+            [*(r.rule_weight * r.weight for r in rules), *(s.share * s.weight for s in systems)]
+        )
         self.workers = workers
         self.correction: Array | None = None
-        self._rules = tuple(_Rule(r, [f.name for f in self.free], workers) for r in self.rules)
+        components = {name for s in systems for name in s.logic.names}
+        self._rules = tuple(
+            _Rule(r, [f.name for f in self.free], workers, r.name in components) for r in self.rules
+        )
 
     def values(self, gamma: Array) -> dict[str, float]:
         """Return all factors by name, free ones from ``gamma``."""
@@ -132,17 +152,52 @@ class Response:
             row += rule.rule.n
             factors = {**held, **dict(zip(names, own, strict=True))}
             parts.append(rule(factors, None if start is None else start.per_rule[k]))
-        beta = np.concatenate([p[1] for p in parts])
+        joined = []
+        for system in self.systems:
+            n = system.weight.size
+            each = None if gamma.ndim == 1 else gamma[:, row : row + n]
+            row += n
+            joined.append(self._system(system, parts, held, each))
+        beta = np.concatenate([*(p[1] for p in parts), *(s[1] for s in joined)])
         if self.correction is not None:
             beta = beta + self.correction
         return Evaluation(
             np.array(gamma, dtype=np.float64),
             beta,
-            np.concatenate([p[2] for p in parts], axis=1),
+            np.concatenate([*(p[2] for p in parts), *(s[2] for s in joined)], axis=1),
             np.isfinite(beta),
-            np.concatenate([p[3] for p in parts]),
+            np.concatenate([*(p[3] for p in parts), *(s[3] for s in joined)]),
             tuple(p[0] for p in parts),
+            tuple(s[0] for s in joined),
         )
+
+    def _system(
+        self,
+        system: SystemModel,
+        parts: Sequence[_Part],
+        held: Mapping[str, float],
+        own: Array | None,
+    ) -> tuple[SystemEvaluation, Array, Array, npt.NDArray[Any]]:
+        """Return a system from the rules as evaluated, or from its rules with factors of its own rows."""
+        places = [[r.name for r in self.rules].index(name) for name in system.logic.names]
+        if own is None:
+            found = [parts[k] for k in places]
+        else:
+            factors = {**held, **dict(zip((f.name for f in self.free), own, strict=True))}
+            found = [self._rules[k](factors, parts[k][0]) for k in places]
+        components = []
+        for evaluation, beta, jacobian, _ in found:
+            assert evaluation.alpha_slopes is not None
+            components.append(
+                Component(
+                    evaluation.problems[0],
+                    evaluation.reliability,
+                    np.isfinite(beta),
+                    jacobian,
+                    evaluation.alpha_slopes,
+                )
+            )
+        return evaluate_system(system, [self.rules[k] for k in places], components)
 
     def corrected(self, correction: Array) -> Response:
         """Return the same response with a correction added to beta in every row, shape (N,); NaN counts as 0."""
@@ -161,14 +216,19 @@ class Response:
             rules.append(rule.take(columns))
             kept.append(row + columns)
             row += rule.n
+        if self.systems:
+            return self  # components need all situations of one another
         thin = Response(rules, self.factors, self.workers)
         return thin if self.correction is None else thin.corrected(self.correction[np.concatenate(kept)])
+
+
+_Part = tuple[RuleEvaluation, Array, Array, npt.NDArray[Any]]
 
 
 class _Rule:
     """One rule, with everything prepared that does not depend on factors."""
 
-    def __init__(self, rule: RuleModel, free: Sequence[str], workers: int) -> None:
+    def __init__(self, rule: RuleModel, free: Sequence[str], workers: int, turning: bool) -> None:
         self.rule = rule
         self.free = list(free)
         self.solver = (
@@ -178,11 +238,11 @@ class _Rule:
         )
         self.check_free = tuple(f for f in free if rule.check is not None and rule.check.depends_on(f))
         chosen = [a.variables for a in rule.alternatives] or [rule.variables]
-        self.branches = [Branch(rule, variables, self.free, self.check_free, workers) for variables in chosen]
+        self.branches = [
+            Branch(rule, variables, self.free, self.check_free, workers, turning) for variables in chosen
+        ]
 
-    def __call__(
-        self, factors: Mapping[str, Any], start: RuleEvaluation | None
-    ) -> tuple[RuleEvaluation, Array, Array, npt.NDArray[Any]]:
+    def __call__(self, factors: Mapping[str, Any], start: RuleEvaluation | None) -> _Part:
         rule = self.rule
         values: dict[str, Any] = {**rule.values, **factors}
         sizing = self._sized(values, start)
@@ -218,6 +278,7 @@ class _Rule:
             by_alternative,
             tuple(p.problem for p in parts),
             governing,
+            parts[0].alpha_slopes,
         )
         return evaluation, beta, jacobian, status
 

@@ -17,11 +17,12 @@ from scipy import special
 
 from calibrate.engine import stream
 from calibrate.factors.response import Evaluation, RuleEvaluation
-from calibrate.reliability import Problem, Reliability
+from calibrate.factors.systems import SystemEvaluation
+from calibrate.reliability import Problem, Reliability, design_points
 from calibrate.reliability.further_points import further_points
 from calibrate.reliability.second_order import second_order
 from calibrate.reliability.series_of_points import series_probability
-from calibrate.reliability.simulation import simulate
+from calibrate.reliability.simulation import Simulation, simulate
 
 Array = npt.NDArray[np.float64]
 Flags = npt.NDArray[np.bool_]
@@ -170,11 +171,14 @@ def verify(
         parts.append(part.run())
         row += n
         if progress is not None:
-            progress((k + 1) / len(evaluation.per_rule))
+            progress((k + 1) / (len(evaluation.per_rule) + len(evaluation.systems)))
+    parts += [_of_system(system, settings, seed, workers) for system in evaluation.systems]
     columns = {name: np.concatenate([p[name] for p in parts]) for name in parts[0]}
     for array in columns.values():
         array.setflags(write=False)
-    form = np.concatenate([rule.reliability.beta for rule in evaluation.per_rule])
+    form = np.concatenate(
+        [*(r.reliability.beta for r in evaluation.per_rule), *(s.result.beta for s in evaluation.systems)]
+    )
     return Verification(np.where(evaluation.valid, form, np.nan), **columns, settings=settings)
 
 
@@ -190,13 +194,7 @@ class _Part:
     workers: int
 
     def run(self) -> dict[str, npt.NDArray[Any]]:
-        n = self.valid.size
-        found: dict[str, npt.NDArray[Any]] = {
-            **{k: np.full(n, np.nan) for k in ("sorm", "series", "simulated", "lower", "upper", "cov")},
-            **{k: np.zeros(n, dtype=np.int64) for k in ("points", "samples")},
-            **{k: np.zeros(n, dtype=np.bool_) for k in ("sorm_sound", "nearer")},
-            **{k: np.full(n, "", dtype=object) for k in ("sorm_status", "status")},
-        }
+        found = _nothing(self.valid.size)
         if self.settings.method == NONE:
             return found
         for problem, reliability, at in self._groups(np.flatnonzero(self.valid)):
@@ -250,22 +248,84 @@ class _Part:
         found["nearer"][at] = several.nearer
         probability = series_probability(several.beta, several.alpha)
         found["series"][at] = -special.ndtri(probability)
-        result = simulate(
-            problem,
-            self.settings.method,
-            seed=self.seed,
-            keys=at.astype(np.int64),
-            cov=self.settings.cov,
-            most=self.settings.samples,
-            reliability=reliability,
-            points=several.u,
-            purpose=f"verification of {self.rule.name}",
-            sobol=self.settings.sobol,
-            workers=self.workers,
+        purpose = f"verification of {self.rule.name}"
+        result = _sampled(
+            problem, self.settings, self.seed, at, reliability, several.u, purpose, self.workers
         )
-        usable = np.isfinite(result.beta)
-        found["simulated"][at] = np.where(usable, result.beta, np.nan)
-        for name, values in (("lower", result.beta_lower), ("upper", result.beta_upper), ("cov", result.cov)):
-            found[name][at] = values
-        found["samples"][at] = result.samples
-        found["status"][at] = result.status
+        _enter(found, at, result)
+
+
+def _nothing(n: int) -> dict[str, npt.NDArray[Any]]:
+    return {
+        **{k: np.full(n, np.nan) for k in ("sorm", "series", "simulated", "lower", "upper", "cov")},
+        **{k: np.zeros(n, dtype=np.int64) for k in ("points", "samples")},
+        **{k: np.zeros(n, dtype=np.bool_) for k in ("sorm_sound", "nearer")},
+        **{k: np.full(n, "", dtype=object) for k in ("sorm_status", "status")},
+    }
+
+
+def _sampled(
+    problem: Problem,
+    settings: VerificationSettings,
+    seed: int,
+    at: npt.NDArray[np.intp],
+    reliability: Reliability,
+    points: Array,
+    purpose: str,
+    workers: int,
+) -> Simulation:
+    return simulate(
+        problem,
+        settings.method,
+        seed=seed,
+        keys=at.astype(np.int64),
+        cov=settings.cov,
+        most=settings.samples,
+        reliability=reliability,
+        points=points,
+        purpose=purpose,
+        sobol=settings.sobol,
+        workers=workers,
+    )
+
+
+def _enter(found: dict[str, npt.NDArray[Any]], at: npt.NDArray[np.intp], result: Simulation) -> None:
+    found["simulated"][at] = np.where(np.isfinite(result.beta), result.beta, np.nan)
+    for name, values in (("lower", result.beta_lower), ("upper", result.beta_upper), ("cov", result.cov)):
+        found[name][at] = values
+    found["samples"][at] = result.samples
+    found["status"][at] = result.status
+
+
+def _of_system(
+    system: SystemEvaluation, settings: VerificationSettings, seed: int, workers: int
+) -> dict[str, npt.NDArray[Any]]:
+    """Simulate the true system: around the design points of its components, and around its own nearest point."""
+    beta = system.result.beta
+    found = _nothing(beta.size)
+    there = np.isfinite(beta) & (system.weight > 0.0)
+    if settings.method in (NONE, SECOND_ORDER_ONLY) or not there.any():
+        return found
+    chosen = there.copy()
+    if not settings.everywhere:
+        chosen[:] = False
+        for order in (beta, -beta):
+            chosen[int(np.argmin(np.where(there, order, np.inf)))] = True
+        rest = np.flatnonzero(there & ~chosen)
+        chosen[stream(seed, "verification sample", system.name).permutation(rest)[:SAMPLE]] = True
+    at = np.flatnonzero(chosen)
+    problem = system.problem.take(at, at.size)
+    reliability = design_points(problem, workers=workers)
+    points = np.concatenate([system.points[:, :, at], reliability.u[None]])
+    # A point that was not found is replaced by the nearest of the components'.
+    nearest = np.argmin(
+        np.where(np.isnan(system.component_beta[:, at]), np.inf, system.component_beta[:, at]), axis=0
+    )
+    first = np.moveaxis(system.points[:, :, at], 2, 0)[np.arange(at.size), nearest].T
+    points = np.where(np.isfinite(points), points, first)
+    _enter(
+        found,
+        at,
+        _sampled(problem, settings, seed, at, reliability, points, f"verification of {system.name}", workers),
+    )
+    return found

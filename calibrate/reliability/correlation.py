@@ -65,6 +65,18 @@ class Correlation:
                     total = total + self.factor[i, j] * a[i]
             a[j] = total
 
+    def solve_transposed(self, a: Array) -> Array:
+        """Return the w with L^T w = a, (m, n): what ``backward`` turns into ``a``."""
+        m = len(self.pattern)
+        w = np.empty_like(a)
+        for j in reversed(range(m)):
+            rest = a[j]
+            for i in range(j + 1, m):
+                if j in self.pattern[i]:
+                    rest = rest - self.factor[i, j] * w[i]
+            w[j] = rest / self.factor[j, j] if len(self.pattern[j]) > 1 else rest
+        return w
+
     def matrix(self) -> Array:
         """Return L L^T, of the shape of the factor."""
         return np.asarray(np.einsum("ik...,jk...->ij...", self.factor, self.factor))

@@ -103,7 +103,7 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
     """Return the figure of one axis; both panels share the scale of beta."""
     frame = result.situations
     ruler = scale(frame["rule" if axis == BY_RULE else axis].to_numpy())
-    rules = list(result.study.rules)
+    rules = list(result.study.judged)
     columns = max(1, min(len(rules), int(PANEL_WIDTH * 2 // (10 + 1.5 * max(map(len, rules))))))
     legend = _LEGEND_ROW * -(-len(rules) // columns) + 1.0 if axis != BY_RULE and len(rules) > 1 else 0.0
     down, sideways = ruler.slant(PANEL_WIDTH)
@@ -211,7 +211,7 @@ def scatter_by_rule(
     """Draw one value of every situation that takes part, marked by rule, with weighted means at levels of the axis."""
     frame = result.situations
     rule_of, weight = frame["rule"].to_numpy(), frame["weight"].to_numpy(float)
-    rules = list(result.study.rules)
+    rules = list(result.study.judged)
     many = int(part.sum()) > MANY_POINTS
     alone = len(varying_columns(result)) == 1
     reach = min(0.22, 0.08 * (len(rules) - 1)) * ruler.gap

@@ -18,6 +18,7 @@ from calibrate.report import (
     sample_figure,
     sites,
     symbols,
+    systems,
     tail_figure,
     threshold_figure,
     verification,
@@ -186,6 +187,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "sites": sites.site_beta_table(result),
         "site_classes": sites.class_table(result),
         "why_periods": WHY,
+        "systems": systems.system_table(result),
         "verification": verification.verification_table(result),
         "verification_brief": verification.brief_sentence(result),
         "verification_rows": {k: verification.simulated_table(result, k) for k in result.verifications},
@@ -293,7 +295,7 @@ def _fit_methods(result: Result) -> str:
 
 def _axis_caption(result: Result) -> str:
     floor = ", dashed: floor" if result.study.objective.floor is not None else ""
-    marks = "Marks by rule," if len(result.study.rules) > 1 else "Marks are"
+    marks = "Marks by rule," if len(result.study.judged) > 1 else "Marks are"
     return (
         f"every design situation with present and proposed factors; horizontal line: target{floor}. "
         f"{marks} larger with more weight; lines: weighted means of several situations."

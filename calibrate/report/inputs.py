@@ -220,7 +220,7 @@ class RuleText:
 def rule_texts(result: Result) -> list[RuleText]:
     """Return the rules with their formulas; the factors stand out."""
     factors = frozenset(f.name for f in result.study.factors)
-    total = sum(r.weight for r in result.study.rules.values())
+    total = result.study.total_weight
     return [
         RuleText(
             name=rule.name,

@@ -73,8 +73,8 @@ def required_factors(result: Result, names: list[str]) -> Figure:
             axes.set_ylabel("required value")
         axes.grid(visible=True, axis="y")
         level_ticks(axes, ruler, _PANEL_WIDTH)
-    if axis != BY_RULE and len(result.study.rules) > 1:
-        rule_legend(figure, list(result.study.rules), 0.5, min(len(result.study.rules), 4))
+    if axis != BY_RULE and len(result.study.judged) > 1:
+        rule_legend(figure, list(result.study.judged), 0.5, min(len(result.study.judged), 4))
     return figure
 
 

@@ -26,7 +26,7 @@ CAPTION = (
 def verification_figure(result: Result, kind: str) -> Figure:
     """Return the verified index less that of FORM over the index of FORM, marked by rule."""
     v = result.verifications[kind]
-    rules = list(result.study.rules)
+    rules = list(result.study.judged)
     part = counted(result, v) & np.isfinite(v.difference)
     n = result.study.situations.n
     many = len(rules) > 1
@@ -54,10 +54,10 @@ def verification_figure(result: Result, kind: str) -> Figure:
                 zorder=3,
             )
     axes.margins(x=0.04, y=0.12)
-    low, high = axes.get_ylim()
+    bottom, top = axes.get_ylim()
     tolerance = v.settings.tolerance
     for level in (-tolerance, tolerance):
-        if low - 0.3 * tolerance < level < high + 0.3 * tolerance:
+        if bottom - 0.3 * tolerance < level < top + 0.3 * tolerance:
             axes.axhline(level, color=style.GREY, linewidth=0.8, linestyle=(0, (4, 2)))
     axes.set_xlabel(f"β by FORM, {kind} factors")
     axes.set_ylabel("verified β less FORM")

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.actions.combination import leading_repetitions
-from calibrate.factors import Alternative, RuleEvaluation, RuleModel
+from calibrate.factors import Alternative, RuleEvaluation, RuleModel, SystemModel
 from calibrate.situations import BasicVariable
 from calibrate.study.fits import RecordModel
 from calibrate.study.model import Rule, Study, Variable
@@ -58,7 +58,7 @@ def rule_models(
     situations = study.situations
     numeric = {n: v for n, v in situations.columns.items() if v.dtype.kind == "f"}
     values = {**{q.name: q.value for q in study.quantities.values()}, **numeric, **situations.derived}
-    total = sum(rule.weight for rule in study.rules.values())
+    total = study.total_weight
     share = 1.0 if years is None else years / study.reference_period
     return [
         dataclasses.replace(
@@ -73,6 +73,20 @@ def rule_models(
             correlations=tuple(c.pair for c in study.correlations),
         )
         for rule in study.rules.values()
+    ]
+
+
+def system_models(study: Study) -> list[SystemModel]:
+    """Return the systems of rules, in the order of the study."""
+    return [
+        SystemModel(
+            system.name,
+            system.logic,
+            tuple(study.variables),
+            study.situations.weight,
+            system.weight / study.total_weight,
+        )
+        for system in study.systems.values()
     ]
 
 

@@ -106,12 +106,13 @@ class PedigreeShare:
 def pedigree(study: Study, calibration: Calibration) -> tuple[PedigreeShare, ...]:
     """Return the share of the sum of alpha squared by pedigree grade, weighted over rules and situations."""
     evaluation = calibration.proposed.evaluation
-    total = sum(r.weight for r in study.rules.values())
+    # Rules that only count as parts of a system count alike.
+    alike = 0.0 if any(r.weight for r in study.rules.values()) else 1.0
     shares: dict[str, float] = {}
     names: dict[str, list[str]] = {}
     whole = 0.0
     for rule, e in zip(study.rules.values(), evaluation.per_rule, strict=True):
-        weight = study.situations.weight * rule.weight / total
+        weight = study.situations.weight * (rule.weight or alike)
         for i, name in enumerate(rule.variables):
             grade = grade_of(study, name)
             square = e.reliability.alpha[i] ** 2

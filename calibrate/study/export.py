@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from calibrate.study.reliability_export import correlation_content, verification_content
+from calibrate.study.reliability_export import correlation_content, systems_content, verification_content
 from calibrate.study.resistance_export import resistance_content, tests_csv
 
 if TYPE_CHECKING:
@@ -247,6 +247,7 @@ def result_dict(result: Result) -> dict[str, Any]:
         "objective": {kind: _number(chosen.objective) for kind, chosen in sets.items()},
         "index": study.objective.index,
         "verification": {kind: verification_content(result, kind) for kind in result.verifications},
+        "systems": systems_content(result),
         "correlations": [correlation_content(c) for c in study.correlations],
         "situations": len(result.situations),
         "unconverged": result.unconverged,
@@ -271,6 +272,8 @@ def table_files(result: Result) -> dict[str, bytes]:
     }
     if result.verification is not None:
         texts["verification.csv"] = result.verification.to_csv(index=False, lineterminator="\n")
+    if result.systems is not None:
+        texts["systems.csv"] = result.systems.to_csv(index=False, lineterminator="\n")
     if result.sites is not None:
         texts["sites.csv"] = result.sites.to_csv(index=False, lineterminator="\n")
     if result.combinations is not None:

@@ -16,6 +16,7 @@ from calibrate.fitting.characteristic import CharacteristicValue
 from calibrate.fitting.correlation import CorrelationEstimate
 from calibrate.records import Sample
 from calibrate.reliability import CorrelatedPair
+from calibrate.reliability.systems import FailureLogic
 from calibrate.resistance import ComponentTests, Format, LoadStatistics, Part
 from calibrate.situations import Axis, Situations
 from calibrate.units import Dimension, Unit
@@ -236,6 +237,17 @@ class Rule:
     description: str = ""
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class System:
+    """Rules that fail together as ``logic`` says; calibrated where its weight is positive, else only reported."""
+
+    name: str
+    logic: FailureLogic
+    weight: float = 0.0
+    line: int | None = None
+    description: str = ""
+
+
 @dataclass(frozen=True, slots=True)
 class Objective:
     """How a departure of beta from the target is penalised."""
@@ -303,6 +315,8 @@ class Study:
     """How the index is verified."""
     correlations: tuple[Correlated, ...] = ()
     """Correlated pairs of basic variables."""
+    systems: Mapping[str, System] = field(default_factory=dict)
+    """Systems of rules by name."""
     sites: Mapping[str, SiteTable] = field(default_factory=dict)
     """Site tables by name."""
     resistances: Mapping[str, ComponentRecords] = field(default_factory=dict)
@@ -313,3 +327,18 @@ class Study:
     """Further periods, in years, for which beta is reported alongside."""
     independence: float = 1.0
     """Interval in years between independent failures, for the conversion of beta itself."""
+
+    @property
+    def judged(self) -> tuple[str, ...]:
+        """What has a row in each design situation: the rules, then the systems, in the order of the study."""
+        return (*self.rules, *self.systems)
+
+    @property
+    def weights(self) -> tuple[float, ...]:
+        """Weights of rules and systems, as stated."""
+        return (*(r.weight for r in self.rules.values()), *(s.weight for s in self.systems.values()))
+
+    @property
+    def total_weight(self) -> float:
+        """Sum of the weights of rules and systems."""
+        return sum(self.weights)

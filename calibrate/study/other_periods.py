@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from calibrate.actions.periods import beta_of_period
 from calibrate.errors import Doubt
 from calibrate.factors import Calibration, Response
-from calibrate.study.assemble import basic_variables, rule_models
+from calibrate.study.assemble import basic_variables, rule_models, system_models
 from calibrate.study.fits import RecordModel
 from calibrate.study.model import Study
 
@@ -54,7 +54,10 @@ def other_periods(
     evaluation = calibration.proposed.evaluation
     for years in study.other_periods:
         response = Response(
-            rule_models(study, basic_variables(study, fitted, years), years), study.factors, workers=workers
+            rule_models(study, basic_variables(study, fitted, years), years),
+            study.factors,
+            workers=workers,
+            systems=system_models(study),
         )
         direct = response(evaluation.gamma, evaluation).beta
         intervals = [max(t / study.independence, 1.0) for t in (years, study.reference_period)]

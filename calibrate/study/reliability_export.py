@@ -55,6 +55,28 @@ def verification_content(result: Result, kind: str) -> dict[str, Any]:
     }
 
 
+def systems_content(result: Result) -> dict[str, Any]:
+    """Return logic and weighted index of each system with the proposed factors."""
+    if result.systems is None:
+        return {}
+    content = {}
+    for name, system in result.study.systems.items():
+        own = result.systems[result.systems["system"] == name]
+        beta, weight = own["beta"].to_numpy(float), own["weight"].to_numpy(float)
+        there = np.isfinite(beta) & (weight > 0.0)
+        content[name] = {
+            "fails_when": system.logic.text,
+            "components": list(system.logic.names),
+            "weight": system.weight,
+            "beta": {
+                "mean": float(np.average(beta[there], weights=weight[there])) if there.any() else None,
+                "min": float(beta[there].min()) if there.any() else None,
+                "max": float(beta[there].max()) if there.any() else None,
+            },
+        }
+    return content
+
+
 def _row(result: Result, kind: str, row: int) -> dict[str, Any]:
     v = result.verifications[kind]
     rule, situation = place_of(result.study, row)

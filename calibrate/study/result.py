@@ -111,6 +111,8 @@ class Result:
         Columns of verification.csv; None where nothing was verified.
     correction : array (N,) or None
         What was added to the index of FORM in every row, where the factors rest on the verified index.
+    systems : DataFrame or None
+        Columns of systems.csv; None without any.
     constraint_failures : tuple of str
         Constraints that cannot be met, each a full sentence.
     """
@@ -135,6 +137,7 @@ class Result:
     verifications: Mapping[str, Verification]
     verification: pd.DataFrame | None
     correction: NDArray[np.float64] | None
+    systems: pd.DataFrame | None
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

@@ -14,7 +14,7 @@ from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration, Response, RuleModel, calibrate_factors, make_penalty
 from calibrate.provenance import Provenance, versions
 from calibrate.study.accompanying import accompanying_table
-from calibrate.study.assemble import basic_variables, rule_models
+from calibrate.study.assemble import basic_variables, rule_models, system_models
 from calibrate.study.bonds import implied_biases
 from calibrate.study.combinations import combination_table, doubts_of_combination
 from calibrate.study.component_tests import evaluate_resistances
@@ -28,6 +28,7 @@ from calibrate.study.other_periods import other_periods, period_doubts
 from calibrate.study.result import Result
 from calibrate.study.screening import screen_records
 from calibrate.study.sites import site_beta, site_doubts, site_table
+from calibrate.study.systems import system_doubts, system_table
 from calibrate.study.tables import (
     factor_table,
     required_table,
@@ -109,6 +110,8 @@ def run(
         lambda f: report("Verifying the reliability index", 0.8 + 0.1 * f),
     )
 
+    of_systems = system_table(study, calibration, verified)
+
     report("Collecting results", 0.95)
     sets = (calibration.present, calibration.optimal, calibration.proposed)
     table, units = situation_table(study, calibration)
@@ -130,6 +133,7 @@ def run(
         *site_doubts(study, by_site, weight),
         *verification_doubts(study, verified, weight),
         *unsettled,
+        *system_doubts(study, of_systems),
         *calibration.doubts,
     )
     unconverged = sum(int(np.count_nonzero(~np.isfinite(s.evaluation.beta))) for s in sets[2:])
@@ -154,6 +158,7 @@ def run(
         verifications=verified,
         verification=verification_table(study, verified),
         correction=correction,
+        systems=of_systems,
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,
@@ -168,8 +173,8 @@ def _calibrate(
     study: Study, models: list[RuleModel], workers: int, report: Progress
 ) -> tuple[Calibration, NDArray[np.float64] | None, tuple[Doubt, ...]]:
     """Return the calibration, what was added to the index of FORM, and doubts about that."""
-    response = Response(models, study.factors, workers=workers)
-    weight = np.concatenate([m.rule_weight * m.weight for m in models])
+    response = Response(models, study.factors, workers=workers, systems=system_models(study))
+    weight = response.weight
 
     def solve(response: Response) -> Calibration:
         return calibrate_factors(

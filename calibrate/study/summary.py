@@ -86,6 +86,14 @@ def check_summary(study: Study) -> dict[str, Any]:
         "situations": _situations(study),
         "weights": _weights(study),
         "rules": {name: _rule(study, rule) for name, rule in study.rules.items()},
+        "systems": {
+            name: {
+                "fails_when": system.logic.text,
+                "components": list(system.logic.names),
+                "weight": system.weight,
+            }
+            for name, system in study.systems.items()
+        },
         "factors": {
             f.name: {
                 "present": f.present,

@@ -54,9 +54,9 @@ def situation_table(
 
     situations = study.situations
     rules = list(study.rules.values())
-    repeat = len(rules)
+    repeat = len(study.judged)
     columns: dict[str, object] = {
-        "rule": np.repeat(np.array([r.name for r in rules], dtype=object), situations.n),
+        "rule": np.repeat(np.array(study.judged, dtype=object), situations.n),
         "situation": np.tile(np.arange(1, situations.n + 1), repeat),
     }
     units: dict[str, str | dict[str, str]] = {"rule": "", "situation": ""}
@@ -71,8 +71,11 @@ def situation_table(
         evaluation: Evaluation = getattr(calibration, kind).evaluation
         columns[f"size_{kind}"] = np.concatenate(
             [
-                np.full(situations.n, np.nan) if e.size is None else e.size / size_unit(study, r).factor
-                for r, e in zip(rules, evaluation.per_rule, strict=True)
+                *(
+                    np.full(situations.n, np.nan) if e.size is None else e.size / size_unit(study, r).factor
+                    for r, e in zip(rules, evaluation.per_rule, strict=True)
+                ),
+                np.full(situations.n * len(study.systems), np.nan),
             ]
         )
         units[f"size_{kind}"] = _size_units(study, rules)
@@ -90,8 +93,8 @@ def required_table(study: Study, calibration: Calibration) -> pd.DataFrame:
     n = study.situations.n
     return pd.DataFrame(
         {
-            "rule": np.repeat(np.array(list(study.rules), dtype=object), n),
-            "situation": np.tile(np.arange(1, n + 1), len(study.rules)),
+            "rule": np.repeat(np.array(study.judged, dtype=object), n),
+            "situation": np.tile(np.arange(1, n + 1), len(study.judged)),
             **{f"required_{name}": values for name, values in calibration.required.items()},
         }
     )
@@ -99,8 +102,7 @@ def required_table(study: Study, calibration: Calibration) -> pd.DataFrame:
 
 def row_weights(study: Study) -> Array:
     """Return the weight of every row of the table of situations, sum 1."""
-    total = sum(r.weight for r in study.rules.values())
-    return np.concatenate([study.situations.weight * (r.weight / total) for r in study.rules.values()])
+    return np.concatenate([study.situations.weight * (w / study.total_weight) for w in study.weights])
 
 
 def _size_units(study: Study, rules: list[Rule]) -> str | dict[str, str]:
@@ -132,6 +134,11 @@ def _design_points(
         for i, name in enumerate(rule.variables):
             alpha[name][rows] = np.where(found, e.reliability.alpha[i], np.nan)
             x[name][rows] = np.where(found, e.reliability.x[i] / study.variables[name].unit.factor, np.nan)
+    for k, s in enumerate(evaluation.systems, len(rules)):
+        rows = slice(k * n, (k + 1) * n)
+        if s.result.equivalent_alpha is not None:
+            for name, row in zip(s.variables, s.result.equivalent_alpha, strict=True):
+                alpha[name][rows] = row
     used = [name for name in study.variables if any(name in r.variables for r in rules)]
     for name in used:
         columns[f"alpha_{name}"] = alpha[name]

@@ -112,8 +112,8 @@ def verification_table(study: Study, found: Mapping[str, Verification]) -> pd.Da
     for kind, v in found.items():
         columns = {
             "factors": np.full(v.form.size, kind, dtype=object),
-            "rule": np.repeat(np.array(list(study.rules), dtype=object), n),
-            "situation": np.tile(np.arange(1, n + 1), len(study.rules)),
+            "rule": np.repeat(np.array(study.judged, dtype=object), n),
+            "situation": np.tile(np.arange(1, n + 1), len(study.judged)),
             "beta_form": v.form,
             "beta_sorm": v.sorm,
             "beta_simulated": v.simulated,
@@ -149,8 +149,9 @@ def verification_doubts(study: Study, found: Mapping[str, Verification], weight:
             f"With the {kind} factors there are several design points in {{places}}; FORM counts the nearest only. "
             "The simulation covers all that were found.",
         )  # fmt: skip
+        by_rule = np.arange(there.size) < len(study.rules) * study.situations.n
         doubts += _at(
-            study, there & ~v.sorm_sound & ~v.is_simulated, "no-second-order",
+            study, there & by_rule & ~v.sorm_sound & ~v.is_simulated, "no-second-order",
             f"With the {kind} factors there is no sound second-order index in {{places}}, and no simulation: the index "
             "of FORM is unverified there.",
             "Say situations = \"all\" in [verification].",
@@ -166,9 +167,9 @@ def verification_doubts(study: Study, found: Mapping[str, Verification], weight:
 
 
 def place_of(study: Study, row: int) -> tuple[str, int]:
-    """Return rule and situation of a row."""
+    """Return rule (or system) and situation of a row."""
     n = study.situations.n
-    return list(study.rules)[row // n], row % n + 1
+    return study.judged[row // n], row % n + 1
 
 
 def _large(study: Study, kind: str, v: Verification, there: NDArray[np.bool_]) -> list[Doubt]:

@@ -92,7 +92,7 @@ def report(problem, found, area, models, sobol):
     p = result.probability
     crude = np.mean((1.0 - p) / (p * result.cov**2) / result.samples)
     print(f"{n} situations, beta {found.beta.min():.3f} to {found.beta.max():.3f}, Sobol points: {sobol}")
-    print(f"importance sampling to {COV:.0%}: {seconds:.2f} s (wanted at n = 1000: less than 4)")
+    print(f"importance sampling to {COV:.0%}: {seconds:.2f} s (wanted for 1000: less than 4)")
     print(
         f"reached {result.reached.mean():.1%}; {total / n:.0f} samples each; {seconds / total * 1e9:.0f} ns per sample"
     )

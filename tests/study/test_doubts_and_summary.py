@@ -115,7 +115,7 @@ def test_summary_of_the_example(project):
         "present": 1.25, "held": False, "lower": 1.0, "upper": 2.0, "step": 0.05
     }  # fmt: skip
     assert summary["factors"]["gamma_G"]["lower"] is None
-    assert summary["objective"] == {"penalty": "squared", "floor": 3.3, "d": None}
+    assert summary["objective"] == {"penalty": "squared", "floor": 3.3, "d": None, "index": "form"}
     assert summary["doubts"] == []
 
 

@@ -8,6 +8,7 @@ does not (mixtures with gaps, tails whose variance hardly exists) get panels and
 from __future__ import annotations
 
 from functools import lru_cache
+from typing import Protocol
 
 import numpy as np
 import numpy.typing as npt
@@ -31,6 +32,17 @@ _MISSED = 1e-8
 _MISSED_SERIES = 1e-7
 # He_k(z)/sqrt(k!) stays below exp(z^2/4) times 1.09 (Cramer), so that what is less than this no longer counts.
 _TAIL = 1e-11
+
+
+class Expanded(Protocol):
+    """Functions of a standard normal variable with their series: see :class:`Standardised`."""
+
+    values: Array
+    series: list[Array]
+    panels: list[Panels | None]
+
+    def at(self, i: int, z: Array) -> Array:
+        """Return the function of element i at z, (nodes,)."""
 
 
 class Standardised:
@@ -59,7 +71,7 @@ class Standardised:
         sd = np.broadcast_to(distribution.sd, distribution.shape).reshape(-1)
         usable = np.isfinite(mean) & np.isfinite(sd) & (sd > 0.0)
         self.mean, self.sd = np.where(usable, mean, np.nan), np.where(usable, sd, np.nan)
-        nodes, weights, _ = _table()
+        nodes, weights, _ = table()
         self.values = np.empty((count, nodes.size))
         for start in range(0, count, _CHUNK):
             part = slice(start, start + _CHUNK)
@@ -89,20 +101,20 @@ class Standardised:
             return np.ones(1), None
         moments = abs(np.sum(weights * h)), abs(np.sum(weights * h * h) - 1.0)
         # Sums along rows of one length: the same order of addition whatever else is computed.
-        series = np.sum(_table()[2] * h, axis=1)
+        series = np.sum(table()[2] * h, axis=1)
         if max(moments) <= _MISSED and abs(np.sum(series * series) - 1.0) <= _MISSED_SERIES:
             return series, None
-        nodes = _table()[0]
+        nodes = table()[0]
         counts = np.exp(-0.25 * nodes * nodes) * np.abs(h) > _TAIL
         panels = steep_panels(lambda z: self.at(i, z), float(np.max(np.abs(nodes[counts]))) + _STEP)
-        return _long_series(panels), panels
+        return long_series(panels), panels
 
 
-def extreme_products(a: Standardised, i: int, b: Standardised, j: int) -> tuple[float, float]:
+def extreme_products(a: Expanded, i: int, b: Expanded, j: int) -> tuple[float, float]:
     """Return E[h_i(z) h_j(-z)] and E[h_i(z) h_j(z)], the reach of the correlation of two elements."""
     first, second = a.panels[i], b.panels[j]
     if first is None and second is None:
-        weighted = _table()[1] * a.values[i]
+        weighted = table()[1] * a.values[i]
         opposite, same = (float(np.sum(weighted * h)) for h in (b.values[j][::-1], b.values[j]))
         return opposite, same
     if first is None or second is None:
@@ -119,7 +131,7 @@ def extreme_products(a: Standardised, i: int, b: Standardised, j: int) -> tuple[
 
 
 @lru_cache(maxsize=1)
-def _table() -> tuple[Array, Array, Array]:
+def table() -> tuple[Array, Array, Array]:
     """Return nodes, weights and, for each order from 1, weights times polynomials."""
     half = np.arange(_STEP, REACH, _STEP)
     z = np.concatenate((-half[::-1], [0.0], half))
@@ -134,7 +146,8 @@ def _table() -> tuple[Array, Array, Array]:
     return z, weights, rows
 
 
-def _long_series(h: Panels) -> Array:
+def long_series(h: Panels) -> Array:
+    """Return the coefficients of a function on panels, of length :data:`LONG`."""
     weighted = h.weights * h.values
     series = np.empty(LONG)
     before, now = np.ones(h.nodes.size), h.nodes

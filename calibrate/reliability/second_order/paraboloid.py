@@ -9,7 +9,7 @@ The path here goes through the saddle point on the real axis, which always exist
 integrand is convex there. It bends as the path of steepest descent does at the saddle, and far away runs parallel to
 the imaginary axis at Re s = beta, where exp(s^2/2 - beta s) no longer oscillates. On the path, s = c + x(y) + i y with
 y = a sinh t, the trapezoidal rule converges geometrically; a is the distance to the nearest singularity. Each result
-is compared with that of half the nodes, and repeated with more of them where the two differ.
+is compared with those of half and a quarter of the nodes, and repeated with more of them where they differ.
 
 References
 ----------

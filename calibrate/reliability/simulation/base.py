@@ -165,8 +165,11 @@ class Method(Protocol):
 
 def other_side(g: Array, complement: Flags) -> Array:
     """Return 1.0 where a sample fails, or survives where the medians fail; NaN where g is NaN."""
-    other = np.where(np.isnan(g), np.nan, (g <= 0.0) ^ complement)
-    return np.asarray(other, dtype=np.float64)
+    other = ((g <= 0.0) ^ complement).astype(np.float64)
+    undefined = np.isnan(g)
+    if undefined.any():
+        other[undefined] = np.nan
+    return other
 
 
 def evaluated(problem: Problem, u: Array) -> Array:

@@ -21,7 +21,7 @@ CELL = 32
 # Samples drawn in one go.
 PIECE = 4096
 # Columns evaluated together: larger blocks leave the cache, smaller ones pay for the calls.
-BLOCK = 16_384
+BLOCK = 12_288
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -2,9 +2,9 @@
 
 References
 ----------
-.. [1] M. Shinozuka, "Basic analysis of structural safety", Journal of Structural Engineering 109 (1983); G. I. Schueller
-   and R. Stix, "A critical appraisal of methods to determine failure probabilities", Structural Safety 4 (1987):
-   sampling around the design point (from memory).
+.. [1] M. Shinozuka, "Basic analysis of structural safety", Journal of Structural Engineering 109 (1983); G. I.
+   Schueller and R. Stix, "A critical appraisal of methods to determine failure probabilities", Structural Safety 4
+   (1987): sampling around the design point (from memory).
 .. [2] A. Owen and Y. Zhou, "Safe and effective importance sampling", Journal of the American Statistical Association 95
    (2000): control variates together with mixtures (from memory).
 """
@@ -51,12 +51,12 @@ class ImportanceSampling:
         """Return the method made ready for the situations of a task."""
         assert task.points is not None
         points = task.points[:, task.random, :]
-        valid = np.isfinite(points).all(axis=1)
+        valid: Flags = np.asarray(np.isfinite(points).all(axis=1))
         points = np.where(valid[:, None, :], points, 0.0)
         square = np.stack([dot(p, p) for p in points])
         length = np.sqrt(square)
         log_tail = np.where(valid, special.log_ndtr(-length), -np.inf)
-        usable = valid.any(axis=0)
+        usable: Flags = np.asarray(valid.any(axis=0))
         best = np.where(usable, np.max(log_tail, axis=0), 0.0)
         share = np.where(valid, np.maximum(np.exp(log_tail - best), LEAST_SHARE), 0.0)
         share = share / np.where(usable, add_rows(share), 1.0)
@@ -116,9 +116,10 @@ class ImportanceSampler:
     def values(self, problem: Problem, block: Block, z: Array, v: Array) -> Values:
         """Return the weights on the other side of the limit state, and those beyond the tangent planes."""
         if len(self.points) == 1:
-            point, square = block.of(self.points[0]), block.of(self.square[0])
-            z += point
-            along = dot(point, z, point)
+            square = block.of(self.square[0])
+            for row, own in zip(z, self.points[0], strict=True):
+                row += block.of(own)
+            along = _along(block, self.points[0], z)
             weight = np.exp(0.5 * square - along)
             control = weight * (along >= square)
         else:
@@ -142,7 +143,7 @@ class ImportanceSampler:
         exponents = []
         beyond = np.zeros(u.shape[1])
         for point, square, share, valid in zip(self.points, self.square, self.share, self.valid, strict=True):
-            along, size, there = dot(block.of(point), u), block.of(square), block.of(valid)
+            along, size, there = _along(block, point, u), block.of(square), block.of(valid)
             beyond += (along >= size) & there
             with np.errstate(divide="ignore"):
                 exponents.append(np.where(there, np.log(block.of(share)) + (along - 0.5 * size), -np.inf))
@@ -151,3 +152,11 @@ class ImportanceSampler:
             largest = np.maximum(largest, exponent)
         total = add_rows(np.stack([np.exp(exponent - largest) for exponent in exponents]))
         return np.exp(-(largest + np.log(total))), beyond
+
+
+def _along(block: Block, point: Array, u: Array) -> Array:
+    """Return the scalar product of samples with the points of their situations, row by row in order."""
+    total = block.of(point[0]) * u[0]
+    for own, row in zip(point[1:], u[1:], strict=True):
+        total += block.of(own) * row
+    return total

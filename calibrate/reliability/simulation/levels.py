@@ -56,6 +56,13 @@ class _Totals:
     evaluations: Counts
     undefined: npt.NDArray[np.bool_]
 
+    @classmethod
+    def begun(cls, n: int) -> _Totals:
+        """Return totals of no runs, with the evaluation at the origin that told on which side the medians lie."""
+        value, square, variation, largest = (np.zeros(n) for _ in range(4))
+        runs, evaluations = np.zeros(n, dtype=np.int64), np.ones(n, dtype=np.int64)
+        return cls(runs, value, square, variation, largest, evaluations, np.zeros(n, dtype=np.bool_))
+
     def mean(self) -> tuple[Array, Array]:
         """Return the mean of the runs and its coefficient of variation."""
         n = self.runs.astype(np.float64)
@@ -73,11 +80,7 @@ def simulate_by_levels(method: SubsetSimulation, task: Task, keys: Counts, goal:
     """Repeat runs until the wanted coefficient of variation is reached or the budget is spent."""
     n = task.problem.n
     size = min(SIZE, goal.most // (10 * LENGTH) * LENGTH)
-    # The origin was evaluated to learn on which side the medians lie.
-    totals = _Totals(
-        np.zeros(n, dtype=np.int64), *(np.zeros(n) for _ in range(4)), np.ones(n, dtype=np.int64),
-        np.zeros(n, dtype=np.bool_),
-    )  # fmt: skip
+    totals = _Totals.begun(n)
     step = size - size // LENGTH
     first = min(LEVELS, (goal.most - 1 - size) // step)
     code = np.full(n, SPENT, dtype=np.int8)

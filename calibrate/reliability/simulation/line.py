@@ -2,8 +2,8 @@
 
 References
 ----------
-.. [1] P. S. Koutsourelakis, H. J. Pradlwarter and G. I. Schueller, "Reliability of structures in high dimensions, part I:
-   algorithms and applications", Probabilistic Engineering Mechanics 19 (2004) (from memory).
+.. [1] P. S. Koutsourelakis, H. J. Pradlwarter and G. I. Schueller, "Reliability of structures in high dimensions, part
+   I: algorithms and applications", Probabilistic Engineering Mechanics 19 (2004) (from memory).
 """
 
 from __future__ import annotations
@@ -45,7 +45,7 @@ class LineSampling:
     def sampler(self, task: Task) -> LineSampler:
         """Return the method made ready for the situations of a task."""
         assert task.direction is not None
-        usable = np.isfinite(task.direction).all(axis=0)
+        usable: Flags = np.asarray(np.isfinite(task.direction).all(axis=0))
         direction = np.where(usable, task.direction, 0.0)[task.random]
         n = task.problem.n
         return LineSampler(task, usable, np.zeros(n, dtype=np.bool_), direction)

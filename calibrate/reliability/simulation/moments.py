@@ -35,7 +35,7 @@ class Sums:
     control, product, control_square : array (folds, n)
         Sums of the controls, of value times control, and of the squares of the controls.
     largest : array (folds, n)
-        Largest value.
+        Largest value, where there is no control.
     evaluations : int array (n,)
         Evaluations of the limit state.
     """
@@ -52,7 +52,11 @@ class Sums:
     @classmethod
     def zeros(cls, folds: int, n: int) -> Sums:
         """Return empty sums."""
-        return cls(*(np.zeros((folds, n)) for _ in range(7)), np.zeros(n, dtype=np.int64))
+        value, square, control, product, control_square, largest = (np.zeros((folds, n)) for _ in range(6))
+        evaluations = np.zeros(n, dtype=np.int64)
+        return cls(
+            np.zeros((folds, n)), value, square, control, product, control_square, largest, evaluations
+        )
 
     def add(self, fold: Counts, owner: Counts, values: Values) -> None:
         """Add whole cells of samples.
@@ -65,25 +69,21 @@ class Sums:
             Of ``CELL`` samples for each cell.
         """
         y, c = values.value, values.control
-        where = (fold, owner)
-        np.add.at(self.count, where, float(CELL))
-        np.add.at(self.value, where, _by_cell(y))
-        np.add.at(self.square, where, _by_cell(y * y))
-        np.maximum.at(self.largest, where, y.reshape(-1, CELL).max(axis=1))
-        if c is not None:
-            np.add.at(self.control, where, _by_cell(c))
-            np.add.at(self.product, where, _by_cell(y * c))
-            np.add.at(self.control_square, where, _by_cell(c * c))
+        # One flat index: numpy is several times faster with it than with a pair.
+        where = fold * self.count.shape[1] + owner
+        _add(self.count, where, float(CELL))
+        _add(self.value, where, _by_cell(y))
+        _add(self.square, where, _by_cell(y * y))
+        if c is None:
+            with np.errstate(invalid="ignore"):
+                np.maximum.at(self.largest.reshape(-1), where, y.reshape(-1, CELL).max(axis=1))
+        else:
+            _add(self.control, where, _by_cell(c))
+            _add(self.product, where, _by_cell(y * c))
+            _add(self.control_square, where, _by_cell(c * c))
         taken = values.evaluations
-        np.add.at(
-            self.evaluations,
-            owner,
-            taken * CELL if isinstance(taken, int) else taken.reshape(-1, CELL).sum(1),
-        )
-
-    def take(self, at: Counts) -> Sums:
-        """Return the sums of some situations."""
-        return Sums(*(getattr(self, name)[..., at] for name in self.__slots__))
+        each = taken * CELL if isinstance(taken, int) else taken.reshape(-1, CELL).sum(axis=1)
+        np.add.at(self.evaluations, owner, each)
 
     def coefficients(self, folds: list[int]) -> Array:
         """Return the coefficient of the control that leaves the least variance in these folds, shape (n,)."""
@@ -95,15 +95,20 @@ class Sums:
             spread = cc - c * (c / n)
             common = yc - y * (c / n)
             # Where the control hardly varies its coefficient is rounding.
-            return np.where(spread > 1e-12 * cc, common / spread, 0.0)
+            return np.asarray(np.where(spread > 1e-12 * cc, common / spread, 0.0))
 
 
 def sum_of(rows: Array, folds: list[int]) -> Array:
     """Return the sum of some rows, added in their order."""
-    total = rows[folds[0]].copy()
+    total: Array = rows[folds[0]].copy()
     for fold in folds[1:]:
         total += rows[fold]
     return total
+
+
+def _add(total: Array, where: Counts, values: Array | float) -> None:
+    """Add to a total of shape (folds, n) in the order of the values, which is that of the samples."""
+    np.add.at(total.reshape(-1), where, values)
 
 
 def _by_cell(values: Array) -> Array:

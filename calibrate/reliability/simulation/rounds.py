@@ -6,7 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from calibrate.reliability.simulation.base import Method, Sampler, Task
-from calibrate.reliability.simulation.batches import CELL, Block, blocks, rounded
+from calibrate.reliability.simulation.batches import BLOCK, CELL, PIECE, Block, blocks, rounded
 from calibrate.reliability.simulation.goal import Goal
 from calibrate.reliability.simulation.interval import binomial, of_mean
 from calibrate.reliability.simulation.moments import Estimate, Sums, estimate
@@ -41,12 +41,14 @@ def simulate_in_rounds(method: Method, task: Task, keys: Counts, goal: Goal) -> 
     at = np.flatnonzero(sampler.usable)
     generators = {int(i): goal.generator(method.name, int(keys[i])) for i in at}
     sizes = _first(method, goal, at.size)
-    halves = sizes // (2 * CELL)
+    halves: Counts | None = sizes // (2 * CELL)
+    # Fresh memory for every block would cost more than what is done in it.
+    room = np.empty((len(task.random), max(BLOCK, PIECE)))
     while at.size:
         for block in blocks(at, sizes):
-            _run(block, task, sampler, generators, sums, halves)
+            _run(block, task, sampler, generators, sums, room, halves)
         found = estimate(sums, sampler.control_mean, sampler.atom)
-        code[at], sizes = _judged(found, sums, at, method, goal)
+        code[at], sizes = _judged(found, sums, at, goal)
         for i in at[sizes == 0]:
             del generators[int(i)]
         at, sizes = at[sizes > 0], sizes[sizes > 0]
@@ -67,10 +69,11 @@ def _run(
     sampler: Sampler,
     generators: dict[int, np.random.Generator],
     sums: Sums,
+    room: Array,
     halves: Counts | None,
 ) -> None:
     columns = block.columns
-    z, v = np.empty((len(task.random), columns.size)), np.zeros(columns.size)
+    z, v = room[:, : columns.size], np.zeros(columns.size)
     start = 0
     for i, size in zip(block.owner.tolist(), block.size.tolist(), strict=True):
         generator = generators[i]
@@ -85,7 +88,7 @@ def _run(
     sums.add(fold, owner, values)
 
 
-def _judged(found: Estimate, sums: Sums, at: Counts, method: Method, goal: Goal) -> tuple[Codes, Counts]:
+def _judged(found: Estimate, sums: Sums, at: Counts, goal: Goal) -> tuple[Codes, Counts]:
     """Return how the situations stand and how many samples each needs next; 0 ends it."""
     mean, cov, count = found.mean[at], found.cov[at], found.count[at]
     used = sums.evaluations[at].astype(np.float64)

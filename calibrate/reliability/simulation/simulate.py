@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from calibrate.engine import run_chunks
-from calibrate.errors import InputError, Problem as Trouble
+from calibrate.errors import InputError
+from calibrate.errors import Problem as Trouble
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.result import Reliability
 from calibrate.reliability.rows import dot
@@ -17,7 +19,7 @@ from calibrate.reliability.simulation.base import Method, Task, evaluated
 from calibrate.reliability.simulation.goal import Goal
 from calibrate.reliability.simulation.levels import SubsetSimulation, simulate_by_levels
 from calibrate.reliability.simulation.registry import method_of
-from calibrate.reliability.simulation.result import NOT_FINITE, Simulation, Tail
+from calibrate.reliability.simulation.result import Simulation, Tail
 from calibrate.reliability.simulation.rounds import simulate_in_rounds
 from calibrate.reliability.simulation.sobol import least, simulate_with_nets
 
@@ -58,7 +60,7 @@ def simulate(
     seed : int
         Seed of the random streams, at least 0.
     keys : int array (n,), optional
-        What identifies each situation, at least 0: situations with the same key draw the same numbers. Default 0, 1, ...
+        What identifies each situation, at least 0; the same key draws the same numbers. Default 0, 1, ...
     cov : float
         Coefficient of variation of the estimated probability at which a situation is done.
     most : int
@@ -67,7 +69,7 @@ def simulate(
     reliability : Reliability, optional
         Design points, from FORM.
     points : array (k, m, n) or (m, n), optional
-        Design points in standard normal space, NaN where a situation has fewer than k; default those of ``reliability``.
+        Design points in standard normal space, NaN where a situation has fewer than k; default ``reliability.u``.
     purpose : str
         What the draws are for; another purpose gives other numbers.
     sobol : bool
@@ -102,7 +104,9 @@ def simulate(
     where = _checked_points(problem, chosen, reliability, points)
     goal = Goal(cov, int(most), confidence, seed, purpose)
     work = _Work(problem, chosen, keys, where, _directions(where, reliability, points), goal, sobol)
-    parts = run_chunks(work, problem.n, chunk=chunk or CHUNK, workers=workers, progress=progress)
+    parts = run_chunks(
+        work, problem.n, chunk=CHUNK if chunk is None else chunk, workers=workers, progress=progress
+    )
     parts = parts or [work(slice(0, 0))]
     tail = Tail(*(_joined([getattr(part[0], name) for part in parts]) for name in Tail.__slots__))
     complement = _joined([part[1] for part in parts])
@@ -138,7 +142,7 @@ class _Work:
         return run(self.method, task, self.keys[piece], self.goal), complement
 
 
-def _joined(parts: Sequence[npt.NDArray[np.generic]]) -> npt.NDArray[np.generic]:
+def _joined(parts: Sequence[npt.NDArray[Any]]) -> npt.NDArray[Any]:
     whole = np.concatenate(parts)
     whole.setflags(write=False)
     return whole

@@ -102,7 +102,7 @@ class _Net:
 def _first(method: Method, goal: Goal) -> int:
     """Return the points of the first round, a power of two, for each shift."""
     wanted = min(method.pilot, (goal.most - 1) // method.cost) // SHIFTS
-    return max(CELL, 2 ** int(np.log2(wanted)))
+    return int(max(CELL, 2 ** int(np.log2(wanted))))
 
 
 def _shifted(points: Counts, shifts: Counts, piece: Block) -> tuple[Array, Array]:

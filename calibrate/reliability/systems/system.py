@@ -56,8 +56,9 @@ class SystemResult:
         d beta / d rho_ij, symmetric, each entry for a change of the pair ij = ji; zero diagonal. 0 for planes that
         coincide or oppose each other, where no derivative exists.
     equivalent_alpha : array (m, n) or None
-        NaN where shifts cancel, as in symmetric systems. Unit vector along which beta grows most when the components are shifted together; the system's alpha of the
-        equivalent component of S. Gollwitzer and R. Rackwitz, Reliability Engineering 5 (1983) 227-243.
+        Unit vector along which beta grows most when the components are shifted together: alpha of the equivalent
+        component of S. Gollwitzer and R. Rackwitz, Reliability Engineering 5 (1983) 227-243 (from memory). NaN where
+        shifts cancel, as in symmetric systems.
     """
 
     probability: Array

@@ -6,8 +6,10 @@ import re
 from collections.abc import Collection, Mapping
 from typing import Any
 
+from calibrate.errors import InputError
 from calibrate.study.model import Variable
 from calibrate.study.reading.subject import Subject, Surroundings
+from calibrate.units import split_value
 
 _WORD = re.compile(r"[A-Za-z][A-Za-z0-9_]*")
 
@@ -28,8 +30,16 @@ def in_order_of_dependence(raw: Mapping[str, Any], arguments: Collection[str]) -
 def _mentioned(entry: Any, arguments: Collection[str], names: Mapping[str, Any]) -> set[str]:
     if not isinstance(entry, dict):
         return set()
-    texts = [v for k, v in entry.items() if k in arguments and isinstance(v, str)]
+    texts = [v for k, v in entry.items() if k in arguments and isinstance(v, str) and not _is_number(v)]
     return {word for text in texts for word in _WORD.findall(text)} & set(names)
+
+
+def _is_number(text: str) -> bool:
+    """Whether a text is a number with a unit, in which no name stands."""
+    try:
+        return split_value(text.strip()) is not None
+    except InputError:
+        return True  # a number with a faulty unit, which is told elsewhere
 
 
 def _reaches_itself(name: str, waiting: Mapping[str, set[str]]) -> bool:

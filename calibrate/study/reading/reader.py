@@ -28,6 +28,7 @@ from calibrate.study.reading.rules import check_designs, finish_rules, parse_rul
 from calibrate.study.reading.sites import read_sites
 from calibrate.study.reading.situations import finish_situations, read_grid, read_weight
 from calibrate.study.reading.subject import Surroundings
+from calibrate.study.reading.systems import any_weight, read_systems
 from calibrate.study.reading.unused import note_unused
 from calibrate.study.reading.variables import read_variables
 from calibrate.study.reading.verification import read_verification
@@ -78,7 +79,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     grid = read_grid(reading, names, sections["situations"])
     declare_all(names, "derived", grid.content.derived, _DERIVED)
     factors, factor_texts = read_factors(reading, names, sections["factors"])
-    drafts = parse_rules(reading, names, sections["rules"])
+    drafts = parse_rules(reading, names, sections["rules"], any_weight(sections["systems"]))
 
     own_records = read_records(reading, sections["records"])
     declared = read_declared(reading, sections["records"], own_records)
@@ -117,6 +118,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     correlations = read_correlations(
         reading, names, sections["correlations"], variables, records, combination
     )
+    systems = read_systems(reading, sections["systems"], tuple(drafts), rules, variables, combination)
     check_target_period(reading, head, target)
     objective = _objective(reading, sections["objective"], target)
     verification = read_verification(reading, sections["verification"], objective)
@@ -161,6 +163,7 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
         doubts=tuple(reading.doubts),
         combination=combination,
         correlations=correlations,
+        systems=systems,
         sites={k: v for k, v in sites.items() if v is not None},
         resistances={k: v for k, v in resistances.items() if v is not None},
         blocks=blocks,

@@ -30,3 +30,11 @@ class VerificationSection(Section):
     samples: Annotated[int, Field(ge=1000, le=100_000_000)] = 200_000
     points: Literal["random", "sobol"] = "random"
     tolerance: Positive = 0.1
+
+
+class SystemTable(Section):
+    """``[systems.NAME]``."""
+
+    fails_when: Text
+    weight: Annotated[float, Field(ge=0)] = 0.0
+    description: str = ""

@@ -32,16 +32,18 @@ class Draft:
     size_unit: Unit | None = None
 
 
-def parse_rules(reading: Reading, names: NameSpace, raw: Any) -> dict[str, Draft]:
-    """Read every rule, parse its texts, and declare its size."""
+def parse_rules(
+    reading: Reading, names: NameSpace, raw: Any, systems_have_weight: bool = False
+) -> dict[str, Draft]:
+    """Read every rule, parse its texts, and declare its size; some rule needs a weight unless a system has one."""
     section: Place = ("rules",)
     table = read_table(reading, raw, section)
     if not table and (raw is None or isinstance(raw, dict)):
         reading.raw_problem("at least one rule is needed.", section, _EXAMPLE)
     drafts = {name: _draft(reading, names, name, entry) for name, entry in table.items()}
     weights = [d.entry.content.weight for d in drafts.values() if d.entry.content is not None]
-    if weights and len(weights) == len(drafts) and not any(weights):
-        reading.raw_problem("every rule has weight 0.", section, "Give at least one rule a weight above 0.")
+    if weights and len(weights) == len(drafts) and not (any(weights) or systems_have_weight):
+        reading.raw_problem("every rule has weight 0.", section, "Give at least one rule, or a system of rules, a weight above 0.")
     return drafts
 
 

@@ -7,9 +7,9 @@ from scipy import special, stats
 from calibrate.errors import InputError
 from calibrate.reliability import design_points
 from calibrate.reliability.simulation import METHODS, simulate
+from calibrate.reliability.simulation.base import Values
 from calibrate.reliability.simulation.interval import binomial, of_mean
 from calibrate.reliability.simulation.moments import Sums, estimate
-from calibrate.reliability.simulation.base import Values
 from calibrate.reliability.simulation.root import between
 
 BOUNDED = ("crude monte carlo", "directional simulation", "line sampling", "subset simulation")

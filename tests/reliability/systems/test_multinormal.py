@@ -123,6 +123,22 @@ def test_a_matrix_of_full_rank_has_no_single_factor():
     assert not loadings(random_correlation(rng, 4, 6)[:, :, None])[1].any()
 
 
+@pytest.mark.parametrize("most", [0.9, 0.97, 0.984, 0.99])
+def test_one_factor_against_trivariate(most):
+    """Also with little scatter of one variable's own, where the factor's integrand turns quickly."""
+    rng = np.random.default_rng(12)
+    loading = rng.uniform(-0.9, 0.9, (3, 30))
+    loading[0] = most
+    matrix = loading[:, None] * loading[None]
+    matrix[range(3), range(3)] = 1.0
+    beta = rng.uniform(-2.0, 4.0, (3, 30))
+    assert loadings(matrix)[1].all() == (most < 0.985)
+    found, witness = orthant(beta, matrix), trivariate(-beta, matrix)
+    allowed = found.error + witness[1] + 1e-12 * witness[0]
+    assert np.all(np.abs(found.value - witness[0]) <= allowed)
+    np.testing.assert_allclose(found.value, witness[0], rtol=2e-8)
+
+
 @pytest.mark.parametrize("beta", [0.0, 1.5, 4.0])
 def test_trivariate_against_one_factor(beta):
     """The two ways know nothing of each other."""
