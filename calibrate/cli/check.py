@@ -86,6 +86,13 @@ def _print(summary: dict[str, Any], shown: str) -> None:
     console.heading("Rules")
     for name, rule in summary["rules"].items():
         console.listed([(name, "\n".join(_rule_lines(rule)))])
+    if summary["systems"]:
+        console.heading("Systems")
+        rows = [
+            [name, s["fails_when"], numbers.significant(s["weight"])]
+            for name, s in summary["systems"].items()
+        ]
+        console.table(["name", "fails when", "weight"], rows, [False, False, True])
     console.heading("Factors")
     rows = [
         [

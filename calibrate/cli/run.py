@@ -15,6 +15,7 @@ from calibrate.cli.options import Force, Json, Out, Outside, Quiet, Seed, StudyF
 if TYPE_CHECKING:
     from calibrate.study import Result
 
+_SYSTEM = "system"
 HELP = "Calibrate the factors of a study and write tables, figures and the report."
 
 
@@ -56,14 +57,15 @@ def run(
 
 def _summary(result: Result, directory: Path) -> None:
     from calibrate.cli.app import CAUTION
-    from calibrate.report import numbers, outcome, sites, verification
+    from calibrate.report import numbers, outcome, sites, systems, verification
     from calibrate.report.resistance_routes import routes_table
 
     study = result.study
     console.line(f"{study.title}  ({study.shown})")
     console.line(
         f"Target β = {numbers.significant(study.target_beta)} for {numbers.years(study.reference_period)}; "
-        f"{numbers.count(len(result.situations), 'design situation')} of {numbers.count(len(study.rules), 'rule')}; "
+        f"{numbers.count(len(result.situations), 'design situation')} of {numbers.count(len(study.rules), 'rule')}"
+        f"{f' and {numbers.count(len(study.systems), _SYSTEM)}' if study.systems else ''}; "
         f"penalty {study.objective.penalty}."
     )
     console.heading("Factors")
@@ -88,6 +90,10 @@ def _summary(result: Result, directory: Path) -> None:
     for name, tests in result.resistances.items():
         console.heading(f"Resistance from tests: {name}")
         console.report_table(routes_table(tests).without("what it allows for"))
+    of_systems = systems.system_table(result)
+    if of_systems is not None:
+        console.heading("Systems, with proposed factors")
+        console.report_table(of_systems)
     periods = outcome.period_table(result)
     if periods is not None:
         console.heading("The same with proposed factors for other periods")

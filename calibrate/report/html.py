@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from calibrate.report import (
     dependence,
+    elasticities,
     evidence,
     inputs,
     numbers,
@@ -28,6 +29,7 @@ from calibrate.report.axis_figure import BY_RULE, panel_axes
 from calibrate.report.exceedance_tables import exceedance_sentence, exceedance_table
 from calibrate.report.figures import tail_of
 from calibrate.report.fit_files import candidate_table
+from calibrate.report.ladder_table import ladder_table
 from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
 from calibrate.report.probability_paper import CAPTION
 from calibrate.report.resistance_section import resistance_sections
@@ -77,9 +79,18 @@ def report_html(result: Result, figures: Mapping[str, Rendered]) -> bytes:
 
 
 def prepare() -> None:
-    """Compile the templates, which a page needs later."""
+    """Compile the templates and climb the ladder of checks, which a page needs later."""
+    ladder()
     for name in environment().list_templates(extensions=["j2"]):
         environment().get_template(name)
+
+
+@cache
+def ladder() -> Table:
+    """Return the checks of the tool on problems with known answers; the same for every result."""
+    from calibrate.study.ladder import run_ladder
+
+    return ladder_table(run_ladder())
 
 
 @cache
@@ -199,6 +210,8 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "lattice": outcome.lattice_table(result),
         "rounding": outcome.rounding_cost(result),
         "sensitivity": outcome.sensitivity_table(result, found) if found else None,
+        "elasticities": elasticities.variable_elasticities(result),
+        "other_elasticities": elasticities.other_elasticities(result),
         "situations": outcome.situation_table(result, shown),
         "all_converged": bool((result.situations["status"] == CONVERGED).all()),
         "all_shown": shown is None,
@@ -214,6 +227,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "paper_caption": CAPTION,
         "unit_of": inputs.unit_of,
         "unit_of_records": inputs.unit_of_records,
+        "ladder": ladder(),
         "penalty": symbols.formula(_penalty(study.objective.penalty)),
     }
 

@@ -12,6 +12,7 @@ if TYPE_CHECKING:
     from calibrate.study.ladder import LadderRow
 
 DIGITS = 7
+ROUNDING = 1e-12
 YES, NO = "yes", "NO"
 
 
@@ -22,13 +23,18 @@ def ladder_table(rows: Sequence[LadderRow]) -> Table:
             Column("check", [row.name for row in rows]),
             Column("expected", [row.expected for row in rows], each(numbers.significant, DIGITS), "number"),
             Column("computed", [row.computed for row in rows], each(numbers.significant, DIGITS), "number"),
-            Column("difference", [row.difference for row in rows], each(numbers.significant, 2), "number"),
+            Column("difference", [row.difference for row in rows], each(_difference), "number"),
             Column("tolerance", [tolerance(row) for row in rows]),
             Column("passed", [YES if row.passed else NO for row in rows]),
             Column("source", [row.source for row in rows]),
         ),
         strong=frozenset(i for i, row in enumerate(rows) if not row.passed),
     )
+
+
+def _difference(value: float) -> str:
+    """Return a difference; what is rounding only differs between machines, and is not told apart."""
+    return f"< {numbers.significant(ROUNDING, 1)}" if value < ROUNDING else numbers.significant(value, 2)
 
 
 def tolerance(row: LadderRow) -> str:

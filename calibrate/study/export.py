@@ -270,6 +270,7 @@ def table_files(result: Result) -> dict[str, bytes]:
         "factors.csv": result.factors.to_csv(index=False, lineterminator="\n"),
         "units.json": json.dumps(dict(result.units), indent=2, ensure_ascii=False) + "\n",
     }
+    texts["elasticities.csv"] = result.elasticities.to_csv(index=False, lineterminator="\n")
     if result.verification is not None:
         texts["verification.csv"] = result.verification.to_csv(index=False, lineterminator="\n")
     if result.systems is not None:

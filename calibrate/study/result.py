@@ -113,6 +113,8 @@ class Result:
         What was added to the index of FORM in every row, where the factors rest on the verified index.
     systems : DataFrame or None
         Columns of systems.csv; None without any.
+    elasticities : DataFrame
+        Columns of elasticities.csv.
     constraint_failures : tuple of str
         Constraints that cannot be met, each a full sentence.
     """
@@ -138,6 +140,7 @@ class Result:
     verification: pd.DataFrame | None
     correction: NDArray[np.float64] | None
     systems: pd.DataFrame | None
+    elasticities: pd.DataFrame
     calibration: Calibration
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]

@@ -27,6 +27,7 @@ from calibrate.study.model import Study
 from calibrate.study.other_periods import other_periods, period_doubts
 from calibrate.study.result import Result
 from calibrate.study.screening import screen_records
+from calibrate.study.sensitivity import elasticity_table
 from calibrate.study.sites import site_beta, site_doubts, site_table
 from calibrate.study.systems import system_doubts, system_table
 from calibrate.study.tables import (
@@ -159,6 +160,7 @@ def run(
         verification=verification_table(study, verified),
         correction=correction,
         systems=of_systems,
+        elasticities=elasticity_table(study, calibration),
         calibration=calibration,
         doubts=_unique(doubts),
         constraint_failures=calibration.constraint_failures,

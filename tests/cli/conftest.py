@@ -110,8 +110,8 @@ def light(monkeypatch: pytest.MonkeyPatch) -> set[str]:
         return {**table_files(result), "figures/a.svg": b"<svg/>"}
 
     monkeypatch.setattr("calibrate.report.folder.result_files", files)
-    names = {"result.json", "situations.csv", "factors.csv", "required_factors.csv", "units.json", "verification.csv"}
-    return names | {"figures/a.svg"}
+    names = {"result.json", "situations.csv", "factors.csv", "required_factors.csv", "units.json"}
+    return names | {"verification.csv", "elasticities.csv", "figures/a.svg"}
 
 
 @pytest.fixture(scope="session")
