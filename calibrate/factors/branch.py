@@ -22,6 +22,7 @@ from calibrate.reliability import (
     nataf_correlation,
     physical_slopes,
 )
+from calibrate.reliability.importance import slopes_through_correlation
 from calibrate.situations import BasicVariable, ConditionalVariable, Sizing, law_of
 
 Array = npt.NDArray[np.float64]
@@ -139,7 +140,25 @@ class Branch:
                 for name, slope in zip(self.check_free, sizing.slopes, strict=True):
                     jacobian[self.free.index(name)] += by_size * slope
             jacobian /= reliability.gradient_norm
+            if self.sized and problem.correlation is not None:
+                by_size = self._through_correlation(values, problem, reliability)
+                for name, slope in zip(self.check_free, sizing.slopes, strict=True):
+                    jacobian[self.free.index(name)] += by_size * slope
         return jacobian
+
+    def _through_correlation(
+        self, values: Mapping[str, Any], problem: Problem, reliability: Reliability
+    ) -> Array:
+        """Return d beta/d(size) through the coefficients in normal space, which follow the shapes of the models."""
+        size = self.rule.size_name
+        assert size is not None
+        turned = slopes_through_correlation(problem, reliability, self.rule.correlations)
+        total = np.zeros(self.rule.n)
+        for i in self.sized:
+            for parameter, by_size in self.variables[i].parameters_by(values, size).items():
+                if parameter in turned[i]:
+                    total = total + turned[i][parameter] * by_size
+        return total
 
     def _through_variables(
         self, values: Mapping[str, Any], problem: Problem, reliability: Reliability, by: Mapping[str, Any]

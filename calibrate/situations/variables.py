@@ -173,18 +173,27 @@ class BasicVariable:
             base = self._converted(self._given(values))
             share = self._stressed_share(base, values)
             total = total + ratio_slope(base, ratio * share, u, of_maxima=False) * by_ratio * share
+        moved = self.parameters_by(values, name)
+        if moved:
+            by_parameter = model.parameter_slopes(u)
+            for parameter, by_name in moved.items():
+                total = total + by_parameter[parameter] * by_name
+        return total
+
+    def parameters_by(self, values: Mapping[str, Any], name: str) -> dict[str, Array]:
+        """Return dp/d(name) of each own parameter p that depends on the name through the arguments."""
         if not any(e.depends_on(name) for e in self.arguments.values()):
-            return total
+            return {}
         by_argument = family(self.family).argument_slopes(self._arguments(values))
-        by_parameter = model.parameter_slopes(u)
+        found: dict[str, Array] = {}
         for argument, expression in self.arguments.items():
             if not expression.depends_on(name):
                 continue
             _, (by_name,) = expression.gradient(values, (name,))
             for parameter, slopes in by_argument.items():
                 if argument in slopes:
-                    total = total + by_parameter[parameter] * slopes[argument] * by_name
-        return total
+                    found[parameter] = found.get(parameter, 0.0) + slopes[argument] * by_name
+        return found
 
 
 def is_converted(model: Distribution) -> bool:

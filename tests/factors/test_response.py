@@ -1,9 +1,12 @@
 """Beta and its exact derivatives by factor, and the factor that one situation requires."""
 
+import dataclasses
+
 import numpy as np
 import pytest
 
 from calibrate.factors import required_factor
+from calibrate.reliability import CorrelatedPair
 
 CHI = np.linspace(0.1, 0.9, 9)
 
@@ -93,3 +96,22 @@ def test_a_factor_without_effect_has_no_required_value(kit):
     response = kit.response([kit.rule(CHI)], [*kit.factors, kit.free("gamma_other", 1.0, 0.5, 2.0)])
     required = required_factor(response, "gamma_other", 3.8, response(np.array([1.1, 1.5, 1.0])))
     assert np.isnan(required).all()
+
+
+def test_derivatives_with_a_correlated_model_that_depends_on_the_size(kit):
+    """The scatter of the strength is fixed, so that its shape, and the coefficient in normal space, follow the size."""
+    strength = kit.variable("S", "lognormal", mean="1.2 * z", sd="0.15")
+    moved = dataclasses.replace(
+        kit.rule(CHI, limit_state="S * R >= G + Q", more=(strength,)),
+        correlations=(CorrelatedPair("S", "Q", -0.5), CorrelatedPair("S", "R", 0.6)),
+    )
+    response = kit.response([moved])
+    gamma = np.array([1.15, 1.6])
+    here = response(gamma)
+    assert here.valid.all()
+    h = 1e-4
+    for k in range(2):
+        near = [response(gamma + d * h * np.eye(2)[k]).beta for d in (-1, 1)]
+        far = [response(gamma + d * h * np.eye(2)[k]).beta for d in (-2, 2)]
+        difference = (8.0 * (near[1] - near[0]) - (far[1] - far[0])) / (12.0 * h)
+        np.testing.assert_allclose(here.jacobian[k], difference, rtol=2e-7, atol=1e-8)

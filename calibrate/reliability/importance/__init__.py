@@ -3,7 +3,11 @@
 Works on found design points; evaluates a limit state once more, and searches nothing.
 """
 
-from calibrate.reliability.importance.elasticities import Elasticities, elasticities
+from calibrate.reliability.importance.elasticities import (
+    Elasticities,
+    elasticities,
+    slopes_through_correlation,
+)
 from calibrate.reliability.importance.quantities import quantity_slopes
 from calibrate.reliability.importance.vectors import (
     OmissionFactors,
@@ -20,4 +24,5 @@ __all__ = [
     "importance_vector",
     "omission_factors",
     "quantity_slopes",
+    "slopes_through_correlation",
 ]

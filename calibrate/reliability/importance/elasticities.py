@@ -183,6 +183,17 @@ def _by_pairs(
     return turned, rows
 
 
+def slopes_through_correlation(
+    problem: Problem, reliability: Reliability, pairs: Sequence[CorrelatedPair]
+) -> list[dict[str, Array]]:
+    """Return, for each variable, d beta/d p by the own parameters that change the correlation in standard normal space.
+
+    The stated coefficients of the pairs are held; variables without such parameters have none.
+    """
+    with np.errstate(all="ignore"):
+        return _by_pairs(problem, reliability, pairs)[0]
+
+
 def _entry(correlation: Correlation | None, i: int, j: int) -> Array:
     """Return the element of the correlation matrix, () or (n,), in a fixed order of addition."""
     if correlation is None:
