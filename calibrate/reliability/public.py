@@ -19,6 +19,7 @@ from calibrate.expressions import Expression, ExpressionError, parse, parse_comp
 from calibrate.reliability.correlated_pairs import CorrelatedPair, nataf_correlation
 from calibrate.reliability.form import form
 from calibrate.reliability.limit_state import CallableLimitState, ExpressionLimitState, LimitState
+from calibrate.reliability.problem import Problem as LimitStateProblem
 from calibrate.reliability.result import Reliability
 
 Array = npt.NDArray[np.float64]
@@ -74,6 +75,7 @@ def public_form(
     workers: int = 1,
     start: FormResult | None = None,
     gradient: Callable[..., Mapping[str, Any]] | None = None,
+    solver: str | None = None,
 ) -> FormResult:
     """Find reliability index and design point by FORM, for one situation or for many at once.
 
@@ -97,6 +99,9 @@ def public_form(
     gradient : callable, optional
         For a function: ``gradient(**names) -> mapping`` from each basic variable to dg/dx. Without it derivatives
         are central differences.
+    solver : str, optional
+        Another way to find the design points, for cross-checks: ``"gradient projection"`` or ``"slsqp"``. The usual
+        one is ``"hasofer-lind-rackwitz-fiessler"``, which alone uses ``workers``.
 
     Returns
     -------
@@ -136,7 +141,12 @@ def public_form(
     state = _limit_state(limit_state, names, flat, gradient)
     begin = None if start is None else _start(start, names, shape)
     dependence = nataf_correlation(pairs, names, distributions, n)
-    found = form(state, distributions, n, correlation=dependence, start=begin, workers=threads)
+    if solver is None:
+        found = form(state, distributions, n, correlation=dependence, start=begin, workers=threads)
+    else:
+        from calibrate.reliability.solvers import solve
+
+        found = solve(LimitStateProblem(state, distributions, n, dependence), solver, begin)
     return _result(found, shape)
 
 

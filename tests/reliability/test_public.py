@@ -189,6 +189,68 @@ def test_correlation_of_zero_is_accepted(correlation):
     np.testing.assert_allclose(calibrate.form("R - S", TWO, correlation=correlation).beta, BETA, rtol=1e-14)
 
 
+@pytest.mark.parametrize("solver", ["gradient projection", "slsqp", "hasofer-lind-rackwitz-fiessler"])
+def test_other_solvers_agree_also_with_correlation(solver):
+    pairs = {("R", "S"): -0.3}
+    usual = calibrate.form("R - S", TWO, correlation=pairs)
+    other = calibrate.form("R - S", TWO, correlation=pairs, solver=solver)
+    np.testing.assert_allclose(other.beta, usual.beta, atol=1e-7)
+    np.testing.assert_allclose(other.design_point["R"], usual.design_point["R"], rtol=1e-4)
+
+
+# Published, with dependence ------------------------------
+
+
+def test_short_column():
+    """A. Der Kiureghian, chapter on first- and second-order methods (2005): beta 2.47, from memory.
+
+    Further digits by scipy's SLSQP with numerically exact Nataf coefficients.
+    """
+    r = calibrate.form(
+        "1 - m1 / (0.030 * y) - m2 / (0.015 * y) - (p / (0.190 * y))**2",
+        {
+            "m1": calibrate.distribution("normal", mean=250.0, cov=0.3),
+            "m2": calibrate.distribution("normal", mean=125.0, cov=0.3),
+            "p": calibrate.distribution("gumbel", mean=2500.0, cov=0.2),
+            "y": calibrate.distribution("weibull", mean=40000.0, cov=0.1),
+        },
+        correlation={("m1", "m2"): 0.5, ("m1", "p"): 0.3, ("m2", "p"): 0.3},
+    )
+    assert r.beta == pytest.approx(2.46602, abs=1e-5)
+    point = {"m1": 340.726, "m2": 170.363, "p": 3222.41, "y": 31769.2}
+    alpha = {"m1": -0.49054, "m2": -0.28321, "p": -0.38117, "y": 0.73067}
+    for name, value in point.items():
+        assert r.design_point[name] == pytest.approx(value, rel=2e-5)
+        assert r.sensitivity[name] == pytest.approx(alpha[name], abs=2e-5)
+
+
+def test_correlated_strength_and_section():
+    """Ang and Tang 1984, vol. II: 3.049 without correlation (from memory); with 0.4 by scipy's SLSQP."""
+    variables = {
+        "Y": calibrate.distribution("normal", mean=40.0, sd=5.0),
+        "Z": calibrate.distribution("normal", mean=50.0, sd=2.5),
+        "M": calibrate.distribution("normal", mean=1000.0, sd=200.0),
+    }
+    assert calibrate.form("Y * Z - M", variables).beta == pytest.approx(3.049, abs=1e-3)
+    correlated = calibrate.form("Y * Z - M", variables, correlation={("Y", "Z"): 0.4})
+    assert correlated.beta == pytest.approx(2.86287, abs=1e-5)
+
+
+def test_design_to_a_target():
+    """Kuschel and Rackwitz 1997 (from memory): section 8.668 x 25.0 for a target of 2.5; beta recomputed by SLSQP."""
+    r = calibrate.form(
+        "1 - 4 * M / (b * h**2 * Y) - P**2 / (b**2 * h**2 * Y**2)",
+        {
+            "P": calibrate.distribution("normal", mean=500.0, sd=100.0),
+            "M": calibrate.distribution("normal", mean=2000.0, sd=400.0),
+            "Y": calibrate.distribution("lognormal", mean=5.0, sd=0.5),
+        },
+        correlation={("P", "M"): 0.5},
+        quantities={"b": 8.668, "h": 25.0},
+    )
+    assert r.beta == pytest.approx(2.49965, abs=1e-4)
+
+
 # Refusals ------------------------------
 
 REFUSED = {
@@ -201,6 +263,7 @@ REFUSED = {
     "correlation with itself": (("R - S",), {"correlation": {("R", "R"): 1.0}}, "paired with itself"),
     "correlation by one name": (("R - S",), {"correlation": {"RS": 0.0}}, "pairs of names; got 'RS'"),
     "correlation as matrix": (("R - S",), {"correlation": [[1, 0], [0, 1]]}, "correlation: must be a mapping"),
+    "unknown solver": (("R - S",), {"solver": "gradient"}, "gradient projection"),
     "unknown name": (("R - Sx",), {}, "'Sx' is neither a variable nor a quantity. Did you mean 'S'"),
     "syntax": (("R - ",), {}, "ends where a value is expected"),
     "sharp comparison": (("R > S",), {}, "Write '>='"),
