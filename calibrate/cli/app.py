@@ -5,7 +5,7 @@ from __future__ import annotations
 import typer
 
 from calibrate import __version__
-from calibrate.cli import check, fit, resistance, run, snippet
+from calibrate.cli import check, fit, index, resistance, run, selfcheck, snippet
 
 CAUTION = (
     "Results depend on the data and models given. Target reliabilities and factors are for competent engineers and "
@@ -28,8 +28,13 @@ app.command("snippet", help=snippet.HELP, short_help="Print pieces of study file
     snippet.snippet
 )
 app.command("fit", help=fit.HELP, short_help="Fit and rank distributions for one column.")(fit.fit)
+app.command("index", help=index.HELP, short_help="Look closely at one design situation.")(index.index)
 app.command("resistance", help=resistance.HELP, short_help="Evaluate component tests against prediction.")(
     resistance.resistance
+)
+
+app.command("selfcheck", help=selfcheck.HELP, short_help="Solve problems with known answers; compare.")(
+    selfcheck.selfcheck
 )
 
 

@@ -114,29 +114,29 @@ class ExpressionLimitState:
         """Whether g is affine in each variable."""
         return _affine(self.margin, self.variables)
 
-    def _bound(self) -> _BoundExpression:
-        stages = self.margin.staged(self.variables, 1)
+    def fixed(self, order: int) -> tuple[Staged, tuple[Any, ...]]:
+        """Return g (order 0), or g with its gradient (1), in two stages, the first one evaluated."""
+        stages = self.margin.staged(self.variables, order)
         # numpy's arithmetic of scalars may differ from that of arrays in the last bit, so numbers go in as arrays.
         whole = {name: np.atleast_1d(np.asarray(v, dtype=np.float64)) for name, v in self.values.items()}
         alone = all(np.ndim(v) == 0 for v in self.values.values())
         fixed = stages.fixed(whole)
         # What came of numbers only is a number again.
-        parts = tuple(v[0] if np.ndim(v) and (alone or v.size == 1) else v for v in fixed)
-        return _BoundExpression(stages, self.variables, self.kinks, self.affine, parts, self)
+        return stages, tuple(v[0] if np.ndim(v) and (alone or v.size == 1) else v for v in fixed)
 
     def take(self, columns: Any) -> LimitState:
-        """Return the limit state of some situations, its fixed part evaluated."""
-        return self._bound().take(columns)
+        """Return the limit state of some situations."""
+        return BoundExpression(self).take(columns)
 
     def value(self, x: Rows, columns: Any = None) -> Array:
         """Return g, shape (k,)."""
-        return self.gradient(x, columns)[0]
+        return BoundExpression(self).value(x, columns)
 
     def gradient(
         self, x: Rows, columns: Any = None, slopes: Rows | None = None
     ) -> tuple[Array, Sequence[Any]]:
         """Return g and its exact derivatives."""
-        return self._bound().gradient(x, columns, slopes)
+        return BoundExpression(self).gradient(x, columns, slopes)
 
     def hessian(self, x: Rows) -> tuple[Sequence[Any], Sequence[Sequence[Any]]]:
         """Return the exact first and second derivatives."""
@@ -145,28 +145,54 @@ class ExpressionLimitState:
         return by_x, by_two
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class _BoundExpression:
-    """The same with everything evaluated that does not depend on the basic variables."""
+class BoundExpression:
+    """The same for some situations; what does not depend on basic variables is evaluated once, when it is needed.
 
-    stages: Staged
-    variables: tuple[str, ...]
-    kinks: int
-    affine: bool
-    fixed: tuple[Any, ...]
-    source: ExpressionLimitState
-    # What was taken of the source, one selection after the other; only second derivatives go back to it.
-    selections: tuple[Any, ...] = ()
+    Attributes
+    ----------
+    source : ExpressionLimitState
+        Of all situations.
+    variables, kinks, affine
+        As of any limit state.
+    """
 
-    def take(self, columns: Any) -> _BoundExpression:
-        fixed = tuple(v[columns] if np.ndim(v) else v for v in self.fixed)
-        selections = (*self.selections, columns)
-        return _BoundExpression(
-            self.stages, self.variables, self.kinks, self.affine, fixed, self.source, selections
-        )
+    __slots__ = ("_columns", "_parent", "_parts", "affine", "kinks", "source", "variables")
+
+    def __init__(
+        self, source: ExpressionLimitState, parent: BoundExpression | None = None, columns: Any = None
+    ) -> None:
+        self.source = source
+        self.variables = source.variables
+        self.kinks = source.kinks
+        self.affine = source.affine
+        self._parent = parent
+        self._columns = columns
+        self._parts: dict[int, tuple[Staged, tuple[Any, ...]]] = {}
+
+    @property
+    def values(self) -> Mapping[str, Any]:
+        """The values of the source for these situations."""
+        return self.source.values if self._parent is None else _taken(self._parent.values, self._columns)
+
+    def take(self, columns: Any) -> BoundExpression:
+        """Return the limit state of some situations."""
+        return BoundExpression(self.source, self, columns)
+
+    def _fixed(self, order: int) -> tuple[Staged, tuple[Any, ...]]:
+        found = self._parts.get(order)
+        if found is None:
+            if self._parent is None:
+                found = self.source.fixed(order)
+            else:
+                stages, whole = self._parent._fixed(order)
+                found = stages, tuple(v[self._columns] if np.ndim(v) else v for v in whole)
+            self._parts[order] = found
+        return found
 
     def value(self, x: Rows, columns: Any = None) -> Array:
-        return self.gradient(x, columns)[0]
+        """Return g, shape (k,)."""
+        stages, fixed = (self if columns is None else self.take(columns))._fixed(0)
+        return np.broadcast_to(stages(list(x), fixed), np.shape(x[0]))
 
     def gradient(
         self,
@@ -174,15 +200,14 @@ class _BoundExpression:
         columns: Any = None,
         slopes: Rows | None = None,
     ) -> tuple[Array, Sequence[Any]]:
-        bound = self if columns is None else self.take(columns)
-        g, by_x = self.stages(list(x), bound.fixed)
+        """Return g and its exact derivatives."""
+        stages, fixed = (self if columns is None else self.take(columns))._fixed(1)
+        g, by_x = stages(list(x), fixed)
         return np.broadcast_to(g, np.shape(x[0])), by_x
 
     def hessian(self, x: Rows) -> tuple[Sequence[Any], Sequence[Sequence[Any]]]:
-        values: Mapping[str, Any] = self.source.values
-        for columns in self.selections:
-            values = _taken(values, columns)
-        return ExpressionLimitState(self.source.margin, self.variables, values).hessian(x)
+        """Return the exact first and second derivatives."""
+        return ExpressionLimitState(self.source.margin, self.variables, self.values).hessian(x)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -214,3 +214,62 @@ def test_variables_in_a_circle_are_told_once(tmp_path):
     with pytest.raises(InputError, match="depends on itself through 'E'") as caught:
         solved(tmp_path, text)
     assert len(caught.value.problems) == 1
+
+
+def test_section_modulus_of_two_tolerance_controlled_dimensions(tmp_path):
+    """Against plain Monte Carlo by numpy and scipy of the same truncated, rank-correlated dimensions.
+
+    First order: V(W)^2 = V_b^2 + 4 V_h^2 + 4 rho V_b V_h for W = b h^2 / 6.
+    """
+    from scipy.special import ndtr, ndtri
+
+    text = """\
+format = 1
+study = { title = "Section", reference_period = 50, seed = 1 }
+target = { beta = 3.0 }
+[variables]
+b = { family = "truncated_normal", mean = "45 mm", sd = "1.5 mm", lower = "42 mm", upper = "48 mm" }
+h = { family = "truncated_normal", mean = "120 mm", sd = "4 mm", lower = "112 mm", upper = "128 mm" }
+f = { family = "lognormal", mean = "30 MPa", cov = 0.1 }
+M = { family = "gumbel", mean = "1.75 kN*m", cov = 0.12 }
+[correlations]
+"b, h" = { coefficient = 0.8, kind = "rank" }
+[rules.bending]
+limit_state = "f * b * h**2 / 6 >= M"
+[factors]
+gamma = 1.0
+[verification]
+cov = 0.005
+samples = 1000000
+"""
+    v = solved(tmp_path, text).verifications["proposed"]
+    rng = np.random.default_rng(11)
+    n = 2_000_000
+    rho = 2.0 * np.sin(np.pi * 0.8 / 6.0)
+    z1 = rng.standard_normal(n)
+    z2 = rho * z1 + np.sqrt(1.0 - rho * rho) * rng.standard_normal(n)
+
+    def truncated(z, mean, sd, half):
+        """The parent is symmetric; its scale by the closed form of the variance."""
+        from scipy.optimize import brentq
+
+        def spread(scale):
+            a = half / scale
+            density = np.exp(-0.5 * a * a) / np.sqrt(2.0 * np.pi)
+            return scale * np.sqrt(1.0 - 2.0 * a * density / (2.0 * ndtr(a) - 1.0)) - sd
+
+        scale = brentq(spread, sd, 20.0 * sd)
+        low = ndtr(-half / scale)
+        return mean + scale * ndtri(low + ndtr(z) * (1.0 - 2.0 * low))
+
+    w = truncated(z1, 0.045, 0.0015, 0.003) * truncated(z2, 0.12, 0.004, 0.008) ** 2 / 6.0
+    s = np.sqrt(np.log1p(0.01))
+    f = 30e6 * np.exp(-0.5 * s * s + s * rng.standard_normal(n))
+    scale = 0.12 * 1750.0 * np.sqrt(6.0) / np.pi
+    m = 1750.0 - np.euler_gamma * scale - scale * np.log(rng.exponential(size=n))
+    p = np.mean(f * w <= m)
+    assert 3e-4 < p < 5e-2
+    error = np.sqrt((1.0 - p) / (n * p))
+    assert ndtr(-v.simulated[0]) == pytest.approx(p, rel=3.0 * np.hypot(error, 0.005))
+    first_order = np.sqrt((1.5 / 45) ** 2 + 4 * (4 / 120) ** 2 + 4 * 0.8 * (1.5 / 45) * (4 / 120))
+    assert np.std(w) / np.mean(w) == pytest.approx(first_order, rel=0.03)

@@ -10,6 +10,7 @@ import numpy.typing as npt
 
 from calibrate.reliability.limit_state import (
     DIFFERENCE_STEP,
+    BoundExpression,
     CallableLimitState,
     ExpressionLimitState,
     LimitState,
@@ -35,13 +36,10 @@ def quantity_slopes(limit_state: LimitState, x: Rows) -> dict[str, tuple[Array, 
         ``{name: (value, dg/dq)}``, each () or (n,); exact for expressions, central differences for Python functions,
         empty for limit states that hold no named quantities.
     """
-    # A limit state whose fixed part is evaluated leads back to the expression from which it was taken.
-    source = getattr(limit_state, "source", limit_state)
-    if isinstance(source, ExpressionLimitState):
-        values: Mapping[str, Any] = source.values
-        for columns in getattr(limit_state, "selections", ()):
-            values = {name: v[columns] if np.ndim(v) else v for name, v in values.items()}
-        return _of_expression(source, values, x)
+    if isinstance(limit_state, BoundExpression):
+        return _of_expression(limit_state.source, limit_state.values, x)
+    if isinstance(limit_state, ExpressionLimitState):
+        return _of_expression(limit_state, limit_state.values, x)
     if isinstance(limit_state, CallableLimitState):
         return _of_function(limit_state, x)
     return {}

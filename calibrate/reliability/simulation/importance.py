@@ -156,7 +156,7 @@ class ImportanceSampler:
 
 def _along(block: Block, point: Array, u: Array) -> Array:
     """Return the scalar product of samples with the points of their situations, row by row in order."""
-    total = block.of(point[0]) * u[0]
+    total: Array = block.of(point[0]) * u[0]
     for own, row in zip(point[1:], u[1:], strict=True):
         total += block.of(own) * row
     return total

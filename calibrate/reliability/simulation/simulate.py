@@ -16,6 +16,7 @@ from calibrate.reliability.problem import Problem
 from calibrate.reliability.result import Reliability
 from calibrate.reliability.rows import dot
 from calibrate.reliability.simulation.base import Method, Task, evaluated
+from calibrate.reliability.simulation.batches import keep_memory
 from calibrate.reliability.simulation.goal import Goal
 from calibrate.reliability.simulation.levels import SubsetSimulation, simulate_by_levels
 from calibrate.reliability.simulation.registry import method_of
@@ -104,6 +105,7 @@ def simulate(
     where = _checked_points(problem, chosen, reliability, points)
     goal = Goal(cov, int(most), confidence, seed, purpose)
     work = _Work(problem, chosen, keys, where, _directions(where, reliability, points), goal, sobol)
+    keep_memory()
     parts = run_chunks(
         work, problem.n, chunk=CHUNK if chunk is None else chunk, workers=workers, progress=progress
     )
