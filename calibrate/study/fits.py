@@ -18,7 +18,7 @@ from calibrate.fitting.modes import ModeFit, fit_modes
 from calibrate.fitting.predictive import predictive
 from calibrate.records import Sample
 from calibrate.records.screening import FailureMode, failure_modes
-from calibrate.study.component_tests import evaluate, own_scatter
+from calibrate.study.component_tests import ResistanceResult, evaluate, own_scatter
 from calibrate.study.exceedances import ExceedanceModel, exceedance_model
 from calibrate.study.family_doubts import choice_doubts, rival_doubts
 from calibrate.study.maxima import BlockMaxima, block_maxima, observed_blocks
@@ -81,8 +81,16 @@ RecordModel = FittedVariable | ExceedanceModel
 """What a variable with records rests on."""
 
 
-def fit_variables(study: Study) -> dict[str, RecordModel]:
+def fit_variables(
+    study: Study, resistances: Mapping[str, ResistanceResult] | None = None
+) -> dict[str, RecordModel]:
     """Fit every variable that names records.
+
+    Parameters
+    ----------
+    study : Study
+    resistances : mapping of str to ResistanceResult, optional
+        Its component tests as evaluated; without them they are evaluated where a variable needs them.
 
     Returns
     -------
@@ -104,7 +112,7 @@ def fit_variables(study: Study) -> dict[str, RecordModel]:
             continue
         try:
             if variable.exceedances is None:
-                fitted[name] = _fit(study, variable, pools)
+                fitted[name] = _fit(study, variable, pools, resistances or {})
             else:
                 fitted[name] = exceedance_model(study, variable)
         except InputError as error:
@@ -114,7 +122,9 @@ def fit_variables(study: Study) -> dict[str, RecordModel]:
     return fitted
 
 
-def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
+def _fit(
+    study: Study, variable: Variable, pools: Pools, resistances: Mapping[str, ResistanceResult]
+) -> FittedVariable:
     assert variable.records is not None
     sample = study.records[variable.records]
     fixed = _fixed_in_sample_unit(variable, sample.unit.factor)
@@ -149,7 +159,7 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
         if (found := run_fit_tests(c, stream(study.seed, "fit tests", variable.name, c.family))) is not None
     }
     if variable.resistance is not None:
-        used = _own_scatter(study, variable, used)
+        used = _own_scatter(study, variable, used, resistances)
     used, normalised = _with_normalisation(used, sample, f"variables.{variable.name}")
     doubts = (
         *doubts,
@@ -177,13 +187,15 @@ def _fit(study: Study, variable: Variable, pools: Pools) -> FittedVariable:
     )
 
 
-def _own_scatter(study: Study, variable: Variable, used: Distribution) -> Distribution:
+def _own_scatter(
+    study: Study, variable: Variable, used: Distribution, resistances: Mapping[str, ResistanceResult]
+) -> Distribution:
     """Return a model factor without the scatter that its tests are known to contain beside it."""
     name = variable.resistance or ""
     records = study.resistances[name]
     if not records.known_scatter:
         return used
-    found = evaluate(records, study.target_beta, study.seed)
+    found = resistances.get(name) or evaluate(records, study.target_beta, study.seed)
     assert found.separation is not None
     return own_scatter(used, found.separation, name)
 

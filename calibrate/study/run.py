@@ -95,8 +95,8 @@ def run(
         study = dataclasses.replace(study, seed=seed)
 
     report("Fitting distributions", 0.0)
-    fitted = fit_variables(study)
     resistances = evaluate_resistances(study)
+    fitted = fit_variables(study, resistances)
     screenings = screen_records(study)
     variables = basic_variables(study, fitted)
     models = rule_models(study, variables)

@@ -156,6 +156,12 @@ def verification_doubts(study: Study, found: Mapping[str, Verification], weight:
             "of FORM is unverified there.",
             "Say situations = \"all\" in [verification].",
         )  # fmt: skip
+        for reason in dict.fromkeys(v.sorm_status[there & by_rule & ~v.sorm_sound & v.is_simulated]):
+            doubts += _at(
+                study, there & v.is_simulated & (v.sorm_status == reason), "second-order-limit",
+                f"With the {kind} factors the second order does not hold in {{places}}: {reason}. The simulation stands "
+                "in its place.",
+            )  # fmt: skip
         short = v.is_simulated & (v.cov > study.verification.settings.cov * 1.01)
         doubts += _at(
             study, there & short, "simulation-not-exact",

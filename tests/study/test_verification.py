@@ -167,7 +167,10 @@ variables.y = { family = "normal", mean = 9.9, sd = 5.0, may_be_negative = true 
 rules.two = { limit_state = "x**3 + y**3 >= 18" }
 factors.gamma = 1.0
 """
-    v = run(read(tmp_path, text)).verifications["proposed"]
+    result = run(read(tmp_path, text))
+    v = result.verifications["proposed"]
+    (doubt,) = [d for d in result.doubts if d.code == "second-order-limit"]
+    assert "no guide" in doubt.message
     assert v.form[0] == pytest.approx(2.22599, abs=1e-4)
     assert not v.sorm_sound[0]
     assert ndtr(-v.simulated[0]) == pytest.approx(5.70e-3, rel=0.06)
