@@ -159,8 +159,8 @@ def verification_doubts(study: Study, found: Mapping[str, Verification], weight:
         for reason in dict.fromkeys(v.sorm_status[there & by_rule & ~v.sorm_sound & v.is_simulated]):
             doubts += _at(
                 study, there & v.is_simulated & (v.sorm_status == reason), "second-order-limit",
-                f"With the {kind} factors the second order does not hold in {{places}}: {reason}. The simulation stands "
-                "in its place.",
+                f"With the {kind} factors the second order does not hold in {{places}}: {reason}. The simulation "
+                "stands in its place.",
             )  # fmt: skip
         short = v.is_simulated & (v.cov > study.verification.settings.cov * 1.01)
         doubts += _at(

@@ -105,7 +105,9 @@ def test_every_variable_has_its_slopes_whatever_the_kind_of_limit_state():
     chosen = distributions()
     result = form(limit_state(), chosen, N)
     exact = parameter_slopes(result, Problem(limit_state(), chosen, N))
-    by_differences = parameter_slopes(result, Problem(CallableLimitState(g, VARIABLES, QUANTITIES), chosen, N))
+    by_differences = parameter_slopes(
+        result, Problem(CallableLimitState(g, VARIABLES, QUANTITIES), chosen, N)
+    )
     assert list(exact) == list(VARIABLES)
     for name, d in zip(VARIABLES, chosen, strict=True):
         assert set(exact[name]) == set(d.family.parameter_names)

@@ -43,7 +43,8 @@ def parse_rules(
     drafts = {name: _draft(reading, names, name, entry) for name, entry in table.items()}
     weights = [d.entry.content.weight for d in drafts.values() if d.entry.content is not None]
     if weights and len(weights) == len(drafts) and not (any(weights) or systems_have_weight):
-        reading.raw_problem("every rule has weight 0.", section, "Give at least one rule, or a system of rules, a weight above 0.")
+        hint = "Give at least one rule, or a system of rules, a weight above 0."
+        reading.raw_problem("every rule has weight 0.", section, hint)
     return drafts
 
 
