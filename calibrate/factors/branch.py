@@ -53,8 +53,6 @@ class Branch:
     check_free : tuple of str
         Those that the design check contains.
     workers : int
-    turning : bool
-        Whether the derivatives of the sensitivity factors are wanted.
     """
 
     def __init__(
@@ -64,9 +62,8 @@ class Branch:
         free: Sequence[str],
         check_free: tuple[str, ...],
         workers: int,
-        turning: bool = False,
     ) -> None:
-        self.rule, self.variables, self.workers, self.turning = rule, variables, workers, turning
+        self.rule, self.variables, self.workers = rule, variables, workers
         self.free, self.check_free = list(free), check_free
         self.names = tuple(v.name for v in variables)
         self.direct = tuple(f for f in free if rule.limit_state.depends_on(f))
@@ -83,8 +80,10 @@ class Branch:
     def _correlation(self, laws: tuple[Distribution | ConditionalVariable, ...]) -> Correlation | None:
         return nataf_correlation(self.rule.correlations, self.names, laws, self.rule.n)
 
-    def __call__(self, values: Mapping[str, Any], sizing: Sizing, start: Array | None) -> BranchResult:
-        """Return FORM and its derivatives for these values, among them the size."""
+    def __call__(
+        self, values: Mapping[str, Any], sizing: Sizing, start: Array | None, turning: bool = False
+    ) -> BranchResult:
+        """Return FORM and its derivatives for these values, among them the size; with those of alpha where wanted."""
         distributions = tuple(
             law_of(self.variables[i], self.names, values) if d is None else d
             for i, d in enumerate(self.fixed)
@@ -109,7 +108,7 @@ class Branch:
                 reliability = nearest_over_classes(search, distributions, i, reliability)
         jacobian = self._jacobian(values, sizing, problem, reliability)
         turned = None
-        if self.turning:
+        if turning:
             turned = alpha_slopes(
                 self.rule, problem, reliability, values, sizing, self.free, self.check_free, jacobian
             )

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -21,7 +21,6 @@ from calibrate.factors.model import Factor
 from calibrate.factors.objective import FactorSet, Goal, factor_set
 from calibrate.factors.optimise import FLOOR_TOLERANCE, SAME_OPTIMUM, Optimum, bounds, optimise
 from calibrate.factors.penalties import Penalty
-from calibrate.factors.required import required_factor
 from calibrate.factors.response import Evaluation, Response
 
 Array = npt.NDArray[np.float64]
@@ -46,9 +45,6 @@ class Calibration:
     doubts : tuple of Doubt
     constraint_failures : tuple of str
         Constraints that cannot be met, each a full sentence.
-    required : mapping of str to array (N,)
-        For each free factor, the value with which each row would have exactly the target, the other factors as
-        proposed; NaN where there is none.
     """
 
     present: FactorSet
@@ -58,7 +54,6 @@ class Calibration:
     lattice: LatticeSearch | None
     doubts: tuple[Doubt, ...]
     constraint_failures: tuple[str, ...]
-    required: Mapping[str, Array]
 
     @property
     def candidates(self) -> tuple[Candidate, ...]:
@@ -129,7 +124,6 @@ def calibrate_factors(
         optimum.evaluation,
         lambda k, most: say(f"Searching the lattice of steps, {k} points", 0.65 + 0.3 * k / most),
     )
-    say("Factors that single situations require", 0.97)
     return _finished(response, goal, present, optimum, lattice)
 
 
@@ -166,7 +160,6 @@ def _finished(
         lattice,
         tuple(doubts),
         _failures(goal, optimal, proposed),
-        {f.name: required_factor(response, f.name, goal.target, best) for f in response.free},
     )
 
 
@@ -175,7 +168,7 @@ def _held(response: Response, present: Evaluation, goal: Goal) -> Calibration:
         factor_set(k, response.values(present.gamma), present, goal)
         for k in ("present", "optimal", "proposed")
     ]
-    return Calibration(sets[0], sets[1], sets[2], None, None, (), _failures(goal, sets[1], sets[2]), {})
+    return Calibration(sets[0], sets[1], sets[2], None, None, (), _failures(goal, sets[1], sets[2]))
 
 
 def _failures(goal: Goal, optimal: FactorSet, proposed: FactorSet) -> tuple[str, ...]:

@@ -138,8 +138,9 @@ def search_lattice(
         if progress is not None:
             progress(count + 1, min(points.shape[0], MOST_EVALUATED))
     ranking = seen.ranked()
+    best = ranking[0]
     return LatticeSearch(
-        seen.evaluations[ranking[0]],
+        response(seen.points[best], optimum) if response.systems else seen.evaluations[best],
         tuple(seen.candidate(i) for i in ranking[:10]),
         seen.candidate(0),
         len(seen.points),
@@ -215,7 +216,7 @@ class _Evaluated:
         """Evaluate a point unless it was."""
         known = next((i for i, p in enumerate(self.points) if np.array_equal(p, point)), None)
         if known is None:
-            evaluation = self.response(point, self.optimum)
+            evaluation = self.response(point, self.optimum, slopes=False)
             self.points.append(point)
             self.evaluations.append(evaluation)
             self.objectives.append(self.goal.value(evaluation.beta, self.rows))

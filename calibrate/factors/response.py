@@ -119,17 +119,15 @@ class Response:
         )
         self.workers = workers
         self.correction: Array | None = None
-        components = {name for s in systems for name in s.logic.names}
-        self._rules = tuple(
-            _Rule(r, [f.name for f in self.free], workers, r.name in components) for r in self.rules
-        )
+        self._components = frozenset(name for s in systems for name in s.logic.names)
+        self._rules = tuple(_Rule(r, [f.name for f in self.free], workers) for r in self.rules)
 
     def values(self, gamma: Array) -> dict[str, float]:
         """Return all factors by name, free ones from ``gamma``."""
         free = dict(zip((f.name for f in self.free), gamma, strict=True))
         return {f.name: float(free.get(f.name, f.present)) for f in self.factors}
 
-    def __call__(self, gamma: Array, start: Evaluation | None = None) -> Evaluation:
+    def __call__(self, gamma: Array, start: Evaluation | None = None, *, slopes: bool = True) -> Evaluation:
         """Size, and compute beta and its derivatives, in every situation of every rule.
 
         Parameters
@@ -138,6 +136,8 @@ class Response:
             Free factors, the same in all rows or each row's own.
         start : Evaluation, optional
             For similar factors; its sizes and design points save passes.
+        slopes : bool
+            Whether the derivatives of systems are wanted, which cost more than all the rest; else they are NaN.
 
         Raises
         ------
@@ -151,13 +151,14 @@ class Response:
             own = gamma if gamma.ndim == 1 else gamma[:, row : row + rule.rule.n]
             row += rule.rule.n
             factors = {**held, **dict(zip(names, own, strict=True))}
-            parts.append(rule(factors, None if start is None else start.per_rule[k]))
+            turning = slopes and gamma.ndim == 1 and rule.rule.name in self._components
+            parts.append(rule(factors, None if start is None else start.per_rule[k], turning))
         joined = []
         for system in self.systems:
             n = system.weight.size
             each = None if gamma.ndim == 1 else gamma[:, row : row + n]
             row += n
-            joined.append(self._system(system, parts, held, each))
+            joined.append(self._system(system, parts, held, each, slopes))
         beta = np.concatenate([*(p[1] for p in parts), *(s[1] for s in joined)])
         if self.correction is not None:
             beta = beta + self.correction
@@ -177,6 +178,7 @@ class Response:
         parts: Sequence[_Part],
         held: Mapping[str, float],
         own: Array | None,
+        slopes: bool,
     ) -> tuple[SystemEvaluation, Array, Array, npt.NDArray[Any]]:
         """Return a system from the rules as evaluated, or from its rules with factors of its own rows."""
         places = [[r.name for r in self.rules].index(name) for name in system.logic.names]
@@ -184,19 +186,11 @@ class Response:
             found = [parts[k] for k in places]
         else:
             factors = {**held, **dict(zip((f.name for f in self.free), own, strict=True))}
-            found = [self._rules[k](factors, parts[k][0]) for k in places]
-        components = []
-        for evaluation, beta, jacobian, _ in found:
-            assert evaluation.alpha_slopes is not None
-            components.append(
-                Component(
-                    evaluation.problems[0],
-                    evaluation.reliability,
-                    np.isfinite(beta),
-                    jacobian,
-                    evaluation.alpha_slopes,
-                )
-            )
+            found = [self._rules[k](factors, parts[k][0], slopes) for k in places]
+        components = [
+            Component(e.problems[0], e.reliability, np.isfinite(beta), jacobian, e.alpha_slopes)
+            for e, beta, jacobian, _ in found
+        ]
         return evaluate_system(system, [self.rules[k] for k in places], components)
 
     def corrected(self, correction: Array) -> Response:
@@ -228,7 +222,7 @@ _Part = tuple[RuleEvaluation, Array, Array, npt.NDArray[Any]]
 class _Rule:
     """One rule, with everything prepared that does not depend on factors."""
 
-    def __init__(self, rule: RuleModel, free: Sequence[str], workers: int, turning: bool) -> None:
+    def __init__(self, rule: RuleModel, free: Sequence[str], workers: int) -> None:
         self.rule = rule
         self.free = list(free)
         self.solver = (
@@ -238,11 +232,11 @@ class _Rule:
         )
         self.check_free = tuple(f for f in free if rule.check is not None and rule.check.depends_on(f))
         chosen = [a.variables for a in rule.alternatives] or [rule.variables]
-        self.branches = [
-            Branch(rule, variables, self.free, self.check_free, workers, turning) for variables in chosen
-        ]
+        self.branches = [Branch(rule, variables, self.free, self.check_free, workers) for variables in chosen]
 
-    def __call__(self, factors: Mapping[str, Any], start: RuleEvaluation | None) -> _Part:
+    def __call__(
+        self, factors: Mapping[str, Any], start: RuleEvaluation | None, turning: bool = False
+    ) -> _Part:
         rule = self.rule
         values: dict[str, Any] = {**rule.values, **factors}
         sizing = self._sized(values, start)
@@ -253,7 +247,7 @@ class _Rule:
             usual = float(np.median(sizing.size[solved])) if solved.any() else 1.0
             values[rule.size_name] = sizing.size if solved.all() else np.where(solved, sizing.size, usual)
         starts = [None] * len(self.branches) if start is None else list(start.branches)
-        parts = [branch(values, sizing, u) for branch, u in zip(self.branches, starts, strict=True)]
+        parts = [branch(values, sizing, u, turning) for branch, u in zip(self.branches, starts, strict=True)]
         reliability, jacobian = parts[0].reliability, parts[0].jacobian
         by_alternative: dict[str, Array] = {}
         governing = np.zeros(rule.n, dtype=np.intp)

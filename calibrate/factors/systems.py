@@ -37,8 +37,8 @@ class Component:
     valid: npt.NDArray[np.bool_]
     jacobian: Array
     """d beta/d gamma, (f, n)."""
-    alpha_slopes: Array
-    """d alpha/d gamma, (f, m, n), in the standard normal space of the component."""
+    alpha_slopes: Array | None
+    """d alpha/d gamma, (f, m, n), in the standard normal space of the component; None where no slopes are wanted."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -95,17 +95,13 @@ def evaluate_system(
     turns = [_Turn.of(names, r, c.problem, correlation) for r, c in zip(rules, components, strict=True)]
     beta = np.array([np.where(c.valid, c.reliability.beta, np.nan) for c in components])
     alpha = np.array([t(c.reliability.alpha) for t, c in zip(turns, components, strict=True)])
-    result = system_probability(beta, model.logic, alpha=alpha)
-    assert result.by_beta is not None
-    assert result.by_correlation is not None
-    jacobian = np.zeros_like(components[0].jacobian)
-    moved = [[t(slope) for slope in c.alpha_slopes] for t, c in zip(turns, components, strict=True)]
-    for f in range(len(jacobian)):
-        for i, c in enumerate(components):
-            jacobian[f] += result.by_beta[i] * c.jacobian[f]
-            for j in range(i):
-                along = dot(moved[i][f], alpha[j]) + dot(alpha[i], moved[j][f])
-                jacobian[f] += result.by_correlation[i, j] * along
+    wanted = all(c.alpha_slopes is not None for c in components)
+    result = system_probability(beta, model.logic, alpha=alpha, slopes=wanted)
+    jacobian = (
+        _jacobian(result, alpha, turns, components)
+        if wanted
+        else np.full_like(components[0].jacobian, np.nan)
+    )
     status = np.where(np.isfinite(result.beta), "converged", NO_INDEX).astype(object)
     parts = {name: c.problem.limit_state for name, c in zip(model.logic.names, components, strict=True)}
     state = system_limit_state(model.logic, parts, names)
@@ -119,6 +115,26 @@ def evaluate_system(
         model.weight,
     )
     return evaluation, result.beta, jacobian, status
+
+
+def _jacobian(
+    result: SystemResult, alpha: Array, turns: Sequence[_Turn], components: Sequence[Component]
+) -> Array:
+    """Return d beta/d gamma of a system: by the indices of its components, and by the correlation of their planes."""
+    assert result.by_beta is not None
+    assert result.by_correlation is not None
+    jacobian = np.zeros_like(components[0].jacobian)
+    moved = [
+        [t(slope) for slope in ([] if c.alpha_slopes is None else c.alpha_slopes)]
+        for t, c in zip(turns, components, strict=True)
+    ]
+    for f in range(len(jacobian)):
+        for i, c in enumerate(components):
+            jacobian[f] += result.by_beta[i] * c.jacobian[f]
+            for j in range(i):
+                along = dot(moved[i][f], alpha[j]) + dot(alpha[i], moved[j][f])
+                jacobian[f] += result.by_correlation[i, j] * along
+    return jacobian
 
 
 def _names(model: SystemModel, rules: Sequence[RuleModel]) -> tuple[str, ...]:

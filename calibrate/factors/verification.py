@@ -8,7 +8,7 @@ random sample of the rest; or everywhere, where asked for.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -23,6 +23,7 @@ from calibrate.reliability.further_points import further_points
 from calibrate.reliability.second_order import second_order
 from calibrate.reliability.series_of_points import series_probability
 from calibrate.reliability.simulation import Simulation, simulate
+from calibrate.reliability.systems import SystemLimitState, parallel, system_limit_state
 
 Array = npt.NDArray[np.float64]
 Flags = npt.NDArray[np.bool_]
@@ -30,6 +31,8 @@ Counts = npt.NDArray[np.int64]
 
 SECOND_ORDER_ONLY = "sorm"
 NONE = "none"
+RELIABLE = 0.1
+"""Coefficient of variation of a failure probability up to which a simulation counts; 0.03 or less in the index."""
 CORRECTIONS, SAMPLE, DOUBTFUL = 2, 6, 6
 """Situations of each rule that are simulated: with the largest corrections, at random, without a sound second order."""
 
@@ -107,8 +110,10 @@ class Verification:
 
     @property
     def is_simulated(self) -> Flags:
-        """Where there is a simulated index."""
-        return np.asarray(np.isfinite(self.simulated))
+        """Where there is a simulated index that can be relied upon."""
+        with np.errstate(invalid="ignore"):
+            near = self.cov <= max(RELIABLE, 2.0 * self.settings.cov)
+        return np.asarray(np.isfinite(self.simulated) & near)
 
     @property
     def verified(self) -> Array:
@@ -315,17 +320,32 @@ def _of_system(
         chosen[stream(seed, "verification sample", system.name).permutation(rest)[:SAMPLE]] = True
     at = np.flatnonzero(chosen)
     problem = system.problem.take(at, at.size)
-    reliability = design_points(problem, workers=workers)
-    points = np.concatenate([system.points[:, :, at], reliability.u[None]])
-    # A point that was not found is replaced by the nearest of the components'.
-    nearest = np.argmin(
-        np.where(np.isnan(system.component_beta[:, at]), np.inf, system.component_beta[:, at]), axis=0
-    )
-    first = np.moveaxis(system.points[:, :, at], 2, 0)[np.arange(at.size), nearest].T
-    points = np.where(np.isfinite(points), points, first)
-    _enter(
-        found,
-        at,
-        _sampled(problem, settings, seed, at, reliability, points, f"verification of {system.name}", workers),
-    )
+    points, nearest = _centres(system, problem, at, workers)
+    purpose = f"verification of {system.name}"
+    _enter(found, at, _sampled(problem, settings, seed, at, nearest, points, purpose, workers))
     return found
+
+
+def _centres(
+    system: SystemEvaluation, problem: Problem, at: npt.NDArray[np.intp], workers: int
+) -> tuple[Array, Reliability]:
+    """Return where failures of a system are likely, (k, m, n): the nearest point of each cut set, and that of all.
+
+    The design point of a component that fails with others only is no such place.
+    """
+    state = problem.limit_state
+    assert isinstance(state, SystemLimitState)
+    nearest = design_points(problem, workers=workers)
+    points = [nearest.u]
+    for cut in state.logic.cut_sets:
+        if len(cut) == 1:
+            points.append(system.points[cut[0]][:, at])
+            continue
+        names = [state.logic.names[i] for i in cut]
+        joint = system_limit_state(
+            parallel(names),
+            {n: state.components[i] for n, i in zip(names, cut, strict=True)},
+            state.variables,
+        )
+        points.append(design_points(replace(problem, limit_state=joint), workers=workers).u)
+    return np.array(points), nearest

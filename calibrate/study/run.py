@@ -8,7 +8,6 @@ import time
 from collections.abc import Callable
 
 import numpy as np
-from numpy.typing import NDArray
 
 from calibrate.errors import Doubt, InputError, Problem
 from calibrate.factors import Calibration, Response, RuleModel, calibrate_factors, make_penalty
@@ -100,7 +99,7 @@ def run(
     screenings = screen_records(study)
     variables = basic_variables(study, fitted)
     models = rule_models(study, variables)
-    calibration, correction, unsettled = _calibrate(study, models, workers, report)
+    response, calibration, unsettled = _calibrate(study, models, workers, report)
     report("Verifying the reliability index", 0.8)
     weight = row_weights(study)
     verified = verifications(
@@ -144,7 +143,7 @@ def run(
         factors=factor_table(study, calibration),
         situations=table,
         units=units,
-        required=required_table(study, calibration),
+        required=required_table(study, response, calibration),
         fitted={name: f for name, f in fitted.items() if isinstance(f, FittedVariable)},
         exceedances={name: f for name, f in fitted.items() if isinstance(f, ExceedanceModel)},
         screenings=screenings,
@@ -158,7 +157,7 @@ def run(
         site_beta=by_site,
         verifications=verified,
         verification=verification_table(study, verified),
-        correction=correction,
+        correction=response.correction,
         systems=of_systems,
         elasticities=elasticity_table(study, calibration),
         calibration=calibration,
@@ -173,8 +172,8 @@ def run(
 
 def _calibrate(
     study: Study, models: list[RuleModel], workers: int, report: Progress
-) -> tuple[Calibration, NDArray[np.float64] | None, tuple[Doubt, ...]]:
-    """Return the calibration, what was added to the index of FORM, and doubts about that."""
+) -> tuple[Response, Calibration, tuple[Doubt, ...]]:
+    """Return the response with what was added to the index of FORM, the calibration, and doubts about these."""
     response = Response(models, study.factors, workers=workers, systems=system_models(study))
     weight = response.weight
 
@@ -192,7 +191,7 @@ def _calibrate(
     try:
         if study.objective.index == "verified":
             return calibrate_verified(study, response, weight, solve, workers)
-        return solve(response), None, ()
+        return response, solve(response), ()
     except InputError as error:
         raise InputError(
             [p if p.file else Problem(p.message, study.shown, p.line, p.suggestion) for p in error.problems]

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.distributions import Distribution, Extreme, Mixture
-from calibrate.factors import Calibration, Evaluation
+from calibrate.factors import Calibration, Evaluation, Response, required_factor
 from calibrate.study.fits import FittedVariable, RecordModel
 from calibrate.study.model import Rule, Study
 from calibrate.study.result import FACTOR_SETS, VariableResult
@@ -86,16 +86,22 @@ def situation_table(
     return pd.DataFrame(columns), units
 
 
-def required_table(study: Study, calibration: Calibration) -> pd.DataFrame:
-    """Return rule, situation and, for each free factor, the value that the situation alone would require."""
+def required_table(study: Study, response: Response, calibration: Calibration) -> pd.DataFrame:
+    """Return rule, situation and, for each free factor, the value that the situation alone would require.
+
+    The other factors are those proposed.
+    """
     import pandas as pd
+
+    at = calibration.proposed.evaluation
+    required = {f.name: required_factor(response, f.name, study.target_beta, at) for f in response.free}
 
     n = study.situations.n
     return pd.DataFrame(
         {
             "rule": np.repeat(np.array(study.judged, dtype=object), n),
             "situation": np.tile(np.arange(1, n + 1), len(study.judged)),
-            **{f"required_{name}": values for name, values in calibration.required.items()},
+            **{f"required_{name}": values for name, values in required.items()},
         }
     )
 

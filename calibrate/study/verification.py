@@ -27,14 +27,14 @@ _NAMED = 3
 
 def calibrate_verified(
     study: Study, response: Response, weight: Array, solve: Solve, workers: int
-) -> tuple[Calibration, Array, tuple[Doubt, ...]]:
+) -> tuple[Response, Calibration, tuple[Doubt, ...]]:
     """Calibrate on FORM corrected by what verification adds, until the proposed factors no longer change.
 
     Returns
     -------
+    response : Response
+        With its correction: the verified index less that of FORM.
     calibration : Calibration
-    correction : array (N,)
-        Verified index less that of FORM, as it was added.
     doubts : tuple of Doubt
         Where the factors still changed.
 
@@ -43,12 +43,11 @@ def calibrate_verified(
     The samples of a situation come from the same stream in every pass, so that the correction is a smooth function of
     the factors and the passes converge.
     """
-    correction = np.zeros(weight.size)
     before: Mapping[str, float] | None = None
     calibration = solve(response)
     for _ in range(MOST_PASSES):
         if before is not None and _unchanged(study, before, calibration.proposed.factors):
-            return calibration, correction, ()
+            return response, calibration, ()
         before = calibration.proposed.factors
         found = verify(
             calibration.proposed.evaluation,
@@ -57,15 +56,15 @@ def calibrate_verified(
             seed=study.seed,
             workers=workers,
         )
-        correction = np.where(np.isfinite(found.difference), found.difference, 0.0)
-        calibration = solve(response.corrected(correction))
+        response = response.corrected(found.difference)
+        calibration = solve(response)
     if _unchanged(study, before or {}, calibration.proposed.factors):
-        return calibration, correction, ()
+        return response, calibration, ()
     text = (
         f"The proposed factors still changed after {MOST_PASSES} rounds of verification: they jump between points of "
         "the lattice that are about as good."
     )
-    return calibration, correction, (Doubt("verified-index-unsettled", text, "objective.index"),)
+    return response, calibration, (Doubt("verified-index-unsettled", text, "objective.index"),)
 
 
 def _unchanged(study: Study, before: Mapping[str, float], now: Mapping[str, float]) -> bool:
@@ -162,12 +161,14 @@ def verification_doubts(study: Study, found: Mapping[str, Verification], weight:
                 f"With the {kind} factors the second order does not hold in {{places}}: {reason}. The simulation "
                 "stands in its place.",
             )  # fmt: skip
-        short = v.is_simulated & (v.cov > study.verification.settings.cov * 1.01)
+        with np.errstate(invalid="ignore"):
+            short = (v.samples > 0) & ~(v.cov <= study.verification.settings.cov * 1.01)
         doubts += _at(
             study, there & short, "simulation-not-exact",
-            f"With the {kind} factors the simulation spent its samples before the wanted cov of "
-            f"{study.verification.settings.cov:g} in {{places}}.",
-            "Raise 'samples' in [verification].",
+            f"With the {kind} factors the simulation did not reach the wanted cov of "
+            f"{study.verification.settings.cov:g} in {{places}}; where it is far from it the index is not counted as "
+            "simulated. simulation_status in verification.csv says why.",
+            "Raise 'samples' in [verification], or name another method.",
         )  # fmt: skip
     return doubts
 
