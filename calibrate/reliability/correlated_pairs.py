@@ -111,6 +111,21 @@ def nataf_correlation(
     return Correlation.of(factor.lower)
 
 
+def indefinite(pairs: Sequence[CorrelatedPair], names: Sequence[str]) -> Problem | None:
+    """Return what is wrong with pairs that no variables can have, whatever their distributions; None where nothing is.
+
+    The matrix of product-moment coefficients must be positive definite itself; a rank coefficient stands for that of
+    normal variables. What the distributions add to it shows only once they are known.
+    """
+    matrix = np.eye(len(names))
+    for p in pairs:
+        i, j = names.index(p.first), names.index(p.second)
+        value = 2.0 * np.sin(np.pi * p.coefficient / 6.0) if p.kind == RANK else p.coefficient
+        matrix[i, j] = matrix[j, i] = value
+    factor = correlation_factor(matrix)
+    return _not_definite(pairs, names, factor) if np.any(factor.failed) else None
+
+
 def _not_correlated(
     pair: CorrelatedPair,
     names: Sequence[str],

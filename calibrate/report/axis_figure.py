@@ -126,16 +126,21 @@ def beta_by_axis(result: Result, axis: str) -> Figure:
         else:
             axes.set_ylabel("reliability index β")
     if legend:
-        rule_legend(figure, rules, (first + width + _GAP / 2) / WIDTH, columns)
+        rule_legend(figure, result, (first + width + _GAP / 2) / WIDTH, columns)
     return figure
 
 
-def rule_legend(figure: Figure, rules: list[str], middle: float, columns: int) -> None:
-    """Name the marks of the rules at the foot of a figure, also those that have no point in a panel."""
+def rule_legend(figure: Figure, result: Result, middle: float, columns: int) -> None:
+    """Name the marks of the rules at the foot of a figure, also those that have no point in a panel.
+
+    What is reported only, without weight, is drawn nowhere.
+    """
     from matplotlib.lines import Line2D
 
     handles = []
-    for i, rule in enumerate(rules):
+    for i, (rule, weight) in enumerate(zip(result.study.judged, result.study.weights, strict=True)):
+        if not weight:
+            continue
         colour = style.colour(i)
         handles.append(
             Line2D(

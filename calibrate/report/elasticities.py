@@ -58,18 +58,21 @@ def other_elasticities(result: Result) -> Table | None:
     if frame.empty:
         return None
     keys = list(dict.fromkeys(zip(frame["kind"], frame["name"], frame["argument"], strict=True)))
+    sizes = {rule.size for rule in result.study.rules.values()}
     keys.sort(key=lambda key: list(_WORDS).index(key[0]))
     columns = [
-        Column("kind", [_WORDS[kind] for kind, _, _ in keys]),
+        Column("kind", ["size" if name in sizes else _WORDS[kind] for kind, name, _ in keys]),
         Column("of", [_typeset(name) for _, name, _ in keys]),
     ]
     for rule in result.study.rules:
         own = frame[frame["rule"] == rule].set_index(["kind", "name", "argument"])
         if own.empty:
             continue
-        relative = [float(own["elasticity"].get(key, np.nan)) for key in keys]
+        relative = [float(own["elasticity"].get(key, np.nan)) or np.nan for key in keys]
         # A slope by a quantity with a unit says nothing without it; its elasticity does.
-        slope = [np.nan if key[0] == "quantity" else float(own["slope"].get(key, np.nan)) for key in keys]
+        slope = [
+            np.nan if key[0] == "quantity" else float(own["slope"].get(key, np.nan)) or np.nan for key in keys
+        ]
         columns += [
             Column("dβ/dp", slope, each(numbers.significant, 3), "number", group=rule),
             Column("elasticity", relative, each(_signed), "number", group=rule),

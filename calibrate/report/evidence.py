@@ -295,8 +295,17 @@ def _how(quantity: Quantity | None, period: float | None) -> str:
 
 
 def _percent_span(values: tuple[float, float]) -> str:
-    low, high = (numbers.significant(100.0 * v, 2) for v in values)
+    low, high = (_percent(v) for v in values)
     return f"{low} %" if low == high else f"{low} … {high} %"
+
+
+def _percent(value: float) -> str:
+    """Return a probability in per cent with two figures of the smaller side, so that 99.5 is not 100."""
+    if value <= 0.5 or not math.isfinite(value):
+        return numbers.significant(100.0 * value, 2)
+    rest = numbers.significant(100.0 * (1.0 - value), 2)
+    decimals = len(rest.partition(".")[2])
+    return numbers.fixed(100.0 * value, min(max(decimals, 0), 6))
 
 
 def pedigree_table(result: Result) -> Table:

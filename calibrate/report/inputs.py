@@ -6,6 +6,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from calibrate.report import numbers, symbols
+from calibrate.report.dependence import conditional_names
 from calibrate.report.outcome import column_unit
 from calibrate.report.symbols import Html
 from calibrate.report.table import Column, Table, each
@@ -76,9 +77,10 @@ def variable_table(result: Result) -> Table:
     """Return the basis of variables: family, moments for the reference period, where they come from."""
     found = list(result.variables.values())
     defined = [result.study.variables[v.name] for v in found]
+    given = conditional_names(result.study)
     columns = [
         Column("variable", [v.name for v in found], kind="name"),
-        Column("family", [v.family for v in found]),
+        Column("family", [_family(v.family, given.get(v.name, [])) for v in found]),
         Column("unit", [unit_of(v.unit.text) for v in found]),
         Column("mean", [numbers.span(v.mean) for v in found], kind="number"),
         Column("sd", [numbers.span(v.sd) for v in found], kind="number"),
@@ -90,6 +92,12 @@ def variable_table(result: Result) -> Table:
         columns.append(Column("given for", [numbers.years(v.period) if v.period else "" for v in found]))
     columns.append(Column("source", [_source(d, v.n) for d, v in zip(defined, found, strict=True)]))
     return Table(tuple(columns))
+
+
+def _family(family: str, parents: list[str]) -> Html:
+    """Return a family, with the variables on whose values its parameters depend."""
+    text = symbols.escaped(family)
+    return Html(f"{text}, given {', '.join(symbols.html(p) for p in parents)}") if parents else text
 
 
 def _source(variable: Variable, n: int | None) -> str:

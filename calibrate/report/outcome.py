@@ -99,6 +99,47 @@ def beta_table(result: Result) -> Table:
     return Table(tuple(columns), strong=frozenset({len(FACTOR_SETS) - 1}))
 
 
+def judged_table(result: Result) -> Table | None:
+    """Return β by rule and system, present and proposed, over all situations that have a weight in the grid.
+
+    None where there is one rule alone.
+    """
+    study, frame = result.study, result.situations
+    if len(study.judged) == 1:
+        return None
+    weight = study.situations.weight
+
+    def figures(name: str, kind: str) -> tuple[float, float, float]:
+        beta = frame[f"beta_{kind}"].to_numpy(float)[(frame["rule"] == name).to_numpy()]
+        there = np.isfinite(beta) & (weight > 0)
+        if not there.any():
+            return math.nan, math.nan, math.nan
+        return (
+            float(np.average(beta[there], weights=weight[there])),
+            float(beta[there].min()),
+            float(beta[there].max()),
+        )
+
+    columns = [
+        Column("kind", [("rule" if name in study.rules else "system") for name in study.judged]),
+        Column("name", list(study.judged)),
+    ]
+    for kind in ("present", "proposed"):
+        found = [figures(name, kind) for name in study.judged]
+        for at, head in enumerate(("mean", "min", "max")):
+            columns.append(
+                Column(head, [f[at] for f in found], each(numbers.beta), "number", group=f"β, {kind}")
+            )
+    share = [w / study.total_weight for w in study.weights]
+    columns.append(Column("weight", share, _weight, "number"))
+    return Table(tuple(columns))
+
+
+def _weight(values: Any) -> list[str]:
+    """Write shares of weight; what has none is reported only."""
+    return [numbers.share(v, 0) if v else "reported only" for v in values]
+
+
 def worst_place(result: Result, kind: str) -> str:
     """Return rule and number of the situation with the smallest beta."""
     row = getattr(result.calibration, kind).worst
@@ -321,14 +362,25 @@ def sensitivities(result: Result) -> list[Sensitivity]:
     rules, weight = frame["rule"].to_numpy(), frame["weight"].to_numpy(float)
     part = taking_part(result, "proposed")
     found = []
-    for rule in result.study.rules.values():
-        rows = np.flatnonzero(part & (rules == rule.name))
-        names = tuple(rule.variables)
+    for judged in result.study.judged:
+        rows = np.flatnonzero(part & (rules == judged))
+        names = _variables_of(result, judged)
         if not rows.size or not names:
             continue
         alpha = np.stack([frame[f"alpha_{name}"].to_numpy(float)[rows] for name in names])
-        found.append(Sensitivity(rule.name, names, rows, alpha, weight[rows] / weight[rows].sum()))
+        if not np.isfinite(alpha).all():  # of a system whose components pull in opposite directions
+            continue
+        found.append(Sensitivity(judged, names, rows, alpha, weight[rows] / weight[rows].sum()))
     return found
+
+
+def _variables_of(result: Result, judged: str) -> tuple[str, ...]:
+    """Return the variables of a rule, or of all components of a system."""
+    study = result.study
+    if judged in study.rules:
+        return tuple(study.rules[judged].variables)
+    used = {v for rule in study.systems[judged].logic.names for v in study.rules[rule].variables}
+    return tuple(name for name in study.variables if name in used)
 
 
 def sensitivity_table(result: Result, found: list[Sensitivity]) -> Table:

@@ -74,7 +74,7 @@ def required_factors(result: Result, names: list[str]) -> Figure:
         axes.grid(visible=True, axis="y")
         level_ticks(axes, ruler, _PANEL_WIDTH)
     if axis != BY_RULE and len(result.study.judged) > 1:
-        rule_legend(figure, list(result.study.judged), 0.5, min(len(result.study.judged), 4))
+        rule_legend(figure, result, 0.5, min(len(result.study.judged), 4))
     return figure
 
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from calibrate.report import numbers
 from calibrate.report.table import Column, Table, each
@@ -31,13 +32,12 @@ def system_table(result: Result) -> Table | None:
         return means, least
 
     mean, least = figures("beta")
-    low, high = figures("beta_lower")[0], figures("beta_upper")[0]
-    gap = []
+    verified, lowest = figures("beta_verified")
+    width, gap = [], []
     for system in systems:
         own = frame[frame["system"] == system.name]
-        difference = (own["beta_simulated"] - own["beta"]).to_numpy(float)
-        known = difference[np.isfinite(difference)]
-        gap.append(float(known[np.argmax(np.abs(known))]) if known.size else np.nan)
+        width.append(_widest((own["beta_upper"] - own["beta_lower"]).to_numpy(float)))
+        gap.append(_widest((own["beta_simulated"] - own["beta"]).to_numpy(float)))
     total = result.study.total_weight
     return Table(
         (
@@ -45,9 +45,20 @@ def system_table(result: Result) -> Table | None:
             Column("fails when", [s.logic.text for s in systems]),
             Column("mean", mean, each(numbers.beta), "number", group="β by planes"),
             Column("min", least, each(numbers.beta), "number", group="β by planes"),
-            Column("lower", low, each(numbers.beta), "number", group="mean β, Ditlevsen bounds"),
-            Column("upper", high, each(numbers.beta), "number", group="mean β, Ditlevsen bounds"),
-            Column("simulated less planes, largest", gap, each(numbers.beta, 3), "number"),
+            Column("mean", verified, each(numbers.beta), "number", group="β verified"),
+            Column("min", lowest, each(numbers.beta), "number", group="β verified"),
+            Column("simulated less planes", gap, each(numbers.beta, 3), "number", group="largest difference"),
+            Column("between bounds", width, each(numbers.beta, 3), "number", group="largest difference"),
             Column("weight", [s.weight / total for s in systems], each(numbers.share, 0), "number"),
         )
     )
+
+
+def described(result: Result) -> list[tuple[str, str]]:
+    """Return the systems that the study describes: name and description."""
+    return [(name, s.description) for name, s in result.study.systems.items() if s.description]
+
+
+def _widest(difference: NDArray[np.float64]) -> float:
+    known = difference[np.isfinite(difference)]
+    return float(known[np.argmax(np.abs(known))]) if known.size else np.nan

@@ -15,7 +15,7 @@ if TYPE_CHECKING:
     from calibrate.factors import Verification
     from calibrate.study.result import Result
 
-MOST_SHOWN = 40
+MOST_SHOWN = 12
 
 
 def counted(result: Result, found: Verification) -> NDArray[np.bool_]:
@@ -44,7 +44,7 @@ def verification_table(result: Result) -> Table | None:
     return Table(
         (
             Column("factors", [kind for kind, _ in found]),
-            Column("situations", [int(np.count_nonzero(r)) for r in rows], whole, "number"),
+            Column("with weight", [int(np.count_nonzero(r)) for r in rows], whole, "number"),
             Column("simulated", [int(np.count_nonzero(v.is_simulated)) for _, v in found], whole, "number"),
             Column("samples", [int(np.sum(v.samples)) for _, v in found], whole, "number"),
             Column(
@@ -91,12 +91,20 @@ def simulated_table(result: Result, kind: str) -> Table | None:
             Column("FORM", v.form[at], each(numbers.beta, 3), "number", group="β"),
             Column("second order", v.sorm[at], each(numbers.beta, 3), "number", group="β"),
             Column("simulated", v.simulated[at], each(numbers.beta, 3), "number", group="β"),
-            Column("95 % interval", interval, group="β"),
+            Column("95 % interval", interval, kind="number", group="β"),
             Column("Pf over that of FORM", v.ratio[at], each(numbers.fixed, 2), "number"),
             Column("samples", v.samples[at], each(lambda n: numbers.whole(int(n))), "number"),
-            Column("design points", v.points[at], each(lambda n: numbers.whole(int(n))), "number"),
+            Column("design points", v.points[at], each(_points), "number"),
         )
     )
+
+
+def shown_sentence(result: Result, kind: str) -> str:
+    """Return which of the simulated situations of a set of factors the table shows."""
+    v = result.verifications[kind]
+    count = int(np.count_nonzero(v.is_simulated & counted(result, v)))
+    which = "all" if count <= MOST_SHOWN else f"the {MOST_SHOWN} with the largest differences"
+    return f"Simulated situations, {kind} factors: {which} of {count}, by the size of the difference"
 
 
 def brief_sentence(result: Result) -> str:
@@ -113,7 +121,7 @@ def brief_sentence(result: Result) -> str:
     checked = int(np.count_nonzero(v.is_simulated & there))
     how = f"{numbers.count(checked, 'situation')} simulated, the others by second order"
     if checked == np.count_nonzero(there):
-        how = "every situation simulated"
+        how = "every situation with weight simulated"
     elif not checked:
         how = "by second order"
     return (
@@ -121,6 +129,11 @@ def brief_sentence(result: Result) -> str:
         f"{situation}: "
         f"{numbers.beta(v.form[most], 3)} by FORM, {numbers.beta(v.verified[most], 3)} by {v.basis[most]}."
     )
+
+
+def _points(count: float) -> str:
+    """Return a number of design points; of a system none was looked for."""
+    return numbers.whole(int(count)) if count else numbers.NONE
 
 
 def _signed(value: float) -> str:

@@ -63,5 +63,5 @@ def verification_figure(result: Result, kind: str) -> Figure:
     axes.set_ylabel("verified β less FORM")
     axes.grid(visible=True, axis="y")
     if many:
-        rule_legend(figure, rules, 0.5, min(len(rules), 4))
+        rule_legend(figure, result, 0.5, min(len(rules), 4))
     return figure

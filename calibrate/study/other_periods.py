@@ -47,9 +47,16 @@ class PeriodBeta:
 
 
 def other_periods(
-    study: Study, fitted: Mapping[str, RecordModel], calibration: Calibration, workers: int = 1
+    study: Study,
+    fitted: Mapping[str, RecordModel],
+    calibration: Calibration,
+    correction: Array | None = None,
+    workers: int = 1,
 ) -> tuple[PeriodBeta, ...]:
-    """Return beta for the periods that the study asks for, in its order."""
+    """Return beta for the periods that the study asks for, in its order.
+
+    ``correction`` is what verification added to the index of FORM in every row; it is taken over.
+    """
     found = []
     evaluation = calibration.proposed.evaluation
     for years in study.other_periods:
@@ -59,6 +66,8 @@ def other_periods(
             workers=workers,
             systems=system_models(study),
         )
+        if correction is not None:
+            response = response.corrected(correction)
         direct = response(evaluation.gamma, evaluation).beta
         intervals = [max(t / study.independence, 1.0) for t in (years, study.reference_period)]
         converted = beta_of_period(evaluation.beta, intervals[0] / intervals[1])

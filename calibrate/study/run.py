@@ -116,7 +116,7 @@ def run(
     sets = (calibration.present, calibration.optimal, calibration.proposed)
     table, units = situation_table(study, calibration)
     biases, bias_doubts = implied_biases(study, used_distributions(study, calibration))
-    periods = other_periods(study, fitted, calibration, workers)
+    periods = other_periods(study, fitted, calibration, response.correction, workers)
     exact = exact_combination(study, variables, models, calibration, workers)
     by_site = site_beta(study, variables, models, calibration, workers)
     screening_doubts = [d for name, s in screenings.items() for d in s.doubts(f"records.{name}")]

@@ -28,8 +28,8 @@ def system_table(
     """Return the columns of systems.csv, one row per system and situation with the proposed factors; None without any.
 
     Columns: system, situation, weight (of the situation), beta (from the tangent planes), beta_lower and beta_upper (by
-    Ditlevsen's bounds), beta_simple_lower and beta_simple_upper, beta_simulated with its interval, and beta of each
-    component as ``beta_<rule>``, empty for rules that are no components.
+    Ditlevsen's bounds), beta_simple_lower and beta_simple_upper, beta_simulated with its interval, beta_verified, and
+    beta of each component as ``beta_<rule>``, empty for rules that are no components.
     """
     import pandas as pd
 
@@ -54,6 +54,7 @@ def system_table(
             ("beta_simulated", None if v is None else v.simulated),
             ("beta_simulated_lower", None if v is None else v.lower),
             ("beta_simulated_upper", None if v is None else v.upper),
+            ("beta_verified", None if v is None else v.verified),
         ):
             columns[name] = np.full(n, np.nan) if values is None else values[rows]
         names = study.systems[s.name].logic.names

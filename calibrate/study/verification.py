@@ -179,6 +179,12 @@ def place_of(study: Study, row: int) -> tuple[str, int]:
     return study.judged[row // n], row % n + 1
 
 
+def told_place(study: Study, row: int) -> str:
+    """Return a row in words: "rule NAME, situation N" or "system NAME, situation N"."""
+    name, situation = place_of(study, row)
+    return f"{'rule' if name in study.rules else 'system'} {name}, situation {situation}"
+
+
 def _large(study: Study, kind: str, v: Verification, there: NDArray[np.bool_]) -> list[Doubt]:
     """Doubt the index of FORM where the difference is large and not due to the scatter of the simulation alone."""
     size = np.where(there & np.isfinite(v.difference), np.abs(v.difference), 0.0)
@@ -186,7 +192,7 @@ def _large(study: Study, kind: str, v: Verification, there: NDArray[np.bool_]) -
     if not large.size:
         return []
     most = int(np.argmax(size))
-    rule, situation = place_of(study, most)
+    place = told_place(study, most)
     used = (
         "The factors rest on the verified index."
         if study.objective.index == "verified"
@@ -194,7 +200,7 @@ def _large(study: Study, kind: str, v: Verification, there: NDArray[np.bool_]) -
     )
     text = (
         f"With the {kind} factors the index of FORM is off by more than {study.verification.settings.tolerance:g} in "
-        f"{large.size} of {int(np.count_nonzero(there))} situations; most in rule {rule}, situation {situation}: "
+        f"{large.size} of {int(np.count_nonzero(there))} situations; most in {place}: "
         f"{v.form[most]:.3f} by FORM, {v.verified[most]:.3f} by {v.basis[most]}. {used}"
     )
     return [Doubt("form-error", text, "verification")]
@@ -204,7 +210,7 @@ def _at(study: Study, rows: NDArray[np.bool_], code: str, text: str, hint: str =
     at = np.flatnonzero(rows)
     if not at.size:
         return []
-    named = [f"rule {r}, situation {s}" for r, s in (place_of(study, int(i)) for i in at[:_NAMED])]
+    named = [told_place(study, int(i)) for i in at[:_NAMED]]
     more = f" and {at.size - _NAMED} more" if at.size > _NAMED else ""
     return [
         Doubt(

@@ -38,6 +38,7 @@ def format_unit(text: str) -> str:
     clean = text.strip()
     if not clean:
         return "–"
+    clean = re.sub(r"\bu(?=m\b|m[\^2-9])", "µ", clean)
     clean = re.sub(r" *(?:\^|\*\*) *", "^", clean)
     clean = re.sub(r"\^\+?(-?[0-9]+)(?![0-9.])", lambda m: m.group(1).translate(SUPERSCRIPTS), clean)
     clean = re.sub(r"(?<=[^\W\d_])([2-9])(?![\w.])", lambda m: m.group(1).translate(SUPERSCRIPTS), clean)

@@ -12,6 +12,7 @@ from calibrate.errors import InputError, did_you_mean
 from calibrate.fitting.correlation import estimate_correlation
 from calibrate.records import Sample
 from calibrate.reliability import CorrelatedPair
+from calibrate.reliability.correlated_pairs import indefinite
 from calibrate.study.model import CombinedAction, Correlated, Variable
 from calibrate.study.reading.conditional import conditional_on
 from calibrate.study.reading.context import Reading
@@ -36,7 +37,8 @@ def read_correlations(
 ) -> tuple[Correlated, ...]:
     """Return the pairs in the order of the study; faulty ones are reported and left out."""
     seen: dict[frozenset[str], str] = {}
-    found = []
+    found: list[Correlated] = []
+    keys: list[str] = []
     combined = {a.name for a in combination}
     for key, value in read_table(reading, raw, ("correlations",)).items():
         place = ("correlations", key)
@@ -58,7 +60,21 @@ def read_correlations(
         correlated = _correlated(reading, content, (first, second), records, place)
         if correlated is not None:
             found.append(correlated)
+            keys.append(key)
+    _check_together(reading, found, keys)
     return tuple(found)
+
+
+def _check_together(reading: Reading, found: Sequence[Correlated], keys: Sequence[str]) -> None:
+    """Report coefficients that no variables can have together."""
+    if not found:
+        return
+    pairs = [c.pair for c in found]
+    names = list(dict.fromkeys(name for p in pairs for name in (p.first, p.second)))
+    wrong = indefinite(pairs, names)
+    if wrong is not None:
+        key = next(k for k, p in zip(keys, pairs, strict=True) if p.line == wrong.line)
+        reading.raw_problem(wrong.message, ("correlations", key), wrong.suggestion)
 
 
 def _pair(reading: Reading, names: NameSpace, key: str, place: Place) -> tuple[str, str] | None:
@@ -171,6 +187,10 @@ def _correlated(
         f"{estimate.coefficient:.2f} from {estimate.n} specimens; 95 % interval {estimate.lower:.2f} to "
         f"{estimate.upper:.2f}."
     )
+    samples = [records[v.records] for v in variables if v.records is not None]
+    if any(s is not None and "lot" in s.labels for s in samples):
+        text = "Specimens of one lot are not independent, so that the interval is too narrow."
+        reading.doubt("correlation-in-lots", f"{told} {text}", where)
     if estimate.n < _FEW:
         reading.doubt("correlation-from-few", f"{told} The coefficient is used as if it were known.", where)
     elif estimate.lower <= 0.0 <= estimate.upper:
