@@ -17,6 +17,7 @@ from calibrate.study.uncertainty_ledger import uncertainty_ledger
 HOSTILE = "<b>&"
 STUDY = """
 format = 1
+verification.method = "none"   # looked at in tests of its own
 [study]
 title = "Brackets"
 reference_period = 50

@@ -95,7 +95,7 @@ def test_the_lap_joint_proposes_factors_on_the_verified_index():
     )
     inside = factors[["lower", "optimal", "upper"]].dropna().to_numpy(float)
     assert np.all((inside[:, 0] < inside[:, 1]) & (inside[:, 1] < inside[:, 2]))
-    assert not [d.code for d in result.doubts if d.code != "period-converted"]
+    assert {d.code for d in result.doubts} == {"period-converted", "correlation-in-lots"}
 
 
 def test_every_index_of_the_lap_joint_is_simulated_as_well_as_asked_for():

@@ -49,6 +49,7 @@ gamma_Q = { present = 1.5, lower = 1.0, upper = 2.5, step = 0.05 }
 """
 STUDY = """
 format = 1
+verification.method = "none"   # looked at in tests of its own
 [study]
 title = "Fence over a territory"
 reference_period = 50
@@ -160,6 +161,7 @@ def test_the_mixture_is_converted_class_by_class(result):
 
 STIFF = """
 format = 1
+verification.method = "none"   # looked at in tests of its own
 [study]
 title = "Stiff wall"
 reference_period = 50
