@@ -12,9 +12,10 @@ from calibrate.engine import run_tasks
 from calibrate.report import numbers, style, symbols
 from calibrate.report.axis_figure import beta_by_axis, panel_axes
 from calibrate.report.distribution_figure import beta_distribution
-from calibrate.report.outcome import sensitivities, size_changes
+from calibrate.report.outcome import size_changes
 from calibrate.report.required_figure import drawn_factors, required_factors
 from calibrate.report.resistance_figures import resistance_figures
+from calibrate.report.sensitivities import sensitivities
 from calibrate.report.sensitivity_figure import sensitivity
 from calibrate.report.size_figure import size_change
 from calibrate.report.verification_figure import verification_figure

@@ -33,6 +33,7 @@ from calibrate.report.ladder_table import ladder_table
 from calibrate.report.outcome import CONVERGED, GROUP_ALPHA, GROUP_POINT
 from calibrate.report.probability_paper import CAPTION
 from calibrate.report.resistance_section import resistance_sections
+from calibrate.report.sensitivities import sensitivities, sensitivity_table
 from calibrate.report.symbols import Html
 from calibrate.study.other_periods import WHY
 
@@ -115,7 +116,7 @@ def environment() -> Environment:
 def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
     study = result.study
     changes = outcome.size_changes(result)
-    found = outcome.sensitivities(result)
+    found = sensitivities(result)
     losers = outcome.extreme_rows(changes, WINNERS)
     shown = _shown_rows(result)
     drawn = {name: inline_svg(f.svg, f"f{i}", name) for i, (name, f) in enumerate(figures.items(), 1)}
@@ -212,7 +213,7 @@ def _content(result: Result, figures: Mapping[str, Rendered]) -> dict[str, Any]:
         "larger": _rows(result, losers[1]),
         "lattice": outcome.lattice_table(result),
         "rounding": outcome.rounding_cost(result),
-        "sensitivity": outcome.sensitivity_table(result, found) if found else None,
+        "sensitivity": sensitivity_table(result, found) if found else None,
         "elasticities": elasticities.variable_elasticities(result),
         "other_elasticities": elasticities.other_elasticities(result),
         "situations": outcome.situation_table(result, shown),

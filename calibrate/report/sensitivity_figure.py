@@ -15,7 +15,7 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-    from calibrate.report.outcome import Sensitivity
+    from calibrate.report.sensitivities import Sensitivity
     from calibrate.study.result import Result
 
 Array = NDArray[np.float64]

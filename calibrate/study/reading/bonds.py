@@ -21,7 +21,8 @@ from calibrate.fitting.characteristic import (
 from calibrate.records import Observations, Sample
 from calibrate.study.model import Quantity
 from calibrate.study.reading.context import Reading
-from calibrate.study.reading.schema import CharacteristicTable, StatedTable, read_entry
+from calibrate.study.reading.entries import read_entry
+from calibrate.study.reading.schema import CharacteristicTable, StatedTable
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import Value, read_unit, read_value
 

@@ -9,7 +9,8 @@ from calibrate.errors import did_you_mean
 from calibrate.study.model import CombinedAction, Variable
 from calibrate.study.reading.conditional import conditional_on
 from calibrate.study.reading.context import Reading
-from calibrate.study.reading.schema import CombinedTable, read_entry, read_table
+from calibrate.study.reading.entries import read_entry, read_table
+from calibrate.study.reading.schema import CombinedTable
 from calibrate.study.reading.toml_lines import Place
 
 

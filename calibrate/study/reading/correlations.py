@@ -16,9 +16,9 @@ from calibrate.reliability.correlated_pairs import indefinite
 from calibrate.study.model import CombinedAction, Correlated, Variable
 from calibrate.study.reading.conditional import conditional_on
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry, read_table
 from calibrate.study.reading.names import NameSpace
 from calibrate.study.reading.reliability_sections import CorrelationTable
-from calibrate.study.reading.schema import read_entry, read_table
 from calibrate.study.reading.sentences import describe
 from calibrate.study.reading.toml_lines import Place
 

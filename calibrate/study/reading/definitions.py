@@ -11,9 +11,9 @@ import numpy as np
 
 from calibrate.study.model import Quantity
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_plain
 from calibrate.study.reading.names import NameSpace, Use
 from calibrate.study.reading.order import dependence_order
-from calibrate.study.reading.schema import read_plain
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import Value, read_value, value_dimension
 from calibrate.units import ONE, Dimension, si_unit

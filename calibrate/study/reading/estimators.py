@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from calibrate.errors import InputError, did_you_mean
 from calibrate.fitting.methods.registry import method_of
 from calibrate.study.reading import schema
+from calibrate.study.reading.entries import read_entry
 from calibrate.study.reading.subject import Subject
 from calibrate.study.reading.values import read_value
 
@@ -32,7 +33,7 @@ def read_method(subject: Subject, content: schema.VariableEntry) -> MethodChoice
     if isinstance(raw, str):
         raw = {"name": raw}
     reading = subject.around.reading
-    entry = schema.read_entry(reading, schema.MethodTable, raw, subject.place("method"))
+    entry = read_entry(reading, schema.MethodTable, raw, subject.place("method"))
     table = entry.content
     if table is None or entry.dropped:
         return None

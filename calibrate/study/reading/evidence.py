@@ -12,8 +12,9 @@ from calibrate.records import Covariate, Exclude, ReadOptions, Sample, TextForm,
 from calibrate.records import read_value as read_derived
 from calibrate.study.paths import resolve_inside
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry, read_table
 from calibrate.study.reading.names import check_name
-from calibrate.study.reading.schema import CovariateTable, RecordsEntry, read_entry, read_table
+from calibrate.study.reading.schema import CovariateTable, RecordsEntry
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import in_unit, read_unit, read_value
 from calibrate.units import ONE, Unit, parse_unit

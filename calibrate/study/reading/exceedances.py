@@ -13,6 +13,7 @@ from calibrate.study.events import YEAR, find_events
 from calibrate.study.model import Exceedances, Variable
 from calibrate.study.reading import schema
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry
 from calibrate.study.reading.subject import Model, Subject
 from calibrate.study.reading.values import Value, in_unit, read_value
 from calibrate.units import Unit, format_unit, parse_unit
@@ -47,7 +48,7 @@ def exceedance_model(
         subject.problem("needs 'records': the values above the threshold come from them.", "exceedances")
         return None
     sound = _keys_fit(subject, content, values)
-    entry = schema.read_entry(
+    entry = read_entry(
         subject.around.reading, schema.ExceedancesTable, content.exceedances, subject.place("exceedances")
     )
     if content.records not in subject.around.records:

@@ -9,8 +9,9 @@ import numpy as np
 
 from calibrate.factors import Factor
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry, read_table
 from calibrate.study.reading.names import NameSpace
-from calibrate.study.reading.schema import FactorTable, read_entry, read_table
+from calibrate.study.reading.schema import FactorTable
 from calibrate.study.reading.sentences import describe
 from calibrate.study.reading.toml_lines import Place
 from calibrate.units import DIMENSIONLESS

@@ -12,7 +12,8 @@ from calibrate.errors import InputError
 from calibrate.expressions import parse
 from calibrate.situations import Axis
 from calibrate.study.reading.context import Reading
-from calibrate.study.reading.schema import AxisTable, Entry, read_entry, read_plain
+from calibrate.study.reading.entries import Entry, read_entry, read_plain
+from calibrate.study.reading.schema import AxisTable
 from calibrate.study.reading.sentences import describe
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import read_unit

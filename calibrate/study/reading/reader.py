@@ -18,6 +18,7 @@ from calibrate.study.reading.context import Reading
 from calibrate.study.reading.correlations import read_correlations
 from calibrate.study.reading.definitions import evaluate_quantities, read_definitions
 from calibrate.study.reading.document import check_format, read_document
+from calibrate.study.reading.entries import M, keys_of, read_entry, read_table
 from calibrate.study.reading.evidence import read_blocks, read_declared, read_records
 from calibrate.study.reading.exceedances import check_blocks
 from calibrate.study.reading.factors import read_factors
@@ -63,8 +64,8 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     reading = Reading(document, project_folder(document.path), allow_outside, problems)
     check_format(document, problems)
     data = document.data
-    top = schema.read_entry(reading, schema.TopLevel, data, ())
-    sections: Mapping[str, Any] = {k: data.get(k) for k in schema.keys_of(schema.TopLevel)}
+    top = read_entry(reading, schema.TopLevel, data, ())
+    sections: Mapping[str, Any] = {k: data.get(k) for k in keys_of(schema.TopLevel)}
     names = NameSpace(reading, incomplete=top.content is None)
 
     head = _required(reading, schema.StudySection, sections, "study")
@@ -72,9 +73,9 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
 
     # Every name is declared before any expression is checked, so that an
     # expression which uses something of the wrong kind can be told so.
-    quantities_raw = schema.read_table(reading, sections["quantities"], ("quantities",))
+    quantities_raw = read_table(reading, sections["quantities"], ("quantities",))
     declare_all(names, "quantity", quantities_raw, ("quantities",))
-    variables_raw = schema.read_table(reading, sections["variables"], ("variables",))
+    variables_raw = read_table(reading, sections["variables"], ("variables",))
     declare_all(names, "variable", variables_raw, ("variables",))
     grid = read_grid(reading, names, sections["situations"])
     declare_all(names, "derived", grid.content.derived, _DERIVED)
@@ -172,19 +173,17 @@ def read_study(path: str | Path, *, allow_outside: bool = False) -> Study:
     )
 
 
-def _required(
-    reading: Reading, model: type[schema.M], sections: Mapping[str, Any], name: str
-) -> schema.M | None:
+def _required(reading: Reading, model: type[M], sections: Mapping[str, Any], name: str) -> M | None:
     if sections[name] is None:
         needed = ", ".join(f"'{k}'" for k, f in model.model_fields.items() if f.is_required())
         reading.raw_problem(f"the section [{name}] with {needed} is missing.", ())
         return None
-    entry = schema.read_entry(reading, model, sections[name], (name,))
+    entry = read_entry(reading, model, sections[name], (name,))
     return entry.content if entry.sound else None
 
 
 def _objective(reading: Reading, raw: Any, target: schema.TargetSection | None) -> Objective | None:
-    entry = schema.read_entry(reading, schema.ObjectiveSection, {} if raw is None else raw, ("objective",))
+    entry = read_entry(reading, schema.ObjectiveSection, {} if raw is None else raw, ("objective",))
     content = entry.content
     if content is None:
         return None

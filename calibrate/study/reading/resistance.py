@@ -16,15 +16,9 @@ from calibrate.study.component_records import Slip, TestTable, component_records
 from calibrate.study.model import ComponentRecords, MeanValueQuestion, NorthAmericanQuestion
 from calibrate.study.paths import resolve_inside
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry, read_table
 from calibrate.study.reading.names import check_name
-from calibrate.study.reading.schema import (
-    LoadsTable,
-    MeanValueTable,
-    NorthAmericanTable,
-    ResistanceEntry,
-    read_entry,
-    read_table,
-)
+from calibrate.study.reading.schema import LoadsTable, MeanValueTable, NorthAmericanTable, ResistanceEntry
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import read_unit
 from calibrate.units import ONE

@@ -10,8 +10,9 @@ from calibrate.errors import InputError
 from calibrate.expressions import Comparison, dimension_of_comparison, infer_dimension, parse_comparison
 from calibrate.study.model import Rule, Variable
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import Entry, read_entry, read_table
 from calibrate.study.reading.names import CHECKS, LIMIT_STATES, NameSpace, check_name
-from calibrate.study.reading.schema import Entry, RuleEntry, read_entry, read_table
+from calibrate.study.reading.schema import RuleEntry
 from calibrate.study.reading.toml_lines import Place
 from calibrate.study.reading.values import read_unit
 from calibrate.units import Dimension, Unit, si_unit

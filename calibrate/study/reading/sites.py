@@ -13,7 +13,7 @@ from calibrate.errors import InputError, Problem, did_you_mean
 from calibrate.records import Table, read_table
 from calibrate.study.model import SiteTable
 from calibrate.study.paths import resolve_inside
-from calibrate.study.reading import schema
+from calibrate.study.reading import entries
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.grid import in_one_unit
 from calibrate.study.reading.names import NameSpace, check_name
@@ -50,7 +50,7 @@ def read_sites(reading: Reading, names: NameSpace, raw: Any) -> dict[str, SiteTa
     The names of the columns are noted, so that an expression which uses them in a wrong place can be told.
     """
     found = {}
-    for name, entry in schema.read_table(reading, raw, ("sites",)).items():
+    for name, entry in entries.read_table(reading, raw, ("sites",)).items():
         found[name] = _site_table(reading, name, entry)
         if (table := found[name]) is not None:
             names.elsewhere.update(dict.fromkeys(table.columns, f"sites.{name}"))
@@ -60,7 +60,7 @@ def read_sites(reading: Reading, names: NameSpace, raw: Any) -> dict[str, SiteTa
 def _site_table(reading: Reading, name: str, raw: Any) -> SiteTable | None:
     place: Place = ("sites", name)
     check_name(reading, name, "sites", place)
-    entry = schema.read_entry(reading, SitesEntry, raw, place)
+    entry = entries.read_entry(reading, SitesEntry, raw, place)
     content = entry.content
     if content is None or entry.dropped:
         return None
@@ -161,7 +161,7 @@ def _written_out(reading: Reading, content: SitesEntry, place: Place) -> _Column
         if name == content.label or all(_is_label(c) for c in cells):
             found.texts[name] = [c if isinstance(c, str) else number_text(c) for c in cells]
             continue
-        typed = [schema.read_plain(reading, "value", c, w) for c, w in zip(cells, where, strict=True)]
+        typed = [entries.read_plain(reading, "value", c, w) for c, w in zip(cells, where, strict=True)]
         numbers = None if None in typed else in_one_unit(reading, typed, units.get(name), where, "column")
         if numbers is not None:
             values, unit = numbers

@@ -19,6 +19,7 @@ from calibrate.study.paths import resolve_inside
 from calibrate.study.reading import schema
 from calibrate.study.reading.context import Reading
 from calibrate.study.reading.definitions import Definition
+from calibrate.study.reading.entries import read_entry, read_plain
 from calibrate.study.reading.grid import MAX_SITUATIONS, read_axis
 from calibrate.study.reading.names import WEIGHTS, NameSpace
 from calibrate.study.reading.toml_lines import Place
@@ -52,7 +53,7 @@ class Grid:
 
 def read_grid(reading: Reading, names: NameSpace, raw: Any) -> Grid:
     """Read axes or table and declare their names, without units' dimensions where they are faulty."""
-    entry = schema.read_entry(reading, schema.SituationsSection, {} if raw is None else raw, _HERE)
+    entry = read_entry(reading, schema.SituationsSection, {} if raw is None else raw, _HERE)
     grid = Grid(entry.content or schema.SituationsSection())
     content = grid.content
     if not entry.sound:
@@ -170,7 +171,7 @@ def _units_of_columns(
                 did_you_mean(name, table.columns),
             )
             continue
-        text = schema.read_plain(reading, "text", raw, place)
+        text = read_plain(reading, "text", raw, place)
         units[name] = read_unit(reading, text, place)
     return units
 

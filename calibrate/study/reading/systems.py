@@ -9,9 +9,9 @@ from calibrate.errors import InputError
 from calibrate.reliability.systems import failure_logic
 from calibrate.study.model import CombinedAction, Rule, System, Variable
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry, read_table
 from calibrate.study.reading.names import check_name
 from calibrate.study.reading.reliability_sections import SystemTable
-from calibrate.study.reading.schema import read_entry, read_table
 
 _LEAST = 2
 

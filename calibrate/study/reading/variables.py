@@ -17,6 +17,7 @@ from calibrate.study.reading.conditional import (
     may_be_conditional,
     report_circles,
 )
+from calibrate.study.reading.entries import read_entry, read_plain
 from calibrate.study.reading.estimators import MethodChoice, read_method
 from calibrate.study.reading.exceedances import exceedance_model
 from calibrate.study.reading.fitted import fitted_model
@@ -64,7 +65,7 @@ def _read(subject: Subject, raw: Any) -> Variable | None:
     known = argument_names()
     arguments = {k: v for k, v in raw.items() if k in known} if isinstance(raw, dict) else {}
     rest = {k: v for k, v in raw.items() if k not in known} if isinstance(raw, dict) else raw
-    entry = schema.read_entry(reading, schema.VariableEntry, rest, subject.place(), more_keys=known)
+    entry = read_entry(reading, schema.VariableEntry, rest, subject.place(), more_keys=known)
     values = _values(subject, arguments)
     content = None if entry.content is None else _completed(subject, entry.content)
     if content is None:
@@ -208,7 +209,7 @@ def _values(subject: Subject, arguments: Mapping[str, Any]) -> dict[str, Value] 
     reading = subject.around.reading
     values: dict[str, Value] = {}
     for key, raw in arguments.items():
-        typed = schema.read_plain(reading, "value", raw, subject.place(key))
+        typed = read_plain(reading, "value", raw, subject.place(key))
         value = None if typed is None else read_value(reading, typed, subject.place(key))
         if value is not None:
             values[key] = value

@@ -9,8 +9,8 @@ from calibrate.factors import NONE, SECOND_ORDER_ONLY, VerificationSettings
 from calibrate.reliability.simulation import METHODS
 from calibrate.study.model import Objective, VerificationQuestion
 from calibrate.study.reading.context import Reading
+from calibrate.study.reading.entries import read_entry
 from calibrate.study.reading.reliability_sections import VerificationSection
-from calibrate.study.reading.schema import read_entry
 
 _PLACE = ("verification",)
 
