@@ -114,7 +114,7 @@ def run(
 
     report("Collecting results", 0.95)
     sets = (calibration.present, calibration.optimal, calibration.proposed)
-    table, units = situation_table(study, calibration)
+    table, units = situation_table(study, calibration, verified.get("proposed"))
     biases, bias_doubts = implied_biases(study, used_distributions(study, calibration))
     periods = other_periods(study, fitted, calibration, response.correction, workers)
     exact = exact_combination(study, variables, models, calibration, workers)

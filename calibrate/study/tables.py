@@ -9,7 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calibrate.distributions import Distribution, Extreme, Mixture
-from calibrate.factors import Calibration, Evaluation, Response, required_factor
+from calibrate.factors import Calibration, Evaluation, Response, Verification, required_factor
+from calibrate.reliability.status import CONVERGED, SEVERAL, TEXTS
 from calibrate.study.fits import FittedVariable, RecordModel
 from calibrate.study.model import Rule, Study
 from calibrate.study.result import FACTOR_SETS, VariableResult
@@ -44,11 +45,12 @@ def size_unit(study: Study, rule: Rule) -> Unit:
 
 
 def situation_table(
-    study: Study, calibration: Calibration
+    study: Study, calibration: Calibration, verified: Verification | None = None
 ) -> tuple[pd.DataFrame, dict[str, str | dict[str, str]]]:
     """Return one row per rule and design situation, and the unit of every column.
 
-    A situation without beta has NaN in every column that follows from beta.
+    A situation without beta has NaN in every column that follows from beta. ``verified`` is the verification with the
+    proposed factors, whose search may have found further design points.
     """
     import pandas as pd
 
@@ -83,6 +85,10 @@ def situation_table(
         columns[f"beta_{kind}"] = getattr(calibration, kind).evaluation.beta
         units[f"beta_{kind}"] = ""
     _design_points(study, calibration.proposed.evaluation, rules, columns, units)
+    if verified is not None:
+        status = np.asarray(columns["status"], dtype=object)
+        several = (verified.points > 1) & (status == TEXTS[CONVERGED])
+        columns["status"] = np.where(several, TEXTS[SEVERAL], status)
     return pd.DataFrame(columns), units
 
 

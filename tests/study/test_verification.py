@@ -146,6 +146,7 @@ factors.gamma = 1.0
     result = run(read(tmp_path, text))
     v = result.verifications["proposed"]
     assert v.points[0] == 2
+    assert list(result.situations["status"]) == ["several design points"]
     exact = -ndtri(2.0 * ndtr(-3.2))
     assert v.series[0] == pytest.approx(exact, abs=1e-9)
     assert v.lower[0] <= exact <= v.upper[0]
