@@ -209,7 +209,10 @@ class Distribution:
         """Return the distribution of some situations; ``columns`` indexes the last axis."""
         if not self.shape:
             return self
-        values = tuple(v[..., columns] if v.ndim else v for v in self.values)
+        if isinstance(columns, np.ndarray) and columns.dtype.kind == "i":
+            values = tuple(v.take(columns, axis=-1) if v.ndim else v for v in self.values)
+        else:
+            values = tuple(v[..., columns] if v.ndim else v for v in self.values)
         for value in values:
             value.setflags(write=False)
         return Distribution(self.family, values, np.broadcast_shapes(*(v.shape for v in values)))

@@ -129,7 +129,8 @@ def test_factors_on_the_verified_index(tmp_path):
     assert exact_steel(on_verified, 0.3) == pytest.approx(3.8, abs=0.004)
     assert result.to_dict()["index"] == "verified"
     v = result.verifications["proposed"]
-    np.testing.assert_allclose(v.verified, result.situations["beta_proposed"], atol=2e-4)
+    # The standard deviation of beta at a cov of 0.5 % is 0.0013; both come from the same stream.
+    np.testing.assert_allclose(v.verified, result.situations["beta_proposed"], atol=1e-3)
     assert not [d for d in result.doubts if d.code == "verified-index-unsettled"]
 
 

@@ -113,7 +113,7 @@ class Sampler(Protocol):
         z : array (d, k)
             Standard normal numbers for the rows that vary; may be overwritten.
         v : array (k,)
-            Uniform numbers, drawn where ``mixed`` is set.
+            Uniform numbers where ``mixed`` is set; elsewhere evenly spread ones, the same in every cell.
         """
 
 

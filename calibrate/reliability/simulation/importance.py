@@ -5,7 +5,9 @@ References
 .. [1] M. Shinozuka, "Basic analysis of structural safety", Journal of Structural Engineering 109 (1983); G. I.
    Schueller and R. Stix, "A critical appraisal of methods to determine failure probabilities", Structural Safety 4
    (1987): sampling around the design point (from memory).
-.. [2] A. Owen and Y. Zhou, "Safe and effective importance sampling", Journal of the American Statistical Association 95
+.. [2] A. Harbitz, "An efficient sampling method for probability of failure calculation", Structural Safety 3 (1986):
+   sampling outside a sphere (from memory).
+.. [3] A. Owen and Y. Zhou, "Safe and effective importance sampling", Journal of the American Statistical Association 95
    (2000): control variates together with mixtures (from memory).
 """
 
@@ -14,15 +16,21 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 from scipy import special
 
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.rows import add_rows, dot
 from calibrate.reliability.simulation.base import Array, Flags, Task, Values, evaluated, other_side
-from calibrate.reliability.simulation.batches import Block
+from calibrate.reliability.simulation.batches import CELL, Block
+
+Columns = npt.NDArray[np.int64]
 
 # The least share of the samples that a design point gets, as part of the likeliest one's.
 LEAST_SHARE = 0.1
+# Share of the samples that are drawn in any direction outside a sphere, and its radius as part of the least distance.
+# Where the limit state bends around the origin they reach what samples around its nearest point do not.
+OUTSIDE_SHARE, OUTSIDE = 3.0 / CELL, 0.95
 # Samples that are counted as seen between plane and limit state beyond those that were: nearly the square of the
 # normal deviate of 95 %, as Agresti and Coull (1998) add to counts.
 UNSEEN = 4.0
@@ -35,8 +43,9 @@ class ImportanceSampling:
     Notes
     -----
     The samples of the half-spaces beyond the tangent planes, whose probability is known exactly, serve as control
-    variate: only the difference between limit state and planes is left to chance. The density h of the mixture
-    gives phi(u) / h(u) = 1 / sum_j share_j exp(u.u_j - |u_j|^2 / 2).
+    variate: only the difference between limit state and planes is left to chance. A part s of the samples lies outside
+    a sphere in any direction, with u.u = r^2 + 2 E, E exponential; it keeps the weights there small. The density h of
+    the mixture gives phi(u) / h(u) = 1 / (sum_j share_j exp(u.u_j - |u_j|^2 / 2) + [|u| > r] s / (c |u|^(d - 2))).
     """
 
     name: str = "importance sampling"
@@ -59,15 +68,16 @@ class ImportanceSampling:
         usable: Flags = np.asarray(valid.any(axis=0))
         best = np.where(usable, np.max(log_tail, axis=0), 0.0)
         share = np.where(valid, np.maximum(np.exp(log_tail - best), LEAST_SHARE), 0.0)
-        share = share / np.where(usable, add_rows(share), 1.0)
+        share = (1.0 - OUTSIDE_SHARE) * share / np.where(usable, add_rows(share), 1.0)
         tails = add_rows(np.where(valid, special.ndtr(-length), 0.0))
         # The weight of a sample at a design point.
         at_point = np.where(valid, np.exp(-0.5 * square) / np.where(valid, share, 1.0), 0.0)
-        several = np.sum(valid, axis=0) > 1
+        radius = OUTSIDE * np.min(np.where(valid, length, np.inf), axis=0, initial=np.inf)
+        radius = np.where(usable, radius, 0.0)
         return ImportanceSampler(
             task,
             usable,
-            several,
+            np.sum(valid, axis=0) > 1,
             np.sqrt(UNSEEN) * np.max(at_point, axis=0),
             tails,
             points,
@@ -75,12 +85,26 @@ class ImportanceSampling:
             share,
             _borders(share),
             valid,
+            radius * radius,
+            _density(len(task.random), radius * radius),
         )
 
 
+def _density(d: int, inner: Array) -> Array:
+    """Return the constant of phi(u)/h(u) = constant (u.u)^(d/2 - 1) outside the sphere.
+
+    Directions are uniform and u.u = r^2 + 2 E with a standard exponential E.
+    """
+    half = 0.5 * d
+    return np.asarray(np.exp(np.log(2.0) - 0.5 * inner - half * np.log(2.0) - special.gammaln(half)))
+
+
 def _borders(share: Array) -> Array:
-    """Return the uniform numbers at which one point's share ends; the last share that is not zero has no end."""
-    borders = np.cumsum(share, axis=0)
+    """Return the uniform numbers at which one point's share ends; the last share that is not zero has no end.
+
+    Below the first share lies that of the samples outside the sphere.
+    """
+    borders = OUTSIDE_SHARE + np.cumsum(share, axis=0)
     later = np.cumsum(share[::-1], axis=0)[::-1] - share
     borders[(share > 0.0) & (later <= 0.0)] = np.inf
     return borders
@@ -100,6 +124,10 @@ class ImportanceSampler:
         Uniform numbers at which one point's share ends and the next one's begins.
     valid : bool array (k, n)
         Where there is a point.
+    inner : array (n,)
+        Square of the radius of the sphere outside which some of the samples are drawn, in any direction.
+    constant : array (n,)
+        Of the ratio of the densities there.
     """
 
     task: Task
@@ -112,46 +140,64 @@ class ImportanceSampler:
     share: Array
     borders: Array
     valid: Flags
+    inner: Array
+    constant: Array
 
     def values(self, problem: Problem, block: Block, z: Array, v: Array) -> Values:
         """Return the weights on the other side of the limit state, and those beyond the tangent planes."""
-        if len(self.points) == 1:
-            square = block.of(self.square[0])
-            for row, own in zip(z, self.points[0], strict=True):
-                row += block.of(own)
-            along = _along(block, self.points[0], z)
-            weight = np.exp(0.5 * square - along)
-            control = weight * (along >= square)
-        else:
-            self._move(block, z, v)
-            weight, beyond = self._weigh(block, z)
-            control = weight * beyond
+        self._move(block, z, v)
+        weight, beyond = self._weigh(block, z)
         g = evaluated(problem, self.task.placed(z))
-        return Values(weight * other_side(g, block.of(self.task.complement)), control, 1)
+        return Values(weight * other_side(g, block.of(self.task.complement)), weight * beyond, 1)
 
     def _move(self, block: Block, z: Array, v: Array) -> None:
-        """Move standard normal samples to the design points, chosen by uniform numbers."""
-        chosen = np.zeros(v.size, dtype=np.int64)
-        for border in self.borders:
-            chosen += v >= block.of(border)
-        at = block.columns
-        for i, row in enumerate(z):
-            row += self.points[chosen, i, at]
+        """Move standard normal samples to the design points or out of the sphere, chosen by uniform numbers."""
+        at = np.flatnonzero(v < OUTSIDE_SHARE)
+        outside = self._outwards(z[:, at], block.columns[at])
+        if len(self.points) == 1:
+            for row, own in zip(z, self.points[0], strict=True):
+                row += block.of(own)
+        else:
+            chosen = np.zeros(v.size, dtype=np.int64)
+            for border in self.borders[:-1]:
+                chosen += v >= block.of(border)
+            for i, row in enumerate(z):
+                row += self.points[chosen, i, block.columns]
+        z[:, at] = outside
+
+    def _outwards(self, z: Array, situation: Columns) -> Array:
+        """Move samples along their rays out of the sphere, how far by their own length, which no direction knows."""
+        length = dot(z, z)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            square = self.inner[situation] - 2.0 * np.log(special.chdtrc(len(z), length))
+            return np.asarray(z * np.sqrt(square / length))
 
     def _weigh(self, block: Block, u: Array) -> tuple[Array, Array]:
         """Return phi(u) / h(u), and in how many of the half-spaces each sample lies."""
-        exponents = []
+        square = dot(u, u)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            total = np.where(
+                square >= block.of(self.inner),
+                block.of(OUTSIDE_SHARE / self.constant) / _power(square, len(u) - 2),
+                0.0,
+            )
         beyond = np.zeros(u.shape[1])
-        for point, square, share, valid in zip(self.points, self.square, self.share, self.valid, strict=True):
-            along, size, there = _along(block, point, u), block.of(square), block.of(valid)
-            beyond += (along >= size) & there
-            with np.errstate(divide="ignore"):
-                exponents.append(np.where(there, np.log(block.of(share)) + (along - 0.5 * size), -np.inf))
-        largest = exponents[0]
-        for exponent in exponents[1:]:
-            largest = np.maximum(largest, exponent)
-        total = add_rows(np.stack([np.exp(exponent - largest) for exponent in exponents]))
-        return np.exp(-(largest + np.log(total))), beyond
+        for point, length, share, valid in zip(self.points, self.square, self.share, self.valid, strict=True):
+            along, size = _along(block, point, u), block.of(length)
+            beyond += (along >= size) & block.of(valid)
+            total += block.of(share) * np.exp(along - 0.5 * size)
+        with np.errstate(divide="ignore"):
+            return 1.0 / total, beyond
+
+
+def _power(square: Array, exponent: int) -> Array:
+    """Return square^(exponent/2) for exponents from -1."""
+    if exponent < 0:
+        return np.asarray(1.0 / np.sqrt(square))
+    found: Array = np.sqrt(square) if exponent % 2 else np.ones(())
+    for _ in range(exponent // 2):
+        found = found * square
+    return found
 
 
 def _along(block: Block, point: Array, u: Array) -> Array:

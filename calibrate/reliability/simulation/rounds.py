@@ -73,7 +73,8 @@ def _run(
     halves: Counts | None,
 ) -> None:
     columns = block.columns
-    z, v = room[:, : columns.size], np.zeros(columns.size)
+    # Where no uniform numbers are needed the places within a cell stand for them.
+    z, v = room[:, : columns.size], (np.arange(columns.size) % CELL + 0.5) / CELL
     start = 0
     for i, size in zip(block.owner.tolist(), block.size.tolist(), strict=True):
         generator = generators[i]

@@ -61,14 +61,13 @@ def test_lognormal_strength_and_load(method):
     assert_near(result, special.ndtr(-beta), 0.05)
 
 
-def test_two_design_points_need_two_densities(standard):
+def test_two_design_points(standard):
     problem = standard("b - abs(x)", ["x"], b=3.0)
     exact = 2.0 * special.ndtr(-3.0)
     points = np.array([[[3.0]], [[-3.0]]])
     assert_near(simulate(problem, "importance sampling", seed=1, points=points), exact, 0.02)
-    # With one point the other half is out of sight: this is why points are asked for.
-    half = simulate(problem, "importance sampling", seed=1, points=points[0])
-    assert half.probability == pytest.approx(0.5 * exact, rel=0.05)
+    # With one point the other half is reached by the samples outside the sphere, with so few variables.
+    assert_near(simulate(problem, "importance sampling", seed=1, points=points[0]), exact, 0.02)
     for method in ("directional simulation", "line sampling"):
         # Rays and lines are scanned both ways, and here each gives the exact value.
         found = simulate(problem, method, seed=1, points=points)

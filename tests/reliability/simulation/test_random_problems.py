@@ -50,8 +50,11 @@ def test_against_quadrature(strength, effect):
     curved = second_order(problem, reliability)
     sound = there & curved.sound
     assert np.count_nonzero(sound) > N // 3
-    # The misfit that is let through is a factor of 1.1; what it cannot see is as much again.
-    np.testing.assert_allclose(curved.failure_probability[sound], exact[sound], rtol=0.2)
+    # The misfit that is let through is a factor of 1.1; what lies beyond its points can be more, most of all between a
+    # Gumbel minimum and a Frechet effect, both of which bend the limit state around the origin.
+    ratio = curved.failure_probability[sound] / exact[sound]
+    assert np.mean(np.abs(ratio - 1.0) < 0.1) > 0.75
+    np.testing.assert_allclose(ratio, 1.0, atol=0.35)
 
 
 def test_against_long_plain_monte_carlo():
