@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+from functools import lru_cache
 
 import numpy as np
 
@@ -27,6 +28,7 @@ def stream(seed: int, *purpose: str | int) -> np.random.Generator:
     return np.random.default_rng(np.random.SeedSequence(seed, spawn_key=key))
 
 
+@lru_cache(maxsize=256)
 def _words(part: str | int) -> tuple[int, ...]:
     # A leading mark keeps texts and numbers, and neighbours of different length, apart.
     if isinstance(part, str):

@@ -113,7 +113,8 @@ class Sampler(Protocol):
         z : array (d, k)
             Standard normal numbers for the rows that vary; may be overwritten.
         v : array (k,)
-            Uniform numbers where ``mixed`` is set; elsewhere evenly spread ones, the same in every cell.
+            Uniform numbers where ``mixed`` is set; elsewhere evenly spread over each cell, the first of them at random
+            within their places.
         """
 
 

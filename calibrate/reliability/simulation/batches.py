@@ -18,6 +18,9 @@ Counts = npt.NDArray[np.int64]
 CELL = 32
 """Samples whose sum is formed in one go; every number of samples is a multiple of it."""
 
+FRESH = 3
+"""Places of each cell that have a uniform number of their own also where the others are evenly spread."""
+
 # Samples drawn in one go.
 PIECE = 4096
 # Columns evaluated together: larger blocks leave the cache, smaller ones pay for the calls.

@@ -22,7 +22,7 @@ from scipy import special
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.rows import add_rows, dot
 from calibrate.reliability.simulation.base import Array, Flags, Task, Values, evaluated, other_side
-from calibrate.reliability.simulation.batches import CELL, Block
+from calibrate.reliability.simulation.batches import CELL, FRESH, Block
 
 Columns = npt.NDArray[np.int64]
 
@@ -30,7 +30,7 @@ Columns = npt.NDArray[np.int64]
 LEAST_SHARE = 0.1
 # Share of the samples that are drawn in any direction outside a sphere, and its radius as part of the least distance.
 # Where the limit state bends around the origin they reach what samples around its nearest point do not.
-OUTSIDE_SHARE, OUTSIDE = 3.0 / CELL, 0.95
+OUTSIDE_SHARE, OUTSIDE = FRESH / CELL, 0.95
 # Samples that are counted as seen between plane and limit state beyond those that were: nearly the square of the
 # normal deviate of 95 %, as Agresti and Coull (1998) add to counts.
 UNSEEN = 4.0
@@ -153,7 +153,7 @@ class ImportanceSampler:
     def _move(self, block: Block, z: Array, v: Array) -> None:
         """Move standard normal samples to the design points or out of the sphere, chosen by uniform numbers."""
         at = np.flatnonzero(v < OUTSIDE_SHARE)
-        outside = self._outwards(z[:, at], block.columns[at])
+        outside = self._outwards(z[:, at], v[at], block.columns[at])
         if len(self.points) == 1:
             for row, own in zip(z, self.points[0], strict=True):
                 row += block.of(own)
@@ -165,29 +165,32 @@ class ImportanceSampler:
                 row += self.points[chosen, i, block.columns]
         z[:, at] = outside
 
-    def _outwards(self, z: Array, situation: Columns) -> Array:
-        """Move samples along their rays out of the sphere, how far by their own length, which no direction knows."""
-        length = dot(z, z)
+    def _outwards(self, z: Array, v: Array, situation: Columns) -> Array:
+        """Move samples along their rays out of the sphere, how far by their uniform numbers."""
         with np.errstate(divide="ignore", invalid="ignore"):
-            square = self.inner[situation] - 2.0 * np.log(special.chdtrc(len(z), length))
-            return np.asarray(z * np.sqrt(square / length))
+            square = self.inner[situation] - 2.0 * np.log(v / OUTSIDE_SHARE)
+            return np.asarray(z * np.sqrt(square / dot(z, z)))
 
-    def _weigh(self, block: Block, u: Array) -> tuple[Array, Array]:
+    def _weigh(self, block: Block, u: Array) -> tuple[Array, Array | Flags]:
         """Return phi(u) / h(u), and in how many of the half-spaces each sample lies."""
         square = dot(u, u)
         with np.errstate(divide="ignore", invalid="ignore"):
-            total = np.where(
-                square >= block.of(self.inner),
-                block.of(OUTSIDE_SHARE / self.constant) / _power(square, len(u) - 2),
-                0.0,
-            )
-        beyond = np.zeros(u.shape[1])
+            total = block.of(OUTSIDE_SHARE / self.constant) / _power(square, len(u) - 2)
+        total[square < block.of(self.inner)] = 0.0
+        beyond: Array | Flags | None = None
         for point, length, share, valid in zip(self.points, self.square, self.share, self.valid, strict=True):
             along, size = _along(block, point, u), block.of(length)
-            beyond += (along >= size) & block.of(valid)
-            total += block.of(share) * np.exp(along - 0.5 * size)
+            there = along >= size
+            if len(self.points) > 1:
+                there &= block.of(valid)
+            beyond = there if beyond is None else beyond + there.astype(np.float64)
+            along -= 0.5 * size
+            np.exp(along, out=along)
+            along *= block.of(share)
+            total += along
+        assert beyond is not None
         with np.errstate(divide="ignore"):
-            return 1.0 / total, beyond
+            return np.divide(1.0, total, out=total), beyond
 
 
 def _power(square: Array, exponent: int) -> Array:

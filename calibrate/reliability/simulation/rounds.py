@@ -6,7 +6,7 @@ import numpy as np
 import numpy.typing as npt
 
 from calibrate.reliability.simulation.base import Method, Sampler, Task
-from calibrate.reliability.simulation.batches import BLOCK, CELL, PIECE, Block, blocks, rounded
+from calibrate.reliability.simulation.batches import BLOCK, CELL, FRESH, PIECE, Block, blocks, rounded
 from calibrate.reliability.simulation.goal import Goal
 from calibrate.reliability.simulation.interval import binomial, of_mean
 from calibrate.reliability.simulation.moments import Estimate, Sums, estimate
@@ -74,7 +74,8 @@ def _run(
 ) -> None:
     columns = block.columns
     # Where no uniform numbers are needed the places within a cell stand for them.
-    z, v = room[:, : columns.size], (np.arange(columns.size) % CELL + 0.5) / CELL
+    z, v = room[:, : columns.size], np.tile((np.arange(CELL) + 0.5) / CELL, columns.size // CELL)
+    by_cell = v.reshape(-1, CELL)
     start = 0
     for i, size in zip(block.owner.tolist(), block.size.tolist(), strict=True):
         generator = generators[i]
@@ -82,6 +83,9 @@ def _run(
             generator.standard_normal(out=row[start : start + size])
         if sampler.mixed[i]:
             v[start : start + size] = generator.random(size)
+        else:
+            fresh = by_cell[start // CELL : (start + size) // CELL, :FRESH]
+            fresh += (0.5 - generator.random(fresh.shape)) / CELL
         start += size
     values = sampler.values(task.problem.take(columns, columns.size), block, z, v)
     owner, order = block.cells
