@@ -114,10 +114,11 @@ rules.c = { limit_state = "x - y + 7 / sqrt(2) >= 0" }
 rules.d = { limit_state = "y - x + 7 / sqrt(2) >= 0" }
 systems.all = { fails_when = "a or b or c or d" }
 factors.gamma = 1.0
+verification = { cov = 0.005, samples = 1000000 }
 """
     result = run(read(tmp_path, text))
     row = result.systems.iloc[0]
-    assert ndtr(-row["beta_simulated"]) == pytest.approx(2.2227951e-3, rel=0.06)
+    assert ndtr(-row["beta_simulated"]) == pytest.approx(2.2227951e-3, rel=0.02)
     assert ndtr(-row["beta"]) == pytest.approx(3.1638e-3, rel=1e-3)
     assert "system-planes" in {d.code for d in result.doubts}
 

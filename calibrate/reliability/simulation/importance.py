@@ -42,6 +42,8 @@ class ImportanceSampling:
 
     Notes
     -----
+    Samples come in pairs on both sides of a design point, which halves the normal numbers that are needed; a pair
+    counts as one value, so that the error is that of pairs, whatever their correlation.
     The samples of the half-spaces beyond the tangent planes, whose probability is known exactly, serve as control
     variate: only the difference between limit state and planes is left to chance. A part s of the samples lies outside
     a sphere in any direction, with u.u = r^2 + 2 E, E exponential; it keeps the weights there small. The density h of
@@ -49,9 +51,9 @@ class ImportanceSampling:
     """
 
     name: str = "importance sampling"
-    pilot: int = 1024
-    cost: int = 1
-    least: int = 100
+    pilot: int = 512
+    cost: int = 2
+    least: int = 130
     needs_points: bool = True
     binomial: bool = False
     bounded: bool = False
@@ -70,7 +72,7 @@ class ImportanceSampling:
         share = np.where(valid, np.maximum(np.exp(log_tail - best), LEAST_SHARE), 0.0)
         share = (1.0 - OUTSIDE_SHARE) * share / np.where(usable, add_rows(share), 1.0)
         tails = add_rows(np.where(valid, special.ndtr(-length), 0.0))
-        # The weight of a sample at a design point.
+        # The weight of a sample at a design point; what is not seen is half of a pair.
         at_point = np.where(valid, np.exp(-0.5 * square) / np.where(valid, share, 1.0), 0.0)
         radius = OUTSIDE * np.min(np.where(valid, length, np.inf), axis=0, initial=np.inf)
         radius = np.where(usable, radius, 0.0)
@@ -78,7 +80,7 @@ class ImportanceSampling:
             task,
             usable,
             np.sum(valid, axis=0) > 1,
-            np.sqrt(UNSEEN) * np.max(at_point, axis=0),
+            0.5 * np.sqrt(UNSEEN) * np.max(at_point, axis=0),
             tails,
             points,
             square,
@@ -144,26 +146,35 @@ class ImportanceSampler:
     constant: Array
 
     def values(self, problem: Problem, block: Block, z: Array, v: Array) -> Values:
-        """Return the weights on the other side of the limit state, and those beyond the tangent planes."""
-        self._move(block, z, v)
-        weight, beyond = self._weigh(block, z)
-        g = evaluated(problem, self.task.placed(z))
-        return Values(weight * other_side(g, block.of(self.task.complement)), weight * beyond, 1)
+        """Return, for each pair, the weights on the other side of the limit state and beyond the tangent planes."""
+        centre = self._centre(block, z, v)
+        complement = block.of(self.task.complement)
+        value, control = np.zeros(v.size), np.zeros(v.size)
+        for u in (centre + z, np.subtract(centre, z, out=centre)):
+            weight, beyond = self._weigh(block, u)
+            g = evaluated(problem, self.task.placed(u))
+            control += weight * beyond
+            weight *= 0.5 * other_side(g, complement)
+            value += weight
+        control *= 0.5
+        return Values(value, control, 2)
 
-    def _move(self, block: Block, z: Array, v: Array) -> None:
-        """Move standard normal samples to the design points or out of the sphere, chosen by uniform numbers."""
+    def _centre(self, block: Block, z: Array, v: Array) -> Array:
+        """Return the design points of the samples, chosen by uniform numbers.
+
+        Samples outside the sphere have the origin for centre and are moved there.
+        """
         at = np.flatnonzero(v < OUTSIDE_SHARE)
-        outside = self._outwards(z[:, at], v[at], block.columns[at])
+        z[:, at] = self._outwards(z[:, at], v[at], block.columns[at])
         if len(self.points) == 1:
-            for row, own in zip(z, self.points[0], strict=True):
-                row += block.of(own)
+            centre = block.of(self.points[0])
         else:
             chosen = np.zeros(v.size, dtype=np.int64)
             for border in self.borders[:-1]:
                 chosen += v >= block.of(border)
-            for i, row in enumerate(z):
-                row += self.points[chosen, i, block.columns]
-        z[:, at] = outside
+            centre = np.array([self.points[chosen, i, block.columns] for i in range(len(z))])
+        centre[:, at] = 0.0
+        return centre
 
     def _outwards(self, z: Array, v: Array, situation: Columns) -> Array:
         """Move samples along their rays out of the sphere, how far by their uniform numbers."""

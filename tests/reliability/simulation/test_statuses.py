@@ -76,9 +76,10 @@ def test_budget(standard, method):
 def test_the_smallest_budget(standard):
     problem = standard("1 - x + 0.2 * y**2", ["x", "y"], 3)
     found = design_points(problem)
-    for method in ("crude monte carlo", "importance sampling"):
-        result = simulate(problem, method, seed=1, cov=1e-4, most=100, reliability=found)
-        assert (result.samples <= 100).all()
+    # Importance sampling takes two evaluations at a time.
+    for method, most in (("crude monte carlo", 100), ("importance sampling", 130)):
+        result = simulate(problem, method, seed=1, cov=1e-4, most=most, reliability=found)
+        assert (result.samples <= most).all()
         assert (result.samples >= 64).all()
 
 
