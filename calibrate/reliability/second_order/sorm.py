@@ -20,6 +20,7 @@ from calibrate.engine import run_chunks
 from calibrate.errors import InputError
 from calibrate.reliability.problem import Problem
 from calibrate.reliability.result import Reliability
+from calibrate.reliability.rows import dot
 from calibrate.reliability.second_order.asymptotic import breitung, hazard, hohenbichler_rackwitz, tvedt
 from calibrate.reliability.second_order.curvatures import principal_curvatures
 from calibrate.reliability.second_order.misfit import misfit
@@ -107,8 +108,11 @@ def _analysed(
     rows = list(problem.random)
     if not rows:
         kappa, axes = np.zeros((0, problem.n)), np.zeros((problem.m, 0, problem.n))
+        turned = np.zeros_like(alpha)
     else:
-        hessian = problem.hessian(u)[np.ix_(rows, rows)]
+        whole = problem.hessian(u)
+        turned = np.array([dot(row, alpha) for row in whole])
+        hessian = whole[np.ix_(rows, rows)]
         kappa, own = principal_curvatures(hessian, np.ascontiguousarray(alpha[rows]), norm)
         axes = np.zeros((problem.m, len(rows) - 1, problem.n))
         axes[rows] = own
@@ -118,7 +122,7 @@ def _analysed(
     lost = np.isnan(beta_here)
     exact = paraboloid(beta_here, kappa)
     # A limit state need not bear NaN: where there is nothing to look at, it is evaluated near the origin.
-    off = misfit(problem, np.where(lost, 0.0, beta), alpha, np.where(lost, 0.0, kappa), axes)
+    off = misfit(problem, np.where(lost, 0.0, beta), alpha, np.where(lost, 0.0, kappa), axes, norm, turned)
     off = np.where(lost, np.nan, off)
     side = np.where(beta < 0.0, -1.0, 1.0)
     factor = np.exp(-side * off * hazard(np.abs(beta)))
