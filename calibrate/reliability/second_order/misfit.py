@@ -29,11 +29,11 @@ def misfit(
 ) -> Array:
     """Return by how much the index is likely to be off because the surface is no paraboloid.
 
-    Failures near the design point scatter along principal axis i with a standard deviation of about
-    (1 + psi kappa_i)^(-1/2), psi = phi(beta)/Phi(-beta). At sqrt(3) times it, on either side, one Newton step along
-    alpha from the paraboloid, with the slope that the second derivatives predict, leads about to the surface. Its length changes the probability there by a factor, and
-    a Gauss-Hermite rule of three points on each axis makes one factor f of all of them. The misfit is -ln f/psi, the
-    shift of the surface that would have the same effect.
+    Failures near the design point scatter along principal axis i with a standard deviation of about (1 + psi
+    kappa_i)^(-1/2), psi = phi(beta)/Phi(-beta). At sqrt(3) times it, on either side, one Newton step along alpha
+    from the paraboloid, with the slope that the second derivatives predict, leads about to the surface. Its length
+    changes the probability there by a factor, and a Gauss-Hermite rule of three points on each axis makes one
+    factor f of all of them. The misfit is -ln f/psi, the shift of the surface that would have the same effect.
 
     Parameters
     ----------
