@@ -12,6 +12,7 @@ from calibrate.study.fits import fit_variables
 
 STUDY = """
 format = 1
+verification.method = "none"   # looked at in tests of its own
 [study]
 title = "Gantry"
 reference_period = 50

@@ -11,6 +11,7 @@ from calibrate.study.export import table_files
 
 STUDY = """
 format = 1
+verification.method = "none"   # looked at in tests of its own
 [study]
 title = "Rods"
 reference_period = 50
