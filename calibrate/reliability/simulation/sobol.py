@@ -1,7 +1,8 @@
 """Simulation with randomised Sobol points; the scatter among independent randomisations gives the error.
 
-All situations use one net of Sobol points; each has its own random digital shifts, from its own stream, and under each
-shift every point is uniform. The net is extended, twice as many points in each round, so that no evaluation is lost.
+All situations use one scrambled net of Sobol points; each has its own random digital shifts, from its own stream, and
+under each shift every point is uniform. The net is extended, twice as many points in each round, so that no evaluation
+is lost.
 
 References
 ----------
@@ -17,6 +18,7 @@ import numpy as np
 import numpy.typing as npt
 from scipy import special
 
+from calibrate.engine import stream
 from calibrate.reliability.simulation.base import Method, Task
 from calibrate.reliability.simulation.batches import CELL, Block, blocks
 from calibrate.reliability.simulation.goal import Goal
@@ -53,7 +55,7 @@ def simulate_with_nets(method: Method, task: Task, keys: Counts, goal: Goal) -> 
     sums.evaluations[:] = 1
     code = np.where(sampler.usable, SPENT, NO_POINT).astype(np.int8)
     b = np.zeros((SHIFTS, n))
-    net, size, before = _Net(dimension), _first(method, goal), 0
+    net, size, before = _Net(dimension, stream(goal.seed, goal.purpose, "net")), _first(method, goal), 0
     last: Estimate | None = None
     found = _estimate(sums, b, sampler.control_mean, sampler.atom)
     while at.size:
@@ -85,13 +87,13 @@ def simulate_with_nets(method: Method, task: Task, keys: Counts, goal: Goal) -> 
 
 
 class _Net:
-    """The Sobol points in their order, as whole numbers below 2**BITS."""
+    """Scrambled Sobol points in their order, as whole numbers below 2**BITS; the same for all situations of a run."""
 
-    def __init__(self, dimension: int) -> None:
+    def __init__(self, dimension: int, rng: np.random.Generator) -> None:
         # scipy.stats takes a second to import.
         from scipy.stats import qmc
 
-        self._points = qmc.Sobol(dimension, scramble=False, bits=BITS)
+        self._points = qmc.Sobol(dimension, scramble=True, bits=BITS, rng=rng)
 
     def next(self, size: int) -> Counts:
         """Return the next points, (dimension, size)."""
